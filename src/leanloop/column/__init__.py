@@ -1,0 +1,1 @@
+"""Counter-current column of equilibrium stages: equations, start, Newton's method, response."""

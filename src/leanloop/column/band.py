@@ -1,0 +1,164 @@
+"""Batches of block-tridiagonal systems as one banded matrix, with the cases kept apart.
+
+The unknowns of all stages of all cases are laid end to end; the couplings across the seams
+between cases are zeros, so one LAPACK band factorisation serves the whole batch. A case whose
+rows are not finite or singular would spoil its neighbours: such rows are replaced by the identity.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from scipy.linalg import lapack
+
+BYTES_A_CHUNK = 64 * 2**20
+
+
+def bytes_a_case(stages: int, unknowns: int) -> int:
+    """Give the memory that one case takes in the band.
+
+    Parameters
+    ----------
+    stages, unknowns : int
+        Stages of a column and unknowns of a stage.
+    """
+    return 8 * stages * unknowns * (4 * unknowns - 1)
+
+
+class Band:
+    """Banded matrix of M cases of N stages with n unknowns each.
+
+    A row couples to its own stage, to the stage below (columns of stage j + 1), and to the stage
+    above only through ``row a of stage j + 1, unknown a of stage j`` for the rows from `first` on,
+    with coefficient one: the liquid that runs down. That keeps the lower bandwidth at n.
+
+    Parameters
+    ----------
+    cases, stages, unknowns : int
+    first : int
+        First row, and unknown, that couples to the stage above.
+    """
+
+    def __init__(self, cases: int, stages: int, unknowns: int, first: int) -> None:
+        n = unknowns
+        self.shape = (cases, stages, n)
+        self.lower, self.upper = n, 2 * n - 1 - first
+        width = 2 * self.lower + self.upper + 1
+        self._store = np.zeros((cases * stages * n, width))
+        item = self._store.itemsize
+        # element (row i, column j) stands at store[j, lower + upper + i - j]; for column b of a
+        # stage the 2n rows of the stage above and of its own are then a run that starts b earlier
+        start = self.lower + self.upper - n
+        self._runs = np.lib.stride_tricks.as_strided(
+            self._store[:, start:],
+            shape=(cases, stages, n, 2 * n),
+            strides=(stages * n * width * item, n * width * item, (width - 1) * item, item),
+        )
+        self._cells = self._store.reshape(cases, stages, n, width)
+        self._first = first
+        self._pivots: np.ndarray | None = None
+        self.singular = np.zeros(cases, dtype=bool)
+        self.factorisations = 0
+
+    def fill(self, above: np.ndarray, own: np.ndarray) -> None:
+        """Set the matrix.
+
+        Parameters
+        ----------
+        above : (M, N, n, n) by [case, stage, unknown, row]
+            Derivatives of the rows of the stage above with respect to this stage's unknowns.
+        own : (M, N, n, n) by [case, stage, unknown, row]
+            Derivatives of the stage's own rows.
+        """
+        n = self.shape[2]
+        self._runs[..., :n] = above
+        self._runs[..., n:] = own
+        self._runs[:, 0, :, :n] = 0.0
+        self._cells[:, :-1, self._first :, -1] = 1.0
+        self._cells[:, -1, :, -1] = 0.0
+
+    def isolate(self, cases: np.ndarray) -> None:
+        """Put the identity in the rows of some cases.
+
+        Parameters
+        ----------
+        cases : (M,) bool
+        """
+        if cases.any():
+            n = self.shape[2]
+            self._cells[cases] = 0.0
+            self._runs[cases, :, np.arange(n)[:, None], n + np.arange(n)[:, None]] = 1.0
+
+    def factor(self, above: np.ndarray, own: np.ndarray) -> np.ndarray:
+        """Set and factorise the matrix.
+
+        Parameters
+        ----------
+        above, own : (M, N, n, n)
+            As for `fill`.
+
+        Returns
+        -------
+        (M,) bool
+            Cases that are singular or not finite; their rows are the identity now.
+        """
+        bad = ~(np.isfinite(own).all(axis=(1, 2, 3)) & np.isfinite(above).all(axis=(1, 2, 3)))
+        while True:
+            self.fill(above, own)
+            self.isolate(bad)
+            _, self._pivots, info = lapack.dgbtrf(self._store.T, self.lower, self.upper, overwrite_ab=1)
+            self.factorisations += 1
+            if info == 0:
+                break
+            pivot = self._cells[..., self.lower + self.upper]
+            zero = ((pivot == 0.0) | ~np.isfinite(pivot)).any(axis=(1, 2))
+            if not (zero & ~bad).any():  # cannot be: info > 0 names a zero pivot
+                bad = np.ones_like(bad)
+                continue
+            bad = bad | zero
+        self.singular = bad
+        return bad
+
+    def solve(self, right: np.ndarray) -> np.ndarray:
+        """Solve for one or several right-hand sides.
+
+        Parameters
+        ----------
+        right : (M, N, n) or (S, M, N, n)
+            Overwritten where memory allows.
+
+        Returns
+        -------
+        array of the same shape
+            Zero for the cases that `factor` set apart.
+        """
+        shape = right.shape
+        several = right.reshape(-1, int(np.prod(self.shape)))
+        spoilt = self.singular
+        if spoilt.any() or not np.isfinite(several).all():
+            view = several.reshape(-1, *self.shape)
+            spoilt = spoilt | ~np.isfinite(view).all(axis=(0, 2, 3))
+            view[:, spoilt] = 0.0
+        answer, _ = lapack.dgbtrs(
+            self._store.T, self.lower, self.upper, np.asfortranarray(several.T), self._pivots, overwrite_b=1
+        )
+        answer = np.ascontiguousarray(answer.T).reshape(-1, *self.shape)
+        if not np.isfinite(answer).all():
+            answer = self._one_by_one(several.reshape(-1, *self.shape))
+        return answer.reshape(shape)
+
+    def _one_by_one(self, right: np.ndarray) -> np.ndarray:
+        """Solve case by case, for the rare overflow in one that would spoil the others."""
+        rows = self.shape[1] * self.shape[2]
+        answer = np.zeros_like(right)
+        for case in range(self.shape[0]):
+            part = slice(case * rows, (case + 1) * rows)
+            pivots = self._pivots[part] - case * rows
+            flat = np.asfortranarray(right[:, case].reshape(len(right), rows).T)
+            own = np.asfortranarray(self._store[part].T)
+            with np.errstate(all="ignore"):
+                solved, _ = lapack.dgbtrs(own, self.lower, self.upper, flat, pivots)
+            if np.isfinite(solved).all():
+                answer[:, case] = solved.T.reshape(len(right), self.shape[1], self.shape[2])
+            else:
+                self.singular[case] = True
+        return answer

@@ -1,0 +1,204 @@
+"""Newton's method on all stages of all cases at once, and the response of the answer to its data."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from leanloop.column.band import BYTES_A_CHUNK, Band, bytes_a_case
+from leanloop.column.equations import (
+    FIRST_MATERIAL_ROW,
+    Phases,
+    Stages,
+    blocks,
+    gas_change,
+    gas_derivatives,
+    phases,
+    residual,
+    rows,
+)
+from leanloop.column.start import filling_start, fraction_ratio, start, sweep
+from leanloop.status import OK, Status, code
+
+STEP_LIMIT = 0.2  # a flow falls to no less than this part of itself in one step
+NEAR = 1e-4  # relative step after which the next one is expected to be the last
+DONE = 1e-8  # relative step after which the error, its square, is rounding
+FLOOR = 1e-9  # flows below this part of the component's feed are judged against it
+TRACE = 1e-8  # flows below this part of the component's feed are settled by `_settle_traces`
+PLAIN_ITERATIONS = 12  # then the columns are filled from the start of a single stage
+ITERATIONS = 300
+
+
+@dataclass
+class Answer:
+    """Solved batch of columns.
+
+    Attributes
+    ----------
+    stages : Stages
+    at : Phases
+        State at which the factorisation was made, one quadratic step before `unknowns`.
+    unknowns : (M, N, 1 + D) mol/s
+    derivatives : (M, N, 1 + D, D)
+        Of v by the unknowns of its stage, at `at`.
+    bands : list of (slice, Band)
+        Factorised Jacobian, chunk by chunk.
+    status : (M,) int8
+    iterations : int
+        Newton iterations, the last one included.
+    """
+
+    stages: Stages
+    at: Phases
+    unknowns: np.ndarray
+    derivatives: np.ndarray
+    bands: list[tuple[slice, Band]]
+    status: np.ndarray
+    iterations: int
+
+    def respond(self, right: np.ndarray) -> np.ndarray:
+        """Give the change of the unknowns for changes of the stage equations' data.
+
+        Parameters
+        ----------
+        right : (S, M, N, 1 + D) mol/s
+            Change of the residual at fixed unknowns.
+
+        Returns
+        -------
+        (S, M, N, 1 + D) mol/s
+        """
+        out = np.empty_like(right)
+        for part, band in self.bands:
+            out[:, part] = band.solve(-right[:, part])
+        return out
+
+
+def _factor(derivatives: np.ndarray, drag: np.ndarray) -> tuple[list[tuple[slice, Band]], np.ndarray]:
+    cases, count, unknowns, _ = derivatives.shape
+    size = max(1, BYTES_A_CHUNK // bytes_a_case(count, unknowns))
+    bands, bad = [], np.zeros(cases, dtype=bool)
+    for begin in range(0, cases, size):
+        part = slice(begin, min(begin + size, cases))
+        band = Band(part.stop - part.start, count, unknowns, FIRST_MATERIAL_ROW)
+        bad[part] = band.factor(*blocks(derivatives[part], drag[part]))
+        bands.append((part, band))
+    return bands, bad
+
+
+def _limited(unknowns: np.ndarray, step: np.ndarray, inert: np.ndarray, floor: np.ndarray) -> np.ndarray:
+    """Add a step so that flows stay positive; gas vanishes only where nothing keeps it."""
+    new = np.maximum(unknowns + step, STEP_LIMIT * unknowns)
+    new[..., 0] = np.maximum(new[..., 0], inert)
+    vanished = (inert == 0.0) & (new[..., 0] < 1e-4 * floor[:, None]) & (step[..., 0] <= 0.0)
+    new[..., 0] = np.where(vanished, 0.0, new[..., 0])
+    return new
+
+
+def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
+    """Solve the stage equations of a batch of columns.
+
+    Parameters
+    ----------
+    stages : Stages
+    guess : (M, N, 1 + D) mol/s, optional
+        Unknowns to start from; rows that are not finite are started afresh.
+
+    Returns
+    -------
+    Answer
+        Cases that cannot be solved carry their status and finite rubbish; the others are not
+        disturbed by them.
+    """
+    cases, count, parts = stages.shape
+    status = np.full(cases, OK)
+    scale = stages.feeds.sum(axis=1)
+    everything = scale.sum(axis=-1) + stages.gas_inert[:, 0] + stages.liquid_inert[:, -1]
+    given = np.isfinite(everything) & np.isfinite(stages.law.k_dilute).all(axis=(1, 2))
+    given &= (stages.feeds >= 0).all(axis=(1, 2)) & (stages.gas_inert >= 0).all(axis=1)
+    given &= (stages.liquid_inert >= 0).all(axis=1)
+    status[~given] = code(Status.not_finite)
+    wet = stages.liquid_inert[:, 0] + stages.feeds[:, 0].sum(axis=-1) > 1e-9 * everything
+    wet |= stages.liquid_inert.min(axis=1) > 0
+    status[given & ~wet] = code(Status.dry_stage)
+    with np.errstate(all="ignore"):
+        unknowns = start(stages) if guess is None else guess
+        if guess is not None:
+            lost = ~np.isfinite(guess).all(axis=(1, 2)) & (status == OK)
+            if lost.any():
+                unknowns = guess.copy()
+                index = np.flatnonzero(lost)
+                unknowns[index] = start(stages.take(index))
+        floors = FLOOR * np.concatenate([everything[:, None], np.where(scale > 0, scale, np.inf)], axis=1)
+        answer = _iterate(stages, unknowns, floors, status)
+        _settle_traces(answer, scale)
+    return answer
+
+
+def _settle_traces(answer: Answer, scale: np.ndarray) -> None:
+    """Give flows far below the component's feed their full relative accuracy.
+
+    In the coupled system they carry the rounding of the large flows; at total flows that are
+    already right, each component's balances are a tridiagonal system whose answer has none of it.
+    """
+    stages, unknowns = answer.stages, answer.unknowns
+    small = (unknowns[..., 1:] < TRACE * scale[:, None, :]) & (answer.status == OK)[:, None, None]
+    if not small.any():
+        return
+    cases = np.flatnonzero(small.any(axis=(1, 2)))
+    few, now = (stages, unknowns) if len(cases) == len(unknowns) else (stages.take(cases), unknowns[cases])
+    liquid = few.liquid_inert + now[..., 1:].sum(axis=-1)
+    swept = sweep(few, now[..., 0], liquid, fraction_ratio(few, now))
+    good = small[cases] & np.isfinite(swept[..., 1:])
+    unknowns[cases, :, 1:] = np.where(good, swept[..., 1:], now[..., 1:])
+
+
+def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray) -> Answer:
+    """Iterate until a step of every case is rounding; the last factorisation holds all cases."""
+    cases = len(unknowns)
+    unknowns = np.where(np.isfinite(floors)[:, None, :], unknowns, 0.0)
+    drag = np.zeros(cases)
+    first = np.zeros(cases)
+    part: np.ndarray | None = None  # the unsolved cases, while they are few
+    local, iterations = stages, 0
+    while True:
+        iterations += 1
+        own = np.arange(cases) if part is None else part
+        now, floor = unknowns[own], floors[own]
+        at = phases(local, now)
+        lead = residual(local, at)
+        if iterations > PLAIN_ITERATIONS:
+            # implicit Euler steps of the columns' own filling, ever longer as the residual falls
+            merit = (np.abs(lead) / floor[:, None, :]).max(axis=(1, 2), initial=0.0)
+            first[own] = np.where(first[own] == 0.0, merit, first[own])
+            drag[own] = np.where(merit > 1e5, np.minimum(merit / first[own], 1.0), 0.0)
+        derivatives = gas_derivatives(local, at)
+        failed = status[own] != OK
+        derivatives[failed] = np.nan
+        bands, bad = _factor(derivatives, drag[own])
+        step = np.empty_like(lead)
+        for piece, band in bands:
+            step[piece] = band.solve(-lead[piece])
+            bad[piece] |= band.singular
+        step = np.where(np.isfinite(floor)[:, None, :], step, 0.0)
+        new = _limited(now, step, local.gas_inert, floor[:, 0])
+        size = (np.abs(step) / (np.abs(new) + floor[:, None, :])).max(axis=(1, 2), initial=0.0)
+        size[drag[own] > 0] = 1.0
+        broken = (bad | ~np.isfinite(size)) & ~failed
+        new[broken | failed] = now[broken | failed]
+        size[broken | failed] = 0.0
+        unknowns[own] = new
+        late = size > DONE if iterations >= ITERATIONS else np.zeros(len(own), dtype=bool)
+        status[own[broken | late]] = code(Status.stages_unsolved)
+        size[late] = 0.0
+        if iterations == PLAIN_ITERATIONS and (size > NEAR).any():
+            again = own[size > NEAR]
+            unknowns[again] = filling_start(stages if len(again) == cases else stages.take(again))
+        if part is None and (size <= DONE).all():
+            return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
+        far = own[size > NEAR]
+        if not len(far):
+            part, local = None, stages
+        elif len(far) < 0.5 * len(own) and iterations > 1:
+            part, local = far, stages.take(far)

@@ -1,0 +1,171 @@
+"""Start of Newton's method on a column: flows by the absorption-factor estimate, then sum-rates sweeps.
+
+With the total flows of the phases given, the material balances of each component are tridiagonal
+and their answer is positive; summing the answers gives new totals. That is the sum-rates method
+(Sujata, A. D., Hydrocarbon Processing 40(12), 137 (1961); from memory), which needs no guess.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from scipy.linalg import lapack
+
+from leanloop.column.equations import Stages, phases
+
+TINY = 1e-300
+
+
+def absorbed_fraction(factor: np.ndarray, stages: int) -> np.ndarray:
+    """Give the fraction absorbed by N stages of equal absorption factor.
+
+    Kremser (1930), Souders and Brown (1932): (A^(N+1) - A)/(A^(N+1) - 1), here as the quotient of
+    sums A + ... + A^N over 1 + A + ... + A^N, which is exact near A = 1.
+
+    Parameters
+    ----------
+    factor : (...,) dimensionless
+        Absorption factor, or stripping factor for the fraction stripped.
+    stages : int
+
+    Returns
+    -------
+    (...,) dimensionless
+    """
+    small = np.minimum(factor, 1.0 / np.maximum(factor, 1e-30))
+    total, power = np.ones_like(small), np.ones_like(small)
+    for _ in range(min(stages, 400)):
+        power = power * small
+        total = total + power
+    # 1 - 1/sum for A <= 1; with a = 1/A the mirrored sum divided by a^N else
+    with np.errstate(under="ignore"):
+        return np.where(factor <= 1.0, 1.0 - 1.0 / total, 1.0 - small**stages / total)
+
+
+def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
+    """Solve the material balances of every component at given stripping factors.
+
+    Parameters
+    ----------
+    ratio : (M, N, D) dimensionless
+        v/l of each component on each stage.
+    feeds : (M, N, D) mol/s
+
+    Returns
+    -------
+    (M, N, D) mol/s
+        Liquid flows l.
+    """
+    cases, count, parts = feeds.shape
+    s = np.ascontiguousarray(np.moveaxis(ratio, 2, 1))
+    lower = np.full((cases, parts, count), -1.0)
+    lower[..., -1] = 0.0
+    upper = -s
+    upper = np.roll(upper, -1, axis=2)
+    upper[..., -1] = 0.0
+    right = np.ascontiguousarray(np.moveaxis(feeds, 2, 1)).reshape(-1)
+    if right.size == 1:
+        return feeds / (1.0 + ratio)
+    answer = lapack.dgtsv(lower.reshape(-1)[:-1], (1.0 + s).reshape(-1), upper.reshape(-1)[:-1], right)[3]
+    return np.moveaxis(answer.reshape(cases, parts, count), 1, 2)
+
+
+def sweep(stages: Stages, gas: np.ndarray, liquid: np.ndarray, ratio: np.ndarray) -> np.ndarray:
+    """Make one sum-rates sweep.
+
+    Parameters
+    ----------
+    stages : Stages
+    gas, liquid : (M, N) mol/s
+        Total flows leaving each stage.
+    ratio : (M, N, D)
+        Gas over liquid mole fraction of each component.
+
+    Returns
+    -------
+    (M, N, 1 + D) mol/s
+        Unknowns of the column.
+    """
+    factor = ratio * (gas / np.maximum(liquid, TINY))[..., None]
+    flows = tridiagonal(np.minimum(factor, 1e15), stages.feeds)
+    out = np.empty((*flows.shape[:2], flows.shape[2] + 1))
+    out[..., 1:] = flows
+    out[..., 0] = stages.gas_inert + (factor * flows).sum(axis=-1)
+    return out
+
+
+def fraction_ratio(stages: Stages, unknowns: np.ndarray) -> np.ndarray:
+    """Give y/x of every component on every stage at given unknowns, its limit at zero liquid.
+
+    Parameters
+    ----------
+    stages : Stages
+    unknowns : (M, N, 1 + D) mol/s
+
+    Returns
+    -------
+    (M, N, D)
+    """
+    at = phases(stages, unknowns)
+    gas, liquid = np.maximum(unknowns[..., :1], TINY), np.maximum(at.total_liquid[..., None], TINY)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        found = (at.gas_flow / gas) / (unknowns[..., 1:] / liquid)
+    dilute = np.broadcast_to(stages.law.k_dilute, found.shape)
+    return np.where(np.isfinite(found) & (found > 0), found, dilute)
+
+
+def start(stages: Stages, sweeps: int = 2) -> np.ndarray:
+    """Estimate the unknowns of a batch of columns from their feeds alone.
+
+    Parameters
+    ----------
+    stages : Stages
+    sweeps : int
+
+    Returns
+    -------
+    (M, N, 1 + D) mol/s
+    """
+    cases, count, parts = stages.shape
+    total = stages.feeds.sum(axis=1)
+    top, bottom = stages.feeds[:, 0], stages.feeds[:, -1]
+    ratio = np.broadcast_to(stages.law.k_dilute, (cases, count, parts))
+    # gas and liquid with every component in the phase that it prefers
+    liquid_in = stages.liquid_inert[:, 0] + top.sum(axis=-1)
+    gas_in = stages.gas_inert[:, -1] + bottom.sum(axis=-1)
+    factor = ratio[:, 0] * ((gas_in + 1e-9 * liquid_in) / np.maximum(liquid_in + 1e-9 * gas_in, TINY))[:, None]
+    stripped = absorbed_fraction(factor, count)
+    absorbed = absorbed_fraction(1.0 / np.maximum(factor, 1e-15), count)
+    gas_out = stages.gas_inert[:, 0] + (stripped * top + (1.0 - absorbed) * (total - top)).sum(axis=-1)
+    liquid_out = stages.liquid_inert[:, -1] + ((1.0 - stripped) * top + absorbed * (total - top)).sum(axis=-1)
+    place = np.arange(count) / max(count - 1, 1)
+    liquid = liquid_in[:, None] + place * (liquid_out - liquid_in)[:, None]
+    gas = gas_out[:, None] + place * (gas_in - gas_out)[:, None]
+    unknowns = sweep(stages, gas, liquid, ratio)
+    for _ in range(sweeps - 1):
+        total_liquid = stages.liquid_inert + unknowns[..., 1:].sum(axis=-1)
+        if not stages.law.proportional or not stages.law.plain:
+            ratio = fraction_ratio(stages, unknowns)
+        unknowns = sweep(stages, unknowns[..., 0], total_liquid, ratio)
+    return unknowns
+
+
+def filling_start(stages: Stages) -> np.ndarray:
+    """Give the state from which columns are filled: every stage as if it were the only one.
+
+    With all distributing components counted in the gas, the gas mole fractions sum to less than
+    one on every stage, whatever the equilibrium ratios: no stage starts superheated.
+
+    Parameters
+    ----------
+    stages : Stages
+
+    Returns
+    -------
+    (M, N, 1 + D) mol/s
+    """
+    total = stages.feeds.sum(axis=1)
+    gas = stages.gas_inert + total.sum(axis=-1)[:, None]
+    liquid = stages.liquid_inert + stages.feeds[:, 0].sum(axis=-1)[:, None]
+    factor = stages.law.k_dilute * (gas / np.maximum(liquid, TINY))[..., None]
+    flows = total[:, None, :] / (1.0 + factor)
+    return np.concatenate([gas[..., None], flows], axis=-1)

@@ -1,0 +1,222 @@
+"""Feeds: streams that enter the flowsheet from outside, from the numbers that a user gives."""
+
+from __future__ import annotations
+
+import copy
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+from scipy.constants import R
+
+from leanloop.components import PHASES, Components
+from leanloop.entries import Context, Entry, Values, read_number, read_values
+from leanloop.errors import nearest
+from leanloop.stream import Stream
+
+FORMS = ("fractions", "mass_fractions", "ratios", "loadings")
+FLOW_SORTS = ("molar flow", "mass flow", "volume flow")
+SUM_TOLERANCE = 1e-6
+
+ENTRIES = (
+    Entry("phase", "choice", required=True, choices=PHASES, doc="gas or liquid"),
+    Entry("temperature", "temperature", required=True),
+    Entry("pressure", "pressure", required=True, above=0.0),
+    Entry("flow", FLOW_SORTS, least=0.0, doc="whole stream; gas also in m3 at its own T and P, or Nm3"),
+)
+_PART = Entry("part", ("number", "molar mass"), least=0.0)
+_FLOW = Entry("flows", ("molar flow", "mass flow"), least=0.0, by="component")
+
+
+class Feed:
+    """A stream that enters from outside.
+
+    Parameters
+    ----------
+    name : str
+    **raw : Any
+        Entries as a file would hold them; in Python plain SI numbers may stand for quantities.
+    """
+
+    def __init__(self, name: str, **raw: Any) -> None:
+        self.name, self.raw = name, raw
+        self.values = Values()
+        self.form, self.rest = "", ""
+
+    @property
+    def phase(self) -> str:
+        """``"gas"`` or ``"liquid"``."""
+        return self.values.words.get("phase", "gas")
+
+    def read(self, components: Components, basis: Mapping[str, tuple[str, ...]], context: Context) -> Feed:
+        """Give a copy with its entries read; faults are noted in the context."""
+        feed = copy.copy(self)
+        feed.components, feed.basis = components, basis
+        address = f"feeds.{self.name}"
+        forms = [form for form in (*FORMS, "flows") if form in self.raw]
+        plain = {key: value for key, value in self.raw.items() if key not in (*FORMS, "flows")}
+        context = context.knowing(component=components.names)
+        feed.values = read_values(ENTRIES, plain, address, context)
+        if len(forms) != 1:
+            context.fault(
+                f"{address}.{forms[1]}" if forms else f"{address}.fractions",
+                f"composition is given {'by ' + ' and '.join(forms) if forms else 'in no form'}",
+                f"give one of {', '.join((*FORMS, 'flows'))}",
+            )
+            return feed
+        feed.form = forms[0]
+        if feed.form == "flows":
+            own = read_values((_FLOW,), {"flows": self.raw["flows"]}, address, context)
+            feed.values.numbers.update(own.numbers)
+            feed.values.sorts.update(own.sorts)
+            feed.values.entries.update(own.entries)
+            if "flow" in self.raw:
+                context.fault(f"{address}.flow", "flow and flows are both given", "keep one of them")
+        else:
+            if "flow" not in self.raw:
+                context.fault(f"{address}.flow", "entry is missing", 'add flow = "10 mol/s", or give flows by component')
+            feed._read_parts(address, context)
+        feed._check(address, context)
+        return feed
+
+    def _read_parts(self, address: str, context: Context) -> None:
+        table = self.raw[self.form]
+        where = f"{address}.{self.form}"
+        if not isinstance(table, Mapping) or not table:
+            context.fault(where, "is no table of components", f'write {self.form} = {{ name = 0.02, other = "rest" }}')
+            return
+        values, faults = self.values, len(context.faults)
+        for name, raw in table.items():
+            place = f"{where}.{name}"
+            if name not in self.components.index:
+                context.fault(place, f"unknown component '{name}'", nearest(name, self.components.names))
+            elif raw == "rest":
+                if self.rest:
+                    context.fault(place, f"'{self.rest}' is the rest already", "let one component alone be the rest")
+                self.rest = name
+            else:
+                number = read_number(raw, _PART, place, context)
+                if number is not None:
+                    value, sort = number
+                    if sort == "molar mass":  # mass of the component per mol of gas, from mg/Nm3
+                        value = self._from_concentration(value, name, place, context)
+                    values.numbers[f"{self.form}.{name}"] = value
+                    values.sorts[f"{self.form}.{name}"] = "number"
+                    values.entries[f"{self.form}.{name}"] = _PART
+        if len(context.faults) > faults:
+            return
+        total = sum(values.group(self.form)[name] for name in self._summed())
+        if self.rest and total > 1.0 + SUM_TOLERANCE:
+            context.fault(where, f"the given parts sum to {total:g}, which leaves no rest", "make them sum to less than 1")
+        elif not self.rest and abs(total - 1.0) > SUM_TOLERANCE:
+            context.fault(where, f"the parts sum to {total:g}", 'make them sum to 1, or write "rest" for one of them')
+
+    def _from_concentration(self, value: float, name: str, place: str, context: Context) -> float:
+        mass = self.components[name].molar_mass
+        if self.form != "fractions" or self.phase != "gas":
+            context.fault(place, "mass per normal volume is for the fractions of a gas", "write a mole fraction")
+        elif mass is None:
+            context.fault(f"components.{name}.molar_mass", "entry is missing", "add it, as a feed is given in mg/Nm3")
+        return value / (mass or 1.0)
+
+    def _summed(self) -> list[str]:
+        """Give the components whose parts sum to one: all, or those of the basis for ratios."""
+        names = list(self.values.group(self.form))
+        if self.form in ("fractions", "mass_fractions"):
+            return names
+        return [name for name in names if name in self._basis_names()]
+
+    def _basis_names(self) -> list[str]:
+        key = "loading" if self.form == "loadings" else self.phase
+        given = self.basis.get(key) or self.basis.get(self.phase)
+        if given:
+            return list(given)
+        return [item.name for item in self.components if item.stays_in == self.phase]
+
+    def _check(self, address: str, context: Context) -> None:
+        numbers, sorts = self.values.numbers, self.values.sorts
+        if sorts.get("flow") == "volume flow" and self.phase == "liquid":
+            context.fault(f"{address}.flow", "a liquid's volume needs a density", "give its molar or mass flow")
+        by_mass = self.form == "mass_fractions" or sorts.get("flow") == "mass flow"
+        for name in self.present():
+            own = by_mass or sorts.get(f"flows.{name}") == "mass flow"
+            if own and self.components[name].molar_mass is None:
+                context.fault(
+                    f"components.{name}.molar_mass", "entry is missing", f"add it, as feed '{self.name}' is given by mass"
+                )
+        if self.form == "loadings" and self.phase == "gas":
+            context.fault(f"{address}.loadings", "loadings are for liquids", "give ratios or fractions")
+        if "temperature" in numbers and not 20.0 <= numbers["temperature"] <= 3000.0:
+            context.fault(f"{address}.temperature", f"{numbers['temperature']:g} K is no temperature of a process stream", "check its unit")
+
+    def present(self) -> list[str]:
+        """Give the components that the feed can hold."""
+        names = list(self.values.group(self.form))
+        return [name for name in self.components.names if name in names or name == self.rest]
+
+    def addresses(self) -> dict[str, str]:
+        """Give the address of every number by its local name."""
+        return {key: f"feeds.{self.name}.{key}" for key in self.values.numbers}
+
+    def stream(self, numbers: Mapping[str, Any], changed: frozenset[str] = frozenset()) -> Stream:
+        """Give the stream.
+
+        Parameters
+        ----------
+        numbers : mapping of str to float or (...,) array
+            SI numbers by local name; complex numbers allowed.
+        changed : frozenset of str
+            Local names of fractions that were set anew; without a rest the others are scaled.
+
+        Returns
+        -------
+        Stream
+            State (..., C + 2).
+        """
+        shape = np.broadcast_shapes(*(np.shape(value) for value in numbers.values()))
+        parts = {
+            name: np.asarray(numbers[f"{self.form}.{name}"])
+            for name in self.components.names
+            if f"{self.form}.{name}" in numbers
+        }
+        if self.form == "flows":
+            amounts = {
+                name: value / self.components[name].molar_mass
+                if self.values.sorts[f"flows.{name}"] == "mass flow"
+                else value
+                for name, value in parts.items()
+            }
+        else:
+            amounts = self._scaled(self._complete(parts, changed), numbers)
+        kind = np.result_type(float, *(np.asarray(value) for value in amounts.values()))
+        flows = np.zeros((*shape, len(self.components)), dtype=kind)
+        for name, value in amounts.items():
+            flows[..., self.components.index[name]] = value
+        return Stream.of(flows, np.asarray(numbers["temperature"]), np.asarray(numbers["pressure"]), self.phase)
+
+    def _complete(self, parts: dict[str, Any], changed: frozenset[str]) -> dict[str, Any]:
+        """Give parts in proportion to moles."""
+        names = self._summed()
+        if self.rest:
+            parts = {**parts, self.rest: 1.0 - sum(parts[name] for name in names)}
+        else:
+            moved = [name for name in names if f"{self.form}.{name}" in changed]
+            others = [name for name in names if name not in moved]
+            if moved and others:
+                left = 1.0 - sum(parts[name] for name in moved)
+                now = sum(self.values.numbers[f"{self.form}.{name}"] for name in others)
+                if now > 0:
+                    parts = {**parts, **{name: parts[name] * left / now for name in others}}
+        if self.form == "mass_fractions":
+            parts = {name: value / self.components[name].molar_mass for name, value in parts.items()}
+        return parts
+
+    def _scaled(self, parts: dict[str, Any], numbers: Mapping[str, Any]) -> dict[str, Any]:
+        flow, sort = np.asarray(numbers["flow"]), self.values.sorts["flow"]
+        if sort == "mass flow":
+            per = sum(value * self.components[name].molar_mass for name, value in parts.items())
+        else:
+            per = sum(parts.values())
+        if sort == "volume flow":
+            flow = flow * numbers["pressure"] / (R * numbers["temperature"])
+        return {name: value * (flow / per) for name, value in parts.items()}

@@ -1,0 +1,99 @@
+"""What a run says: streams, units and quantities of its states, and their derivatives along its extra inputs."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from leanloop.equilibrium.base import COMPLEX_STEP
+from leanloop.flowsheet.quantity import Formula
+from leanloop.flowsheet.run import Run
+from leanloop.stream import Stream
+
+
+class View:
+    """Look-ups into a run.
+
+    Parameters
+    ----------
+    run : Run
+    moved : bool
+        Whether the states are moved by a complex step along the run's extra inputs, so that
+        imaginary parts are derivatives; arrays then lead with the seed axis E.
+    """
+
+    def __init__(self, run: Run, moved: bool = False) -> None:
+        self.run, self.moved = run, moved
+        self._units: dict[str, dict[str, Any]] = {}
+
+    def stream(self, name: str) -> Stream:
+        """Give a stream, states (M, C + 2) or (E, M, C + 2)."""
+        state = self.run.states[name]
+        if self.moved:
+            way = self.run.ways.get(name)
+            state = state + 1j * COMPLEX_STEP * (np.zeros((len(self.run.extra), *state.shape)) if way is None else way)
+        return Stream(state, self.run.plan.phases[name])
+
+    def numbers(self, unit: str) -> dict[str, Any]:
+        """Give the numbers of a unit by local name."""
+        run = self.run
+        addresses = run.plan.addresses[unit]
+        numbers = run.inputs.of(addresses)
+        if self.moved:
+            for local, address in addresses.items():
+                if address in run.extra:
+                    way = np.zeros((len(run.extra), run.inputs.cases))
+                    way[run.extra.index(address)] = 1.0
+                    numbers[local] = numbers[local] + 1j * COMPLEX_STEP * way
+        return numbers
+
+    def memory(self, unit: str) -> dict[str, np.ndarray]:
+        """Give the state inside a unit."""
+        run, out = self.run, {}
+        for node, memory in run.memory.items():
+            if node[1] == unit:
+                out.update(memory)
+                for key, way in run.memory_ways.get(node, {}).items() if self.moved else ():
+                    out[key] = memory[key] + 1j * COMPLEX_STEP * way
+        return out
+
+    def sides(self, unit: str) -> tuple[dict[str, Stream], dict[str, Stream]]:
+        """Give the inlets and outlets of a unit by label."""
+        own = self.run.plan.units[unit]
+        return (
+            {label: self.stream(name) for label, name in own.inlets.items()},
+            {label: self.stream(name) for label, name in own.outlets.items()},
+        )
+
+    def unit(self, name: str) -> Mapping[str, Any]:
+        """Give what a unit reports."""
+        if name not in self._units:
+            unit = self.run.plan.units[name]
+            with np.errstate(all="ignore"):
+                found = unit.results(*self.sides(name), self.numbers(name), self.memory(name))
+            self._units[name] = {"kind": unit.kind, **found}
+        return self._units[name]
+
+
+def value(run: Run, quantity: Formula) -> np.ndarray:
+    """Give a quantity, (M,) or (M, N); NaN where undefined."""
+    view = View(run)
+    with np.errstate(all="ignore"):
+        found = quantity(view.stream, view.unit)
+    return np.full(run.inputs.cases, np.nan) if found is None else found
+
+
+def derivatives(run: Run, quantity: Formula) -> np.ndarray:
+    """Give the total derivatives of a quantity along the run's extra inputs, (E, M) or (E, M, N)."""
+    view = View(run, moved=True)
+    with np.errstate(all="ignore"):
+        found = quantity(view.stream, view.unit)
+    if found is None:
+        return np.full((len(run.extra), run.inputs.cases), np.nan)
+    found = np.asarray(found)
+    imaginary = found.imag if np.iscomplexobj(found) else np.zeros(found.shape)
+    if imaginary.ndim and imaginary.shape[0] != len(run.extra):
+        imaginary = np.broadcast_to(imaginary, (len(run.extra), *imaginary.shape))
+    return imaginary / COMPLEX_STEP

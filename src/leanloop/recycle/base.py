@@ -1,0 +1,86 @@
+"""Contract of the recycle methods: the next x for x = g(x), on plain vectors and the case axis."""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from dataclasses import dataclass, field
+from typing import ClassVar
+
+import numpy as np
+
+State = dict[str, np.ndarray]
+
+
+@dataclass(frozen=True)
+class Trial:
+    """One pass: what a method sees of it.
+
+    Parameters
+    ----------
+    x : (m, n)
+        Vector that went in.
+    g : (m, n)
+        Vector that came out.
+    jacobian : (m, n, n) or None
+        dg_i/dx_j, where the method asks for it.
+    error : (m,)
+        The driver's measure of g - x; converged at the tolerance.
+    scale : (m, n)
+        What a difference in each component is measured by.
+    low : (n,)
+        Lower bounds that x must keep, -inf for none.
+    """
+
+    x: np.ndarray
+    g: np.ndarray
+    jacobian: np.ndarray | None
+    error: np.ndarray
+    scale: np.ndarray
+    low: np.ndarray = field(default_factory=lambda: np.array(-np.inf))
+
+
+class RecycleMethod(ABC):
+    """Frozen configuration of a method; what it remembers of a run goes in and out.
+
+    A method proposes; it never judges convergence, which is the driver's alone.
+
+    Attributes
+    ----------
+    name : str
+    needs_jacobian : bool
+    most_passes : int
+        Passes allowed where the user does not say.
+    """
+
+    name: ClassVar[str] = ""
+    needs_jacobian: ClassVar[bool] = False
+    most_passes: ClassVar[int] = 50
+
+    def begin(self, x: np.ndarray) -> State:
+        """Give the state before the first pass.
+
+        Parameters
+        ----------
+        x : (m, n)
+
+        Returns
+        -------
+        dict of str to (m, ...) array
+            The driver drops the rows of cases that are done.
+        """
+        return {}
+
+    @abstractmethod
+    def propose(self, trial: Trial, state: State) -> tuple[np.ndarray, State]:
+        """Give the next x.
+
+        Parameters
+        ----------
+        trial : Trial
+        state : dict of str to (m, ...) array
+
+        Returns
+        -------
+        x : (m, n)
+        state : dict of str to (m, ...) array
+        """

@@ -1,0 +1,1 @@
+"""Flowsheet files."""

@@ -1,0 +1,18 @@
+"""Unit kinds by name; one file each, one line here."""
+
+from leanloop.registry import Registry
+
+KINDS = Registry(
+    "unit kind",
+    "leanloop.units",
+    {
+        "absorber": "leanloop.units.absorber:Absorber",
+        "stripper": "leanloop.units.stripper:Stripper",
+        "mixer": "leanloop.units.mixer:Mixer",
+        "splitter": "leanloop.units.splitter:Splitter",
+        "heater": "leanloop.units.heater:Heater",
+        "cooler": "leanloop.units.cooler:Cooler",
+        "makeup": "leanloop.units.makeup:Makeup",
+    },
+    "leanloop.units.base:Unit",
+)

@@ -1,0 +1,360 @@
+"""Contract of the unit kinds: outlets from inlets, on the case axis, with derivatives."""
+
+from __future__ import annotations
+
+import copy
+from abc import ABC, abstractmethod
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any, ClassVar
+
+import numpy as np
+
+from leanloop.components import Components
+from leanloop.entries import Context, Entry, Values, read_values
+from leanloop.equilibrium.base import COMPLEX_STEP
+from leanloop.equilibrium.conditions import Conditions
+from leanloop.status import OK, Status, code
+from leanloop.stream import Stream
+
+Numbers = Mapping[str, Any]
+
+
+@dataclass(frozen=True)
+class Surroundings:
+    """What a unit is told of the flowsheet around it.
+
+    Parameters
+    ----------
+    components : Components
+    conditions : mapping of str to Conditions
+        Equilibrium tables by name.
+    basis : mapping of str to tuple of str
+        Components that ``[basis]`` names for ``"gas"``, ``"liquid"`` and ``"loading"``.
+    present : mapping of str to (C,) bool
+        By inlet label, which components its stream can hold.
+    phases : mapping of str to str
+        By inlet label.
+    """
+
+    components: Components
+    conditions: Mapping[str, Conditions]
+    basis: Mapping[str, tuple[str, ...]]
+    present: Mapping[str, np.ndarray]
+    phases: Mapping[str, str]
+
+
+@dataclass
+class Evaluation:
+    """What one evaluation of a unit gives for M cases.
+
+    Parameters
+    ----------
+    outlets : dict of str to Stream
+        By outlet label; states (M, C + 2).
+    tangents : dict of str to (S, M, C + 2) or None
+        Derivatives of the outlet states along the S seeds; None for none at all.
+    status : (M,) int8
+    memory : dict of str to (M, ...) array
+        State inside the unit: the start of the next evaluation, and what its results need.
+    memory_tangents : dict of str to (S, M, ...) array
+    """
+
+    outlets: dict[str, Stream]
+    tangents: dict[str, np.ndarray | None]
+    status: np.ndarray
+    memory: dict[str, np.ndarray] = field(default_factory=dict)
+    memory_tangents: dict[str, np.ndarray] = field(default_factory=dict)
+
+
+class Unit(ABC):
+    """One piece of the flowsheet.
+
+    The constructor only stores; `read` and `connect` give bound copies.
+
+    Parameters
+    ----------
+    name : str
+    **raw : Any
+        Entries as a file would hold them; in Python plain SI numbers may stand for quantities.
+
+    Attributes
+    ----------
+    kind : str
+        Word for ``kind = `` in a file.
+    entries : tuple of Entry
+        Everything that may be written, ports included.
+    derivatives : str
+        ``"complex"``: `calculate` is a plain formula that takes complex numbers; ``"own"``:
+        `evaluate` is overridden and gives them; ``"difference"``: to be differenced.
+    scales : bool
+        Whether scaling all inlet flows (and flow inputs) scales all outlet flows.
+    inlets, outlets : dict of str to str
+        Stream names by label, once read. The label is the port's name, or the stream's own name
+        at a port that takes several.
+    """
+
+    kind: ClassVar[str] = ""
+    entries: ClassVar[tuple[Entry, ...]] = ()
+    derivatives: ClassVar[str] = "complex"
+    scales: ClassVar[bool] = True
+
+    def __init__(self, name: str, **raw: Any) -> None:
+        self.name, self.raw = name, raw
+        self.values = Values()
+        self.inlets: dict[str, str] = {}
+        self.outlets: dict[str, str] = {}
+        self.around: Surroundings | None = None
+        self.tables: Mapping[str, Conditions] = {}
+
+    # --- reading and connecting
+
+    def read(self, context: Context) -> Unit:
+        """Give a copy with its entries read; faults are noted in the context."""
+        unit = copy.copy(self)
+        address = f"units.{self.name}"
+        unit.inlets, unit.outlets = {}, {}
+        ports = [entry for entry in self.entries if entry.sort in ("inlet", "outlet")]
+        given = [self.raw.get(entry.name) for entry in ports if entry.sort == "outlet"]
+        outlets = [name for item in given for name in ([item] if isinstance(item, str) else item or [])]
+        context = context.knowing(outlet=[name for name in outlets if isinstance(name, str)])
+        unit.values = read_values(self.entries, self.raw, address, context)
+        for entry in ports:
+            names = unit.values.words.get(entry.name)
+            side = unit.inlets if entry.sort == "inlet" else unit.outlets
+            for stream in names if isinstance(names, tuple) else (names,) if names else ():
+                label = stream if entry.many else entry.name
+                if label in side:
+                    context.fault(f"{address}.{entry.name}", f"stream '{stream}' is named twice", "name each stream once")
+                side[label] = stream
+        unit.check(address, context)
+        return unit
+
+    def check(self, address: str, context: Context) -> None:
+        """Note faults that lie between entries; none by default."""
+
+    def connect(self, around: Surroundings, context: Context) -> Unit:
+        """Give a copy that knows its surroundings; faults are noted in the context."""
+        unit = copy.copy(self)
+        unit.around = around
+        return unit
+
+    def addresses(self) -> dict[str, str]:
+        """Give the address of every number that `calculate` takes, by its local name."""
+        return {key: f"units.{self.name}.{key}" for key in self.values.numbers}
+
+    # --- what the engine may know without calculating
+
+    def sections(self) -> list[tuple[tuple[str, ...], tuple[str, ...]]]:
+        """Give parts that can be calculated on their own: labels of their inlets and outlets."""
+        return [(tuple(self.inlets), tuple(self.outlets))]
+
+    def phase(self, outlet: str, phases: Mapping[str, str]) -> str | None:
+        """Give the phase of an outlet from those of the inlets; None while it is unknown."""
+        return next(iter(phases.values()), None)
+
+    def passes(self, inlet: str, outlet: str, components: Components, numbers: Numbers | None = None) -> np.ndarray:
+        """Tell which components can get from an inlet to an outlet.
+
+        Returns
+        -------
+        (C,) or (M, C) bool
+        """
+        return np.ones(len(components), dtype=bool)
+
+    def adds(self, components: Components) -> np.ndarray:
+        """Tell which components the unit itself can add.
+
+        Returns
+        -------
+        (C,) bool
+        """
+        return np.zeros(len(components), dtype=bool)
+
+    def holds(self, components: Components) -> np.ndarray:
+        """Tell the flow of which components the unit sets, whatever comes in.
+
+        Returns
+        -------
+        (C,) bool
+        """
+        return np.zeros(len(components), dtype=bool)
+
+    def leans_on(self, outlet: str, what: str) -> list[tuple[str, str]]:
+        """Tell what an outlet's temperature or pressure depends on.
+
+        Parameters
+        ----------
+        outlet : str
+        what : str
+            ``"temperature"`` or ``"pressure"``.
+
+        Returns
+        -------
+        list of (inlet, str)
+            With ``"flows"``, ``"temperature"`` or ``"pressure"`` of that inlet.
+        """
+        return [(inlet, part) for inlet in self.inlets for part in ("flows", "temperature", "pressure")]
+
+    # --- calculating
+
+    @abstractmethod
+    def calculate(self, inlets: Mapping[str, Stream], numbers: Numbers) -> dict[str, Stream]:
+        """Give the outlets.
+
+        Parameters
+        ----------
+        inlets : mapping of str to Stream
+            By label; states (..., C + 2).
+        numbers : mapping of str to float or (...,) array
+            SI numbers by local name.
+
+        Returns
+        -------
+        dict of str to Stream
+            By label. Inlets are left as they are.
+        """
+
+    def estimate(self, inlets: Mapping[str, Stream], numbers: Numbers) -> dict[str, Stream]:
+        """Give rough outlets for the start of a recycle; by default the calculated ones."""
+        return self.calculate(inlets, numbers)
+
+    def evaluate(
+        self,
+        inlets: Mapping[str, Stream],
+        numbers: Numbers,
+        memory: Mapping[str, np.ndarray] | None,
+        tangents: Mapping[str, np.ndarray | None],
+        number_tangents: Mapping[str, np.ndarray],
+        seeds: int,
+    ) -> Evaluation:
+        """Give the outlets and their derivatives along the seeds.
+
+        Parameters
+        ----------
+        inlets, numbers
+            As for `calculate`, for M cases.
+        memory : mapping or None
+            What the last evaluation left, or a prediction from it.
+        tangents : mapping of str to (S, M, C + 2) or None
+            Derivatives of the inlet states along the seeds.
+        number_tangents : mapping of str to (S, M)
+            Derivatives of numbers along the seeds; absent for none.
+        seeds : int
+            S; 0 where no derivatives are asked for.
+
+        Returns
+        -------
+        Evaluation
+        """
+        outlets = self.calculate(inlets, numbers)
+        moved = any(item is not None for item in tangents.values()) or bool(number_tangents)
+        if seeds and moved and self.derivatives == "complex":
+            found = self._complex_step(inlets, numbers, tangents, number_tangents)
+        elif seeds and moved:
+            found = self._difference(inlets, numbers, outlets, tangents, number_tangents, seeds)
+        else:
+            found = dict.fromkeys(outlets)
+        return Evaluation(outlets, found, outlet_status(outlets))
+
+    def _complex_step(
+        self, inlets: Mapping[str, Stream], numbers: Numbers, tangents: Mapping[str, Any], number_tangents: Mapping[str, Any]
+    ) -> dict[str, np.ndarray | None]:
+        step = 1j * COMPLEX_STEP
+        moved = {
+            label: stream if tangents.get(label) is None else Stream(stream.state + step * tangents[label], stream.phase)
+            for label, stream in inlets.items()
+        }
+        shifted = {key: numbers[key] + step * way for key, way in number_tangents.items()}
+        found = self.calculate(moved, {**numbers, **shifted})
+        return {
+            label: stream.state.imag / COMPLEX_STEP if np.iscomplexobj(stream.state) else None
+            for label, stream in found.items()
+        }
+
+    def _difference(
+        self,
+        inlets: Mapping[str, Stream],
+        numbers: Numbers,
+        outlets: Mapping[str, Stream],
+        tangents: Mapping[str, Any],
+        number_tangents: Mapping[str, Any],
+        seeds: int,
+    ) -> dict[str, np.ndarray | None]:
+        """Difference by each inlet variable and number, then chain; three points on one side at zero."""
+        found = {label: np.zeros((seeds, *stream.state.shape)) for label, stream in outlets.items()}
+
+        def add(value: np.ndarray, size: np.ndarray, way: np.ndarray, call: Any) -> None:
+            step = 1e-5 * np.maximum(np.abs(value), 1e-3 * size)
+            inside = np.abs(value) >= step
+            high, low = call(value + step), call(np.where(inside, value - step, value + 2 * step))
+            for label, base in outlets.items():
+                central = (high[label].state - low[label].state) / (2 * step)[:, None]
+                sided = (4 * high[label].state - 3 * base.state - low[label].state) / (2 * step)[:, None]
+                slope = np.where(inside[:, None], central, sided)
+                found[label] += way[..., None] * slope
+
+        for label, stream in inlets.items():
+            way = tangents.get(label)
+            if way is None:
+                continue
+            for place in np.flatnonzero(way.any(axis=(0, 1))):
+                size = stream.total if place < stream.state.shape[-1] - 2 else np.abs(stream.state[:, place])
+
+                def at_inlet(value: np.ndarray, label: str = label, place: int = place) -> dict[str, Stream]:
+                    state = inlets[label].state.copy()
+                    state[:, place] = value
+                    return self.calculate({**inlets, label: Stream(state, inlets[label].phase)}, numbers)
+
+                add(stream.state[:, place], size, way[..., place], at_inlet)
+        for key, way in number_tangents.items():
+            value = np.broadcast_to(np.asarray(numbers[key], dtype=float), way.shape[1:])
+            add(value, np.abs(value) + 1e-9, way, lambda number, key=key: self.calculate(inlets, {**numbers, key: number}))
+        return found
+
+    # --- reporting
+
+    def added(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers
+    ) -> np.ndarray | None:
+        """Give what the unit adds from outside, (..., C) mol/s; None for nothing."""
+        return None
+
+    def results(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]
+    ) -> dict[str, Any]:
+        """Give what a result reports of the unit: ``results`` and, for columns, ``profile``.
+
+        Formulas take complex numbers, so that sensitivities of every reported figure are exact.
+
+        Returns
+        -------
+        dict
+            Leaves (...,) or (..., N) arrays, None for what is not known; keys may be nested.
+        """
+        return {"results": {}}
+
+    def cautions(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]
+    ) -> list[str]:
+        """Say in sentences what a careful reader of the result must know."""
+        return []
+
+
+def outlet_status(outlets: Mapping[str, Stream]) -> np.ndarray:
+    """Judge outlets: finite, and no flow below zero.
+
+    Parameters
+    ----------
+    outlets : mapping of str to Stream
+
+    Returns
+    -------
+    (M,) int8
+    """
+    status = None
+    for stream in outlets.values():
+        good = np.isfinite(stream.state).all(axis=-1)
+        found = np.where(good, OK, code(Status.not_finite))
+        status = found if status is None else np.maximum(status, found)
+    return status
