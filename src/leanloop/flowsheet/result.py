@@ -325,7 +325,7 @@ class Result:
 
             def wide(part: Part, key: str, loops: dict = loops) -> np.ndarray:
                 loop = loops[id(part)]
-                full = np.full(len(part.cases), np.nan)
+                full = np.zeros(len(part.cases), dtype=int) if key == "passes" else np.full(len(part.cases), np.nan)
                 if loop is not None:
                     full[loop.cases] = getattr(loop.outcome, key)
                 return full
@@ -400,8 +400,8 @@ class Result:
 def _worst(values: list[Any], result: Result) -> Any:
     if not values:
         return np.zeros(result.cases) if result.axis else 0
-    stacked = np.max(np.stack([np.asarray(item, dtype=float) for item in values]), axis=0)
-    return stacked if result.axis else float(stacked)
+    stacked = np.max(np.stack([np.asarray(item) for item in values]), axis=0)
+    return stacked if result.axis else stacked[()]
 
 
 def plain(item: Any) -> Any:

@@ -10,7 +10,7 @@ from typing import Any
 from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 
-LATER = ("heat_data", "limits", "studies", "sizing")
+ELSEWHERE = ("heat_data", "limits", "studies", "sizing")  # for other questions than a solve
 
 
 def load(path: str | Path) -> dict[str, Any]:
@@ -74,7 +74,7 @@ def change(data: dict[str, Any], settings: Iterable[str], source: str = "") -> d
             value = text.strip()
         table: Any = data
         *heads, last = address.split(".")
-        if heads[:1] in ([], ["title"]) and address != "title" or (heads and heads[0] not in (*SECTIONS, *LATER)):
+        if heads[:1] in ([], ["title"]) and address != "title" or (heads and heads[0] not in (*SECTIONS, *ELSEWHERE)):
             faults.append(Fault(address, "leads nowhere", nearest(address.split(".")[0], SECTIONS)))
             continue
         for number, head in enumerate(heads):
@@ -120,9 +120,7 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
     data = change(load(path), settings, name)
     faults = []
     for key in data:
-        if key in LATER:
-            faults.append(Fault(key, "is not used by this version", "take this section away"))
-        elif key not in SECTIONS:
+        if key not in (*SECTIONS, *ELSEWHERE):
             faults.append(Fault(key, f"unknown section '{key}'", nearest(key, SECTIONS)))
     try:
         sheet = Flowsheet(

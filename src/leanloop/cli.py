@@ -1,0 +1,101 @@
+"""The command line: arguments, files, exit status."""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+from collections.abc import Sequence
+from typing import NoReturn
+
+from leanloop import __version__
+from leanloop.errors import Fault, InputError, LeanloopError
+from leanloop.output import json, text
+from leanloop.textfile.reader import read
+
+REACHED, NOT_REACHED, WRONG_INPUT = 0, 1, 2
+
+
+class _Parser(argparse.ArgumentParser):
+    """A parser that says what is wrong in the same form as everything else."""
+
+    def error(self, message: str) -> NoReturn:
+        raise InputError([Fault("command line", message, f"see {self.prog} --help")])
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = _Parser(prog="leanloop", description="Absorber and stripper on one circulating solvent.")
+    parser.add_argument("--version", action="version", version=f"leanloop {__version__}")
+    commands = parser.add_subparsers(dest="command", metavar="COMMAND", required=True, parser_class=_Parser)
+    solve = commands.add_parser("solve", help="solve a flowsheet and report it")
+    solve.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
+    solve.add_argument(
+        "--set", dest="settings", action="append", default=[], metavar="ADDRESS=VALUE", help="change an entry of the file"
+    )
+    solve.add_argument("--json", metavar="PATH", help="write the result as JSON; - for standard output, and nothing else there")
+    check = commands.add_parser("check", help="read a flowsheet and show its order, loops and tears; solve nothing")
+    check.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
+    check.add_argument("--json", metavar="PATH", help="write what was found as JSON; - for standard output")
+    return parser
+
+
+def _solve(arguments: argparse.Namespace) -> int:
+    result = read(arguments.file, arguments.settings).solve()
+    if arguments.json:
+        json.write(result.to_dict(), arguments.json)
+    if arguments.json != "-":
+        sys.stdout.write(text.report(result))
+    return REACHED if result.converged else NOT_REACHED
+
+
+def _check(arguments: argparse.Namespace) -> int:
+    sheet = read(arguments.file)
+    found = sheet.check()
+    if arguments.json:
+        json.write(found, arguments.json)
+    if arguments.json != "-":
+        sys.stdout.write(text.structure(sheet, found))
+    return REACHED
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run a command.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        Those of the process by default.
+
+    Returns
+    -------
+    int
+        0 everything was reached, 1 the numbers did not get there, 2 the input is wrong.
+    """
+    source = "leanloop"
+    try:
+        parsed = _parser().parse_args(arguments)
+        source = parsed.file
+        code = {"solve": _solve, "check": _check}[parsed.command](parsed)
+        sys.stdout.flush()
+        return code
+    except InputError as error:
+        for fault in error.faults:
+            sys.stderr.write(f"{error.source or source}: {_one_line(str(fault))}\n")
+        return WRONG_INPUT
+    except LeanloopError as error:
+        sys.stderr.write(f"{source}: {_one_line(str(error))}\n")
+        return WRONG_INPUT
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return NOT_REACHED
+    except OSError as error:
+        name = error.filename if error.filename is not None else "output"
+        sys.stderr.write(f"{source}: {name}: cannot be written: {error.strerror}; name a place that can\n")
+        return WRONG_INPUT
+    except KeyboardInterrupt:
+        sys.stderr.write(f"{source}: interrupted\n")
+        return NOT_REACHED
+
+
+def _one_line(message: str) -> str:
+    return " ".join(message.split())

@@ -1,0 +1,1 @@
+"""What a person or a program reads of a result."""
