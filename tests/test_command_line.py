@@ -127,6 +127,13 @@ def answer(example):
     return solved(example)
 
 
+@pytest.fixture(scope="module")
+def checked(example):
+    done = run("check", example, "--json", "-")
+    assert (done.returncode, done.stderr) == (0, "")
+    return strict_json(done.stdout)
+
+
 class TestSolve:
     def test_prints_text(self, example):
         done = run("solve", example)
@@ -298,12 +305,6 @@ class TestSet:
 
 
 class TestCheck:
-    @pytest.fixture(scope="class")
-    def checked(self, example):
-        done = run("check", example, "--json", "-")
-        assert (done.returncode, done.stderr) == (0, "")
-        return strict_json(done.stdout)
-
     def test_keys(self, checked):
         assert set(checked) >= {"order", "loops", "solved_together", "tears", "freedom"}
 

@@ -136,9 +136,11 @@ class TestNonDilute:
 
 @pytest.mark.parametrize("name", ["N1", "N2", "N3"])  # N6 and N10 shrink by 0.9 and 0.9999 a pass
 def test_substitution_where_it_is_quick(tmp_path, name):
+    # A loop is judged by its open balance against what is fed, and N3 feeds a thousand times what
+    # its lean solvent carries: 1e-8 of the lean loading asks for 1e-12 of the feed.
     case = NON_DILUTE[name]
     for tear in scenes.tear_candidates():
-        text = non_dilute_text(case, method="substitution", tears=[tear])
+        text = non_dilute_text(case, method="substitution", tears=[tear], tolerance=1e-12)
         check_non_dilute(scenes.solve(tmp_path, text), case, 1e-8)
 
 

@@ -192,7 +192,7 @@ def gas_derivatives(stages: Stages, at: Phases) -> np.ndarray:
         return out
     unit = np.eye(parts + 1)[:, None, None, :]
     out = gas_change(stages, at, unit[..., 0], unit[..., 1:], 0.0, 0.0, 0.0, 0.0)
-    return np.moveaxis(np.broadcast_to(out, (parts + 1, cases, count, parts)), 0, 2)
+    return np.moveaxis(np.broadcast_to(out, (parts + 1, cases, count, parts)), 0, 2).copy()
 
 
 def rows(inert: np.ndarray | float, feeds: np.ndarray | float, gas_flow: np.ndarray) -> np.ndarray:

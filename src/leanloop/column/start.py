@@ -56,6 +56,9 @@ def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
         Liquid flows l.
     """
     cases, count, parts = feeds.shape
+    lost = ~(np.isfinite(ratio).all(axis=(1, 2)) & np.isfinite(feeds).all(axis=(1, 2)))
+    if lost.any():  # the cases are one long system, in which one such case would spoil the others
+        ratio, feeds = np.where(lost[:, None, None], 0.0, ratio), np.where(lost[:, None, None], 0.0, feeds)
     s = np.ascontiguousarray(np.moveaxis(ratio, 2, 1))
     lower = np.full((cases, parts, count), -1.0)
     lower[..., -1] = 0.0

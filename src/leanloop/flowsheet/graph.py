@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import NamedTuple
 
 import networkx as nx
 import numpy as np
@@ -15,7 +16,24 @@ from leanloop.feed import Feed
 from leanloop.flowsheet.tearing import calculation_order, least_tears, partition
 from leanloop.units.base import Unit
 
-Node = tuple[str, str, int]  # "feed" or "unit", its name, number of the section
+
+class Node(NamedTuple):
+    """A feed, or one section of a unit.
+
+    Attributes
+    ----------
+    sort : str
+        ``"feed"`` or ``"unit"``.
+    name : str
+    section : int
+    """
+
+    sort: str
+    name: str
+    section: int
+
+    def __str__(self) -> str:
+        return self.name
 
 
 @dataclass
@@ -81,8 +99,15 @@ class Structure:
         """Streams that leave the flowsheet."""
         return [stream for stream in self.makers if stream not in self.takers]
 
-    def check(self, context: Context) -> None:
-        """Note streams that are fed twice, taken twice, or made by nobody."""
+    def check(self, context: Context, unsettled: set[str]) -> None:
+        """Note streams that are given twice, taken twice, or given by nobody.
+
+        Parameters
+        ----------
+        context : Context
+        unsettled : set of str
+            Streams that faulty units may connect; nothing is said of them.
+        """
         made: dict[str, str] = {name: f"feeds.{name}" for name in self.feeds}
         taken: dict[str, str] = {}
         for unit in self.units.values():
@@ -97,10 +122,10 @@ class Structure:
                         )
                     known.setdefault(stream, where)
         for stream, where in taken.items():
-            if stream not in made:
+            if stream not in made and stream not in unsettled:
                 context.fault(where, f"nothing gives stream '{stream}'", nearest(stream, made))
         for name in self.feeds:
-            if name not in taken:
+            if name not in taken and name not in unsettled:
                 context.fault(f"feeds.{name}", "no unit takes this feed", "connect it or take it away")
 
     def phases(self) -> dict[str, str]:
@@ -192,11 +217,11 @@ class Structure:
         maker: dict[str, Node] = {}
         taker: dict[str, list[Node]] = {}
         for name in self.feeds:
-            graph.add_node(("feed", name, 0))
-            maker[name] = ("feed", name, 0)
+            maker[name] = Node("feed", name, 0)
+            graph.add_node(maker[name])
         for unit in self.units.values():
             for number, (inlets, outlets) in enumerate(unit.sections()):
-                node = ("unit", unit.name, number)
+                node = Node("unit", unit.name, number)
                 graph.add_node(node)
                 for label in outlets:
                     maker[unit.outlets[label]] = node

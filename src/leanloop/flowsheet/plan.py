@@ -68,7 +68,7 @@ class Plan:
         self.ports: dict[Node, tuple[dict[str, str], dict[str, str]]] = {}
         for unit in units.values():
             for number, (inlets, outlets) in enumerate(unit.sections()):
-                self.ports["unit", unit.name, number] = (
+                self.ports[Node("unit", unit.name, number)] = (
                     {label: unit.inlets[label] for label in inlets},
                     {label: unit.outlets[label] for label in outlets},
                 )

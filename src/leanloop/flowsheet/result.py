@@ -81,7 +81,7 @@ class Result:
             out = np.empty((self.cases, *pieces[0].shape[1:]), dtype=np.result_type(*pieces))
             for part, piece in zip(self.parts, pieces, strict=True):
                 out[part.cases] = piece
-            return out if self.axis else out[0]
+            return out if self.axis else (out[0] if out.ndim > 1 else out.tolist()[0])
         rows: list[Any] = [None] * self.cases
         for part, piece in zip(self.parts, pieces, strict=True):
             for case, row in zip(part.cases, piece, strict=True):
@@ -222,7 +222,7 @@ class Result:
         Parameters
         ----------
         quantity : str
-            Address of a quantity of a stream or unit.
+            Address of a quantity of a stream or unit, or ``requirements.NAME.free_value``.
         number : str
             Address of a numeric input.
 
@@ -252,6 +252,9 @@ class Result:
         sheet = self.sheet
         faults, formulas = [], {}
         for address in quantities:
+            name, _, key = address.removeprefix("requirements.").rpartition(".")
+            if address.startswith("requirements.") and name in sheet.requirements and key in ("free_value", "value"):
+                continue
             try:
                 formulas[address] = formula(address, sheet.plan.phases, sheet.plan.units, sheet.bases)[0]
             except AddressError as error:
@@ -267,7 +270,7 @@ class Result:
         for part in self.parts:
             run = sheet.linearised(part, numbers)
             for q in quantities:
-                slopes = derivatives(run, formulas[q])[: len(numbers)]
+                slopes = (derivatives(run, formulas[q]) if q in formulas else self._followed(run, q))[: len(numbers)]
                 slopes[:, ~solved(part.run.status)] = np.nan
                 for place, n in enumerate(numbers):
                     found[q, n].append(slopes[place])
@@ -278,6 +281,14 @@ class Result:
             if not self.axis and np.ndim(out[key]) == 0:
                 out[key] = float(out[key])
         return out
+
+    def _followed(self, run: Run, address: str) -> np.ndarray:
+        """Give the derivatives of a requirement's value or freed input along a linearised run's inputs."""
+        name, _, key = address.removeprefix("requirements.").rpartition(".")
+        item = self.sheet.requirements[name]
+        if key == "value":
+            return derivatives(run, item.quantity)
+        return np.ascontiguousarray(run.follow[item.free].T)
 
     # --- everything at once
 

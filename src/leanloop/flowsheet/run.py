@@ -99,6 +99,7 @@ class Run:
         self.status = np.full(cases, OK)
         self.culprit = np.full(cases, -1)
         self.loops: list[Loop] = []
+        self.follow: dict[str, np.ndarray] = {}  # (M, E) by freed input, once linearised
         self.evaluations = 0
 
     # --- one node

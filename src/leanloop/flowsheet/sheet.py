@@ -109,13 +109,14 @@ class Flowsheet:
             units_read[unit.name] = unit.read(known)
             units_read[unit.name].tables = self.conditions
         structure = Structure(self.components, self.feeds, units_read)
-        structure.check(known)
+        structure.check(known, self._unsettled(units, units_read))
         present, phases = structure.present(), structure.phases()
         surroundings = {"components": self.components, "conditions": self.conditions, "basis": self.basis}
         self.units = connect(units_read, structure, surroundings, present, phases, known)
         structure.units = self.units
         if not self.units:
-            known.fault("units", "there is no unit", "add [units.NAME] with a kind")
+            if not units:
+                known.fault("units", "there is no unit", "add [units.NAME] with a kind")
         self._check_loops(structure, present, known)
         settings_read = self._read_loop(loop, known)
         self._stop_on(known)
@@ -128,6 +129,10 @@ class Flowsheet:
         self.requirements = self._read_requirements(requirements, known)
         self._stop_on(known)
         self.settings, tears = settings_read
+        for place, tear in enumerate(tears):
+            if tear not in phases:
+                known.fault(f"loop.tears[{place}]", f"there is no stream '{tear}'", nearest(tear, phases))
+        self._stop_on(known)
         try:
             self.plan.arrange({name: self._tie(item) for name, item in self.requirements.items()}, tears)
         except ValueError as error:
@@ -207,6 +212,20 @@ class Flowsheet:
                 entries = {str(key): value for key, value in table.items() if key != "kind"}
                 out.append(KINDS.load(kind)(name, **entries))
         return out
+
+    @staticmethod
+    def _unsettled(units: Any, read: Mapping[str, Unit]) -> set[str]:
+        """Give the names that units with faulty ports mention: what they would connect is not known."""
+        names: set[str] = set()
+        tables = units.items() if isinstance(units, Mapping) else ((unit.name, unit.raw) for unit in units or ())
+        for name, table in tables:
+            if not isinstance(table, Mapping):
+                continue
+            ports = [entry for entry in read[name].entries if entry.sort in ("inlet", "outlet")] if name in read else []
+            if name not in read or any(entry.required and not read[name].values.words.get(entry.name) for entry in ports):
+                for item in table.values():
+                    names |= {part for part in (item if isinstance(item, list) else [item]) if isinstance(part, str)}
+        return names
 
     def _read_loop(self, loop: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
         values = read_values(LOOP, loop if loop is not None else {}, "loop", context)
@@ -525,13 +544,12 @@ class Flowsheet:
         right[~active] = 0.0
         follow = newton_step(np.eye(len(items)) - matrix, -right)  # (M, P, E)
         follow = np.where(np.isfinite(follow), follow, 0.0)
-        run.follow = getattr(run, "follow", [])
         for store in (run.ways, *run.memory_ways.values()):
             for key, way in store.items():
                 if way is not None:
                     store[key] = way + np.einsum("pm...,mpe->em...", way[places], follow)
         for number, item in enumerate(items):
-            run.follow.append((item.free, follow[:, number]))
+            run.follow[item.free] = follow[:, number]
 
     @staticmethod
     def taken(run: Run, rows: np.ndarray) -> Run:

@@ -26,9 +26,11 @@ class Splitter(Unit):
     def check(self, address: str, context: Context) -> None:
         """Shares must be complete and sum to one, or to less with one outlet unnamed."""
         shares = self.values.group("shares")
+        if not isinstance(self.raw.get("shares"), Mapping) or len(shares) < len(self.raw["shares"]):
+            return
         unnamed = [label for label in self.outlets if label not in shares]
         total = sum(shares.values())
-        if len(unnamed) > 1 and "shares" in self.raw:
+        if len(unnamed) > 1:
             context.fault(f"{address}.shares", f"no share for {', '.join(unnamed)}", "leave at most one outlet unnamed")
         elif not unnamed and self.outlets and abs(total - 1.0) > 1e-6:
             context.fault(f"{address}.shares", f"the shares sum to {total:g}", "make them sum to 1, or leave one outlet out")
