@@ -36,13 +36,44 @@ class Stream:
         pressure : (...,) Pa
         phase : str
         """
-        kind = np.result_type(flows, temperature, pressure)
-        shape = np.broadcast_shapes(flows.shape[:-1], np.shape(temperature), np.shape(pressure))
+        parts = (flows[..., 0], np.asarray(temperature), np.asarray(pressure))
+        kind = complex if flows.dtype.kind == "c" or any(part.dtype.kind == "c" for part in parts) else float
+        shape = parts[0].shape
+        if any(part.ndim and part.shape != shape for part in parts):
+            shape = np.broadcast_shapes(*(part.shape for part in parts))
         state = np.empty((*shape, flows.shape[-1] + 2), dtype=kind)
         state[..., :-2] = flows
         state[..., -2] = temperature
         state[..., -1] = pressure
         return cls(state, phase)
+
+    def at(self, temperature: np.ndarray) -> Stream:
+        """Give the same flows at another temperature.
+
+        Parameters
+        ----------
+        temperature : (...,) K
+        """
+        return self._with(slice(-2, -1), np.asarray(temperature)[..., None])
+
+    def carrying(self, flows: np.ndarray) -> Stream:
+        """Give other flows at the same temperature and pressure.
+
+        Parameters
+        ----------
+        flows : (..., C) mol/s
+        """
+        return self._with(slice(0, -2), flows)
+
+    def _with(self, part: slice, values: np.ndarray) -> Stream:
+        shape = self.state.shape[:-1]
+        if values.ndim > 1 and values.shape[:-1] != shape:
+            shape = np.broadcast_shapes(shape, values.shape[:-1])
+        complex_one = self.state.dtype.kind == "c" or values.dtype.kind == "c"
+        state = np.empty((*shape, self.state.shape[-1]), dtype=complex if complex_one else float)
+        state[:] = self.state
+        state[..., part] = values
+        return Stream(state, self.phase)
 
     @property
     def flows(self) -> np.ndarray:

@@ -47,10 +47,10 @@ class Band:
         item = self._store.itemsize
         # element (row i, column j) stands at store[j, lower + upper + i - j]; for column b of a
         # stage the 2n rows of the stage above and of its own are then a run that starts b earlier
-        start = self.lower + self.upper - n
-        self._runs = np.lib.stride_tricks.as_strided(
-            self._store[:, start:],
-            shape=(cases, stages, n, 2 * n),
+        self._runs = np.ndarray(
+            (cases, stages, n, 2 * n),
+            buffer=self._store,
+            offset=(self.lower + self.upper - n) * item,
             strides=(stages * n * width * item, n * width * item, (width - 1) * item, item),
         )
         self._cells = self._store.reshape(cases, stages, n, width)
@@ -59,22 +59,29 @@ class Band:
         self.singular = np.zeros(cases, dtype=bool)
         self.factorisations = 0
 
-    def fill(self, above: np.ndarray, own: np.ndarray) -> None:
-        """Set the matrix.
+    def fill(self, derivatives: np.ndarray, drag: np.ndarray) -> None:
+        """Set the matrix of stage equations whose gas flows have given derivatives.
+
+        Rows of a stage: the sum of its own gas flows less the first unknown, then, for each
+        component, gas flow from below less its own gas flow and its own liquid flow.
 
         Parameters
         ----------
-        above : (M, N, n, n) by [case, stage, unknown, row]
-            Derivatives of the rows of the stage above with respect to this stage's unknowns.
-        own : (M, N, n, n) by [case, stage, unknown, row]
-            Derivatives of the stage's own rows.
+        derivatives : (M, N, n, n - 1) by [case, stage, unknown, component]
+            Of the gas flows by the unknowns of their stage.
+        drag : (M,)
+            Taken from the diagonal of the component rows.
         """
-        n = self.shape[2]
-        self._runs[..., :n] = above
-        self._runs[..., n:] = own
-        self._runs[:, 0, :, :n] = 0.0
+        n, runs = self.shape[2], self._runs
+        runs[..., 1:n] = derivatives
+        runs[..., n] = derivatives.sum(axis=-1)
+        np.negative(derivatives, out=runs[..., n + 1 :])
+        diagonal = self._cells[..., self.lower + self.upper]
+        diagonal -= 1.0
+        if drag.any():
+            diagonal[..., 1:] -= drag[:, None, None]
+        runs[:, 0, :, :n] = 0.0
         self._cells[:, :-1, self._first :, -1] = 1.0
-        self._cells[:, -1, :, -1] = 0.0
 
     def isolate(self, cases: np.ndarray) -> None:
         """Put the identity in the rows of some cases.
@@ -88,12 +95,12 @@ class Band:
             self._cells[cases] = 0.0
             self._runs[cases, :, np.arange(n)[:, None], n + np.arange(n)[:, None]] = 1.0
 
-    def factor(self, above: np.ndarray, own: np.ndarray) -> np.ndarray:
+    def factor(self, derivatives: np.ndarray, drag: np.ndarray) -> np.ndarray:
         """Set and factorise the matrix.
 
         Parameters
         ----------
-        above, own : (M, N, n, n)
+        derivatives, drag
             As for `fill`.
 
         Returns
@@ -101,20 +108,19 @@ class Band:
         (M,) bool
             Cases that are singular or not finite; their rows are the identity now.
         """
-        bad = ~(np.isfinite(own).all(axis=(1, 2, 3)) & np.isfinite(above).all(axis=(1, 2, 3)))
+        bad = np.zeros(self.shape[0], dtype=bool)
+        if not _finite(derivatives):
+            bad = ~np.isfinite(derivatives).all(axis=(1, 2, 3))
         while True:
-            self.fill(above, own)
+            self._store[...] = 0.0
+            self.fill(derivatives, drag)
             self.isolate(bad)
             _, self._pivots, info = lapack.dgbtrf(self._store.T, self.lower, self.upper, overwrite_ab=1)
             self.factorisations += 1
             if info == 0:
                 break
             pivot = self._cells[..., self.lower + self.upper]
-            zero = ((pivot == 0.0) | ~np.isfinite(pivot)).any(axis=(1, 2))
-            if not (zero & ~bad).any():  # cannot be: info > 0 names a zero pivot
-                bad = np.ones_like(bad)
-                continue
-            bad = bad | zero
+            bad = bad | ((pivot == 0.0) | ~np.isfinite(pivot)).any(axis=(1, 2))
         self.singular = bad
         return bad
 
@@ -124,27 +130,25 @@ class Band:
         Parameters
         ----------
         right : (M, N, n) or (S, M, N, n)
-            Overwritten where memory allows.
+            Rows of cases that are set apart are overwritten.
 
         Returns
         -------
         array of the same shape
             Zero for the cases that `factor` set apart.
         """
-        shape = right.shape
-        several = right.reshape(-1, int(np.prod(self.shape)))
+        several = right.reshape(-1, self.shape[0] * self.shape[1] * self.shape[2])
         spoilt = self.singular
-        if spoilt.any() or not np.isfinite(several).all():
+        whole = _finite(several)
+        if spoilt.any() or not whole:
             view = several.reshape(-1, *self.shape)
             spoilt = spoilt | ~np.isfinite(view).all(axis=(0, 2, 3))
             view[:, spoilt] = 0.0
-        answer, _ = lapack.dgbtrs(
-            self._store.T, self.lower, self.upper, np.asfortranarray(several.T), self._pivots, overwrite_b=1
-        )
-        answer = np.ascontiguousarray(answer.T).reshape(-1, *self.shape)
-        if not np.isfinite(answer).all():
+        answer, _ = lapack.dgbtrs(self._store.T, self.lower, self.upper, several.T, self._pivots)
+        answer = answer.T
+        if not _finite(answer):
             answer = self._one_by_one(several.reshape(-1, *self.shape))
-        return answer.reshape(shape)
+        return answer.reshape(right.shape)
 
     def _one_by_one(self, right: np.ndarray) -> np.ndarray:
         """Solve case by case, for the rare overflow in one that would spoil the others."""
@@ -162,3 +166,8 @@ class Band:
             else:
                 self.singular[case] = True
         return answer
+
+
+def _finite(values: np.ndarray) -> bool:
+    """Tell quickly whether all is finite; a sum that overflows errs on the safe side."""
+    return bool(np.isfinite(values.sum()))

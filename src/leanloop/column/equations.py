@@ -226,29 +226,3 @@ def residual(stages: Stages, at: Phases) -> np.ndarray:
     out -= at.unknowns
     out[:, 1:, 1:] += at.unknowns[:, :-1, 1:]
     return out
-
-
-def blocks(derivatives: np.ndarray, drag: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Give the Jacobian's blocks for `leanloop.column.band.Band`.
-
-    Parameters
-    ----------
-    derivatives : (M, N, 1 + D, D)
-    drag : (M,) dimensionless
-        Reciprocal length of a step in time, in residence times of the liquid; 0 for the steady state.
-
-    Returns
-    -------
-    above, own : (M, N, 1 + D, 1 + D) by [case, stage, unknown, row]
-    """
-    shape = (*derivatives.shape[:3], derivatives.shape[2])
-    above, own = np.empty(shape), np.empty(shape)
-    above[..., 0] = 0.0
-    above[..., 1:] = derivatives
-    own[..., 0] = derivatives.sum(axis=-1)
-    own[..., 1:] = -derivatives
-    diagonal = np.arange(shape[-1])
-    own[..., diagonal, diagonal] -= 1.0
-    if drag.any():
-        own[..., diagonal[1:], diagonal[1:]] -= drag[:, None, None]
-    return above, own

@@ -8,7 +8,7 @@ on mole ratios, with G the flow of the gas's basis. Written so, a flow of zero i
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -25,11 +25,29 @@ class Law:
     models : sequence of D EquilibriumModel
     gas_basis, liquid_basis : (D,) bool
         Which distributing components count in the basis of a mole ratio.
+
+    Attributes
+    ----------
+    ratio : (D,) bool
+        Which models are given on mole ratios.
+    plain : bool
+        Whether none is.
+    proportional : bool
+        Whether no model depends on the liquid's composition.
     """
 
     models: Sequence[EquilibriumModel]
     gas_basis: np.ndarray
     liquid_basis: np.ndarray
+    ratio: np.ndarray = field(init=False)
+    plain: bool = field(init=False)
+    proportional: bool = field(init=False)
+
+    def __post_init__(self) -> None:
+        ratio = np.array([model.coordinates == "ratio" for model in self.models], dtype=bool)
+        object.__setattr__(self, "ratio", ratio)
+        object.__setattr__(self, "plain", not ratio.any())
+        object.__setattr__(self, "proportional", not any("liquid" in model.uses for model in self.models))
 
     def at(self, temperature: np.ndarray, pressure: np.ndarray, numbers: Sequence[Mapping[str, Any]]) -> BoundLaw:
         """Fix temperature, pressure and the models' numbers.
@@ -60,9 +78,7 @@ class BoundLaw:
 
     def __init__(self, law: Law, temperature: np.ndarray, pressure: np.ndarray, numbers: list[dict[str, Any]]) -> None:
         self.law, self.temperature, self.pressure, self.numbers = law, temperature, pressure, numbers
-        self.ratio = np.array([model.coordinates == "ratio" for model in law.models], dtype=bool)
-        self.plain = not self.ratio.any()
-        self.proportional = not any("liquid" in model.uses for model in law.models)
+        self.ratio, self.plain, self.proportional = law.ratio, law.plain, law.proportional
         self.k_dilute = np.empty((*np.shape(temperature), len(law.models)))
         for index, (model, own) in enumerate(zip(law.models, numbers, strict=True)):
             self.k_dilute[..., index] = model.ratio_at_zero(np.real(temperature), np.real(pressure), _real(own))

@@ -11,7 +11,6 @@ from leanloop.column.equations import (
     FIRST_MATERIAL_ROW,
     Phases,
     Stages,
-    blocks,
     gas_change,
     gas_derivatives,
     phases,
@@ -82,7 +81,7 @@ def _factor(derivatives: np.ndarray, drag: np.ndarray) -> tuple[list[tuple[slice
     for begin in range(0, cases, size):
         part = slice(begin, min(begin + size, cases))
         band = Band(part.stop - part.start, count, unknowns, FIRST_MATERIAL_ROW)
-        bad[part] = band.factor(*blocks(derivatives[part], drag[part]))
+        bad[part] = band.factor(derivatives[part], drag[part])
         bands.append((part, band))
     return bands, bad
 
@@ -90,9 +89,10 @@ def _factor(derivatives: np.ndarray, drag: np.ndarray) -> tuple[list[tuple[slice
 def _limited(unknowns: np.ndarray, step: np.ndarray, inert: np.ndarray, floor: np.ndarray) -> np.ndarray:
     """Add a step so that flows stay positive; gas vanishes only where nothing keeps it."""
     new = np.maximum(unknowns + step, STEP_LIMIT * unknowns)
-    new[..., 0] = np.maximum(new[..., 0], inert)
-    vanished = (inert == 0.0) & (new[..., 0] < 1e-4 * floor[:, None]) & (step[..., 0] <= 0.0)
-    new[..., 0] = np.where(vanished, 0.0, new[..., 0])
+    gas = new[..., 0]
+    np.maximum(gas, inert, out=gas)
+    if not inert.all():
+        gas[(inert == 0.0) & (gas < 1e-4 * floor[:, None]) & (step[..., 0] <= 0.0)] = 0.0
     return new
 
 
@@ -115,13 +115,18 @@ def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
     status = np.full(cases, OK)
     scale = stages.feeds.sum(axis=1)
     everything = scale.sum(axis=-1) + stages.gas_inert[:, 0] + stages.liquid_inert[:, -1]
-    given = np.isfinite(everything) & np.isfinite(stages.law.k_dilute).all(axis=(1, 2))
-    given &= (stages.feeds >= 0).all(axis=(1, 2)) & (stages.gas_inert >= 0).all(axis=1)
-    given &= (stages.liquid_inert >= 0).all(axis=1)
-    status[~given] = code(Status.not_finite)
+    least = min(
+        stages.feeds.min(initial=0.0), stages.gas_inert.min(initial=0.0), stages.liquid_inert.min(initial=0.0)
+    )
+    if not (least >= 0.0 and np.isfinite(everything.sum() + stages.law.k_dilute.sum())):
+        given = np.isfinite(everything) & np.isfinite(stages.law.k_dilute).all(axis=(1, 2))
+        given &= (stages.feeds >= 0).all(axis=(1, 2)) & (stages.gas_inert >= 0).all(axis=1)
+        given &= (stages.liquid_inert >= 0).all(axis=1)
+        status[~given] = code(Status.not_finite)
     wet = stages.liquid_inert[:, 0] + stages.feeds[:, 0].sum(axis=-1) > 1e-9 * everything
-    wet |= stages.liquid_inert.min(axis=1) > 0
-    status[given & ~wet] = code(Status.dry_stage)
+    if not wet.all():
+        wet |= stages.liquid_inert.min(axis=1) > 0
+        status[(status == OK) & ~wet] = code(Status.dry_stage)
     with np.errstate(all="ignore"):
         unknowns = start(stages) if guess is None else guess
         if guess is not None:
@@ -130,7 +135,9 @@ def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
                 unknowns = guess.copy()
                 index = np.flatnonzero(lost)
                 unknowns[index] = start(stages.take(index))
-        floors = FLOOR * np.concatenate([everything[:, None], np.where(scale > 0, scale, np.inf)], axis=1)
+        floors = np.empty((cases, parts + 1))
+        floors[:, 0] = FLOOR * everything
+        floors[:, 1:] = np.where(scale > 0, FLOOR * scale, np.inf)
         answer = _iterate(stages, unknowns, floors, status)
         _settle_traces(answer, scale)
     return answer
@@ -157,15 +164,16 @@ def _settle_traces(answer: Answer, scale: np.ndarray) -> None:
 def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray) -> Answer:
     """Iterate until a step of every case is rounding; the last factorisation holds all cases."""
     cases = len(unknowns)
-    unknowns = np.where(np.isfinite(floors)[:, None, :], unknowns, 0.0)
-    drag = np.zeros(cases)
-    first = np.zeros(cases)
+    absent = ~np.isfinite(floors)[:, None, :]
+    absent = absent if absent.any() else None
+    unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
+    drag, first = np.zeros(cases), np.zeros(cases)
     part: np.ndarray | None = None  # the unsolved cases, while they are few
     local, iterations = stages, 0
     while True:
         iterations += 1
-        own = np.arange(cases) if part is None else part
-        now, floor = unknowns[own], floors[own]
+        own = slice(None) if part is None else part
+        now, floor, failed = unknowns[own], floors[own], status[own] != OK
         at = phases(local, now)
         lead = residual(local, at)
         if iterations > PLAIN_ITERATIONS:
@@ -174,29 +182,41 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
             first[own] = np.where(first[own] == 0.0, merit, first[own])
             drag[own] = np.where(merit > 1e5, np.minimum(merit / first[own], 1.0), 0.0)
         derivatives = gas_derivatives(local, at)
-        failed = status[own] != OK
-        derivatives[failed] = np.nan
+        if failed.any():
+            derivatives[failed] = np.nan
         bands, bad = _factor(derivatives, drag[own])
-        step = np.empty_like(lead)
-        for piece, band in bands:
-            step[piece] = band.solve(-lead[piece])
-            bad[piece] |= band.singular
-        step = np.where(np.isfinite(floor)[:, None, :], step, 0.0)
+        if len(bands) == 1:
+            step = bands[0][1].solve(np.negative(lead, out=lead))
+            bad = bad | bands[0][1].singular
+        else:
+            step = np.empty_like(lead)
+            for piece, band in bands:
+                step[piece] = band.solve(-lead[piece])
+                bad[piece] |= band.singular
+        if absent is not None:
+            step = np.where(absent[own], 0.0, step)
         new = _limited(now, step, local.gas_inert, floor[:, 0])
-        size = (np.abs(step) / (np.abs(new) + floor[:, None, :])).max(axis=(1, 2), initial=0.0)
-        size[drag[own] > 0] = 1.0
+        size = (np.abs(step) / (new + floor[:, None, :])).max(axis=(1, 2), initial=0.0)
+        if iterations > PLAIN_ITERATIONS:
+            size[drag[own] > 0] = 1.0
         broken = (bad | ~np.isfinite(size)) & ~failed
-        new[broken | failed] = now[broken | failed]
-        size[broken | failed] = 0.0
-        unknowns[own] = new
-        late = size > DONE if iterations >= ITERATIONS else np.zeros(len(own), dtype=bool)
-        status[own[broken | late]] = code(Status.stages_unsolved)
-        size[late] = 0.0
+        lost = broken | failed
+        if lost.any():
+            new[lost] = now[lost]
+            size[lost] = 0.0
+        unknowns = new if part is None else unknowns
+        if part is not None:
+            unknowns[part] = new
+        late = size > DONE if iterations >= ITERATIONS else np.zeros(len(size), dtype=bool)
+        if broken.any() or late.any():
+            status[own] = np.where(broken | late, code(Status.stages_unsolved), status[own])
+            size[late] = 0.0
+        if part is None and size.max(initial=0.0) <= DONE:
+            return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
+        own = np.arange(cases) if part is None else part
         if iterations == PLAIN_ITERATIONS and (size > NEAR).any():
             again = own[size > NEAR]
             unknowns[again] = filling_start(stages if len(again) == cases else stages.take(again))
-        if part is None and (size <= DONE).all():
-            return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
         far = own[size > NEAR]
         if not len(far):
             part, local = None, stages

@@ -200,12 +200,10 @@ class Structure:
                 out[component] = stuck
         return out
 
-    def paths(self, numbers: Mapping[str, Mapping] | None = None) -> dict[tuple[str, str, str], np.ndarray]:
-        """Give which components pass through each unit, with numbers for those that depend on them."""
+    def paths(self) -> dict[tuple[str, str, str], np.ndarray]:
+        """Give which components can pass through each unit, by (unit, inlet label, outlet label)."""
         return {
-            (unit.name, inlet, outlet): unit.passes(
-                inlet, outlet, self.components, None if numbers is None else numbers[unit.name]
-            )
+            (unit.name, inlet, outlet): unit.passes(inlet, outlet, self.components)
             for unit in self.units.values()
             for inlet in unit.inlets
             for outlet in unit.outlets

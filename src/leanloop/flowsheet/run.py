@@ -133,7 +133,7 @@ class Run:
         self._note(local, bad, np.full(len(cases), code(Status.not_finite)), -1)
 
     def _note(self, local: _Local, where: np.ndarray, codes: np.ndarray, unit: int) -> None:
-        fresh = where & (codes > local.status)
+        fresh = where & (local.status == OK)  # the first unit that fails is the culprit
         local.status = np.where(fresh, codes, local.status)
         local.worst = np.where(fresh, unit, local.worst)
 
@@ -260,7 +260,7 @@ class _LoopRun:
             state[:, -2] = np.mean([item[:, -2] for item in outer], axis=0) if outer else 298.15
             state[:, -1] = np.mean([item[:, -1] for item in outer], axis=0) if outer else 101325.0
             local.states[tear] = state
-        for _ in range(2 + len(self.step.tears)):
+        for _ in range(1 + len(self.step.tears)):
             for node in self.step.nodes:
                 inlets, outlets = plan.ports[node]
                 streams = {label: Stream(local.states[name], plan.phases[name]) for label, name in inlets.items()}

@@ -459,18 +459,25 @@ class Flowsheet:
     def _trapped(self, run: Run) -> list[Fault]:
         """Set the status of cases in which a number, such as a bleed of zero, shuts the only way out."""
         structure, cases = self.plan.structure, run.inputs.cases
-        numbers = {name: run.inputs.of(addresses) for name, addresses in self.plan.addresses.items()}
-        paths = structure.paths(numbers)
-        partial = {key: way for key, way in paths.items() if np.ndim(way) > 1 or not np.array_equal(way, structure.paths()[key])}
+        partial = {}
+        for unit in self.units.values():
+            if unit.shuts:
+                numbers = run.inputs.of(self.plan.addresses[unit.name])
+                for inlet in unit.inlets:
+                    for outlet in unit.outlets:
+                        way = unit.passes(inlet, outlet, self.components, numbers)
+                        if not way.all():
+                            partial[unit.name, inlet, outlet] = way
         if not partial:
             return []
+        paths = structure.paths()
         width = len(self.components)
         patterns = np.concatenate([np.broadcast_to(way, (cases, width)) for way in partial.values()], axis=1)
         kinds, which = np.unique(patterns, axis=0, return_inverse=True)
         faults = []
         for number, pattern in enumerate(kinds):
             ways = dict(zip(partial, pattern.reshape(len(partial), width), strict=True))
-            stuck = structure.trapped(self.plan.present, {**{k: np.ravel(v) for k, v in paths.items() if k not in ways}, **ways})
+            stuck = structure.trapped(self.plan.present, {**paths, **ways})
             for component, streams in stuck.items():
                 rows = np.flatnonzero(which.ravel() == number)
                 fed = self._fed(run, component)[rows]

@@ -89,6 +89,8 @@ class Unit(ABC):
         `evaluate` is overridden and gives them; ``"difference"``: to be differenced.
     scales : bool
         Whether scaling all inlet flows (and flow inputs) scales all outlet flows.
+    shuts : bool
+        Whether `passes` depends on numbers.
     inlets, outlets : dict of str to str
         Stream names by label, once read. The label is the port's name, or the stream's own name
         at a port that takes several.
@@ -98,6 +100,7 @@ class Unit(ABC):
     entries: ClassVar[tuple[Entry, ...]] = ()
     derivatives: ClassVar[str] = "complex"
     scales: ClassVar[bool] = True
+    shuts: ClassVar[bool] = False
 
     def __init__(self, name: str, **raw: Any) -> None:
         self.name, self.raw = name, raw
@@ -247,30 +250,34 @@ class Unit(ABC):
         -------
         Evaluation
         """
-        outlets = self.calculate(inlets, numbers)
         moved = any(item is not None for item in tangents.values()) or bool(number_tangents)
         if seeds and moved and self.derivatives == "complex":
-            found = self._complex_step(inlets, numbers, tangents, number_tangents)
-        elif seeds and moved:
-            found = self._difference(inlets, numbers, outlets, tangents, number_tangents, seeds)
+            outlets, found = self._complex_step(inlets, numbers, tangents, number_tangents)
         else:
-            found = dict.fromkeys(outlets)
+            outlets, found = self.calculate(inlets, numbers), {}
+            if seeds and moved:
+                found = self._difference(inlets, numbers, outlets, tangents, number_tangents, seeds)
         return Evaluation(outlets, found, outlet_status(outlets))
 
     def _complex_step(
         self, inlets: Mapping[str, Stream], numbers: Numbers, tangents: Mapping[str, Any], number_tangents: Mapping[str, Any]
-    ) -> dict[str, np.ndarray | None]:
+    ) -> tuple[dict[str, Stream], dict[str, np.ndarray | None]]:
+        """Give outlets and their derivatives in one call: a step of 1e-30 does not change a real part."""
         step = 1j * COMPLEX_STEP
         moved = {
             label: stream if tangents.get(label) is None else Stream(stream.state + step * tangents[label], stream.phase)
             for label, stream in inlets.items()
         }
         shifted = {key: numbers[key] + step * way for key, way in number_tangents.items()}
-        found = self.calculate(moved, {**numbers, **shifted})
-        return {
-            label: stream.state.imag / COMPLEX_STEP if np.iscomplexobj(stream.state) else None
-            for label, stream in found.items()
-        }
+        outlets: dict[str, Stream] = {}
+        found: dict[str, np.ndarray | None] = {}
+        for label, stream in self.calculate(moved, {**numbers, **shifted} if shifted else numbers).items():
+            if stream.state.dtype.kind == "c":
+                outlets[label] = Stream(stream.state[0].real.copy(), stream.phase)
+                found[label] = stream.state.imag / COMPLEX_STEP
+            else:
+                outlets[label], found[label] = stream, None
+        return outlets, found
 
     def _difference(
         self,

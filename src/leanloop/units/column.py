@@ -82,6 +82,11 @@ class Column(Unit):
         unit.models = [table.models[name] for name in names]
         unit.law = Law(unit.models, unit.gas_basis[unit.places], unit.liquid_basis[unit.places])
         unit.model_names = names
+        unit.weights = unit.stays_gas.astype(float), unit.stays_liquid.astype(float)
+        unit.basis_weights = (
+            (unit.stays_gas & unit.gas_basis).astype(float),
+            (unit.stays_liquid & unit.liquid_basis).astype(float),
+        )
         return unit
 
     def addresses(self) -> dict[str, str]:
@@ -134,10 +139,10 @@ class Column(Unit):
         feeds[:, -1] += gas[:, self.places]
         temperature, pressure = self._conditions(inlets, numbers)
         law = self.law.at(temperature[:, None], pressure[:, None], self._model_numbers(numbers))
-        inert = self._inert(gas, liquid, count, self.stays_gas, self.stays_liquid)
+        inert = self._inert(gas, liquid, count, *self.weights)
         if law.plain:
             return Stages(feeds, *inert, *inert, law)
-        basis = self._inert(gas, liquid, count, self.stays_gas & self.gas_basis, self.stays_liquid & self.liquid_basis)
+        basis = self._inert(gas, liquid, count, *self.basis_weights)
         return Stages(feeds, *inert, *basis, law)
 
     @staticmethod
@@ -145,10 +150,12 @@ class Column(Unit):
         gas: np.ndarray, liquid: np.ndarray, count: int, in_gas: np.ndarray, in_liquid: np.ndarray
     ) -> tuple[np.ndarray, np.ndarray]:
         """Spread flows that stay in a phase over the stages; what comes in with the other phase leaves at once."""
-        up = np.repeat(gas[..., in_gas].sum(axis=-1)[..., None], count, axis=-1)
-        up[..., 0] += liquid[..., in_gas].sum(axis=-1)
-        down = np.repeat(liquid[..., in_liquid].sum(axis=-1)[..., None], count, axis=-1)
-        down[..., -1] += gas[..., in_liquid].sum(axis=-1)
+        up = np.empty((*gas.shape[:-1], count))
+        up[...] = (gas @ in_gas)[..., None]
+        up[..., 0] += liquid @ in_gas
+        down = np.empty((*gas.shape[:-1], count))
+        down[...] = (liquid @ in_liquid)[..., None]
+        down[..., -1] += gas @ in_liquid
         return up, down
 
     def _leaving(
@@ -239,17 +246,11 @@ class Column(Unit):
         feeds = np.zeros((seeds, cases, count, parts))
         feeds[:, :, 0] += liquid[..., self.places]
         feeds[:, :, -1] += gas[..., self.places]
-        up, down = self._inert(gas[..., :-2], liquid[..., :-2], count, self.stays_gas, self.stays_liquid)
+        up, down = self._inert(gas[..., :-2], liquid[..., :-2], count, *self.weights)
         if stages.law.plain:
             up_basis, down_basis = up, down
         else:
-            up_basis, down_basis = self._inert(
-                gas[..., :-2],
-                liquid[..., :-2],
-                count,
-                self.stays_gas & self.gas_basis,
-                self.stays_liquid & self.liquid_basis,
-            )
+            up_basis, down_basis = self._inert(gas[..., :-2], liquid[..., :-2], count, *self.basis_weights)
         temperature = number_tangents.get("temperature", still[..., -2] if "temperature" in numbers else liquid[..., -2])
         pressure = number_tangents.get("pressure", still[..., -1] if "pressure" in numbers else gas[..., -1])
         models = [

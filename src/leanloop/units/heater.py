@@ -27,8 +27,7 @@ class Heater(Unit):
 
     def calculate(self, inlets: Mapping[str, Stream], numbers: Numbers) -> dict[str, Stream]:
         """Give the stream at the temperature asked for."""
-        stream = inlets["takes"]
-        return {"gives": Stream.of(stream.flows, numbers["temperature"], stream.pressure, stream.phase)}
+        return {"gives": inlets["takes"].at(numbers["temperature"])}
 
     def results(self, inlets: Mapping, outlets: Mapping, numbers: Numbers, memory: Mapping) -> dict[str, Any]:
         """Give the duty, which is not known while heat is not balanced."""

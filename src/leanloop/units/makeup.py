@@ -47,11 +47,14 @@ class Makeup(Unit):
         """Give the stream with the held flows set."""
         stream = inlets["takes"]
         held = self._held(self.around.components)
-        columns = [stream.flows[..., place] for place in range(stream.flows.shape[-1])]
-        for place, key in held.items():
-            columns[place] = np.asarray(numbers[key])
-        flows = np.stack(np.broadcast_arrays(*columns), axis=-1)
-        return {"gives": Stream.of(flows, stream.temperature, stream.pressure, stream.phase)}
+        values = {place: np.asarray(numbers[key]) for place, key in held.items()}
+        kind = complex if any(value.dtype.kind == "c" for value in values.values()) else stream.state.dtype
+        shape = np.broadcast_shapes(stream.state.shape[:-1], *(value.shape for value in values.values()))
+        state = np.empty((*shape, stream.state.shape[-1]), dtype=kind)
+        state[:] = stream.state
+        for place, value in values.items():
+            state[..., place] = value
+        return {"gives": Stream(state, stream.phase)}
 
     def added(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers) -> np.ndarray:
         """Give what is added, (..., C) mol/s; negative for what would have to be taken out."""

@@ -17,6 +17,7 @@ class Splitter(Unit):
     """Divides a stream by given shares; one outlet may go unnamed and gets the rest."""
 
     kind = "splitter"
+    shuts = True
     entries = (
         Entry("takes", "inlet", required=True, doc="the stream to divide"),
         Entry("gives", "outlet", required=True, many=True, doc="the parts"),
@@ -59,8 +60,6 @@ class Splitter(Unit):
         """Give each outlet its share."""
         stream = inlets["takes"]
         return {
-            label: Stream.of(
-                stream.flows * np.asarray(share)[..., None], stream.temperature, stream.pressure, stream.phase
-            )
+            label: stream.carrying(stream.flows * np.asarray(share)[..., None])
             for label, share in self._shares(numbers).items()
         }
