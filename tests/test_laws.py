@@ -12,7 +12,7 @@ import independent
 import numpy as np
 import pytest
 import scenes
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, example, given, settings
 from hypothesis import strategies as st
 
 import leanloop
@@ -143,8 +143,11 @@ def assert_same(found, expected, names, tolerance, scale=1.0, floor=1e-12):
 
 
 class TestColumns:
-    @settings(laws, max_examples=60)
+    @settings(laws, max_examples=100)
     @given(columns())
+    @example(dict(kind="absorber", stages=21, names=["s0"], K=[1.0], basis="fraction",
+                  gas={"inert": 0.09975371809717382, "s0": 0.0002462819028261926},
+                  liquid={"oil": 10.0, "s0": 0.0}))  # leaves 1e-38 of the solute, not less than none
     def test_every_component_balances(self, scene):
         result = read(column_text(scene)).solve()
         assert result["status"] == "converged"
@@ -210,6 +213,18 @@ class TestLoops:
 
     @settings(laws, max_examples=40)
     @given(loops())
+    @example(dict(  # absent, light and heavy solutes at once, joined by an impurity
+        stages=(17, 5), names=["s0", "s1", "s2", "s3", "s4", "s5"],
+        cold=[0.001, 49.34290114186233, 49.59141622950439, 24.318889377185208,
+              0.00274078660346119, 0.6736201274786001],
+        hot=[10.0**0.99999, 4056.5834811004615, 1.2, 11.023484981024035, 644.6385083465672,
+             489.47828197634027],
+        solvent=3.611874287712843, gas=9.49548156922903, stripping=11.306816851644722,
+        feed=[0.0, 0.054393774171643476, 0.0, 0.936815928134171, 0.5087231631381056,
+              6.713455607908152e-05],
+        brought=[0.0, 0.0, 0.0, 2.642067915143182e-07, 3.583508958071475e-07,
+                 0.049999377442312684],
+        purge=0.029959324492580087, impurity=0.0009495481569229031))
     def test_every_component_balances(self, scene):
         result = read(loop_text(scene)).solve()
         assert result["status"] == "converged"

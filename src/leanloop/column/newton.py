@@ -22,11 +22,13 @@ from leanloop.status import OK, Status, code
 
 STEP_LIMIT = 0.2  # a flow falls to no less than this part of itself in one step
 NEAR = 1e-4  # relative step after which the next one is expected to be the last
-DONE = 1e-8  # relative step after which the error, its square, is rounding
+DONE = 1e-8  # relative step after which the error, about its square, is rounding
+LEFT = 1e-13  # relative error that may be left, where two steps show how the square counts
 FLOOR = 1e-9  # flows below this part of the component's feed are judged against it
 TRACE = 1e-8  # flows below this part of the component's feed are settled by `_settle_traces`
 PLAIN_ITERATIONS = 12  # then the columns are filled from the start of a single stage
 ITERATIONS = 300
+TINY = 1e-300
 
 
 @dataclass
@@ -167,7 +169,7 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
     absent = ~np.isfinite(floors)[:, None, :]
     absent = absent if absent.any() else None
     unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
-    drag, first = np.zeros(cases), np.zeros(cases)
+    drag, first, before = np.zeros(cases), np.zeros(cases), np.zeros(cases)
     part: np.ndarray | None = None  # the unsolved cases, while they are few
     local, iterations = stages, 0
     while True:
@@ -211,7 +213,10 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
         if broken.any() or late.any():
             status[own] = np.where(broken | late, code(Status.stages_unsolved), status[own])
             size[late] = 0.0
-        if part is None and size.max(initial=0.0) <= DONE:
+        # Newton's error after a step is about bend times its square; the last two steps tell bend
+        bend = np.maximum(size / np.maximum(before[own] ** 2, TINY), 1e-2)
+        before[own] = size
+        if part is None and (size <= np.maximum(DONE, np.sqrt(LEFT / np.maximum(bend, TINY)))).all():
             return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
         own = np.arange(cases) if part is None else part
         if iterations == PLAIN_ITERATIONS and (size > NEAR).any():

@@ -18,8 +18,8 @@ TINY = 1e-300
 def absorbed_fraction(factor: np.ndarray, stages: int) -> np.ndarray:
     """Give the fraction absorbed by N stages of equal absorption factor.
 
-    Kremser (1930), Souders and Brown (1932): (A^(N+1) - A)/(A^(N+1) - 1), here as the quotient of
-    sums A + ... + A^N over 1 + A + ... + A^N, which is exact near A = 1.
+    Kremser (1930), Souders and Brown (1932): (A^(N+1) - A)/(A^(N+1) - 1), here by the sum
+    1 + A + ... + A^N, which is exact near A = 1.
 
     Parameters
     ----------
@@ -32,12 +32,10 @@ def absorbed_fraction(factor: np.ndarray, stages: int) -> np.ndarray:
     (...,) dimensionless
     """
     small = np.minimum(factor, 1.0 / np.maximum(factor, 1e-30))
-    total, power = np.ones_like(small), np.ones_like(small)
-    for _ in range(min(stages, 400)):
-        power = power * small
-        total = total + power
-    # 1 - 1/sum for A <= 1; with a = 1/A the mirrored sum divided by a^N else
-    with np.errstate(under="ignore"):
+    # 1 + a + ... + a^N by expm1 and log, exact to rounding at a = 1 as well
+    log = np.log(np.maximum(small, 1e-300))
+    with np.errstate(invalid="ignore", under="ignore"):
+        total = np.where(log == 0.0, stages + 1.0, np.expm1((stages + 1) * log) / np.expm1(log))
         return np.where(factor <= 1.0, 1.0 - 1.0 / total, 1.0 - small**stages / total)
 
 
@@ -69,7 +67,26 @@ def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
     if right.size == 1:
         return feeds / (1.0 + ratio)
     answer = lapack.dgtsv(lower.reshape(-1)[:-1], (1.0 + s).reshape(-1), upper.reshape(-1)[:-1], right)[3]
-    return np.moveaxis(answer.reshape(cases, parts, count), 1, 2)
+    answer = np.moveaxis(answer.reshape(cases, parts, count), 1, 2)
+    wrong = (answer < 0.0).any(axis=(1, 2))
+    if wrong.any():  # a pivot chosen by rounding; without pivots nothing is subtracted
+        answer = answer.copy()
+        answer[wrong] = _without_pivots(ratio[wrong], feeds[wrong])
+    return answer
+
+
+def _without_pivots(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
+    """Eliminate downwards and substitute upwards, stage by stage, in sums of positive terms."""
+    count = feeds.shape[1]
+    diagonal, right = np.empty_like(feeds), np.empty_like(feeds)
+    diagonal[:, 0], right[:, 0] = 1.0 + ratio[:, 0], feeds[:, 0]
+    for j in range(1, count):
+        diagonal[:, j] = 1.0 + ratio[:, j] * (1.0 - 1.0 / diagonal[:, j - 1])
+        right[:, j] = feeds[:, j] + right[:, j - 1] / diagonal[:, j - 1]
+    flows = right / diagonal
+    for j in range(count - 2, -1, -1):
+        flows[:, j] += ratio[:, j + 1] * flows[:, j + 1] / diagonal[:, j]
+    return flows
 
 
 def sweep(stages: Stages, gas: np.ndarray, liquid: np.ndarray, ratio: np.ndarray) -> np.ndarray:

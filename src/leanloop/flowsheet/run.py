@@ -156,10 +156,12 @@ class Run:
         self._note(local, found.status != OK, found.status, self.plan.unit_number[node[1]])
 
     def _node(self, node: Node, cases: np.ndarray, seeds: int, local: _Local, guess: Any = None) -> None:
-        if node[0] == "feed":
-            self._feed(node[1], cases, seeds, local)
-        else:
-            self._unit(node, cases, seeds, local, guess)
+        # cases that have failed carry NaN along; their status says so, no warning need
+        with np.errstate(all="ignore"):
+            if node.sort == "feed":
+                self._feed(node.name, cases, seeds, local)
+            else:
+                self._unit(node, cases, seeds, local, guess)
 
     # --- steps
 
