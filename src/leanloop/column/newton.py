@@ -25,7 +25,8 @@ NEAR = 1e-4  # relative step after which the next one is expected to be the last
 DONE = 1e-8  # relative step after which the error, about its square, is rounding
 LEFT = 1e-13  # relative error that may be left, where two steps show how the square counts
 FLOOR = 1e-9  # flows below this part of the component's feed are judged against it
-TRACE = 1e-8  # flows below this part of the component's feed are settled by `_settle_traces`
+LEAST_FLOOR = 1e-11  # of all that is fed: below it a flow drowns in the rounding of the others
+TRACE = 10.0  # flows below this many floors are settled by `_settle_traces`
 PLAIN_ITERATIONS = 12  # then the columns are filled from the start of a single stage
 ITERATIONS = 300
 TINY = 1e-300
@@ -139,20 +140,21 @@ def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
                 unknowns[index] = start(stages.take(index))
         floors = np.empty((cases, parts + 1))
         floors[:, 0] = FLOOR * everything
-        floors[:, 1:] = np.where(scale > 0, FLOOR * scale, np.inf)
+        floors[:, 1:] = np.where(scale > 0, np.maximum(FLOOR * scale, LEAST_FLOOR * everything[:, None]), np.inf)
         answer = _iterate(stages, unknowns, floors, status)
-        _settle_traces(answer, scale)
+        _settle_traces(answer, floors)
     return answer
 
 
-def _settle_traces(answer: Answer, scale: np.ndarray) -> None:
+def _settle_traces(answer: Answer, floors: np.ndarray) -> None:
     """Give flows far below the component's feed their full relative accuracy.
 
     In the coupled system they carry the rounding of the large flows; at total flows that are
     already right, each component's balances are a tridiagonal system whose answer has none of it.
     """
     stages, unknowns = answer.stages, answer.unknowns
-    small = (unknowns[..., 1:] < TRACE * scale[:, None, :]) & (answer.status == OK)[:, None, None]
+    low = TRACE * np.where(np.isfinite(floors), floors, 0.0)[:, None, 1:]
+    small = (unknowns[..., 1:] < low) & (answer.status == OK)[:, None, None]
     if not small.any():
         return
     cases = np.flatnonzero(small.any(axis=(1, 2)))

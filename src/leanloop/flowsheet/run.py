@@ -246,6 +246,9 @@ class _LoopRun:
         counts = [len(self.places[tear]) for tear in step.tears]
         self.offsets = dict(zip(step.tears, np.concatenate([[0], np.cumsum(counts)[:-1]]).astype(int), strict=True))
         self.count = int(sum(counts))
+        # a component that nothing brings into the loop is not in it, whatever rounding says
+        fed = sum((run.states[name][cases, :-2] for name in plan.outer(step)), np.zeros((len(cases), plan.width - 2)))
+        self.nothing = (fed == 0.0) & ~np.any([plan.units[name].adds(plan.components) for name in step.units], axis=0)
         self.base: dict[str, np.ndarray] = {}
         self.last: tuple[np.ndarray, np.ndarray, _Local] | None = None
         self.derive = run.settings.method.needs_jacobian
@@ -396,6 +399,7 @@ class _LoopRun:
             if self.extra:
                 turn = newton_step(jacobian, self._extra_ways(local, rows))
         picked = _Local(status=local.status[rows], worst=local.worst[rows])
+        nothing = self.nothing[cases] if self.nothing.any() else None
         for name in run.plan.inner(self.step):
             state, way = local.states[name][rows], local.ways.get(name)
             if way is not None and jacobian is not None:
@@ -403,6 +407,8 @@ class _LoopRun:
                 moved = state + np.einsum("sm...,ms->m...", way[self.extra :], correction)
                 state = np.where((moved < 0) & (state >= 0), state, moved)
                 picked.ways[name] = self._total(way, turn)
+            if nothing is not None:
+                state[:, :-2][nothing] = 0.0
             picked.states[name] = state
         for node, memory in local.memory.items():
             picked.memory[node], picked.memory_ways[node] = {}, {}
@@ -450,7 +456,13 @@ class _LoopRun:
         x = self._start()
         low = np.concatenate([np.where(self.places[tear] < run.plan.width - 2, 0.0, 1e-3) for tear in self.step.tears])
         settings = run.settings
-        outcome = close(self.evaluate, self.settle, x, low, settings.method, settings.tolerance, settings.passes)
+        high = np.full(x.shape, np.inf)
+        for tear in self.step.tears:
+            places = self.places[tear]
+            flows = places < run.plan.width - 2
+            high[:, self._part(tear)][:, flows] = np.where(self.nothing[:, places[flows]], 0.0, np.inf)
+        x = np.minimum(x, high)
+        outcome = close(self.evaluate, self.settle, x, low, high, settings.method, settings.tolerance, settings.passes)
         late = ~outcome.converged & ~outcome.failed
         run.status[self.cases[late]] = np.maximum(run.status[self.cases[late]], code(Status.pass_limit))
         lost = outcome.failed & (run.status[self.cases] == OK)

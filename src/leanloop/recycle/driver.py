@@ -59,6 +59,7 @@ def close(
     settle: Callable[[np.ndarray, np.ndarray, np.ndarray, Pass], None],
     x: np.ndarray,
     low: np.ndarray,
+    high: np.ndarray,
     method: RecycleMethod,
     tolerance: float,
     limit: int,
@@ -76,6 +77,8 @@ def close(
         Start.
     low : (n,)
         Lower bounds, -inf for none.
+    high : (M, n)
+        Upper bounds, inf for none; what a method proposes is kept below them.
     method : RecycleMethod
     tolerance : float
     limit : int
@@ -115,4 +118,5 @@ def close(
         state = {key: value[on] for key, value in state.items()}
         cases = cases[on]
         x, state = method.propose(trial, state)
+        x = np.minimum(x, high[cases])
     return outcome
