@@ -151,8 +151,10 @@ def gas_change(
     (..., M, N, D) mol/s
     """
     law, gas_total = stages.law, at.unknowns[..., 0]
-    grown = np.asarray(liquid_inert + np.sum(flows, axis=-1) if np.ndim(flows) else liquid_inert)[..., None]
+    grown = np.asarray(liquid_inert + flows.sum(axis=-1) if isinstance(flows, np.ndarray) else liquid_inert)[..., None]
     x_change = (flows - at.liquid * grown) / at.total_liquid[..., None]
+    if law.plain and not isinstance(total_gas, np.ndarray):
+        return gas_total[..., None] * (shift + at.slope * x_change)
     total_gas = np.asarray(total_gas)[..., None]
     if law.plain:
         return at.coordinate * total_gas + gas_total[..., None] * (shift + at.slope * x_change)

@@ -178,6 +178,7 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
         iterations += 1
         own = slice(None) if part is None else part
         now, floor, failed = unknowns[own], floors[own], status[own] != OK
+        any_failed = failed.any()
         at = phases(local, now)
         lead = residual(local, at)
         if iterations > PLAIN_ITERATIONS:
@@ -186,7 +187,7 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
             first[own] = np.where(first[own] == 0.0, merit, first[own])
             drag[own] = np.where(merit > 1e5, np.minimum(merit / first[own], 1.0), 0.0)
         derivatives = gas_derivatives(local, at)
-        if failed.any():
+        if any_failed:
             derivatives[failed] = np.nan
         bands, bad = _factor(derivatives, drag[own])
         if len(bands) == 1:
@@ -203,23 +204,25 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
         size = (np.abs(step) / (new + floor[:, None, :])).max(axis=(1, 2), initial=0.0)
         if iterations > PLAIN_ITERATIONS:
             size[drag[own] > 0] = 1.0
-        broken = (bad | ~np.isfinite(size)) & ~failed
-        lost = broken | failed
-        if lost.any():
-            new[lost] = now[lost]
-            size[lost] = 0.0
-        unknowns = new if part is None else unknowns
-        if part is not None:
-            unknowns[part] = new
-        late = size > DONE if iterations >= ITERATIONS else np.zeros(len(size), dtype=bool)
-        if broken.any() or late.any():
+        if any_failed or bad.any() or not np.isfinite(size.sum()) or iterations >= ITERATIONS:
+            broken = (bad | ~np.isfinite(size)) & ~failed
+            new[broken | failed] = now[broken | failed]
+            size[broken | failed] = 0.0
+            late = size > DONE if iterations >= ITERATIONS else np.zeros(len(size), dtype=bool)
             status[own] = np.where(broken | late, code(Status.stages_unsolved), status[own])
             size[late] = 0.0
-        # Newton's error after a step is about bend times its square; the last two steps tell bend
-        bend = np.maximum(size / np.maximum(before[own] ** 2, TINY), 1e-2)
+        if part is None:
+            unknowns = new
+        else:
+            unknowns[part] = new
+        if part is None:
+            if size.max(initial=0.0) <= DONE:
+                return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
+            # Newton's error after a step is about bend times its square; the last two steps tell bend
+            bend = np.maximum(size / np.maximum(before**2, TINY), 1e-2)
+            if (size <= np.maximum(DONE, np.sqrt(LEFT / bend))).all():
+                return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
         before[own] = size
-        if part is None and (size <= np.maximum(DONE, np.sqrt(LEFT / np.maximum(bend, TINY)))).all():
-            return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
         own = np.arange(cases) if part is None else part
         if iterations == PLAIN_ITERATIONS and (size > NEAR).any():
             again = own[size > NEAR]

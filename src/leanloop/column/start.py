@@ -15,28 +15,28 @@ from leanloop.column.equations import Stages, phases
 TINY = 1e-300
 
 
-def absorbed_fraction(factor: np.ndarray, stages: int) -> np.ndarray:
-    """Give the fraction absorbed by N stages of equal absorption factor.
+def split_fractions(factor: np.ndarray, stages: int) -> tuple[np.ndarray, np.ndarray]:
+    """Give the fractions stripped from the liquid, and absorbed from the gas, at one stripping factor.
 
-    Kremser (1930), Souders and Brown (1932): (A^(N+1) - A)/(A^(N+1) - 1), here by the sum
-    1 + A + ... + A^N, which is exact near A = 1.
+    Kremser (1930), Souders and Brown (1932): (S^(N+1) - S)/(S^(N+1) - 1) is stripped, the same with
+    A = 1/S absorbed; here by the sum 1 + a + ... + a^N of whichever is below one, exact near S = 1.
 
     Parameters
     ----------
     factor : (...,) dimensionless
-        Absorption factor, or stripping factor for the fraction stripped.
+        Stripping factor K V / L, positive.
     stages : int
 
     Returns
     -------
-    (...,) dimensionless
+    stripped, absorbed : (...,) dimensionless
     """
-    small = np.minimum(factor, 1.0 / np.maximum(factor, 1e-30))
-    # 1 + a + ... + a^N by expm1 and log, exact to rounding at a = 1 as well
-    log = np.log(np.maximum(small, 1e-300))
-    with np.errstate(invalid="ignore", under="ignore"):
-        total = np.where(log == 0.0, stages + 1.0, np.expm1((stages + 1) * log) / np.expm1(log))
-        return np.where(factor <= 1.0, 1.0 - 1.0 / total, 1.0 - small**stages / total)
+    above = factor > 1.0
+    small = np.where(above, 1.0 / factor, factor)
+    log = np.log(small)
+    total = np.where(log == 0.0, stages + 1.0, np.expm1((stages + 1) * log) / np.expm1(log))
+    lesser, greater = 1.0 - 1.0 / total, 1.0 - np.exp(stages * log) / total
+    return np.where(above, greater, lesser), np.where(above, lesser, greater)
 
 
 def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
@@ -57,20 +57,19 @@ def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
     lost = ~(np.isfinite(ratio).all(axis=(1, 2)) & np.isfinite(feeds).all(axis=(1, 2)))
     if lost.any():  # the cases are one long system, in which one such case would spoil the others
         ratio, feeds = np.where(lost[:, None, None], 0.0, ratio), np.where(lost[:, None, None], 0.0, feeds)
-    s = np.ascontiguousarray(np.moveaxis(ratio, 2, 1))
+    s = ratio.transpose(0, 2, 1)
     lower = np.full((cases, parts, count), -1.0)
     lower[..., -1] = 0.0
-    upper = -s
-    upper = np.roll(upper, -1, axis=2)
-    upper[..., -1] = 0.0
-    right = np.ascontiguousarray(np.moveaxis(feeds, 2, 1)).reshape(-1)
+    upper = np.zeros((cases, parts, count))
+    np.negative(s[..., 1:], out=upper[..., :-1])
+    right = np.ascontiguousarray(feeds.transpose(0, 2, 1)).reshape(-1)
     if right.size == 1:
         return feeds / (1.0 + ratio)
     answer = lapack.dgtsv(lower.reshape(-1)[:-1], (1.0 + s).reshape(-1), upper.reshape(-1)[:-1], right)[3]
-    answer = np.moveaxis(answer.reshape(cases, parts, count), 1, 2)
-    wrong = (answer < 0.0).any(axis=(1, 2))
-    if wrong.any():  # a pivot chosen by rounding; without pivots nothing is subtracted
+    answer = answer.reshape(cases, parts, count).transpose(0, 2, 1)
+    if answer.min(initial=0.0) < 0.0:  # a pivot chosen by rounding; without pivots nothing is subtracted
         answer = answer.copy()
+        wrong = (answer < 0.0).any(axis=(1, 2))
         answer[wrong] = _without_pivots(ratio[wrong], feeds[wrong])
     return answer
 
@@ -153,8 +152,7 @@ def start(stages: Stages, sweeps: int = 2) -> np.ndarray:
     liquid_in = stages.liquid_inert[:, 0] + top.sum(axis=-1)
     gas_in = stages.gas_inert[:, -1] + bottom.sum(axis=-1)
     factor = ratio[:, 0] * ((gas_in + 1e-9 * liquid_in) / np.maximum(liquid_in + 1e-9 * gas_in, TINY))[:, None]
-    stripped = absorbed_fraction(factor, count)
-    absorbed = absorbed_fraction(1.0 / np.maximum(factor, 1e-15), count)
+    stripped, absorbed = split_fractions(np.clip(factor, 1e-15, 1e15), count)
     gas_out = stages.gas_inert[:, 0] + (stripped * top + (1.0 - absorbed) * (total - top)).sum(axis=-1)
     liquid_out = stages.liquid_inert[:, -1] + ((1.0 - stripped) * top + absorbed * (total - top)).sum(axis=-1)
     place = np.arange(count) / max(count - 1, 1)

@@ -150,10 +150,12 @@ class Run:
         )
         self.evaluations += 1
         for label, name in outlets.items():
-            local.states[name] = np.broadcast_to(found.outlets[label].state, (len(cases), self.plan.width))
+            local.states[name] = _wide(found.outlets[label].state, len(cases))
             local.ways[name] = found.tangents.get(label)
         local.memory[node], local.memory_ways[node] = found.memory, found.memory_tangents
-        self._note(local, found.status != OK, found.status, self.plan.unit_number[node[1]])
+        bad = found.status != OK
+        if bad.any():
+            self._note(local, bad, found.status, self.plan.unit_number[node[1]])
 
     def _node(self, node: Node, cases: np.ndarray, seeds: int, local: _Local, guess: Any = None) -> None:
         # cases that have failed carry NaN along; their status says so, no warning need
@@ -211,6 +213,11 @@ class Run:
         self.status[cases] = np.maximum(self.status[cases], local.status)
         fresh = (local.worst >= 0) & (self.culprit[cases] < 0)
         self.culprit[cases[fresh]] = local.worst[fresh]
+
+
+def _wide(state: np.ndarray, cases: int) -> np.ndarray:
+    """Give a state of one case for all of them, where a unit has not done so."""
+    return state if len(state) == cases else np.broadcast_to(state, (cases, state.shape[-1]))
 
 
 def put(store: dict[Any, np.ndarray], key: Any, cases: np.ndarray, total: int, value: np.ndarray) -> None:
@@ -272,9 +279,10 @@ class _LoopRun:
                 numbers = run.inputs.of(plan.addresses[node[1]], self.cases)
                 found = plan.units[node[1]].estimate(streams, numbers)
                 for label, name in outlets.items():
-                    state = np.broadcast_to(found[label].state, (len(self.cases), plan.width))
-                    good = np.isfinite(state) & (state >= 0)
-                    local.states[name] = np.where(good, state, 0.0)
+                    state = _wide(found[label].state, len(self.cases))
+                    if not (np.isfinite(state.sum()) and state.min() >= 0.0):
+                        state = np.where(np.isfinite(state) & (state >= 0), state, 0.0)
+                    local.states[name] = state
         x = np.empty((len(self.cases), self.count))
         for tear in self.step.tears:
             self.base[tear] = local.states[tear]
@@ -301,7 +309,7 @@ class _LoopRun:
             part, places = self._part(tear), self.places[tear]
             g[:, part] = local.states[tear][:, places]
             if self.derive and local.ways.get(tear) is not None:
-                jacobian[:, part, :] = np.moveaxis(local.ways[tear][self.extra :][..., places], 0, 2)
+                jacobian[:, part, :] = local.ways[tear][self.extra :][..., places].transpose(1, 2, 0)
         return Pass(g, jacobian, self._scale(x, given, local), local.status == OK)
 
     def _pass(self, rows: np.ndarray, x: np.ndarray, derive: bool) -> tuple[_Local, np.ndarray]:
@@ -434,7 +442,7 @@ class _LoopRun:
         for tear in self.step.tears:
             way = local.ways.get(tear)
             if way is not None:
-                out[:, self._part(tear), :] = np.moveaxis(way[: self.extra][:, rows][..., self.places[tear]], 0, 2)
+                out[:, self._part(tear), :] = way[: self.extra][:, rows][..., self.places[tear]].transpose(1, 2, 0)
         return out
 
     def _jacobian(self, local: _Local) -> tuple[np.ndarray | None, np.ndarray | None]:
@@ -447,7 +455,7 @@ class _LoopRun:
             part, places = self._part(tear), self.places[tear]
             g[:, part] = local.states[tear][:, places]
             if local.ways.get(tear) is not None:
-                jacobian[:, part, :] = np.moveaxis(local.ways[tear][self.extra :][..., places], 0, 2)
+                jacobian[:, part, :] = local.ways[tear][self.extra :][..., places].transpose(1, 2, 0)
         return jacobian, g
 
     def close(self) -> None:

@@ -8,6 +8,11 @@ METHODS = Registry(
     {
         "newton": "leanloop.recycle.newton:Newton",
         "substitution": "leanloop.recycle.substitution:Substitution",
+        "wegstein": "leanloop.recycle.wegstein:Wegstein",
+        "anderson": "leanloop.recycle.anderson:Anderson",
+        "dominant_eigenvalue": "leanloop.recycle.dominant_eigenvalue:DominantEigenvalue",
+        "general_dominant_eigenvalue": "leanloop.recycle.general_dominant_eigenvalue:GeneralDominantEigenvalue",
+        "broyden": "leanloop.recycle.broyden:Broyden",
     },
     "leanloop.recycle.base:RecycleMethod",
 )

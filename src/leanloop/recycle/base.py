@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass, field
-from typing import ClassVar
+from typing import Any, ClassVar
 
 import numpy as np
+
+from leanloop.entries import Context, Entry, read_values
+from leanloop.errors import InputError
 
 State = dict[str, np.ndarray]
 
@@ -44,17 +47,37 @@ class RecycleMethod(ABC):
 
     A method proposes; it never judges convergence, which is the driver's alone.
 
+    Parameters
+    ----------
+    **options
+        Values of `entries`, kept as attributes; the default of each is a class attribute of its name.
+
+    Raises
+    ------
+    InputError
+        Where an option is unknown or out of range.
+
     Attributes
     ----------
     name : str
     needs_jacobian : bool
     most_passes : int
         Passes allowed where the user does not say.
+    entries : tuple of Entry
+        The method's own options in the loop table.
     """
 
     name: ClassVar[str] = ""
     needs_jacobian: ClassVar[bool] = False
     most_passes: ClassVar[int] = 50
+    entries: ClassVar[tuple[Entry, ...]] = ()
+
+    def __init__(self, **options: Any) -> None:
+        context = Context(plain_si=True)
+        values = read_values(self.entries, options, "loop", context)
+        if context.faults:
+            raise InputError(context.faults)
+        self.__dict__.update({**values.numbers, **values.words})
 
     def begin(self, x: np.ndarray) -> State:
         """Give the state before the first pass.

@@ -361,7 +361,9 @@ def outlet_status(outlets: Mapping[str, Stream]) -> np.ndarray:
     """
     status = None
     for stream in outlets.values():
-        good = np.isfinite(stream.state).all(axis=-1)
-        found = np.where(good, OK, code(Status.not_finite))
+        if np.isfinite(stream.state.sum()):
+            found = np.full(stream.state.shape[:-1], OK)
+        else:
+            found = np.where(np.isfinite(stream.state).all(axis=-1), OK, code(Status.not_finite))
         status = found if status is None else np.maximum(status, found)
     return status

@@ -10,13 +10,13 @@ import numpy as np
 from leanloop.column.equations import Phases, Stages, gas_change, phases, rows
 from leanloop.column.law import Law
 from leanloop.column.newton import Answer, solve
-from leanloop.column.start import absorbed_fraction
+from leanloop.column.start import split_fractions
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.base import EquilibriumModel
-from leanloop.status import OK, Status, code
+from leanloop.status import OK
 from leanloop.stream import Stream, divide
-from leanloop.units.base import Evaluation, Numbers, Surroundings, Unit
+from leanloop.units.base import Evaluation, Numbers, Surroundings, Unit, outlet_status
 
 MOST_STAGES = 5000
 _NEVER = EquilibriumModel.outside
@@ -123,7 +123,7 @@ class Column(Unit):
         shape = inlets["gas_in"].state.shape[:-1]
         temperature = numbers.get("temperature", inlets["liquid_in"].temperature)
         pressure = numbers.get("pressure", inlets["gas_in"].pressure)
-        return np.broadcast_to(temperature, shape), np.broadcast_to(pressure, shape)
+        return _filled(temperature, shape), _filled(pressure, shape)
 
     def _model_numbers(self, numbers: Numbers) -> list[dict[str, Any]]:
         return [
@@ -164,7 +164,7 @@ class Column(Unit):
         """Put the outlets together from the distributing flows that leave."""
         fed = inlets["gas_in"].flows + inlets["liquid_in"].flows
         temperature, pressure = self._conditions(inlets, numbers)
-        gas, liquid = np.where(self.stays_gas, fed, 0.0), np.where(self.stays_liquid, fed, 0.0)
+        gas, liquid = fed * self.weights[0], fed * self.weights[1]
         gas[..., self.places], liquid[..., self.places] = top, bottom
         return {
             "gas_out": Stream.of(gas, temperature, pressure, "gas"),
@@ -182,9 +182,8 @@ class Column(Unit):
         with np.errstate(all="ignore"):
             law = self.law.at(temperature[:, None], pressure[:, None], self._model_numbers(numbers))
             g, l = gas.total[:, None] + 1e-300, liquid.total[:, None]
-            factor = np.clip(np.nan_to_num(law.k_dilute[:, 0]) * g / np.maximum(l, 1e-9 * g), 1e-15, 1e15)
-            stripped = absorbed_fraction(factor, int(numbers["stages"]))
-            absorbed = absorbed_fraction(1.0 / factor, int(numbers["stages"]))
+            factor = law.k_dilute[:, 0] * g / np.maximum(l, 1e-9 * g)
+            stripped, absorbed = split_fractions(np.clip(np.nan_to_num(factor), 1e-15, 1e15), int(numbers["stages"]))
         up, down = gas.flows[:, self.places], liquid.flows[:, self.places]
         absorbed = np.where(l > 0, absorbed, 0.0)
         return self._leaving(
@@ -207,24 +206,20 @@ class Column(Unit):
             guess = np.maximum(memory["unknowns"], 0.0)
             guess[..., 0] = np.maximum(guess[..., 0], stages.gas_inert)
         answer = solve(stages, guess)
-        unknowns = answer.unknowns
+        unknowns, failed = answer.unknowns, answer.status != OK
         with np.errstate(all="ignore"):
             first = _slice(stages, slice(0, 1))
             at_top = phases(first, unknowns[:, :1])
-        outlets = self._leaving(inlets, numbers, at_top.gas_flow[:, 0], unknowns[:, -1, 1:])
-        failed = answer.status != OK
-        for stream in outlets.values():
-            stream.state[failed] = np.nan
-        status = np.maximum(answer.status, np.where(np.isfinite(outlets["gas_out"].state).all(axis=1), OK, code(Status.not_finite)))
-        status = np.where(failed, answer.status, status)
-        found: dict[str, np.ndarray | None] = {"gas_out": None, "liquid_out": None}
-        memory_tangents = {}
-        if seeds and (any(way is not None for way in tangents.values()) or number_tangents):
-            with np.errstate(all="ignore"):
-                found, moved = self._respond(
-                    answer, (first, at_top), inlets, numbers, tangents, number_tangents, seeds
-                )
-            memory_tangents = {"unknowns": moved}
+            outlets = self._leaving(inlets, numbers, at_top.gas_flow[:, 0], unknowns[:, -1, 1:])
+            if failed.any():
+                for stream in outlets.values():
+                    stream.state[failed] = np.nan
+            status = np.where(failed, answer.status, outlet_status(outlets))
+            found: dict[str, np.ndarray | None] = {"gas_out": None, "liquid_out": None}
+            memory_tangents = {}
+            if seeds and (number_tangents or any(way is not None for way in tangents.values())):
+                found, moved = self._respond(answer, (first, at_top), inlets, numbers, tangents, number_tangents, seeds)
+                memory_tangents = {"unknowns": moved}
         return Evaluation(outlets, found, status, {"unknowns": unknowns}, memory_tangents)
 
     def _respond(
@@ -241,16 +236,17 @@ class Column(Unit):
         stages = answer.stages
         cases, count, parts = stages.shape
         still = np.zeros((seeds, cases, len(self.stays_gas) + 2))
-        gas = tangents.get("gas_in") if tangents.get("gas_in") is not None else still
-        liquid = tangents.get("liquid_in") if tangents.get("liquid_in") is not None else still
+        gas, liquid = tangents.get("gas_in"), tangents.get("liquid_in")
+        gas, liquid = still if gas is None else gas, still if liquid is None else liquid
+        gas_flows, liquid_flows = gas[..., :-2], liquid[..., :-2]
         feeds = np.zeros((seeds, cases, count, parts))
-        feeds[:, :, 0] += liquid[..., self.places]
+        feeds[:, :, 0] = liquid[..., self.places]
         feeds[:, :, -1] += gas[..., self.places]
-        up, down = self._inert(gas[..., :-2], liquid[..., :-2], count, *self.weights)
+        up, down = self._inert(gas_flows, liquid_flows, count, *self.weights)
         if stages.law.plain:
             up_basis, down_basis = up, down
         else:
-            up_basis, down_basis = self._inert(gas[..., :-2], liquid[..., :-2], count, *self.basis_weights)
+            up_basis, down_basis = self._inert(gas_flows, liquid_flows, count, *self.basis_weights)
         temperature = number_tangents.get("temperature", still[..., -2] if "temperature" in numbers else liquid[..., -2])
         pressure = number_tangents.get("pressure", still[..., -1] if "pressure" in numbers else gas[..., -1])
         models = [
@@ -262,17 +258,18 @@ class Column(Unit):
             shift = stages.law.shifted(answer.at.liquid, temperature[..., None], pressure[..., None], models)
         direct = gas_change(stages, answer.at, 0.0, 0.0, down, down_basis, up_basis, shift)
         moved = answer.respond(rows(up, feeds, direct))
-        moved[:, answer.status != OK] = 0.0
+        if (answer.status != OK).any():
+            moved[:, answer.status != OK] = 0.0
         first, at_top = top
         top_shift = shift[:, :, :1] if np.ndim(shift) else 0.0
         leaving = gas_change(
             first, at_top, moved[:, :, :1, 0], moved[:, :, :1, 1:], down[..., :1], down_basis[..., :1], up_basis[..., :1], top_shift
         )[:, :, 0]
-        fed = gas[..., :-2] + liquid[..., :-2]
+        fed = gas_flows + liquid_flows
         out = {}
-        for label, mask, own in (("gas_out", self.stays_gas, leaving), ("liquid_out", self.stays_liquid, moved[:, :, -1, 1:])):
-            way = np.zeros_like(still)
-            way[..., :-2][..., mask] = fed[..., mask]
+        for label, weights, own in zip(("gas_out", "liquid_out"), self.weights, (leaving, moved[:, :, -1, 1:]), strict=True):
+            way = np.empty_like(still)
+            np.multiply(fed, weights, out=way[..., :-2])
             way[..., self.places] = own
             way[..., -2], way[..., -1] = temperature, pressure
             out[label] = way
@@ -417,6 +414,13 @@ class Column(Unit):
             for sentence in model.cautions(temperature[:, None], pressure[:, None], liquid[..., index]):
                 found.append(f"Column {self.name}, {name}: {sentence}")
         return found
+
+
+def _filled(value: Any, shape: tuple[int, ...]) -> np.ndarray:
+    """Give a number, or an array that may be narrower, for all cases."""
+    if isinstance(value, np.ndarray):
+        return value if value.shape == shape else np.broadcast_to(value, shape)
+    return np.full(shape, value)
 
 
 def _slice(stages: Stages, part: slice) -> Stages:
