@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +24,7 @@ from leanloop.status import OK, Status, code
 STEP_LIMIT = 0.2  # a flow falls to no less than this part of itself in one step
 NEAR = 1e-4  # relative step after which the next one is expected to be the last
 DONE = 1e-8  # relative step after which the error, about its square, is rounding
+CLOSE = 5e-3  # relative step after which the next one is likely to be the last
 LEFT = 1e-13  # relative error that may be left, where two steps show how the square counts
 FLOOR = 1e-9  # flows below this part of the component's feed are judged against it
 LEAST_FLOOR = 1e-11  # of all that is fed: below it a flow drowns in the rounding of the others
@@ -49,6 +51,10 @@ class Answer:
     status : (M,) int8
     iterations : int
         Newton iterations, the last one included.
+    moved : (S, M, N, 1 + D) mol/s or None
+        Response to the right-hand sides asked for, where the last step was solved along with them.
+    first_step : (M,)
+        Relative size of the first step: how good the start was.
     """
 
     stages: Stages
@@ -58,6 +64,8 @@ class Answer:
     bands: list[tuple[slice, Band]]
     status: np.ndarray
     iterations: int
+    moved: np.ndarray | None
+    first_step: np.ndarray
 
     def respond(self, right: np.ndarray) -> np.ndarray:
         """Give the change of the unknowns for changes of the stage equations' data.
@@ -99,7 +107,10 @@ def _limited(unknowns: np.ndarray, step: np.ndarray, inert: np.ndarray, floor: n
     return new
 
 
-def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
+Ask = Callable[[Phases], np.ndarray]
+
+
+def solve(stages: Stages, guess: np.ndarray | None = None, ask: Ask | None = None, good: bool = False) -> Answer:
     """Solve the stage equations of a batch of columns.
 
     Parameters
@@ -107,6 +118,11 @@ def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
     stages : Stages
     guess : (M, N, 1 + D) mol/s, optional
         Unknowns to start from; rows that are not finite are started afresh.
+    ask : callable, optional
+        Gives the right-hand sides (S, M, N, 1 + D) of responses that are wanted, as for
+        `Answer.respond`; they are solved along with a step that is likely to be the last.
+    good : bool
+        Whether the guess is so good that the first step is likely to be the last.
 
     Returns
     -------
@@ -141,7 +157,7 @@ def solve(stages: Stages, guess: np.ndarray | None = None) -> Answer:
         floors = np.empty((cases, parts + 1))
         floors[:, 0] = FLOOR * everything
         floors[:, 1:] = np.where(scale > 0, np.maximum(FLOOR * scale, LEAST_FLOOR * everything[:, None]), np.inf)
-        answer = _iterate(stages, unknowns, floors, status)
+        answer = _iterate(stages, unknowns, floors, status, ask, good)
         _settle_traces(answer, floors)
     return answer
 
@@ -165,7 +181,9 @@ def _settle_traces(answer: Answer, floors: np.ndarray) -> None:
     unknowns[cases, :, 1:] = np.where(good, swept[..., 1:], now[..., 1:])
 
 
-def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray) -> Answer:
+def _iterate(
+    stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray, ask: Ask | None, good: bool
+) -> Answer:
     """Iterate until a step of every case is rounding; the last factorisation holds all cases."""
     cases = len(unknowns)
     absent = ~np.isfinite(floors)[:, None, :]
@@ -173,7 +191,7 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
     unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
     drag, first, before = np.zeros(cases), np.zeros(cases), np.zeros(cases)
     part: np.ndarray | None = None  # the unsolved cases, while they are few
-    local, iterations = stages, 0
+    local, iterations, likely, first_step = stages, 0, good, None
     while True:
         iterations += 1
         own = slice(None) if part is None else part
@@ -190,8 +208,14 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
         if any_failed:
             derivatives[failed] = np.nan
         bands, bad = _factor(derivatives, drag[own])
+        moved = None
         if len(bands) == 1:
-            step = bands[0][1].solve(np.negative(lead, out=lead))
+            np.negative(lead, out=lead)
+            if ask is not None and likely and part is None:
+                both = bands[0][1].solve(np.concatenate([lead[None], -ask(at)]))
+                step, moved = both[0], both[1:]
+            else:
+                step = bands[0][1].solve(lead)
             bad = bad | bands[0][1].singular
         else:
             step = np.empty_like(lead)
@@ -215,14 +239,16 @@ def _iterate(stages: Stages, unknowns: np.ndarray, floors: np.ndarray, status: n
             unknowns = new
         else:
             unknowns[part] = new
+        first_step = size if first_step is None else first_step
         if part is None:
             if size.max(initial=0.0) <= DONE:
-                return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
+                return Answer(stages, at, unknowns, derivatives, bands, status, iterations, moved, first_step)
             # Newton's error after a step is about bend times its square; the last two steps tell bend
             bend = np.maximum(size / np.maximum(before**2, TINY), 1e-2)
             if (size <= np.maximum(DONE, np.sqrt(LEFT / bend))).all():
-                return Answer(stages, at, unknowns, derivatives, bands, status, iterations)
+                return Answer(stages, at, unknowns, derivatives, bands, status, iterations, moved, first_step)
         before[own] = size
+        likely = size.max(initial=0.0) <= CLOSE
         own = np.arange(cases) if part is None else part
         if iterations == PLAIN_ITERATIONS and (size > NEAR).any():
             again = own[size > NEAR]

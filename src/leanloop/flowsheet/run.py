@@ -24,6 +24,7 @@ from leanloop.stream import Stream
 
 TEMPERATURE_TOLERANCE = 1e-6  # K
 PRESSURE_TOLERANCE = 1e-9  # relative
+NEGLIGIBLE = 4 * np.finfo(float).eps  # a last correction smaller than this changes nothing
 LEAST_SCALE = 1e-12  # of the loop flow, where a component has no external input
 
 
@@ -404,6 +405,8 @@ class _LoopRun:
             with np.errstate(invalid="ignore"):
                 correction = newton_step(jacobian, g - x)
             correction[~np.isfinite(correction).all(axis=1)] = 0.0
+            if (np.abs(correction) <= NEGLIGIBLE * np.abs(x)).all():
+                correction = None
             if self.extra:
                 turn = newton_step(jacobian, self._extra_ways(local, rows))
         picked = _Local(status=local.status[rows], worst=local.worst[rows])
@@ -411,10 +414,10 @@ class _LoopRun:
         for name in run.plan.inner(self.step):
             state, way = local.states[name][rows], local.ways.get(name)
             if way is not None and jacobian is not None:
-                way = way[:, rows]
-                moved = state + np.einsum("sm...,ms->m...", way[self.extra :], correction)
-                state = np.where((moved < 0) & (state >= 0), state, moved)
-                picked.ways[name] = self._total(way, turn)
+                if correction is not None:
+                    moved = state + np.einsum("sm...,ms->m...", way[self.extra :, rows], correction)
+                    state = np.where((moved < 0) & (state >= 0), state, moved)
+                picked.ways[name] = self._total(way[:, rows], turn) if self.extra else None
             if nothing is not None:
                 state[:, :-2][nothing] = 0.0
             picked.states[name] = state
@@ -423,10 +426,10 @@ class _LoopRun:
             for key, value in memory.items():
                 own, way = value[rows], local.memory_ways[node].get(key)
                 if way is not None and jacobian is not None:
-                    way = way[:, rows]
-                    own = own + np.einsum("sm...,ms->m...", way[self.extra :], correction)
+                    if correction is not None:
+                        own = own + np.einsum("sm...,ms->m...", way[self.extra :, rows], correction)
                     if self.extra:
-                        picked.memory_ways[node][key] = self._total(way, turn)
+                        picked.memory_ways[node][key] = self._total(way[:, rows], turn)
                 picked.memory[node][key] = own
         put(run.tear_start, self.step.tears, self.cases[cases], run.inputs.cases, x)
         run._store(self.cases[cases], self.step, picked)

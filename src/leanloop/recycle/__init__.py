@@ -11,7 +11,6 @@ METHODS = Registry(
         "wegstein": "leanloop.recycle.wegstein:Wegstein",
         "anderson": "leanloop.recycle.anderson:Anderson",
         "dominant_eigenvalue": "leanloop.recycle.dominant_eigenvalue:DominantEigenvalue",
-        "general_dominant_eigenvalue": "leanloop.recycle.general_dominant_eigenvalue:GeneralDominantEigenvalue",
         "broyden": "leanloop.recycle.broyden:Broyden",
     },
     "leanloop.recycle.base:RecycleMethod",

@@ -7,17 +7,21 @@ import numpy as np
 from leanloop.entries import Entry
 from leanloop.recycle.base import RecycleMethod, State, Trial
 
+SETTLED = 0.5  # of 1 - r: a change of r by more would alter the long step too much
+PATIENCE = 10  # direct steps after which r is taken as it stands
+
 
 class DominantEigenvalue(RecycleMethod):
-    """x+ = x + d / (1 - r) after some direct steps, d = g - x, |r| = ||d|| / ||d of the pass before||.
+    """x+ = x + d / (1 - r) once r has settled over direct steps, with d = g - x and |r| = ||d|| / ||d a pass before||.
 
     r takes the sign of the product of the two d; the norms are weighed by the scale of each
-    component. Not for loops with two slow modes or an oscillating pair, where r does not settle.
+    component. A long step raises the errors outside the slowest mode by 1 / (1 - r), which is why
+    it waits for them to fade. Not for loops with two slow modes or an oscillating pair.
 
     Parameters
     ----------
     direct_steps : int
-        Substitution steps before each long one.
+        Least number of substitution steps before each long one.
 
     References
     ----------
@@ -26,22 +30,24 @@ class DominantEigenvalue(RecycleMethod):
 
     name = "dominant_eigenvalue"
     most_passes = 2000
-    entries = (Entry("direct_steps", "integer", least=1, cases=False, doc="substitutions before each long step, 2 by default"),)
+    entries = (Entry("direct_steps", "integer", least=2, cases=False, doc="substitutions before each long step, 2 by default"),)
     direct_steps = 2
 
     def begin(self, x: np.ndarray) -> State:
         """Remember no pass and no direct step."""
-        return {"d": np.full(x.shape, np.nan), "steps": np.zeros(len(x), dtype=int)}
+        return {"d": np.full(x.shape, np.nan), "ratio": np.full(len(x), np.nan), "steps": np.zeros(len(x), dtype=int)}
 
     def propose(self, trial: Trial, state: State) -> tuple[np.ndarray, State]:
-        """Give g, or the long step where enough direct ones have gone before and it stays in bounds."""
+        """Give g, or where the ratio has settled the long step in the components that it keeps in bounds."""
         x, g, steps = trial.x, trial.g, state["steps"]
         with np.errstate(all="ignore"):
             d = g - x
             now, before = d / trial.scale, state["d"] / trial.scale
             ratio = np.sqrt((now**2).sum(axis=1) / (before**2).sum(axis=1))
             ratio = np.copysign(ratio, (now * before).sum(axis=1))
-            long = (steps >= self.direct_steps) & (ratio < 1)
+            settled = np.abs(ratio - state["ratio"]) <= SETTLED * (1 - ratio)
+            due = (steps >= self.direct_steps) & settled | (steps >= max(self.direct_steps, PATIENCE))
+            long = due & (ratio < 1)
             new = x + d / (1 - ratio)[:, None]
             good = long[:, None] & np.isfinite(new) & (new >= trial.low)
-        return np.where(good, new, g), {"d": d, "steps": np.where(long, 0, steps + 1)}
+        return np.where(good, new, g), {"d": d, "ratio": ratio, "steps": np.where(long, 0, steps + 1)}

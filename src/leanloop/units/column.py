@@ -9,7 +9,7 @@ import numpy as np
 
 from leanloop.column.equations import Phases, Stages, gas_change, phases, rows
 from leanloop.column.law import Law
-from leanloop.column.newton import Answer, solve
+from leanloop.column.newton import CLOSE, Answer, solve
 from leanloop.column.start import split_fractions
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
@@ -178,6 +178,8 @@ class Column(Unit):
     def estimate(self, inlets: Mapping[str, Stream], numbers: Numbers) -> dict[str, Stream]:
         """Give the outlets by one absorption factor for each component."""
         gas, liquid = inlets["gas_in"], inlets["liquid_in"]
+        if not liquid.flows.any():  # nothing has come round the loop yet
+            return self._leaving(inlets, numbers, gas.flows[:, self.places], liquid.flows[:, self.places])
         temperature, pressure = self._conditions(inlets, numbers)
         with np.errstate(all="ignore"):
             law = self.law.at(temperature[:, None], pressure[:, None], self._model_numbers(numbers))
@@ -205,7 +207,11 @@ class Column(Unit):
         if memory is not None and memory["unknowns"].shape[1] == stages.shape[1]:
             guess = np.maximum(memory["unknowns"], 0.0)
             guess[..., 0] = np.maximum(guess[..., 0], stages.gas_inert)
-        answer = solve(stages, guess)
+        asked = None
+        if seeds and (number_tangents or any(way is not None for way in tangents.values())):
+            asked = _Asked(self, stages, inlets, numbers, tangents, number_tangents, seeds)
+        good = guess is not None and memory["first_step"].max(initial=0.0) <= CLOSE
+        answer = solve(stages, guess, asked.right if asked else None, good)
         unknowns, failed = answer.unknowns, answer.status != OK
         with np.errstate(all="ignore"):
             first = _slice(stages, slice(0, 1))
@@ -217,63 +223,10 @@ class Column(Unit):
             status = np.where(failed, answer.status, outlet_status(outlets))
             found: dict[str, np.ndarray | None] = {"gas_out": None, "liquid_out": None}
             memory_tangents = {}
-            if seeds and (number_tangents or any(way is not None for way in tangents.values())):
-                found, moved = self._respond(answer, (first, at_top), inlets, numbers, tangents, number_tangents, seeds)
-                memory_tangents = {"unknowns": moved}
-        return Evaluation(outlets, found, status, {"unknowns": unknowns}, memory_tangents)
-
-    def _respond(
-        self,
-        answer: Answer,
-        top: tuple[Stages, Phases],
-        inlets: Mapping[str, Stream],
-        numbers: Numbers,
-        tangents: Mapping[str, np.ndarray | None],
-        number_tangents: Mapping[str, np.ndarray],
-        seeds: int,
-    ) -> tuple[dict[str, np.ndarray | None], np.ndarray]:
-        """Chain the derivatives of the stage equations' answer along the seeds."""
-        stages = answer.stages
-        cases, count, parts = stages.shape
-        still = np.zeros((seeds, cases, len(self.stays_gas) + 2))
-        gas, liquid = tangents.get("gas_in"), tangents.get("liquid_in")
-        gas, liquid = still if gas is None else gas, still if liquid is None else liquid
-        gas_flows, liquid_flows = gas[..., :-2], liquid[..., :-2]
-        feeds = np.zeros((seeds, cases, count, parts))
-        feeds[:, :, 0] = liquid[..., self.places]
-        feeds[:, :, -1] += gas[..., self.places]
-        up, down = self._inert(gas_flows, liquid_flows, count, *self.weights)
-        if stages.law.plain:
-            up_basis, down_basis = up, down
-        else:
-            up_basis, down_basis = self._inert(gas_flows, liquid_flows, count, *self.basis_weights)
-        temperature = number_tangents.get("temperature", still[..., -2] if "temperature" in numbers else liquid[..., -2])
-        pressure = number_tangents.get("pressure", still[..., -1] if "pressure" in numbers else gas[..., -1])
-        models = [
-            {key: number_tangents[f"{name}.{key}"] for key in model.numbers if f"{name}.{key}" in number_tangents}
-            for name, model in zip(self.model_names, self.models, strict=True)
-        ]
-        shift: Any = 0.0
-        if any(models) or temperature.any() or pressure.any():
-            shift = stages.law.shifted(answer.at.liquid, temperature[..., None], pressure[..., None], models)
-        direct = gas_change(stages, answer.at, 0.0, 0.0, down, down_basis, up_basis, shift)
-        moved = answer.respond(rows(up, feeds, direct))
-        if (answer.status != OK).any():
-            moved[:, answer.status != OK] = 0.0
-        first, at_top = top
-        top_shift = shift[:, :, :1] if np.ndim(shift) else 0.0
-        leaving = gas_change(
-            first, at_top, moved[:, :, :1, 0], moved[:, :, :1, 1:], down[..., :1], down_basis[..., :1], up_basis[..., :1], top_shift
-        )[:, :, 0]
-        fed = gas_flows + liquid_flows
-        out = {}
-        for label, weights, own in zip(("gas_out", "liquid_out"), self.weights, (leaving, moved[:, :, -1, 1:]), strict=True):
-            way = np.empty_like(still)
-            np.multiply(fed, weights, out=way[..., :-2])
-            way[..., self.places] = own
-            way[..., -2], way[..., -1] = temperature, pressure
-            out[label] = way
-        return out, moved
+            if asked is not None:
+                found, memory_tangents["unknowns"] = asked.chained(answer, first, at_top)
+        memory = {"unknowns": unknowns, "first_step": answer.first_step}
+        return Evaluation(outlets, found, status, memory, memory_tangents)
 
     # --- reporting
 
@@ -414,6 +367,94 @@ class Column(Unit):
             for sentence in model.cautions(temperature[:, None], pressure[:, None], liquid[..., index]):
                 found.append(f"Column {self.name}, {name}: {sentence}")
         return found
+
+
+class _Asked:
+    """Derivatives of a column along seeds: what they change in the stage equations, and what answers.
+
+    Parameters
+    ----------
+    column : Column
+    stages : Stages
+    inlets, numbers, tangents, number_tangents, seeds
+        As for `Unit.evaluate`.
+    """
+
+    def __init__(
+        self,
+        column: Column,
+        stages: Stages,
+        inlets: Mapping[str, Stream],
+        numbers: Numbers,
+        tangents: Mapping[str, np.ndarray | None],
+        number_tangents: Mapping[str, np.ndarray],
+        seeds: int,
+    ) -> None:
+        self.column, self.stages = column, stages
+        cases, count, parts = stages.shape
+        self.still = still = np.zeros((seeds, cases, len(column.stays_gas) + 2))
+        gas, liquid = tangents.get("gas_in"), tangents.get("liquid_in")
+        gas, liquid = still if gas is None else gas, still if liquid is None else liquid
+        gas_flows, liquid_flows = gas[..., :-2], liquid[..., :-2]
+        self.fed = gas_flows + liquid_flows
+        self.feeds = np.zeros((seeds, cases, count, parts))
+        self.feeds[:, :, 0] = liquid[..., column.places]
+        self.feeds[:, :, -1] += gas[..., column.places]
+        self.up, self.down = column._inert(gas_flows, liquid_flows, count, *column.weights)
+        self.up_basis, self.down_basis = self.up, self.down
+        if not stages.law.plain:
+            self.up_basis, self.down_basis = column._inert(gas_flows, liquid_flows, count, *column.basis_weights)
+        own = still[..., -2] if "temperature" in numbers else liquid[..., -2]
+        self.temperature = number_tangents.get("temperature", own)
+        own = still[..., -1] if "pressure" in numbers else gas[..., -1]
+        self.pressure = number_tangents.get("pressure", own)
+        self.models = [
+            {key: number_tangents[f"{name}.{key}"] for key in model.numbers if f"{name}.{key}" in number_tangents}
+            for name, model in zip(column.model_names, column.models, strict=True)
+        ]
+        self.shifts = any(self.models) or self.temperature.any() or self.pressure.any()
+
+    def _shift(self, at: Phases) -> np.ndarray | float:
+        """Give the change of the gas coordinates at fixed liquid ones."""
+        if not self.shifts:
+            return 0.0
+        return self.stages.law.shifted(at.liquid, self.temperature[..., None], self.pressure[..., None], self.models)
+
+    def right(self, at: Phases) -> np.ndarray:
+        """Give the change of the stage equations at fixed unknowns, (S, M, N, 1 + D)."""
+        direct = gas_change(
+            self.stages, at, 0.0, 0.0, self.down, self.down_basis, self.up_basis, self._shift(at)
+        )
+        return rows(self.up, self.feeds, direct)
+
+    def chained(
+        self, answer: Answer, first: Stages, at_top: Phases
+    ) -> tuple[dict[str, np.ndarray | None], np.ndarray]:
+        """Give the derivatives of the outlets by label, and of the unknowns."""
+        moved = answer.respond(self.right(answer.at)) if answer.moved is None else answer.moved
+        failed = answer.status != OK
+        if failed.any():
+            moved[:, failed] = 0.0
+        top = slice(0, 1)
+        leaving = gas_change(
+            first,
+            at_top,
+            moved[:, :, top, 0],
+            moved[:, :, top, 1:],
+            self.down[..., top],
+            self.down_basis[..., top],
+            self.up_basis[..., top],
+            self._shift(at_top),
+        )[:, :, 0]
+        found: dict[str, np.ndarray | None] = {}
+        sides = zip(("gas_out", "liquid_out"), self.column.weights, (leaving, moved[:, :, -1, 1:]), strict=True)
+        for label, weights, own in sides:
+            way = np.empty_like(self.still)
+            np.multiply(self.fed, weights, out=way[..., :-2])
+            way[..., self.column.places] = own
+            way[..., -2], way[..., -1] = self.temperature, self.pressure
+            found[label] = way
+        return found, moved
 
 
 def _filled(value: Any, shape: tuple[int, ...]) -> np.ndarray:
