@@ -7,8 +7,7 @@ import numpy as np
 from leanloop.entries import Entry
 from leanloop.recycle.base import RecycleMethod, State, Trial
 
-SETTLED = 0.5  # of 1 - r: a change of r by more would alter the long step too much
-PATIENCE = 10  # direct steps after which r is taken as it stands
+PATIENCE = 10  # direct steps after which the long one is taken whatever else d holds
 
 
 class DominantEigenvalue(RecycleMethod):
@@ -35,7 +34,7 @@ class DominantEigenvalue(RecycleMethod):
 
     def begin(self, x: np.ndarray) -> State:
         """Remember no pass and no direct step."""
-        return {"d": np.full(x.shape, np.nan), "ratio": np.full(len(x), np.nan), "steps": np.zeros(len(x), dtype=int)}
+        return {"d": np.full(x.shape, np.nan), "steps": np.zeros(len(x), dtype=int)}
 
     def propose(self, trial: Trial, state: State) -> tuple[np.ndarray, State]:
         """Give g, or where the ratio has settled the long step in the components that it keeps in bounds."""
@@ -45,9 +44,10 @@ class DominantEigenvalue(RecycleMethod):
             now, before = d / trial.scale, state["d"] / trial.scale
             ratio = np.sqrt((now**2).sum(axis=1) / (before**2).sum(axis=1))
             ratio = np.copysign(ratio, (now * before).sum(axis=1))
-            settled = np.abs(ratio - state["ratio"]) <= SETTLED * (1 - ratio)
+            rest = np.sqrt(((now - ratio[:, None] * before) ** 2).sum(axis=1) / (now**2).sum(axis=1))
+            settled = rest <= 1 - ratio  # what the long step makes of the rest is no greater than d
             due = (steps >= self.direct_steps) & settled | (steps >= max(self.direct_steps, PATIENCE))
             long = due & (ratio < 1)
             new = x + d / (1 - ratio)[:, None]
             good = long[:, None] & np.isfinite(new) & (new >= trial.low)
-        return np.where(good, new, g), {"d": d, "ratio": ratio, "steps": np.where(long, 0, steps + 1)}
+        return np.where(good, new, g), {"d": d, "steps": np.where(long, 0, steps + 1)}
