@@ -62,26 +62,28 @@ class Band:
     def fill(self, derivatives: np.ndarray, drag: np.ndarray) -> None:
         """Set the matrix of stage equations whose gas flows have given derivatives.
 
-        Rows of a stage: the sum of its own gas flows less the first unknown, then, for each
-        component, gas flow from below less its own gas flow and its own liquid flow.
+        Rows of a stage: for each component, gas flow from below less its own gas flow and its own
+        liquid flow; before them, where the first unknown is the total gas flow, the sum of the
+        stage's gas flows less that.
 
         Parameters
         ----------
-        derivatives : (M, N, n, n - 1) by [case, stage, unknown, component]
-            Of the gas flows by the unknowns of their stage.
+        derivatives : (M, N, n, D) by [case, stage, unknown, component]
+            Of the gas flows by the unknowns of their stage; D = n - `first`.
         drag : (M,)
             Taken from the diagonal of the component rows.
         """
-        n, runs = self.shape[2], self._runs
-        runs[..., 1:n] = derivatives
-        runs[..., n] = derivatives.sum(axis=-1)
-        np.negative(derivatives, out=runs[..., n + 1 :])
+        n, first, runs = self.shape[2], self._first, self._runs
+        runs[..., first:n] = derivatives
+        if first:
+            runs[..., n] = derivatives.sum(axis=-1)
+        np.negative(derivatives, out=runs[..., n + first :])
         diagonal = self._cells[..., self.lower + self.upper]
         diagonal -= 1.0
         if drag.any():
-            diagonal[..., 1:] -= drag[:, None, None]
+            diagonal[..., first:] -= drag[:, None, None]
         runs[:, 0, :, :n] = 0.0
-        self._cells[:, :-1, self._first :, -1] = 1.0
+        self._cells[:, :-1, first:, -1] = 1.0
 
     def isolate(self, cases: np.ndarray) -> None:
         """Put the identity in the rows of some cases.

@@ -17,8 +17,6 @@ import numpy as np
 
 from leanloop.column.law import BoundLaw
 
-FIRST_MATERIAL_ROW = 1
-
 
 @dataclass
 class Stages:

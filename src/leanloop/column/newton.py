@@ -7,9 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from leanloop.column.band import BYTES_A_CHUNK, Band, bytes_a_case
 from leanloop.column.equations import (
-    FIRST_MATERIAL_ROW,
     Phases,
     Stages,
     gas_change,
@@ -18,6 +16,7 @@ from leanloop.column.equations import (
     residual,
     rows,
 )
+from leanloop.column.jacobian import Jacobian
 from leanloop.column.start import filling_start, fraction_ratio, start, sweep
 from leanloop.status import OK, Status, code
 
@@ -44,10 +43,8 @@ class Answer:
     at : Phases
         State at which the factorisation was made, one quadratic step before `unknowns`.
     unknowns : (M, N, 1 + D) mol/s
-    derivatives : (M, N, 1 + D, D)
-        Of v by the unknowns of its stage, at `at`.
-    bands : list of (slice, Band)
-        Factorised Jacobian, chunk by chunk.
+    jacobian : Jacobian
+        Factorised at `at`.
     status : (M,) int8
     iterations : int
         Newton iterations, the last one included.
@@ -60,8 +57,7 @@ class Answer:
     stages: Stages
     at: Phases
     unknowns: np.ndarray
-    derivatives: np.ndarray
-    bands: list[tuple[slice, Band]]
+    jacobian: Jacobian
     status: np.ndarray
     iterations: int
     moved: np.ndarray | None
@@ -79,22 +75,7 @@ class Answer:
         -------
         (S, M, N, 1 + D) mol/s
         """
-        out = np.empty_like(right)
-        for part, band in self.bands:
-            out[:, part] = band.solve(-right[:, part])
-        return out
-
-
-def _factor(derivatives: np.ndarray, drag: np.ndarray) -> tuple[list[tuple[slice, Band]], np.ndarray]:
-    cases, count, unknowns, _ = derivatives.shape
-    size = max(1, BYTES_A_CHUNK // bytes_a_case(count, unknowns))
-    bands, bad = [], np.zeros(cases, dtype=bool)
-    for begin in range(0, cases, size):
-        part = slice(begin, min(begin + size, cases))
-        band = Band(part.stop - part.start, count, unknowns, FIRST_MATERIAL_ROW)
-        bad[part] = band.factor(derivatives[part], drag[part])
-        bands.append((part, band))
-    return bands, bad
+        return self.jacobian.solve(-right)
 
 
 def _limited(unknowns: np.ndarray, step: np.ndarray, inert: np.ndarray, floor: np.ndarray) -> np.ndarray:
@@ -207,21 +188,14 @@ def _iterate(
         derivatives = gas_derivatives(local, at)
         if any_failed:
             derivatives[failed] = np.nan
-        bands, bad = _factor(derivatives, drag[own])
-        moved = None
-        if len(bands) == 1:
-            np.negative(lead, out=lead)
-            if ask is not None and likely and part is None:
-                both = bands[0][1].solve(np.concatenate([lead[None], -ask(at)]))
-                step, moved = both[0], both[1:]
-            else:
-                step = bands[0][1].solve(lead)
-            bad = bad | bands[0][1].singular
+        jacobian, moved = Jacobian(derivatives, drag[own]), None
+        np.negative(lead, out=lead)
+        if ask is not None and likely and part is None:
+            both = jacobian.solve(np.concatenate([lead[None], -ask(at)]))
+            step, moved = both[0], both[1:]
         else:
-            step = np.empty_like(lead)
-            for piece, band in bands:
-                step[piece] = band.solve(-lead[piece])
-                bad[piece] |= band.singular
+            step = jacobian.solve(lead)
+        bad = jacobian.bad
         if absent is not None:
             step = np.where(absent[own], 0.0, step)
         new = _limited(now, step, local.gas_inert, floor[:, 0])
@@ -242,11 +216,11 @@ def _iterate(
         first_step = size if first_step is None else first_step
         if part is None:
             if size.max(initial=0.0) <= DONE:
-                return Answer(stages, at, unknowns, derivatives, bands, status, iterations, moved, first_step)
+                return Answer(stages, at, unknowns, jacobian, status, iterations, moved, first_step)
             # Newton's error after a step is about bend times its square; the last two steps tell bend
             bend = np.maximum(size / np.maximum(before**2, TINY), 1e-2)
             if (size <= np.maximum(DONE, np.sqrt(LEFT / bend))).all():
-                return Answer(stages, at, unknowns, derivatives, bands, status, iterations, moved, first_step)
+                return Answer(stages, at, unknowns, jacobian, status, iterations, moved, first_step)
         before[own] = size
         likely = size.max(initial=0.0) <= CLOSE
         own = np.arange(cases) if part is None else part

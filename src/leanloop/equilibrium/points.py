@@ -110,7 +110,8 @@ def smooth(places: Any, heights: Any) -> Curve:
 
 @lru_cache(maxsize=256)
 def _smooth(places: tuple[float, ...], heights: tuple[float, ...]) -> Curve:
-    curve = PchipInterpolator(places, heights)
+    with np.errstate(all="ignore"):  # differences near the least number overflow inside, to no effect
+        curve = PchipInterpolator(places, heights)
     slope = curve.derivative()
     first, last = places[0], places[-1]
     low, high = float(slope(first)), float(slope(last))
