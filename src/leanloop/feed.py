@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import copy
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import numpy as np
@@ -11,6 +11,9 @@ from scipy.constants import R
 
 from leanloop.components import PHASES, Components
 from leanloop.entries import Context, Entry, Values, read_number, read_values
+from leanloop.equilibrium.conditions import Conditions
+from leanloop.equilibrium.water import is_water
+from leanloop.equilibrium.water import vapour_pressure as water_vapour_pressure
 from leanloop.errors import nearest
 from leanloop.stream import Stream
 
@@ -22,6 +25,7 @@ ENTRIES = (
     Entry("phase", "choice", required=True, choices=PHASES, doc="gas or liquid"),
     Entry("temperature", "temperature", required=True),
     Entry("pressure", "pressure", required=True, above=0.0),
+    Entry("saturated_with", "component", doc="component of which the gas holds what it can at its T and P"),
     Entry("flow", FLOW_SORTS, least=0.0, doc="whole stream; gas also in m3 at its own T and P, or Nm3"),
 )
 _PART = Entry("part", ("number", "molar mass"), least=0.0)
@@ -42,16 +46,33 @@ class Feed:
         self.name, self.raw = name, raw
         self.values = Values()
         self.form, self.rest = "", ""
+        self.vapour_pressure: Callable[[np.ndarray], np.ndarray] | None = None
 
     @property
     def phase(self) -> str:
         """``"gas"`` or ``"liquid"``."""
         return self.values.words.get("phase", "gas")
 
-    def read(self, components: Components, basis: Mapping[str, tuple[str, ...]], context: Context) -> Feed:
-        """Give a copy with its entries read; faults are noted in the context."""
+    def read(
+        self,
+        components: Components,
+        basis: Mapping[str, tuple[str, ...]],
+        conditions: Mapping[str, Conditions],
+        context: Context,
+    ) -> Feed:
+        """Give a copy with its entries read; faults are noted in the context.
+
+        Parameters
+        ----------
+        components : Components
+        basis : mapping of str to tuple of str
+            What ``[basis]`` sets.
+        conditions : mapping of str to Conditions
+            Where the vapour pressure of a saturated component is looked for.
+        context : Context
+        """
         feed = copy.copy(self)
-        feed.components, feed.basis = components, basis
+        feed.components, feed.basis, feed.vapour_pressure = components, basis, None
         address = f"feeds.{self.name}"
         forms = [form for form in (*FORMS, "flows") if form in self.raw]
         plain = {key: value for key, value in self.raw.items() if key not in (*FORMS, "flows")}
@@ -76,8 +97,33 @@ class Feed:
             if "flow" not in self.raw:
                 context.fault(f"{address}.flow", "entry is missing", 'add flow = "10 mol/s", or give flows by component')
             feed._read_parts(address, context)
+        if "saturated_with" in feed.values.words:
+            feed._read_saturation(feed.values.words["saturated_with"], conditions, address, context)
         feed._check(address, context)
         return feed
+
+    def _read_saturation(self, name: str, conditions: Mapping[str, Conditions], address: str, context: Context) -> None:
+        where = f"{address}.saturated_with"
+        if self.phase != "gas":
+            context.fault(where, "is for a gas", "take it away, or make the feed a gas")
+        if self.form == "flows":
+            context.fault(where, "does not go with flows by component", "give flow and fractions of the dry gas")
+        if name in self.values.group(self.form) or name == self.rest:
+            context.fault(where, f"'{name}' is given in {self.form} as well", f"take it out of {self.form}, which then is the dry gas")
+        for table in conditions.values():
+            model = table.models.get(name)
+            if hasattr(model, "saturation_pressure"):
+                self.vapour_pressure = lambda temperature: model.saturation_pressure(temperature, model.numbers)
+                break
+        else:
+            if is_water(name):
+                self.vapour_pressure = water_vapour_pressure
+            else:
+                context.fault(where, f"no vapour pressure of '{name}' is known", "give it a raoult model in an equilibrium table")
+        numbers = self.values.numbers
+        if self.vapour_pressure is not None and {"temperature", "pressure"} <= set(numbers):
+            if float(self.vapour_pressure(np.array(numbers["temperature"]))) >= numbers["pressure"]:
+                context.fault(where, f"'{name}' boils at this temperature and pressure", "lower the temperature")
 
     def _read_parts(self, address: str, context: Context) -> None:
         table = self.raw[self.form]
@@ -152,7 +198,8 @@ class Feed:
     def present(self) -> list[str]:
         """Give the components that the feed can hold."""
         names = list(self.values.group(self.form))
-        return [name for name in self.components.names if name in names or name == self.rest]
+        own = (self.rest, self.values.words.get("saturated_with"))
+        return [name for name in self.components.names if name in names or name in own]
 
     def addresses(self) -> dict[str, str]:
         """Give the address of every number by its local name."""
@@ -187,7 +234,10 @@ class Feed:
                 for name, value in parts.items()
             }
         else:
-            amounts = self._scaled(self._complete(parts, changed), numbers)
+            parts = self._complete(parts, changed)
+            if self.vapour_pressure is not None:
+                parts = self._saturated(parts, numbers)
+            amounts = self._scaled(parts, numbers)
         kind = np.result_type(float, *(np.asarray(value) for value in amounts.values()))
         flows = np.zeros((*shape, len(self.components)), dtype=kind)
         for name, value in amounts.items():
@@ -210,6 +260,12 @@ class Feed:
         if self.form == "mass_fractions":
             parts = {name: value / self.components[name].molar_mass for name, value in parts.items()}
         return parts
+
+    def _saturated(self, parts: dict[str, Any], numbers: Mapping[str, Any]) -> dict[str, Any]:
+        """Add the vapour that saturates the gas to parts in proportion to moles."""
+        fraction = self.vapour_pressure(np.asarray(numbers["temperature"])) / numbers["pressure"]
+        fraction = np.where(np.real(fraction) < 1.0, fraction, np.nan)
+        return {**parts, self.values.words["saturated_with"]: sum(parts.values()) * fraction / (1.0 - fraction)}
 
     def _scaled(self, parts: dict[str, Any], numbers: Mapping[str, Any]) -> dict[str, Any]:
         flow, sort = np.asarray(numbers["flow"]), self.values.sorts["flow"]

@@ -69,6 +69,24 @@ class Region:
         return list(dict.fromkeys(name for step in self.steps for name in step.units))
 
 
+@dataclass(frozen=True)
+class Tie:
+    """Where a requirement stands in the flowsheet.
+
+    Parameters
+    ----------
+    units, feeds : tuple of str
+        Units or feeds that its quantity is reported of.
+    free_units, free_feeds : tuple of str
+        Units or feeds that its freed input belongs to.
+    """
+
+    units: tuple[str, ...]
+    feeds: tuple[str, ...]
+    free_units: tuple[str, ...]
+    free_feeds: tuple[str, ...]
+
+
 class Structure:
     """Streams between feeds and units.
 
@@ -237,6 +255,19 @@ def _port(unit: Unit, label: str) -> str:
         for entry in unit.entries
         if entry.sort in ("inlet", "outlet") and label in (unit.values.words.get(entry.name) or ())
     )
+
+
+def nodes_of(graph: nx.MultiDiGraph, units: Iterable[str], feeds: Iterable[str]) -> list[Node]:
+    """Give the nodes of some units and feeds."""
+    units, feeds = set(units), set(feeds)
+    return [node for node in graph if node.name in (units if node.sort == "unit" else feeds)]
+
+
+def influences(graph: nx.MultiDiGraph, tie: Tie) -> bool:
+    """Tell whether a requirement's freed input stands upstream of its quantity, loops included."""
+    free = nodes_of(graph, tie.free_units, tie.free_feeds)
+    wanted = set(nodes_of(graph, tie.units, tie.feeds))
+    return any(node in wanted or not wanted.isdisjoint(nx.descendants(graph, node)) for node in free)
 
 
 def arrange(

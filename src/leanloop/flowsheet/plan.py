@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -11,26 +10,8 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context
 from leanloop.feed import Feed
-from leanloop.flowsheet.graph import Node, Region, Step, Structure, arrange
+from leanloop.flowsheet.graph import Node, Region, Step, Structure, Tie, arrange, nodes_of
 from leanloop.units.base import Surroundings, Unit
-
-
-@dataclass(frozen=True)
-class Tie:
-    """Where a requirement stands in the flowsheet.
-
-    Parameters
-    ----------
-    units, feeds : tuple of str
-        Units or feeds that its quantity is reported of.
-    free_units, free_feeds : tuple of str
-        Units or feeds that its freed input belongs to.
-    """
-
-    units: tuple[str, ...]
-    feeds: tuple[str, ...]
-    free_units: tuple[str, ...]
-    free_feeds: tuple[str, ...]
 
 
 class Plan:
@@ -84,11 +65,9 @@ class Plan:
             Where chosen tears do not cut every loop.
         """
 
-        def nodes(units: Sequence[str], feeds: Sequence[str]) -> list[Node]:
-            return [node for node in self.graph if (node[0] == "unit" and node[1] in units) or (node[0] == "feed" and node[1] in feeds)]
-
         placed = {
-            name: (nodes(tie.units, tie.feeds), nodes(tie.free_units, tie.free_feeds)) for name, tie in ties.items()
+            name: (nodes_of(self.graph, tie.units, tie.feeds), nodes_of(self.graph, tie.free_units, tie.free_feeds))
+            for name, tie in ties.items()
         }
         self.regions = arrange(self.graph, placed, self._costs(), tears)
 

@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 
 from leanloop.components import Components
+from leanloop.equilibrium.water import is_water, saturation_temperature
 from leanloop.errors import nearest
 from leanloop.stream import Stream, divide
 
@@ -22,7 +23,6 @@ BY_COMPONENT = (
     "mg_per_Nm3_dry",
 )
 WHOLE = ("phase", "temperature_K", "pressure_Pa", "total_mol_s", "dew_point_K", "vapour_fraction")
-WATER_NAMES = ("water", "h2o", "steam")
 
 
 class Bases:
@@ -43,7 +43,7 @@ class Bases:
         solvents = [name for name in stays["liquid"] if name in held] or stays["liquid"]
         self.ratio = {phase: components.mask(given.get(phase) or names) for phase, names in stays.items()}
         self.loading = components.mask(given.get("loading") or solvents)
-        self.water = np.array([name.lower() in WATER_NAMES for name in components.names], dtype=bool)
+        self.water = np.array([is_water(name) for name in components.names], dtype=bool)
 
 
 def stream_table(stream: Stream, bases: Bases) -> dict[str, Any]:
@@ -83,7 +83,8 @@ def stream_quantity(stream: Stream, bases: Bases, key: str) -> Any:
     if key == "vapour_fraction":
         return np.full(stream.temperature.shape, 1.0 if stream.phase == "gas" else 0.0)
     if key == "dew_point_K":
-        return None
+        water = stream.flows[..., bases.water].sum(axis=-1)
+        return saturation_temperature(divide(water, stream.total) * stream.pressure) if bases.water.any() else None
     values = {
         "mol_s": lambda: stream.flows,
         "fraction": lambda: stream.fractions,

@@ -48,7 +48,7 @@ class Anderson(RecycleMethod):
             )
             fresh = np.isfinite(state["g"]).all(axis=1)[:, None]
             dd[:, 0], dg[:, 0] = np.where(fresh, dd[:, 0], 0.0), np.where(fresh, dg[:, 0], 0.0)
-            new = g - fitted(d / trial.scale, dd / trial.scale[:, None], dg)
+            new = g - fitted(d / trial.yardstick, dd / trial.yardstick[:, None], dg)
             good = np.isfinite(new) & (new >= trial.low)
         return np.where(good, new, g), {"d": d, "g": g, "dd": dd, "dg": dg}
 
@@ -76,7 +76,7 @@ def fitted(aim: np.ndarray, columns: np.ndarray, partners: np.ndarray) -> np.nda
         length = np.sqrt((columns[:, k] ** 2).sum(axis=1))
         kept = np.isfinite(length) & (length > CUT * whole[:, k])
         length = np.where(kept, length, np.inf)[:, None]
-        unit, partner = np.where(kept[:, None], columns[:, k] / length, 0.0), np.where(kept[:, None], partners[:, k] / length, 0.0)
+        unit, partner = (np.where(kept[:, None], array[:, k] / length, 0.0) for array in (columns, partners))
         share = (aim * unit).sum(axis=1)[:, None]
         aim, total = aim - share * unit, total + share * partner
         shares = (columns[:, k + 1 :] * unit[:, None]).sum(axis=2)[..., None]

@@ -41,6 +41,11 @@ class Trial:
     scale: np.ndarray
     low: np.ndarray = field(default_factory=lambda: np.array(-np.inf))
 
+    @property
+    def yardstick(self) -> np.ndarray:
+        """What to divide each component by: its scale, or 1 where that is nothing (m, n)."""
+        return np.where(self.scale > 0, self.scale, 1.0)
+
 
 class RecycleMethod(ABC):
     """Frozen configuration of a method; what it remembers of a run goes in and out.

@@ -31,7 +31,7 @@ class Broyden(RecycleMethod):
     def propose(self, trial: Trial, state: State) -> tuple[np.ndarray, State]:
         """Give the quasi-Newton step, or g in the cases that it takes out of bounds."""
         x, g, inverse = trial.x, trial.g, state["inverse"]
-        scale = np.where(np.isnan(state["scale"]), trial.scale, state["scale"])  # H belongs to one scale
+        scale = np.where(np.isnan(state["scale"]), trial.yardstick, state["scale"])  # H belongs to one scale
         with np.errstate(all="ignore"):
             d = g - x
             s, y = (x - state["x"]) / scale, (d - state["d"]) / scale
