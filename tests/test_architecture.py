@@ -33,7 +33,7 @@ LAYERS = {
     "stream": ("quantities", "components"),
     "equilibrium": (*TEXT, "registry", "components"),
     "column": ("errors", "status", "entries", "equilibrium"),
-    "feed": (*TEXT, "components", "stream"),
+    "feed": (*TEXT, "components", "stream", "equilibrium"),
     "units": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "column"),
     "recycle": ("errors", "registry", "entries"),
     "flowsheet": (
@@ -61,7 +61,7 @@ NOT_IN = {("scipy", "recycle/"), ("scipy", "textfile/"), ("scipy", "cli.py"), ("
 
 # Plug-in files are loaded by name alone. What a layer shares is in the files listed here.
 SHARED = {
-    "equilibrium": ("", ".base", ".conditions"),
+    "equilibrium": ("", ".base", ".conditions", ".water"),
     "units": ("", ".base"),
     "recycle": ("", ".base", ".driver"),
 }

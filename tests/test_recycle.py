@@ -443,6 +443,14 @@ def test_dominant_eigenvalue_is_exact_where_there_is_one(ratio):
     np.testing.assert_allclose(problem.x[0], along / (1 - ratio), rtol=1e-9)
 
 
+def test_dominant_eigenvalue_waits_while_two_modes_turn():
+    # Turning by 60 degrees keeps |d| / |d before| at 0.8 from the start, though no mode is alone:
+    # a long step after two direct ones would grow the error 0.8**2 * 4 times.
+    problem = Problem(*PROBLEMS["oscillating"])
+    assert problem.solve(DominantEigenvalue(direct_steps=2)).converged[0]
+    np.testing.assert_allclose(problem.x, problem.solution(), rtol=1e-9)
+
+
 # --- least squares of Anderson's method
 
 

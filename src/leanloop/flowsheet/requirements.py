@@ -26,6 +26,7 @@ ZOOMS = 4
 REFINEMENTS = 60
 ROWS_AT_ONCE = 4096
 STARTS = 32
+RANK = 1e-7  # of a matrix of elasticities
 FLAT = 1e-3  # elasticity below which a quantity no longer follows its freed input
 
 
@@ -73,6 +74,8 @@ class Found:
         ``"bound"``, ``"pinch"``, ``"turning_point"`` or None.
     others : list of M lists
         Freed inputs of further solutions.
+    note : dict of int to str
+        By case, what is known of why it was not reached.
     """
 
     reached: np.ndarray
@@ -81,6 +84,7 @@ class Found:
     free_value: np.ndarray
     reason: np.ndarray
     others: list[list[float]] = field(default_factory=list)
+    note: dict[int, str] = field(default_factory=dict)
 
 
 @dataclass
@@ -377,7 +381,7 @@ class _Several:
         count = len(self.cases)
         rows = np.repeat(np.arange(count), STARTS)
         p = self.low + np.tile(starts, (count, 1)) * (self.high - self.low)
-        p, merit = self._newton(rows, p)
+        p, merit, slopes = self._newton(rows, p)
         for row, case in enumerate(self.cases):
             mine = np.flatnonzero(rows == row)
             reached = [n for n in mine if merit[n] <= 1e-9]
@@ -393,15 +397,40 @@ class _Several:
                 found.free_value[case] = p[best, number]
                 found.others[case] = [float(p[n, number]) for n in distinct[1:]]
                 if not distinct:
+                    found.note[int(case)] = self._tangled(p[mine], slopes[mine], row)
                     at_end = min(abs(p[best, number] - item.low), abs(p[best, number] - item.high))
                     found.reason[case] = "bound" if at_end <= 1e-9 * abs(item.high) else "turning_point"
+
+    def _tangled(self, p: np.ndarray, slopes: np.ndarray, row: int) -> str:
+        """Name requirements that cannot be met apart: their elasticities are of lower rank wherever tried."""
+        scale = np.maximum(np.abs(self.target[row]), 1e-300)
+        tangled: np.ndarray | None = None
+        for own, slope in zip(p, slopes, strict=True):
+            matrix = slope * np.abs(own) / scale[:, None]
+            if not np.isfinite(matrix).all():
+                continue
+            sizes = np.linalg.norm(matrix, axis=1)
+            if (sizes <= RANK * sizes.max(initial=0.0)).any() or sizes.max(initial=0.0) == 0.0:
+                members = sizes <= RANK * sizes.max(initial=0.0)
+            else:
+                left, values, _ = np.linalg.svd(matrix / sizes[:, None])
+                if values[-1] > RANK * values[0]:
+                    return ""
+                members = np.abs(left[:, -1]) > 0.1
+            tangled = members if tangled is None else tangled | members
+        if tangled is None:
+            return ""
+        names = [item.name for item, member in zip(self.active, tangled, strict=True) if member]
+        if len(names) == 1:
+            return f"{names[0]} does not follow any of the freed inputs"
+        return f"{' and '.join(names)} move together whatever is freed: drop one, or free another input"
 
     def _merit(self, probe: _Probe, rows: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         scale = np.maximum(np.abs(self.target[rows]), 1e-300)
         gap = (probe.q - self.target[rows]) / scale
         return gap * scale, np.where(probe.good, np.abs(gap).max(axis=1), np.inf)
 
-    def _newton(self, rows: np.ndarray, p: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    def _newton(self, rows: np.ndarray, p: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         probe = self.owner._probe(self.active, self.cases[rows], p)
         f, merit = self._merit(probe, rows)
         slopes = probe.slopes
@@ -424,4 +453,4 @@ class _Several:
             p[take], f[take], merit[take], slopes[take] = new[better], f_new[better], merit_new[better], trial.slopes[better]
             damping[on] = np.where(better, np.minimum(1.0, 2 * damping[on]), 0.4 * damping[on])
             damping[on[stuck]] = 0.0
-        return p, merit
+        return p, merit, slopes

@@ -135,7 +135,8 @@ class Result:
                 for name, found in part.found.items()
                 if not found.reached[row]
             ]
-            text = f"{text} ({'; '.join(missed)})"
+            notes = dict.fromkeys(found.note[row] for found in part.found.values() if found.note.get(row))
+            text = f"{text} ({'; '.join([*missed, *notes])})"
         elif culprit >= 0:
             text = f"Unit {part.run.plan.unit_names[culprit]}: {text}"
         return text

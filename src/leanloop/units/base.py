@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import copy
 from abc import ABC, abstractmethod
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, ClassVar
 
@@ -67,6 +67,55 @@ class Evaluation:
     memory_tangents: dict[str, np.ndarray] = field(default_factory=dict)
 
 
+@dataclass(frozen=True)
+class Inlet:
+    """A stream that an example of a unit is fed, for one case or several.
+
+    Parameters
+    ----------
+    phase : str
+        ``"gas"`` or ``"liquid"``.
+    flows : mapping of str to float or list of float
+        mol/s by component, one value or one for each case.
+    temperature : float or list of float
+        K.
+    pressure : float or list of float
+        Pa.
+    """
+
+    phase: str
+    flows: Mapping[str, float | Sequence[float]]
+    temperature: float | Sequence[float] = 300.0
+    pressure: float | Sequence[float] = 1e5
+
+
+@dataclass(frozen=True)
+class Scene:
+    """An example of a unit with all it needs, for the contract checks.
+
+    The cases should differ and stand where the unit's formulas are smooth: derivatives are compared there.
+
+    Parameters
+    ----------
+    entries : mapping of str to Any
+        As a file would hold them, without ``kind``.
+    inlets : mapping of str to Inlet
+        By label: the port's name, or the stream's own name at a port that takes several.
+    components : mapping of str to mapping
+        Tables as in a file; by default the components that flow, which all distribute.
+    equilibrium : mapping of str to mapping
+        Tables as in a file.
+    basis : mapping of str to tuple of str
+        As in `Surroundings`.
+    """
+
+    entries: Mapping[str, Any]
+    inlets: Mapping[str, Inlet]
+    components: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    equilibrium: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    basis: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+
+
 class Unit(ABC):
     """One piece of the flowsheet.
 
@@ -94,6 +143,8 @@ class Unit(ABC):
     inlets, outlets : dict of str to str
         Stream names by label, once read. The label is the port's name, or the stream's own name
         at a port that takes several.
+    known_failures : dict of str to str
+        Contract checks that the kind fails, each with the reason; one that it passes is an error.
     """
 
     kind: ClassVar[str] = ""
@@ -101,6 +152,7 @@ class Unit(ABC):
     derivatives: ClassVar[str] = "complex"
     scales: ClassVar[bool] = True
     shuts: ClassVar[bool] = False
+    known_failures: ClassVar[Mapping[str, str]] = {}
 
     def __init__(self, name: str, **raw: Any) -> None:
         self.name, self.raw = name, raw
@@ -109,6 +161,11 @@ class Unit(ABC):
         self.outlets: dict[str, str] = {}
         self.around: Surroundings | None = None
         self.tables: Mapping[str, Conditions] = {}
+
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give scenes for the contract checks of `leanloop.checks`, which ask for one at least."""
+        return []
 
     # --- reading and connecting
 

@@ -16,7 +16,7 @@ from leanloop.entries import Context, Entry
 from leanloop.equilibrium.base import EquilibriumModel
 from leanloop.status import OK
 from leanloop.stream import Stream, divide
-from leanloop.units.base import Evaluation, Numbers, Surroundings, Unit, outlet_status
+from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit, outlet_status
 
 MOST_STAGES = 5000
 _NEVER = EquilibriumModel.outside
@@ -42,6 +42,30 @@ class Column(Unit):
     )
     derivatives = "own"
     cleans: ClassVar[str] = "gas"
+
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give dilute solutes that stay out of the oil, and volatile ones on curves of mole fractions and ratios."""
+        ports = {"gas_in": "up", "liquid_in": "down", "gas_out": "top", "liquid_out": "bottom", "equilibrium": "here"}
+        carriers = {"air": {"stays_in": "gas"}, "oil": {"stays_in": "liquid"}}
+        fed = {
+            "gas_in": Inlet("gas", {"air": [1.0, 2.0], "a": [0.02, 0.0], "b": [0.01, 0.1]}, 310.0, [1.1e5, 2e5]),
+            "liquid_in": Inlet("liquid", {"oil": [1.5, 1.0], "a": [0.001, 0.01], "b": [0.0, 0.2]}, [300.0, 320.0], 2e5),
+        }
+        warm = {"a": {"model": "henry", "constant": "0.6 bar", "slope": "2000 K"}, "b": {"model": "constant", "K": 1.3}}
+        curved = {
+            "a": {"model": "table", "X": [0.0, 0.03, 0.1, 0.4], "Y": [0.0, 0.02, 0.09, 0.5]},
+            "b": {"model": "polynomial", "K": [-1.2, 0.005]},
+        }
+        return [
+            Scene({**ports, "stages": 5}, fed, {**carriers, "a": {}, "b": {}}, {"here": warm}),
+            Scene(
+                {**ports, "stages": 3, "temperature": "50 degC", "pressure": "1.5 bar"},
+                fed,
+                {"b": {}, **carriers, "a": {}},
+                {"here": curved},
+            ),
+        ]
 
     # --- connecting
 

@@ -7,7 +7,7 @@ from typing import Any
 
 from leanloop.entries import Entry
 from leanloop.stream import Stream
-from leanloop.units.base import Numbers, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Unit
 
 
 class Heater(Unit):
@@ -20,6 +20,12 @@ class Heater(Unit):
         Entry("temperature", "temperature", required=True, doc="temperature of the outlet"),
     )
     warms = True
+
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give a liquid brought to a temperature."""
+        brine = Inlet("liquid", {"water": [2.0, 1.0], "salt": [0.1, 0.0]}, [300.0, 320.0], [1e5, 2e5])
+        return [Scene({"takes": "before", "gives": "after", "temperature": "37 degC"}, {"takes": brine})]
 
     def leans_on(self, outlet: str, what: str) -> list[tuple[str, str]]:
         """The temperature is given; the pressure is the inlet's."""

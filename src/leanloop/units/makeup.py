@@ -10,7 +10,7 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
 from leanloop.stream import Stream
-from leanloop.units.base import Numbers, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Unit
 
 
 class Makeup(Unit):
@@ -21,40 +21,87 @@ class Makeup(Unit):
         Entry("takes", "inlet", required=True, doc="the stream that has lost some of the held components"),
         Entry("gives", "outlet", required=True, doc="the stream with the held flows"),
         Entry("hold", "molar flow", required=True, by="component", least=0.0, doc="flow of each held component"),
+        Entry("composition", "number", by="component", least=0.0, most=1.0, doc="mole fractions of what is added; pure by default"),
+        Entry("temperature", "temperature", doc="of what is added; that of the stream by default"),
+        Entry("pressure", "pressure", above=0.0, doc="of what is added; that of the stream by default"),
     )
 
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give a lean oil that has lost some of its solvent, and one that has won some."""
+        lean = Inlet("liquid", {"oil": [1.5, 1.7], "light": [0.0, 0.2], "tar": [0.01, 0.0]}, [300.0, 310.0])
+        return [Scene({"takes": "lean", "gives": "full", "hold": {"oil": 1.6, "light": 0.1}}, {"takes": lean})]
+
     def check(self, address: str, context: Context) -> None:
-        """At least one component is held."""
+        """Something is held; a composition is complete and goes with one held component."""
+        hold = self.values.group("hold")
         if isinstance(self.raw.get("hold"), Mapping) and not self.raw["hold"]:
             context.fault(f"{address}.hold", "holds nothing", 'write hold = { solvent = "1.6 mol/s" }')
+        raw = self.raw.get("composition")
+        parts = self.values.group("composition")
+        if raw is None or not isinstance(raw, Mapping) or len(parts) < len(raw):
+            return
+        if abs(sum(parts.values()) - 1.0) > 1e-6:
+            context.fault(f"{address}.composition", f"the fractions sum to {sum(parts.values()):g}", "make them sum to 1")
+        if len(hold) > 1:
+            context.fault(f"{address}.composition", "several components are held", "hold one component, or leave composition out")
+        for name in hold:
+            if not parts.get(name):
+                context.fault(f"{address}.composition", f"what is added holds no '{name}'", f"give '{name}' a fraction above 0")
 
     def _held(self, components: Components) -> dict[int, str]:
         return {components.index[name]: f"hold.{name}" for name in self.values.group("hold")}
 
     def adds(self, components: Components) -> np.ndarray:
-        """Held components are added."""
-        return components.mask(self.values.group("hold"))
+        """Held components are added, and what comes along with them."""
+        return components.mask([*self.values.group("hold"), *self.values.group("composition")])
 
     def holds(self, components: Components) -> np.ndarray:
         """Held components are set."""
         return components.mask(self.values.group("hold"))
 
     def leans_on(self, outlet: str, what: str) -> list[tuple[str, str]]:
-        """What is added comes at the stream's own temperature and pressure."""
+        """What is added comes at the stream's own temperature and pressure, unless given."""
+        if what == "temperature" and what in self.values.numbers:
+            return [("takes", "temperature"), ("takes", "flows")]
         return [("takes", what)]
+
+    def _gives(self, stream: Stream, numbers: Numbers) -> list[Any]:
+        """Give the outlet's flow of every component."""
+        columns = [stream.flows[..., place] for place in range(stream.flows.shape[-1])]
+        parts = self.values.group("composition")
+        for place, key in self._held(self.around.components).items():
+            wanted = np.asarray(numbers[key])
+            if parts:
+                held = self.around.components.names[place]
+                amount = (wanted - columns[place]) / numbers[f"composition.{held}"]
+                for name in parts:
+                    other = self.around.components.index[name]
+                    columns[other] = columns[other] + amount * numbers[f"composition.{name}"]
+            columns[place] = wanted
+        return columns
 
     def calculate(self, inlets: Mapping[str, Stream], numbers: Numbers) -> dict[str, Stream]:
         """Give the stream with the held flows set."""
         stream = inlets["takes"]
-        held = self._held(self.around.components)
-        values = {place: np.asarray(numbers[key]) for place, key in held.items()}
-        kind = complex if any(value.dtype.kind == "c" for value in values.values()) else stream.state.dtype
-        shape = np.broadcast_shapes(stream.state.shape[:-1], *(value.shape for value in values.values()))
-        state = np.empty((*shape, stream.state.shape[-1]), dtype=kind)
-        state[:] = stream.state
-        for place, value in values.items():
-            state[..., place] = value
-        return {"gives": Stream(state, stream.phase)}
+        columns = self._gives(stream, numbers)
+        kind = complex if any(column.dtype.kind == "c" for column in columns) else float
+        shape = np.broadcast_shapes(*(column.shape for column in columns))
+        flows = np.empty((*shape, len(columns)), dtype=kind)
+        for place, column in enumerate(columns):
+            flows[..., place] = column
+        temperature, pressure = stream.temperature, stream.pressure
+        if "temperature" in numbers:  # the molar mean, as in a mixer
+            total = flows.sum(axis=-1)
+            come = stream.total
+            rest = total - come
+            empty = total == 0
+            mean = (come * temperature + rest * numbers["temperature"]) / np.where(empty, 1.0, total)
+            temperature = np.where(empty, temperature, mean)
+        if "pressure" in numbers:
+            own = np.asarray(numbers["pressure"])
+            pressure = np.where(np.real(own) < np.real(pressure), own, pressure)
+        return {"gives": Stream.of(flows, temperature, pressure, stream.phase)}
 
     def added(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers) -> np.ndarray:
         """Give what is added, (..., C) mol/s; negative for what would have to be taken out."""
@@ -65,17 +112,20 @@ class Makeup(Unit):
     ) -> dict[str, Any]:
         """Give the flows added."""
         added = self.added(inlets, outlets, numbers)
-        held = self._held(self.around.components)
-        names = self.around.components.names
-        return {"results": {"added_mol_s": {names[place]: added[..., place] for place in held}}}
+        components = self.around.components
+        places = np.flatnonzero(self.adds(components))
+        return {"results": {"added_mol_s": {components.names[place]: added[..., place] for place in places}}}
 
     def cautions(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping) -> list[str]:
-        """Say where a held component comes in excess."""
+        """Say where a held component comes in excess, and where a temperature is a mean."""
         added, flows = self.added(inlets, outlets, numbers), outlets["gives"].flows
         names = self.around.components.names
-        return [
+        found = [
             f"Make-up {self.name}: more {names[place]} arrives than is held, so that it accumulates; "
             "a negative make-up stands for what has to be taken out."
             for place in self._held(self.around.components)
             if np.any(added[:, place] < -1e-9 * flows[:, place])
         ]
+        if "temperature" in numbers and np.any(np.abs(numbers["temperature"] - inlets["takes"].temperature) > 0.5):
+            found.append(f"Make-up {self.name}: the temperature of its outlet is a molar mean, not a heat balance.")
+        return found

@@ -8,7 +8,7 @@ import numpy as np
 
 from leanloop.entries import Context, Entry
 from leanloop.stream import Stream
-from leanloop.units.base import Numbers, Surroundings, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Surroundings, Unit
 
 
 class Mixer(Unit):
@@ -19,6 +19,16 @@ class Mixer(Unit):
         Entry("takes", "inlet", required=True, many=True, doc="streams to mix"),
         Entry("gives", "outlet", required=True, doc="the mixed stream"),
     )
+
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give three gases of unlike pressure and temperature."""
+        inlets = {
+            "wet": Inlet("gas", {"air": [1.0, 0.0], "water": [0.1, 0.4]}, [300.0, 350.0], [1.2e5, 1e5]),
+            "dry": Inlet("gas", {"air": [2.0, 1.0]}, 320.0, [1.1e5, 2e5]),
+            "steam": Inlet("gas", {"water": [0.0, 0.5]}, 400.0, 3e5),
+        }
+        return [Scene({"takes": list(inlets), "gives": "all"}, inlets)]
 
     def connect(self, around: Surroundings, context: Context) -> Unit:
         """Gas and liquid do not mix into one phase."""

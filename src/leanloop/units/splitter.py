@@ -10,7 +10,7 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
 from leanloop.stream import Stream
-from leanloop.units.base import Numbers, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Unit
 
 
 class Splitter(Unit):
@@ -23,6 +23,16 @@ class Splitter(Unit):
         Entry("gives", "outlet", required=True, many=True, doc="the parts"),
         Entry("shares", "number", required=True, by="outlet", least=0.0, most=1.0, doc="part of the inlet by outlet"),
     )
+
+    @classmethod
+    def examples(cls) -> list[Scene]:
+        """Give three parts of a liquid, and a bleed that is shut."""
+        brine = Inlet("liquid", {"water": [2.0, 1.0], "salt": [0.1, 0.0]}, [300.0, 320.0], [1e5, 2e5])
+        air = Inlet("gas", {"air": [1.0, 3.0]})
+        return [
+            Scene({"takes": "all", "gives": ["a", "b", "c"], "shares": {"a": 0.2, "b": 0.3}}, {"takes": brine}),
+            Scene({"takes": "all", "gives": ["kept", "bleed"], "shares": {"bleed": 0.0, "kept": 1.0}}, {"takes": air}),
+        ]
 
     def check(self, address: str, context: Context) -> None:
         """Shares must be complete and sum to one, or to less with one outlet unnamed."""
