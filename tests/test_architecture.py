@@ -39,7 +39,7 @@ LAYERS = {
     "flowsheet": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "column", "units", "feed", "recycle",
     ),
-    "output": (*TEXT, "status", "components", "stream", "flowsheet"),
+    "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet"),
     "textfile": (*TEXT, "components", "flowsheet"),
     "cli": (*TEXT, "output", "flowsheet", "textfile", "package"),
     "__main__": ("cli",),

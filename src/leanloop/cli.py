@@ -10,7 +10,7 @@ from typing import NoReturn
 
 from leanloop import __version__
 from leanloop.errors import Fault, InputError, LeanloopError
-from leanloop.output import json, text
+from leanloop.output import catalogue, json, tables, text
 from leanloop.textfile.reader import read
 
 REACHED, NOT_REACHED, WRONG_INPUT = 0, 1, 2
@@ -33,9 +33,11 @@ def _parser() -> argparse.ArgumentParser:
         "--set", dest="settings", action="append", default=[], metavar="ADDRESS=VALUE", help="change an entry of the file"
     )
     solve.add_argument("--json", metavar="PATH", help="write the result as JSON; - for standard output, and nothing else there")
+    solve.add_argument("--tables", metavar="DIR", help="write streams, profiles, units and balance as CSV files into a directory")
     check = commands.add_parser("check", help="read a flowsheet and show its order, loops and tears; solve nothing")
     check.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
     check.add_argument("--json", metavar="PATH", help="write what was found as JSON; - for standard output")
+    commands.add_parser("catalogue", help="list installed unit kinds, equilibrium models and recycle methods")
     return parser
 
 
@@ -43,6 +45,8 @@ def _solve(arguments: argparse.Namespace) -> int:
     result = read(arguments.file, arguments.settings).solve()
     if arguments.json:
         json.write(result.to_dict(), arguments.json)
+    if arguments.tables:
+        tables.write(result.to_dict(), arguments.tables)
     if arguments.json != "-":
         sys.stdout.write(text.report(result))
     return REACHED if result.converged else NOT_REACHED
@@ -55,6 +59,11 @@ def _check(arguments: argparse.Namespace) -> int:
         json.write(found, arguments.json)
     if arguments.json != "-":
         sys.stdout.write(text.structure(sheet, found))
+    return REACHED
+
+
+def _catalogue(arguments: argparse.Namespace) -> int:
+    sys.stdout.write(catalogue.catalogue())
     return REACHED
 
 
@@ -74,8 +83,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     source = "leanloop"
     try:
         parsed = _parser().parse_args(arguments)
-        source = parsed.file
-        code = {"solve": _solve, "check": _check}[parsed.command](parsed)
+        source = getattr(parsed, "file", source)
+        code = {"solve": _solve, "check": _check, "catalogue": _catalogue}[parsed.command](parsed)
         sys.stdout.flush()
         return code
     except InputError as error:

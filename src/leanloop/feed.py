@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 from collections.abc import Callable, Mapping
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -30,6 +31,10 @@ ENTRIES = (
 )
 _PART = Entry("part", ("number", "molar mass"), least=0.0)
 _FLOW = Entry("flows", ("molar flow", "mass flow"), least=0.0, by="component")
+
+
+def _saturation(model: Any, temperature: np.ndarray) -> np.ndarray:
+    return model.saturation_pressure(temperature, model.numbers)
 
 
 class Feed:
@@ -113,7 +118,7 @@ class Feed:
         for table in conditions.values():
             model = table.models.get(name)
             if hasattr(model, "saturation_pressure"):
-                self.vapour_pressure = lambda temperature: model.saturation_pressure(temperature, model.numbers)
+                self.vapour_pressure = partial(_saturation, model)
                 break
         else:
             if is_water(name):

@@ -19,7 +19,6 @@ import independent
 import peer
 import scenes
 
-import leanloop
 from leanloop.column import band
 
 TURNS = 7

@@ -10,11 +10,9 @@ import numpy as np
 from leanloop.column.equations import (
     Phases,
     Stages,
-    gas_change,
     gas_derivatives,
     phases,
     residual,
-    rows,
 )
 from leanloop.column.jacobian import Jacobian
 from leanloop.column.start import filling_start, fraction_ratio, start, sweep

@@ -180,7 +180,9 @@ class Structure:
                         found[stream], changed = found[stream] | now, True
         return found
 
-    def trapped(self, present: Mapping[str, np.ndarray], open_paths: Mapping[tuple[str, str, str], np.ndarray]) -> dict[str, list[str]]:
+    def trapped(
+        self, present: Mapping[str, np.ndarray], open_paths: Mapping[tuple[str, str, str], np.ndarray]
+    ) -> dict[str, list[str]]:
         """Find components that can be somewhere whence they cannot leave.
 
         Parameters

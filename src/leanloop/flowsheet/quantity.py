@@ -137,7 +137,9 @@ def walk(table: Any, path: list[str], address: str) -> Any:
 Formula = Callable[[Callable[[str], Stream], Callable[[str], Mapping[str, Any]]], Any]
 
 
-def formula(address: str, streams: Mapping[str, Any], units: Mapping[str, Any], bases: Bases) -> tuple[Formula, list[str], list[str]]:
+def formula(
+    address: str, streams: Mapping[str, Any], units: Mapping[str, Any], bases: Bases
+) -> tuple[Formula, list[str], list[str]]:
     """Give a quantity as a formula of the streams' and units' states.
 
     Parameters

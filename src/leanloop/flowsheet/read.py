@@ -9,7 +9,7 @@ import numpy as np
 
 from leanloop.components import Component, Components
 from leanloop.entries import Context, Entry, read_number, read_values
-from leanloop.errors import nearest
+from leanloop.errors import InputError, nearest
 from leanloop.feed import Feed
 from leanloop.flowsheet.graph import Structure, influences
 from leanloop.flowsheet.quantity import AddressError, formula
@@ -157,7 +157,11 @@ def loop(raw: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
         return None, ()
     names = [item.name for item in options]
     given = {key: value for key, value in {**values.words, **values.numbers}.items() if key in names}
-    method = kind(**given)
+    try:
+        method = kind(**given)
+    except InputError as error:
+        context.faults.extend(error.faults)
+        return None, ()
     numbers = values.numbers
     settings = Settings(method, numbers.get("tolerance", TOLERANCE), numbers.get("passes", method.most_passes))
     return settings, values.words.get("tears", ())

@@ -8,7 +8,7 @@ bracket. Several at once are solved by Newton's method from starts spread over t
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np

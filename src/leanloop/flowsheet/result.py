@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.errors import InputError, Fault, NotReached, nearest
+from leanloop.errors import Fault, InputError, NotReached, nearest
 from leanloop.flowsheet.quantity import AddressError, formula, stream_table, walk
 from leanloop.flowsheet.requirements import Found
 from leanloop.flowsheet.run import Run
@@ -330,7 +330,7 @@ class Result:
     def _loops(self) -> list[dict[str, Any]]:
         steps = [step for step in self.sheet.plan.steps if step.tears]
         out = []
-        for number, step in enumerate(steps):
+        for step in steps:
             loops = {
                 id(part): next((loop for loop in part.run.loops if loop.step is step), None) for part in self.parts
             }

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import json
-import os
 import sys
-import tempfile
 from pathlib import Path
 from typing import Any
+
+from leanloop.output.tables import put
 
 
 def write(data: Any, path: str) -> None:
@@ -27,17 +27,5 @@ def write(data: Any, path: str) -> None:
     text = json.dumps(data, allow_nan=False, indent=1) + "\n"
     if path == "-":
         sys.stdout.write(text)
-        return
-    target = Path(path)
-    if target.exists() and not target.is_file():  # a pipe or a device
-        target.write_text(text, encoding="utf-8")
-        return
-    handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
-    try:
-        with os.fdopen(handle, "w", encoding="utf-8") as stream:
-            stream.write(text)
-        Path(name).chmod(0o644)
-        Path(name).replace(target)
-    except BaseException:
-        Path(name).unlink(missing_ok=True)
-        raise
+    else:
+        put(Path(path), text)

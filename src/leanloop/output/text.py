@@ -8,10 +8,14 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from leanloop.output.influence import influences
+from leanloop.quantities import NORMAL_MOLES
+
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
 
 PER_HOUR = 3.6  # mol/s to kmol/h
+MOST_INFLUENCES = 8
 CAUTIONS = (
     "This is a screening calculation with equilibrium stages; have it verified by a licensed engineer "
     "against local codes and measured data.",
@@ -37,10 +41,12 @@ def table(head: Sequence[str], rows: Iterable[Sequence[str]], indent: str = "  "
     """Set a table in columns, the first to the left, the others to the right."""
     lines = [list(head), *[list(row) for row in rows]]
     widths = [max(len(line[column]) for line in lines) for column in range(len(head))]
-    return [
-        (indent + "  ".join(cell.ljust(w) if n == 0 else cell.rjust(w) for n, (cell, w) in enumerate(zip(line, widths, strict=True)))).rstrip()
-        for line in lines
-    ]
+    out = []
+    for line in lines:
+        cells = [cell.rjust(width) for cell, width in zip(line, widths, strict=True)]
+        cells[0] = line[0].ljust(widths[0])
+        out.append((indent + "  ".join(cells)).rstrip())
+    return out
 
 
 def report(result: Result) -> str:
@@ -81,7 +87,9 @@ def _single(result: Result) -> list[str]:
         if "profile" in unit:
             lines += _column(result, name, unit)
     lines += _streams(result, data)
+    lines += _gases(result, data)
     lines += _balance(data)
+    lines += _influence(result)
     lines += ["", "Cautions"] + [f"  * {text}" for text in (*data["cautions"], *CAUTIONS)]
     return lines
 
@@ -197,20 +205,61 @@ def _column(result: Result, name: str, unit: dict[str, Any]) -> list[str]:
 
 def _streams(result: Result, data: dict[str, Any]) -> list[str]:
     names = result.sheet.components.names
+    masses = result.sheet.components.molar_masses
     rows = []
     for stream, item in data["streams"].items():
+        flows = [item["mol_s"][c] for c in names]
         total = item["total_mol_s"]
+        mass = None
+        if total is not None and all(not flow or np.isfinite(m) for flow, m in zip(flows, masses, strict=True)):
+            mass = 3600.0 * sum(flow * m for flow, m in zip(flows, masses, strict=True) if flow)
         rows.append(
             [
                 stream,
                 item["phase"],
                 number(None if item["temperature_K"] is None else item["temperature_K"] - 273.15, 4),
                 number(None if item["pressure_Pa"] is None else item["pressure_Pa"] / 1e5, 4),
-                number(None if total is None else total * PER_HOUR),
-                *(number(None if item["mol_s"][c] is None else item["mol_s"][c] * PER_HOUR) for c in names),
+                number(mass),
+                number(None if total is None or item["phase"] != "gas" else total * 3600.0 / NORMAL_MOLES),
+                number(_hourly(total)),
+                *(number(_hourly(flow)) for flow in flows),
             ]
         )
-    return ["", "Streams, kmol/h", *table(["stream", "phase", "degC", "bar", "total", *names], rows)]
+    head = ["stream", "phase", "degC", "bar", "kg/h", "Nm3/h", "kmol/h", *names]
+    return ["", "Streams, components in kmol/h", *table(head, rows)]
+
+
+def _hourly(value: float | None) -> float | None:
+    return None if value is None else value * PER_HOUR
+
+
+def _gases(result: Result, data: dict[str, Any]) -> list[str]:
+    """Give what distributes, and what stays in the liquid, in the gas streams by volume and by mass."""
+    items = result.sheet.components.items
+    names = [item.name for item in items if item.stays_in != "gas"]
+    rows = [
+        [stream, name, number(1e6 * (item["fraction"][name] or 0.0)), number(item["mg_per_Nm3"][name])]
+        for stream, item in data["streams"].items()
+        if item["phase"] == "gas"
+        for name in names
+        if item["mol_s"][name]
+    ]
+    return ["", "In the gases", *table(["stream", "component", "ppm by volume", "mg/Nm3"], rows)] if rows else []
+
+
+def _influence(result: Result) -> list[str]:
+    found = influences(result)
+    lines: list[str] = []
+    for quantity in dict.fromkeys(item.quantity for item in found):
+        own = [item for item in found if item.quantity == quantity][:MOST_INFLUENCES]
+        name = quantity.removeprefix("requirements.").removesuffix(".free_value")
+        shown = quantity
+        if quantity.startswith("requirements."):
+            shown = f"{result.sheet.requirements[name].free}, with requirement {name} held"
+        lines += ["", f"What matters most to {shown}"]
+        rows = [[item.number, f"1 {item.unit}", f"{item.per_cent:+.3g} %"] for item in own]
+        lines += table(["input", "more by", "moves it by"], rows)
+    return lines
 
 
 def _balance(data: dict[str, Any]) -> list[str]:
@@ -223,7 +272,8 @@ def _balance(data: dict[str, Any]) -> list[str]:
         ]
         for component, item in data["balance"]["components"].items()
     ]
-    return ["", "Combined balance of absorber and regenerator, kmol/h", *table(["component", "in, make-up included", "out", "closure"], rows)]
+    head = ["component", "in, make-up included", "out", "closure"]
+    return ["", "Combined balance of absorber and regenerator, kmol/h", *table(head, rows)]
 
 
 def structure(sheet: Any, found: dict[str, Any]) -> str:

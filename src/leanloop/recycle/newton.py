@@ -23,7 +23,8 @@ class Newton(RecycleMethod):
     def propose(self, trial: Trial, state: State) -> tuple[np.ndarray, State]:
         """Give the Newton step, kept inside the bounds."""
         step = newton_step(trial.jacobian, trial.g - trial.x)
-        bound = np.where(np.isfinite(trial.low), trial.low + SHRINK * (trial.x - trial.low), -np.inf)
+        low = np.where(np.isfinite(trial.low), trial.low, trial.x)
+        bound = np.where(np.isfinite(trial.low), low + SHRINK * (trial.x - low), -np.inf)
         new = np.maximum(trial.x + step, bound)
         lost = ~np.isfinite(new).all(axis=1) | (trial.error > WORSE * state["best"])
         new[lost] = trial.g[lost]

@@ -14,6 +14,7 @@ from leanloop.column.start import split_fractions
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.base import EquilibriumModel
+from leanloop.equilibrium.water import is_water, vapour_pressure
 from leanloop.status import OK
 from leanloop.stream import Stream, divide
 from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit, outlet_status
@@ -384,12 +385,31 @@ class Column(Unit):
         temperature, pressure = self._conditions(inlets, numbers)
         if np.any(inlets["liquid_in"].pressure < pressure * (1 - 1e-6)):
             found.append(f"Column {self.name}: its liquid is fed at less than the column's pressure; a pump is needed.")
+        found += self._condensing(inlets, temperature, pressure, memory["unknowns"][..., 0])
         stages = self._stages(inlets, numbers)
         with np.errstate(all="ignore"):
             liquid = phases(stages, memory["unknowns"]).liquid
         for index, (name, model) in enumerate(zip(self.model_names, self.models, strict=True)):
             for sentence in model.cautions(temperature[:, None], pressure[:, None], liquid[..., index]):
                 found.append(f"Column {self.name}, {name}: {sentence}")
+        return found
+
+    def _condensing(
+        self, inlets: Mapping[str, Stream], temperature: np.ndarray, pressure: np.ndarray, gas_flow: np.ndarray
+    ) -> list[str]:
+        """Say where steam that is declared to stay in the gas would condense."""
+        names = self.around.components.names
+        found = []
+        for place in np.flatnonzero(self.stays_gas):
+            if is_water(names[place]):
+                with np.errstate(all="ignore"):
+                    partial = (inlets["gas_in"].flows[:, place] * pressure)[:, None] / gas_flow
+                    wet = partial.max(axis=1) > vapour_pressure(temperature)
+                if wet.any():
+                    found.append(
+                        f"Column {self.name}: {names[place]} is declared to stay in the gas but is above its "
+                        "saturation pressure, so that it would condense; the result is not honest there."
+                    )
         return found
 
 

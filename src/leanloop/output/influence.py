@@ -1,0 +1,83 @@
+"""What matters most: how far the answer moves with each input, from the exact sensitivities."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from leanloop.status import solved
+
+if TYPE_CHECKING:
+    from leanloop.flowsheet.result import Result
+
+
+@dataclass(frozen=True)
+class Influence:
+    """Effect of one input on one quantity.
+
+    Parameters
+    ----------
+    quantity, number : str
+        Addresses.
+    per_cent : float
+        Change of the quantity in per cent, for 1 % of the input, or for 1 K of a temperature.
+    unit : str
+        ``"%"`` or ``"K"``: what the input was moved by.
+    """
+
+    quantity: str
+    number: str
+    per_cent: float
+    unit: str
+
+
+def quantities(result: Result) -> list[str]:
+    """Give what is worth asking of: freed inputs of requirements, else what absorbers let through.
+
+    Parameters
+    ----------
+    result : Result
+    """
+    names = [f"requirements.{name}.free_value" for name in result.sheet.requirements]
+    if names:
+        return names
+    out = []
+    for unit in result.sheet.plan.units.values():
+        if getattr(unit, "cleans", None) == "gas":
+            out += [f"streams.{unit.outlets['gas_out']}.fraction.{component}" for component in unit.model_names]
+    return out
+
+
+def influences(result: Result) -> list[Influence]:
+    """Give the effects of all inputs on the quantities of a single case, the largest first.
+
+    Parameters
+    ----------
+    result : Result
+        Of one case, solved.
+
+    Returns
+    -------
+    list of Influence
+        Empty where the case is not solved.
+    """
+    sheet = result.sheet
+    asked = quantities(result)
+    freed = {item.free for item in sheet.requirements.values()}
+    numbers = [address for address in sheet.numbers if sheet.varies(address) and address not in freed]
+    if result.axis or not asked or not numbers or not solved(result.parts[0].run.status).all():
+        return []
+    slopes = result.sensitivities(asked, numbers)
+    found = []
+    for quantity in asked:
+        name = quantity.removeprefix("requirements.").removesuffix(".free_value")
+        base = result[quantity] if quantity.startswith("streams.") else result.parts[0].found[name].free_value[0]
+        inputs = result.parts[0].run.inputs
+        for number in numbers:
+            warm = sheet.sorts[number] == "temperature"
+            change = slopes[quantity, number] * (1.0 if warm else 0.01 * float(inputs.value(number)[0]))
+            if base and np.isfinite(change) and change != 0.0:
+                found.append(Influence(quantity, number, float(100.0 * change / base), "K" if warm else "%"))
+    return sorted(found, key=lambda item: -abs(item.per_cent))

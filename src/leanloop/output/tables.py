@@ -1,0 +1,109 @@
+"""A result as CSV files: streams, columns, balance and units, in SI units."""
+
+from __future__ import annotations
+
+import csv
+import io
+import os
+import tempfile
+from collections.abc import Iterator, Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+
+def files(data: Mapping[str, Any]) -> dict[str, list[list[Any]]]:
+    """Give the tables of one case by file name.
+
+    Parameters
+    ----------
+    data : mapping
+        What `Result.to_dict` gives for one case.
+
+    Returns
+    -------
+    dict of str to list of rows
+        The first row is the head.
+    """
+    out = {"streams.csv": _wide(data["streams"], "stream")}
+    out["units.csv"] = [["unit", "kind", "result", "value"]] + [
+        [name, unit["kind"], key, value] for name, unit in data["units"].items() for key, value in flat(unit["results"])
+    ]
+    for name, unit in data["units"].items():
+        if "profile" in unit:
+            columns = list(flat(unit["profile"]))
+            rows = [list(row) for row in zip(*(values for _, values in columns), strict=True)]
+            out[f"profile_{name}.csv"] = [[key for key, _ in columns], *rows]
+    out["balance.csv"] = _wide(data["balance"]["components"], "component")
+    out["requirements.csv"] = _wide(data["requirements"], "requirement")
+    return {name: rows for name, rows in out.items() if len(rows) > 1}
+
+
+def flat(table: Mapping[str, Any], head: str = "") -> Iterator[tuple[str, Any]]:
+    """Give the leaves of a nested table with their dotted names."""
+    for key, value in table.items():
+        if isinstance(value, Mapping):
+            yield from flat(value, f"{head}{key}.")
+        else:
+            yield head + key, value
+
+
+def _wide(items: Mapping[str, Mapping[str, Any]], name: str) -> list[list[Any]]:
+    rows = {key: dict(flat(item)) for key, item in items.items()}
+    keys = list(dict.fromkeys(key for row in rows.values() for key in row))
+    return [[name, *keys]] + [[key, *(row.get(column) for column in keys)] for key, row in rows.items()]
+
+
+def write(data: Mapping[str, Any], directory: str) -> None:
+    """Write the tables into a directory, each file whole or not at all.
+
+    Parameters
+    ----------
+    data : mapping
+    directory : str
+        Made where it does not exist.
+
+    Raises
+    ------
+    OSError
+        Where it cannot be written.
+    """
+    folder = Path(directory)
+    folder.mkdir(parents=True, exist_ok=True)
+    for name, rows in files(data).items():
+        text = io.StringIO()
+        csv.writer(text, lineterminator="\n").writerows([_cell(cell) for cell in row] for row in rows)
+        put(folder / name, text.getvalue())
+
+
+def _cell(cell: Any) -> Any:
+    if cell is None:
+        return ""
+    return "; ".join(str(item) for item in cell) if isinstance(cell, Sequence) and not isinstance(cell, str) else cell
+
+
+def put(target: Path, text: str) -> None:
+    """Write a text file whole or not at all.
+
+    Parameters
+    ----------
+    target : Path
+    text : str
+
+    Raises
+    ------
+    OSError
+    """
+    if target.exists() and not target.is_file():  # a pipe or a device; a directory fails here
+        target.write_text(text, encoding="utf-8")
+        return
+    handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
+    try:
+        with os.fdopen(handle, "w", encoding="utf-8") as stream:
+            stream.write(text)
+        mask = os.umask(0)
+        os.umask(mask)
+        Path(name).chmod(0o666 & ~mask)
+        Path(name).replace(target)
+    except BaseException:
+        Path(name).unlink(missing_ok=True)
+        raise
