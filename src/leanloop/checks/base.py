@@ -159,6 +159,7 @@ class Suite:
 
     def _problem(self, check: Check, plugin: type, examples: Sequence[Any] | None) -> str:
         """Say what breaks a check, nothing where it holds; whatever the plug-in raises or warns of breaks it."""
+        where = ""
         try:
             with warnings.catch_warnings():
                 warnings.simplefilter("error")
@@ -169,10 +170,9 @@ class Suite:
                     where = f"example {number}: "
                     check.function(self.prepare(plugin, example))
         except Broken as broken:
-            return str(broken) if check.whole else where + str(broken)
-        except Exception as error:  # a plug-in's own error is a finding
-            told = f"raises {type(error).__name__}: {error}"
-            return told if check.whole or "where" not in locals() else where + told
+            return where + str(broken)
+        except Exception as error:  # whatever a plug-in raises is a finding, and no other check is lost to it
+            return f"{where}raises {type(error).__name__}: {error}"
         return ""
 
 

@@ -45,19 +45,16 @@ def difference(
     back = [call(np.where(sided, value, value - reach * step)) for reach in (1.0, 0.5)]
     found = []
     for number, one in enumerate(at[0]):
-        def wide(part: np.ndarray, like: np.ndarray = one) -> np.ndarray:
-            return part.reshape(len(part), *(1,) * (np.ndim(like) - 1))
-
+        shape = (len(value), *(1,) * (np.ndim(one) - 1))
+        width, aside = step.reshape(shape), sided.reshape(shape)
         with np.errstate(all="ignore"):
-            slope = [
-                (at[place][number] - back[min(place, 1)][number]) / wide(np.where(sided, 1.0, 2.0) * step * reach)
-                for place, reach in ((0, 1.0), (1, 0.5))
-            ]
-            third = (at[2][number] - back[1][number]) / wide(0.25 * step)
-            central = (4 * slope[1] - slope[0]) / 3
-            # (f(h) - f(0))/h has errors in h and h^2: two rounds
-            once, twice = 2 * slope[1] - slope[0], 2 * third - slope[1]
-            found.append(np.where(wide(sided), (4 * twice - once) / 3, central))
+            whole, half, quarter = (
+                (at[place][number] - back[min(place, 1)][number]) / (reach * width)
+                for place, reach in ((0, 1.0), (1, 0.5), (2, 0.25))
+            )
+            central = (4 * half - whole) / 6  # over twice the step
+            once, twice = 2 * half - whole, 2 * quarter - half  # errors in h, then in h squared
+            found.append(np.where(aside, (4 * twice - once) / 3, central))
     return found
 
 

@@ -112,7 +112,8 @@ class Band:
         """
         bad = np.zeros(self.shape[0], dtype=bool)
         if not _finite(derivatives):
-            bad = ~np.isfinite(derivatives).all(axis=(1, 2, 3))
+            sums = derivatives.sum(axis=-1)  # may overflow where its terms do not
+            bad = ~(np.isfinite(derivatives).all(axis=(1, 2, 3)) & np.isfinite(sums).all(axis=(1, 2)))
         while True:
             self._store[...] = 0.0
             self.fill(derivatives, drag)

@@ -36,9 +36,11 @@ class Jacobian:
     def __init__(self, derivatives: np.ndarray, drag: np.ndarray) -> None:
         cases, count, unknowns, parts = derivatives.shape
         self.by_total = derivatives[:, :, 0]
-        keep = 1.0 - self.by_total.sum(axis=-1) if parts <= MOST_ELIMINATED and cases * count >= LEAST_STAGES else None
+        pays = 1 <= parts <= MOST_ELIMINATED and cases * count >= LEAST_STAGES
+        keep = 1.0 - self.by_total.sum(axis=-1) if pays else None
         self.keep = None
-        if keep is not None and not keep.min(initial=1.0) < LEAST_INERT:  # NaN passes: such cases are set apart
+        # cases that are not finite are set apart, and decide nothing for the others
+        if keep is not None and np.fmin.reduce(keep, axis=None, initial=1.0) >= LEAST_INERT:
             self.keep = keep
             self.sums = derivatives[:, :, 1:].sum(axis=-1)
             self.gain = self.by_total / keep[..., None]

@@ -144,7 +144,7 @@ class BoundLaw:
         (S, M, N, D)
         """
         step = COMPLEX_STEP
-        columns = []
+        columns = [np.zeros((len(temperature), *liquid.shape[:-1], 0))]
         for index, (model, own) in enumerate(zip(self.law.models, self.numbers, strict=True)):
             moved = dict(own)
             for key, direction in numbers[index].items():
@@ -156,8 +156,8 @@ class BoundLaw:
                 liquid[..., index] + 0j,
                 moved,
             )
-            columns.append(np.broadcast_to(value.imag / step, (len(temperature), *liquid.shape[:-1])))
-        return np.stack(columns, axis=-1)
+            columns.append(np.broadcast_to(value.imag / step, (len(temperature), *liquid.shape[:-1]))[..., None])
+        return np.concatenate(columns, axis=-1)
 
     def outside(self, liquid: np.ndarray) -> np.ndarray:
         """Tell which cases and components are off their table.

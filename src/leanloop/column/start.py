@@ -63,7 +63,7 @@ def tridiagonal(ratio: np.ndarray, feeds: np.ndarray) -> np.ndarray:
     upper = np.zeros((cases, parts, count))
     np.negative(s[..., 1:], out=upper[..., :-1])
     right = np.ascontiguousarray(feeds.transpose(0, 2, 1)).reshape(-1)
-    if right.size == 1:
+    if right.size <= 1:
         return feeds / (1.0 + ratio)
     answer = lapack.dgtsv(lower.reshape(-1)[:-1], (1.0 + s).reshape(-1), upper.reshape(-1)[:-1], right)[3]
     answer = answer.reshape(cases, parts, count).transpose(0, 2, 1)

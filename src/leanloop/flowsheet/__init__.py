@@ -1,0 +1,1 @@
+"""Flowsheets: structure, order, loops, requirements and results."""

@@ -304,6 +304,7 @@ def arrange(
         for source in quantity:
             for target in freed:
                 tied.add_edge(source, target, key=f"requirement {name}")
+                tied.add_edge(target, source, key=f"freed by {name}")
     loops = [part for part in partition(graph) if _is_loop(graph, part)]
     chosen = set(fixed)
     if chosen:

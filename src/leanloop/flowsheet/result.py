@@ -66,10 +66,8 @@ class Result:
         pieces = []
         for part in self.parts:
             found = call(part)
-            if found is None:
-                return None
-            if isinstance(found, str):
-                return found
+            if found is None or isinstance(found, str):
+                return [found] * self.cases if self.axis else found
             found = np.array(found)
             if blank and found.dtype.kind in "fc":
                 hidden = ~np.isin(part.run.status, [CODE[item] for item in SOLVED_OUTPUT])
@@ -138,7 +136,10 @@ class Result:
             notes = dict.fromkeys(found.note[row] for found in part.found.values() if found.note.get(row))
             text = f"{text} ({'; '.join([*missed, *notes])})"
         elif culprit >= 0:
-            text = f"Unit {part.run.plan.unit_names[culprit]}: {text}"
+            name = part.run.plan.unit_names[culprit]
+            text = f"Unit {name}: {text}"
+            if status is Status.unit_failed and name in part.run.messages:
+                text = f"{text} ({part.run.messages[name]})"
         return text
 
     def _codes(self) -> np.ndarray:
@@ -218,7 +219,8 @@ class Result:
     def sensitivity(self, quantity: str, number: str) -> Any:
         """Give the total derivative of a result with respect to an input, SI units.
 
-        Exact through closed loops and active requirements: freed inputs follow.
+        Exact through closed loops and active requirements: freed inputs follow. With respect to a
+        freed input itself, its own requirement is taken away and the others hold.
 
         Parameters
         ----------
@@ -268,13 +270,20 @@ class Result:
         if faults:
             raise InputError(faults)
         found: dict[tuple[str, str], list] = {(q, n): [] for q in quantities for n in numbers}
+        # an input that a requirement frees is independent only without that requirement
+        freed = {item.free: name for name, item in sheet.requirements.items()}
+        groups = [([n for n in numbers if n not in freed], "")] + [([n], freed[n]) for n in numbers if n in freed]
         for part in self.parts:
-            run = sheet.linearised(part, numbers)
-            for q in quantities:
-                slopes = (derivatives(run, formulas[q]) if q in formulas else self._followed(run, q))[: len(numbers)]
-                slopes[:, ~solved(part.run.status)] = np.nan
-                for place, n in enumerate(numbers):
-                    found[q, n].append(slopes[place])
+            for own, released in groups:
+                if not own:
+                    continue
+                run = sheet.linearised(part, own, released)
+                for q in quantities:
+                    slopes = derivatives(run, formulas[q]) if q in formulas else self._followed(run, q)
+                    slopes = np.array(slopes[: len(own)])
+                    slopes[:, ~solved(part.run.status)] = np.nan
+                    for place, n in enumerate(own):
+                        found[q, n].append(slopes[place])
         out = {}
         for key, pieces in found.items():
             pieces = iter(pieces)
@@ -289,7 +298,11 @@ class Result:
         item = self.sheet.requirements[name]
         if key == "value":
             return derivatives(run, item.quantity)
-        return np.ascontiguousarray(run.follow[item.free].T)
+        if item.free in run.follow:
+            return np.ascontiguousarray(run.follow[item.free].T)
+        way = np.zeros((len(run.extra), run.inputs.cases))
+        way[run.extra.index(item.free)] = 1.0
+        return way
 
     # --- everything at once
 

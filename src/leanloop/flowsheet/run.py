@@ -18,9 +18,10 @@ from leanloop.flowsheet.graph import Node, Step
 from leanloop.flowsheet.inputs import Inputs
 from leanloop.recycle.base import RecycleMethod
 from leanloop.recycle.driver import Outcome, Pass, close
-from leanloop.recycle.newton import newton_step
+from leanloop.recycle.linear import newton_step
 from leanloop.status import OK, Status, code
 from leanloop.stream import Stream
+from leanloop.units.base import Evaluation
 
 TEMPERATURE_TOLERANCE = 1e-6  # K
 PRESSURE_TOLERANCE = 1e-9  # relative
@@ -100,6 +101,7 @@ class Run:
         self.status = np.full(cases, OK)
         self.culprit = np.full(cases, -1)
         self.loops: list[Loop] = []
+        self.messages: dict[str, str] = {}  # by unit, what its last exception said
         self.follow: dict[str, np.ndarray] = {}  # (M, E) by freed input, once linearised
         self.evaluations = 0
 
@@ -146,10 +148,13 @@ class Run:
         ways = {label: local.ways.get(name) for label, name in inlets.items()}
         addresses = self.plan.addresses[node[1]]
         numbers = self.inputs.of(addresses, cases)
-        found = unit.evaluate(
-            streams, numbers, guess, ways, self._number_ways(addresses, seeds, len(cases)) if self.extra else {}, seeds
-        )
+        number_ways = self._number_ways(addresses, seeds, len(cases)) if self.extra and seeds else {}
         self.evaluations += 1
+        try:
+            found = unit.evaluate(streams, numbers, guess, ways, number_ways, seeds)
+        except Exception as error:  # a plug-in may raise anything; its case alone is lost
+            self.messages[node.name] = f"{type(error).__name__}: {error}"
+            found = _apart(unit, outlets, self.plan.width, streams, numbers, guess, ways, number_ways, seeds)
         for label, name in outlets.items():
             local.states[name] = _wide(found.outlets[label].state, len(cases))
             local.ways[name] = found.tangents.get(label)
@@ -221,6 +226,49 @@ def _wide(state: np.ndarray, cases: int) -> np.ndarray:
     return state if len(state) == cases else np.broadcast_to(state, (cases, state.shape[-1]))
 
 
+def _apart(
+    unit: Any,
+    outlets: Mapping[str, str],
+    width: int,
+    streams: Mapping[str, Stream],
+    numbers: Mapping[str, Any],
+    guess: Mapping[str, np.ndarray] | None,
+    ways: Mapping[str, np.ndarray | None],
+    number_ways: Mapping[str, np.ndarray],
+    seeds: int,
+) -> Evaluation:
+    """Evaluate a unit case by case, so that one that raises spoils only itself."""
+    cases = len(next(iter(streams.values())).state)
+    states = {label: np.full((cases, width), np.nan) for label in outlets}
+    tangents = {label: np.zeros((seeds, cases, width)) for label in outlets}
+    status = np.full(cases, code(Status.unit_failed))
+    memory: dict[str, np.ndarray] = {}
+    memory_tangents: dict[str, np.ndarray] = {}
+    for case in range(cases):
+        own = slice(case, case + 1)
+        try:
+            found = unit.evaluate(
+                {label: Stream(stream.state[own], stream.phase) for label, stream in streams.items()},
+                {key: value[own] if isinstance(value, np.ndarray) else value for key, value in numbers.items()},
+                {key: value[own] for key, value in guess.items()} if guess else None,
+                {label: None if way is None else way[:, own] for label, way in ways.items()},
+                {key: way[:, own] for key, way in number_ways.items()},
+                seeds,
+            )
+        except Exception:
+            continue
+        status[case] = found.status[0]
+        for label in outlets:
+            states[label][own] = found.outlets[label].state
+            if found.tangents.get(label) is not None:
+                tangents[label][:, own] = found.tangents[label]
+        for key, value in found.memory.items():
+            memory.setdefault(key, np.full((cases, *value.shape[1:]), np.nan))[own] = value
+        for key, value in found.memory_tangents.items():
+            memory_tangents.setdefault(key, np.zeros((seeds, cases, *value.shape[2:])))[:, own] = value
+    return Evaluation({label: Stream(state, "") for label, state in states.items()}, tangents, status, memory, memory_tangents)
+
+
 def put(store: dict[Any, np.ndarray], key: Any, cases: np.ndarray, total: int, value: np.ndarray) -> None:
     """Put rows of some cases into a full array, made when first needed."""
     if len(cases) == total:
@@ -271,14 +319,18 @@ class _LoopRun:
         for tear in self.step.tears:
             state = np.zeros((len(self.cases), plan.width))
             state[:, -2] = np.mean([item[:, -2] for item in outer], axis=0) if outer else 298.15
-            state[:, -1] = np.mean([item[:, -1] for item in outer], axis=0) if outer else 101325.0
+            # high, for a mixer passes on the lowest pressure it meets, its own recycle's included
+            state[:, -1] = np.max([item[:, -1] for item in outer], axis=0) if outer else 101325.0
             local.states[tear] = state
         for _ in range(1 + len(self.step.tears)):
             for node in self.step.nodes:
                 inlets, outlets = plan.ports[node]
                 streams = {label: Stream(local.states[name], plan.phases[name]) for label, name in inlets.items()}
                 numbers = run.inputs.of(plan.addresses[node[1]], self.cases)
-                found = plan.units[node[1]].estimate(streams, numbers)
+                try:
+                    found = plan.units[node[1]].estimate(streams, numbers)
+                except Exception:  # an estimate is a help, not a must: nothing flows yet
+                    found = {label: Stream(0.0 * next(iter(streams.values())).state, "") for label in outlets}
                 for label, name in outlets.items():
                     state = _wide(found[label].state, len(self.cases))
                     if not (np.isfinite(state.sum()) and state.min() >= 0.0):

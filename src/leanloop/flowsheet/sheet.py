@@ -21,7 +21,7 @@ from leanloop.flowsheet.result import Part, Result
 from leanloop.flowsheet.run import Run, Settings
 from leanloop.flowsheet.view import derivatives
 from leanloop.recycle import METHODS
-from leanloop.recycle.newton import newton_step
+from leanloop.recycle.linear import newton_step
 from leanloop.status import OK, Status, code, solved
 from leanloop.units.base import Unit
 
@@ -318,7 +318,7 @@ class Flowsheet:
             total = total + np.nan_to_num(feed.stream(numbers).flows[..., place])
         return total > 0
 
-    def linearised(self, part: Part, numbers: list[str]) -> Run:
+    def linearised(self, part: Part, numbers: list[str], released: str = "") -> Run:
         """Give a run at a solved part's states that carries total derivatives along some inputs.
 
         Parameters
@@ -326,6 +326,8 @@ class Flowsheet:
         part : Part
         numbers : list of str
             Addresses.
+        released : str
+            Name of a requirement that does not hold.
 
         Returns
         -------
@@ -333,7 +335,8 @@ class Flowsheet:
             Derivatives along `numbers` first; requirements that are active hold.
         """
         done = part.run
-        freed = [item.free for item in self.requirements.values() if item.free not in numbers]
+        held = [item for name, item in self.requirements.items() if name != released]
+        freed = [item.free for item in held]
         settings = Settings(METHODS.load("newton")(), self.settings.tolerance, self.settings.passes)
         run = Run(self.plan, done.inputs, settings, [*numbers, *freed])
         run.memory = {node: dict(memory) for node, memory in done.memory.items()}
@@ -348,7 +351,7 @@ class Flowsheet:
         for region in self.plan.regions:
             for step in region.steps:
                 run.step(step)
-            items = [self.requirements[name] for name in region.requirements]
+            items = [self.requirements[name] for name in region.requirements if name != released]
             if items:
                 self._hold(run, items, part)
         return run

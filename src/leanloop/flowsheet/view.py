@@ -45,7 +45,10 @@ class View:
             for local, address in addresses.items():
                 if address in run.extra:
                     way = np.zeros((len(run.extra), run.inputs.cases))
-                    way[run.extra.index(address)] = 1.0
+                    if address in run.follow:
+                        way += run.follow[address].T
+                    else:
+                        way[run.extra.index(address)] = 1.0
                     numbers[local] = numbers[local] + 1j * COMPLEX_STEP * way
         return numbers
 

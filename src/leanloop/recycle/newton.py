@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from leanloop.recycle.base import RecycleMethod, State, Trial
+from leanloop.recycle.linear import newton_step
 
 WORSE = 4.0  # a pass that raises the error by more than this is followed by a substitution
 SHRINK = 0.1  # a bounded component falls to no less than this part of itself in one step
@@ -29,32 +30,3 @@ class Newton(RecycleMethod):
         lost = ~np.isfinite(new).all(axis=1) | (trial.error > WORSE * state["best"])
         new[lost] = trial.g[lost]
         return new, {"best": np.minimum(state["best"], trial.error)}
-
-
-def newton_step(jacobian: np.ndarray, lead: np.ndarray) -> np.ndarray:
-    """Solve (I - jacobian) step = lead, case by case.
-
-    Parameters
-    ----------
-    jacobian : (m, n, n)
-    lead : (m, n) or (m, n, k)
-
-    Returns
-    -------
-    array of the shape of lead
-        NaN for the cases whose matrix is singular or not finite.
-    """
-    count = jacobian.shape[-1]
-    matrix = np.eye(count) - jacobian
-    several = lead if lead.ndim == 3 else lead[..., None]
-    good = np.isfinite(matrix).all(axis=(1, 2)) & np.isfinite(several).all(axis=(1, 2))
-    answer = np.full(several.shape, np.nan)
-    try:
-        answer[good] = np.linalg.solve(matrix[good], several[good])
-    except np.linalg.LinAlgError:  # one singular matrix refuses the whole stack
-        for case in np.flatnonzero(good):
-            try:
-                answer[case] = np.linalg.solve(matrix[case], several[case])
-            except np.linalg.LinAlgError:
-                continue
-    return answer.reshape(lead.shape)

@@ -18,6 +18,7 @@ from leanloop.status import OK, Status, code
 from leanloop.stream import Stream
 
 Numbers = Mapping[str, Any]
+ROUNDING = 1e-12  # of a stream's flow: less than nothing by no more than this is rounding
 
 
 @dataclass(frozen=True)
@@ -418,9 +419,11 @@ def outlet_status(outlets: Mapping[str, Stream]) -> np.ndarray:
     """
     status = None
     for stream in outlets.values():
-        if np.isfinite(stream.state.sum()):
+        if np.isfinite(stream.state.sum()) and stream.flows.min(initial=0.0) >= 0.0:
             found = np.full(stream.state.shape[:-1], OK)
         else:
-            found = np.where(np.isfinite(stream.state).all(axis=-1), OK, code(Status.not_finite))
+            least = -ROUNDING * np.abs(stream.flows).sum(axis=-1, keepdims=True)
+            good = np.isfinite(stream.state).all(axis=-1) & (stream.flows >= least).all(axis=-1)
+            found = np.where(good, OK, code(Status.not_finite))
         status = found if status is None else np.maximum(status, found)
     return status

@@ -262,7 +262,7 @@ class Column(Unit):
         names = self.around.components.names
         gas_in, liquid_in = inlets["gas_in"], inlets["liquid_in"]
         gas_out, liquid_out = outlets["gas_out"], outlets["liquid_out"]
-        unknowns = memory["unknowns"]
+        unknowns = self._unknowns(numbers, inlets, memory)
         count = unknowns.shape[-2]
         temperature, pressure = self._conditions(inlets, numbers)
         law = self.law.at(temperature[..., None], pressure[..., None], self._model_numbers(numbers))
@@ -325,6 +325,13 @@ class Column(Unit):
             },
         }
 
+    def _unknowns(self, numbers: Numbers, inlets: Mapping[str, Stream], memory: Mapping[str, np.ndarray]) -> np.ndarray:
+        """Give the state inside, NaN where no case has ever come this far."""
+        if "unknowns" in memory:
+            return memory["unknowns"]
+        shape = inlets["gas_in"].state.shape[:-1]
+        return np.full((*shape, int(numbers["stages"]), len(self.places) + 1), np.nan)
+
     def _coordinates(self, law: Any, liquid: np.ndarray) -> np.ndarray:
         fraction = divide(liquid, liquid.sum(axis=-1)[..., None])[..., self.places]
         if law.plain:
@@ -371,10 +378,10 @@ class Column(Unit):
         (M,) bool
         """
         if all(type(model).outside is _NEVER for model in self.models):
-            return np.zeros(len(memory["unknowns"]), dtype=bool)
+            return np.zeros(len(inlets["gas_in"].state), dtype=bool)
         stages = self._stages(inlets, numbers)
         with np.errstate(all="ignore"):
-            liquid = phases(stages, memory["unknowns"]).liquid
+            liquid = phases(stages, self._unknowns(numbers, inlets, memory)).liquid
         return stages.law.outside(liquid).any(axis=1)
 
     def cautions(
@@ -385,10 +392,11 @@ class Column(Unit):
         temperature, pressure = self._conditions(inlets, numbers)
         if np.any(inlets["liquid_in"].pressure < pressure * (1 - 1e-6)):
             found.append(f"Column {self.name}: its liquid is fed at less than the column's pressure; a pump is needed.")
-        found += self._condensing(inlets, temperature, pressure, memory["unknowns"][..., 0])
+        unknowns = self._unknowns(numbers, inlets, memory)
+        found += self._condensing(inlets, temperature, pressure, unknowns[..., 0])
         stages = self._stages(inlets, numbers)
         with np.errstate(all="ignore"):
-            liquid = phases(stages, memory["unknowns"]).liquid
+            liquid = phases(stages, unknowns).liquid
         for index, (name, model) in enumerate(zip(self.model_names, self.models, strict=True)):
             for sentence in model.cautions(temperature[:, None], pressure[:, None], liquid[..., index]):
                 found.append(f"Column {self.name}, {name}: {sentence}")

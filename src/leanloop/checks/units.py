@@ -1,0 +1,151 @@
+"""What every unit kind must keep: reading, balances, and cases that know nothing of one another."""
+
+from __future__ import annotations
+
+import copy
+
+import numpy as np
+
+from leanloop.checks.base import documented, require, well_formed
+from leanloop.checks.stand import NAME, SAME, SUITE, Stand, named
+from leanloop.entries import Context
+from leanloop.status import OK
+from leanloop.units.base import Unit
+
+BALANCE = 1e-12
+check = SUITE.check
+
+
+@check("files, messages and the catalogue are made of entries", "declare each entry with a sort and a line of doc", whole=True)
+def entries(plugin: type[Unit]) -> None:
+    documented(plugin, "kind")
+    well_formed(plugin.entries, ("inlet", "outlet", "component", "equilibrium"))
+    require(any(entry.sort == "outlet" for entry in plugin.entries), "there is no outlet among its entries")
+    require(plugin.derivatives in ("complex", "own", "difference"), f"derivatives is {plugin.derivatives!r}")
+    same = plugin.evaluate is Unit.evaluate
+    require(same != (plugin.derivatives == "own"), f"derivatives is {plugin.derivatives!r} and evaluate is {'not ' * same}overridden")
+
+
+@check("without an example nothing is checked", "give one scene or more by a class method examples()", whole=True)
+def examples(plugin: type[Unit]) -> None:
+    scenes = plugin.examples()
+    require(scenes, "examples() gives none")
+    for scene in scenes:
+        Stand(plugin, scene).outlets()
+
+
+@check("faults are collected by read, and one unit may be read often", "keep name and raw, and work in read", whole=True)
+def constructor_stores(plugin: type[Unit]) -> None:
+    odd = {"no such entry": object()}
+    unit = plugin(NAME, **odd)
+    require(unit.name == NAME and unit.raw == odd, "the constructor changes its name or its entries")
+    before, names = dict(vars(unit)), copy.deepcopy((unit.inlets, unit.outlets))
+    context = Context()
+    read = unit.read(context)
+    require(read is not unit and vars(unit) == before and (unit.inlets, unit.outlets) == names, "read changes the unit itself")
+    require(context.faults, "read notes no fault of an unknown entry")
+
+
+@check("a slip of the pen must be found, with its place", "leave reading to the base class, or note every fault")
+def faults_have_addresses(stand: Stand) -> None:
+    raw = dict(stand.scene.entries)
+    tries = [({**raw, "no_such": 1.0}, "no_such")]
+    tries += [({**raw, name: object()}, name) for name in raw]
+    for entry in stand.plugin.entries:
+        if entry.required:
+            tries.append(({key: value for key, value in raw.items() if key != entry.name}, entry.name))
+    for table, name in tries:
+        context = Context(plain_si=True)
+        stand.plugin(NAME, **table).read(context)
+        found = [fault.address for fault in context.faults]
+        require(any(item.startswith(f"units.{NAME}.{name}") for item in found), f"no fault at units.{NAME}.{name}: {found}")
+
+
+@check("the engine takes outlets by label, with a case axis", "return every outlet by label with states (M, C + 2)")
+def outlets_complete(stand: Stand) -> None:
+    unit, width = stand.unit, len(stand.components) + 2
+    found = stand.evaluate()
+    require(set(found.outlets) == set(unit.outlets), f"the outlets are {list(found.outlets)}, not {list(unit.outlets)}")
+    shapes = ((stand.cases, width), (1, width))
+    rough = unit.estimate(stand.inlets, stand.numbers) if len(unit.sections()) == 1 else found.outlets
+    for title, streams in (("outlet", found.outlets), ("rough outlet", rough)):
+        for label in unit.outlets:
+            state = streams[label].state
+            require(state.shape in shapes and state.dtype == float, f"{title} '{label}' is {state.dtype} {state.shape}")
+    require(found.status.shape == (stand.cases,), f"the status has the shape {found.status.shape}")
+
+
+@check("other units and methods use the same arrays", "work on copies")
+def inlets_unchanged(stand: Stand) -> None:
+    inlets, numbers = stand.copied()
+    memory = stand.evaluate(inlets, numbers).memory
+    kept = copy.deepcopy(memory)
+    stand.evaluate(inlets, numbers, memory)
+    for label, stream in stand.inlets.items():
+        require(inlets[label].state.tobytes() == stream.state.tobytes(), f"inlet '{label}' is changed")
+    for title, one, other in (("number", numbers, stand.spread), ("memory", memory, kept)):
+        for key, value in other.items():
+            require(np.array_equal(one[key], value, equal_nan=True), f"{title} '{key}' is changed")
+
+
+@check("nothing may arise or vanish", "count what comes from outside in added()")
+def balance(stand: Stand) -> None:
+    stand.outlets()
+    found = stand.evaluate()
+    fed = sum(stream.flows for stream in stand.inlets.values())
+    left = sum(stream.flows for stream in found.outlets.values())
+    added = stand.unit.added(stand.inlets, found.outlets, stand.numbers)
+    added = np.zeros_like(fed) if added is None else added
+    allowed = BALANCE * (fed + left + np.abs(added))
+    for case, place in np.argwhere(~(np.abs(fed + added - left) <= allowed))[:1]:
+        name, open_by = stand.components.names[place], (fed + added - left)[case, place]
+        require(False, f"case {case}: {open_by:.3g} mol/s of '{name}' vanish, of {fed[case, place]:.3g} mol/s fed")
+    told = stand.unit.adds(stand.components)
+    for place in np.flatnonzero(~told & (np.abs(added) > allowed).any(axis=0)):
+        require(False, f"'{stand.components.names[place]}' is added, and adds() does not say so")
+
+
+@check("a batch is nothing but its cases", "let no case act on another: no sum or norm over the case axis")
+def cases_alone(stand: Stand) -> None:
+    whole = stand.evaluate(numbers=stand.spread)
+    for case in range(stand.cases):
+        one = stand.evaluate(*stand.take([case]))
+        for label, stream in whole.outlets.items():
+            state = stream.state[[case if len(stream.state) > 1 else 0]]
+            gap = stand.apart(one.outlets[label].state, state, stand.sizes()[[case]])
+            require(gap <= SAME, f"case {case} alone gives another '{label}', {gap:.1e} apart")
+        require(one.status[0] == whole.status[case], f"case {case} alone ends with another status")
+
+
+@check("one bad case must not cost the others", "never reduce over the case axis; leave NaN in its own row")
+def nan_stays(stand: Stand) -> None:
+    whole, others = stand.evaluate(numbers=stand.spread), np.arange(1, stand.cases)
+    for name, place, value, *_ in stand.variables():
+        spoilt = np.where(np.arange(stand.cases) == 0, np.nan, value)
+        found = stand.evaluate(*stand.at(name, place, spoilt))
+        where = f"NaN in case 0 of {named(stand, name, place)}"
+        for label, stream in found.outlets.items():
+            whole_state = np.broadcast_to(whole.outlets[label].state, stand.sizes().shape)
+            state = np.broadcast_to(stream.state, stand.sizes().shape)
+            gap = stand.apart(state[1:], whole_state[1:], stand.sizes()[1:])
+            require(gap <= SAME, f"{where} changes '{label}' of others by {gap:.1e}")
+            require(found.status[0] != OK or np.isfinite(state[0]).all(), f"{where} ends with status {OK} and NaN in '{label}'")
+        require((found.status[others] == whole.status[others]).all(), f"{where} changes the status of others")
+
+
+@check("a loop starts empty and feeds may be shut", "write formulas that are regular at zero, or give a status")
+def zero_flow(stand: Stand) -> None:
+    tries = [(f"inlet '{label}'", stand.moved(label, slice(None, -2), np.zeros_like)) for label in stand.inlets]
+    for place, name in enumerate(stand.components.names):
+        tries.append((f"component '{name}'", {label: stand.moved(label, place, np.zeros_like)[label] for label in stand.inlets}))
+    empty = {label: stand.moved(label, slice(None, -2), np.zeros_like)[label] for label in stand.inlets}
+    for title, inlets in (*tries, ("everything", empty)):
+        found = stand.evaluate(inlets)
+        for label, stream in found.outlets.items():
+            good = np.broadcast_to(found.status == OK, stand.cases)
+            state = np.broadcast_to(stream.state, stand.sizes().shape)[good]
+            require(np.isfinite(state).all(), f"'{label}' is not finite where {title} is zero, and the status is {OK}")
+            require((state[:, :-2] >= -BALANCE * stand.fed.max()).all(), f"'{label}' is negative where {title} is zero, and the status is {OK}")
+        if len(stand.unit.sections()) == 1:
+            with np.errstate(all="ignore"):
+                stand.unit.estimate(inlets, stand.numbers)
