@@ -97,7 +97,7 @@ def close(
     while len(cases):
         now = evaluate(cases, x)
         number = len(outcome.history) + 1
-        with np.errstate(invalid="ignore", over="ignore"):
+        with np.errstate(invalid="ignore", over="ignore", divide="ignore"):
             scale = now.scale + ROUNDING * np.abs(x) / tolerance
             error = np.where(now.g == x, 0.0, np.abs(now.g - x) / scale).max(axis=1, initial=0.0)
         outcome.passes[cases], outcome.error[cases] = number, error

@@ -56,9 +56,7 @@ class Mixer(Unit):
         # nothing flows: the first inlet's temperature, so that an empty stream stays regular
         empty = amount == 0
         temperature = np.where(empty, streams[0].temperature, heat / np.where(empty, 1.0, amount))
-        pressure = streams[0].pressure
-        for stream in streams[1:]:
-            pressure = np.where(np.real(stream.pressure) < np.real(pressure), stream.pressure, pressure)
+        pressure = _least([stream.pressure for stream in streams])
         return {"gives": Stream.of(flows, temperature, pressure, streams[0].phase)}
 
     def cautions(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping) -> list[str]:
@@ -69,3 +67,14 @@ class Mixer(Unit):
                 f"Mixer {self.name}: the temperature of its outlet is the molar mean of its inlets, not a heat balance."
             ]
         return []
+
+
+def _least(pressures: list[np.ndarray]) -> np.ndarray:
+    """Give the lowest pressure; inlets that tie share its derivative, a recycle at the loop's own pressure among them."""
+    pressures = np.broadcast_arrays(*pressures)
+    least = np.min([np.real(item) for item in pressures], axis=0)
+    if not any(item.dtype.kind == "c" for item in pressures):
+        return least
+    tied = [np.real(item) == least for item in pressures]
+    slope = sum(np.imag(item) * own for item, own in zip(pressures, tied, strict=True))
+    return least + 1j * slope / np.maximum(sum(own.astype(int) for own in tied), 1)
