@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import difflib
+import json
 import math
+import re
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from numbers import Real
@@ -11,6 +14,7 @@ from typing import Any
 from leanloop.errors import Fault, nearest
 from leanloop.quantities import DIMENSIONS, dimension_name, example, parse
 
+BARE = re.compile(r"[\w-]+")
 WORDS = ("text", "inlet", "outlet", "component", "equilibrium", "choice")
 
 
@@ -101,7 +105,8 @@ class Context:
     plain_si : bool
         Whether a plain number may stand for a quantity with a dimension (Python only).
     names : mapping of str to collection of str
-        Known names by sort: ``"component"``, ``"equilibrium"``, ``"outlet"``.
+        Known names by sort: ``"component"``, ``"equilibrium"``, ``"outlet"``. Under ``"doubtful"``, components
+        whose own entry is faulty: nothing further is said of them.
     """
 
     def __init__(
@@ -113,7 +118,7 @@ class Context:
 
     def fault(self, address: str, problem: str, remedy: str) -> None:
         """Note one fault."""
-        self.faults.append(Fault(address, problem, remedy))
+        self.faults.append(Fault(one_line(address), one_line(problem), one_line(remedy)))
 
     def knowing(self, **names: Iterable[str]) -> Context:
         """Give a context with further known names and the same list of faults."""
@@ -222,13 +227,15 @@ def read_values(entries: Iterable[Entry], table: Any, address: str, context: Con
     if not isinstance(table, Mapping):
         context.fault(address, f"{_shown(table)} is no table", f"write entries: {', '.join(known)}")
         return values
+    meant = set()
     for key in table:
         if key not in known:
-            context.fault(f"{address}.{key}", f"unknown entry '{key}'", nearest(key, known))
+            context.fault(f"{address}.{shown_key(key)}", f"unknown entry {shown_name(key)}", nearest(str(key), known))
+            meant.add(near(key, known))
     for entry in known.values():
         where = f"{address}.{entry.name}"
         if entry.name not in table:
-            if entry.required:
+            if entry.required and entry.name not in meant:  # a misspelt entry is one fault, not two
                 context.fault(where, "entry is missing", f"add {entry.name}{_hint(entry)}")
             continue
         raw = table[entry.name]
@@ -266,9 +273,9 @@ def _read_named(raw: Any, entry: Entry, address: str, context: Context, values: 
         return
     known = context.names.get(entry.by)
     for key, item in raw.items():
-        where = f"{address}.{key}"
-        if known is not None and key not in known:
-            context.fault(where, f"unknown {entry.by} '{key}'", nearest(key, known))
+        where = f"{address}.{shown_key(key)}"
+        if known and key not in known:  # where none is known, that is a fault already
+            context.fault(where, f"unknown {entry.by} {shown_name(key)}", nearest(str(key), known))
             continue
         number = read_number(item, entry, where, context)
         if number is not None:
@@ -301,12 +308,18 @@ def _read_word(raw: Any, entry: Entry, address: str, context: Context) -> Any:
     items = list(raw) if many else [raw]
     good = []
     known = entry.choices or context.names.get(entry.sort if isinstance(entry.sort, str) else "")
+    what = entry.sort if entry.sort == "component" else entry.name
+    if entry.sort == "equilibrium" and not known and known is not None and not context.names.get("broken equilibrium"):
+        context.fault(address, "there is no equilibrium table", "add [equilibrium.NAME] with a model for each component")
+        return None
     for index, item in enumerate(items):
         where = f"{address}[{index}]" if many else address
         if not isinstance(item, str) or not item:
             context.fault(where, f"{_shown(item)} is no name", f"write a name in quotes{' or a list of them' if entry.many else ''}")
+        elif entry.sort in ("inlet", "outlet") and not is_name(item):
+            context.fault(where, f"{_shown(item)} is no name of a stream", "use letters, digits, _ and -")
         elif known and entry.sort != "text" and item not in known:
-            context.fault(where, f"unknown {entry.name} '{item}'", nearest(item, known))
+            context.fault(where, f"unknown {what} {shown_name(item)}", nearest(item, known))
         else:
             good.append(item)
     if len(good) < len(items) or not good:
@@ -331,8 +344,47 @@ def _hint(entry: Entry) -> str:
     return ""
 
 
+def is_name(text: Any) -> bool:
+    """Tell whether a text can stand in an address: letters, digits, _ and - alone."""
+    return isinstance(text, str) and bool(text) and all(letter.isalnum() or letter in "_-" for letter in text)
+
+
+def near(name: Any, known: Iterable[str]) -> str | None:
+    """Give the known name that a misspelt one is taken for, None where no name is near."""
+    found = difflib.get_close_matches(str(name), list(known), n=1, cutoff=0.6)
+    return found[0] if found else None
+
+
+def shown_key(key: Any) -> str:
+    """Give a key as an address shows it: in quotes, on one line, where it is no plain name."""
+    text = key if isinstance(key, str) else str(key)
+    if BARE.fullmatch(text):
+        return text if len(text) <= 80 else text[:77] + "..."
+    return json.dumps(_cut(text), ensure_ascii=False)
+
+
+def shown_name(name: Any) -> str:
+    """Give a name in single quotes, or as Python writes it where it holds anything unprintable."""
+    text = name if isinstance(name, str) else str(name)
+    return f"'{text}'" if text.isprintable() and len(text) <= 80 else repr(_cut(text))
+
+
+def one_line(text: str) -> str:
+    """Give a text with escapes for everything that is not printable, so that it stays on one line."""
+    return text if text.isprintable() else "".join(
+        letter if letter.isprintable() else repr(letter)[1:-1] for letter in text
+    )
+
+
+def _cut(text: str) -> str:
+    return text if len(text) <= 80 else text[:77] + "..."
+
+
 def _shown(raw: Any) -> str:
-    text = repr(raw)
+    try:
+        text = repr(raw)
+    except (ValueError, RecursionError):  # thousands of digits, or a table thousands deep
+        return "this value"
     return text if len(text) <= 40 else text[:37] + "..."
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import copy
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from functools import partial
 from typing import Any
 
@@ -11,7 +11,7 @@ import numpy as np
 from scipy.constants import R
 
 from leanloop.components import PHASES, Components
-from leanloop.entries import Context, Entry, Values, read_number, read_values
+from leanloop.entries import Context, Entry, Values, near, read_number, read_values, shown_key, shown_name
 from leanloop.equilibrium.conditions import Conditions
 from leanloop.equilibrium.water import is_water
 from leanloop.equilibrium.water import vapour_pressure as water_vapour_pressure
@@ -47,16 +47,17 @@ class Feed:
         Entries as a file would hold them; in Python plain SI numbers may stand for quantities.
     """
 
-    def __init__(self, name: str, **raw: Any) -> None:
+    def __init__(self, name: str, /, **raw: Any) -> None:
         self.name, self.raw = name, raw
+        self.lost = False  # what was written of it is no table: its name alone is known
         self.values = Values()
         self.form, self.rest = "", ""
         self.vapour_pressure: Callable[[np.ndarray], np.ndarray] | None = None
 
     @property
     def phase(self) -> str:
-        """``"gas"`` or ``"liquid"``."""
-        return self.values.words.get("phase", "gas")
+        """``"gas"`` or ``"liquid"``, empty where it is not rightly given."""
+        return self.values.words.get("phase", "")
 
     def read(
         self,
@@ -78,11 +79,16 @@ class Feed:
         """
         feed = copy.copy(self)
         feed.components, feed.basis, feed.vapour_pressure = components, basis, None
+        if self.lost:
+            return feed
         address = f"feeds.{self.name}"
         forms = [form for form in (*FORMS, "flows") if form in self.raw]
         plain = {key: value for key, value in self.raw.items() if key not in (*FORMS, "flows")}
         context = context.knowing(component=components.names)
+        meant = self._misspelt(plain, address, context)
         feed.values = read_values(ENTRIES, plain, address, context)
+        if not forms and meant & {*FORMS, "flows"}:
+            return feed
         if len(forms) != 1:
             context.fault(
                 f"{address}.{forms[1]}" if forms else f"{address}.fractions",
@@ -93,13 +99,15 @@ class Feed:
         feed.form = forms[0]
         if feed.form == "flows":
             own = read_values((_FLOW,), {"flows": self.raw["flows"]}, address, context)
+            if isinstance(self.raw["flows"], Mapping) and not self.raw["flows"]:
+                context.fault(f"{address}.flows", "holds nothing", 'write flows = { component = "10 mol/s" }')
             feed.values.numbers.update(own.numbers)
             feed.values.sorts.update(own.sorts)
             feed.values.entries.update(own.entries)
             if "flow" in self.raw:
                 context.fault(f"{address}.flow", "flow and flows are both given", "keep one of them")
         else:
-            if "flow" not in self.raw:
+            if "flow" not in self.raw and "flow" not in meant:
                 context.fault(f"{address}.flow", "entry is missing", 'add flow = "10 mol/s", or give flows by component')
             feed._read_parts(address, context)
         if "saturated_with" in feed.values.words:
@@ -107,9 +115,22 @@ class Feed:
         feed._check(address, context)
         return feed
 
+    @staticmethod
+    def _misspelt(plain: dict[str, Any], address: str, context: Context) -> set[str]:
+        """Note and take out entries that are none, and give the names they are taken for."""
+        own = [entry.name for entry in ENTRIES]
+        every, meant = [*own, *FORMS, "flows"], set()
+        for key in [key for key in plain if key not in own]:
+            name = near(key, every)
+            if name not in own or name == "flow":
+                context.fault(f"{address}.{shown_key(key)}", f"unknown entry {shown_name(key)}", nearest(key, every))
+                meant.add(name)
+                del plain[key]
+        return meant - {None}
+
     def _read_saturation(self, name: str, conditions: Mapping[str, Conditions], address: str, context: Context) -> None:
         where = f"{address}.saturated_with"
-        if self.phase != "gas":
+        if self.phase == "liquid":
             context.fault(where, "is for a gas", "take it away, or make the feed a gas")
         if self.form == "flows":
             context.fault(where, "does not go with flows by component", "give flow and fractions of the dry gas")
@@ -138,10 +159,11 @@ class Feed:
             return
         values, faults = self.values, len(context.faults)
         for name, raw in table.items():
-            place = f"{where}.{name}"
+            place = f"{where}.{shown_key(name)}"
             if name not in self.components.index:
-                context.fault(place, f"unknown component '{name}'", nearest(name, self.components.names))
-            elif raw == "rest":
+                if len(self.components):  # none at all is a fault already
+                    context.fault(place, f"unknown component {shown_name(name)}", nearest(name, self.components.names))
+            elif isinstance(raw, str) and raw == "rest":
                 if self.rest:
                     context.fault(place, f"'{self.rest}' is the rest already", "let one component alone be the rest")
                 self.rest = name
@@ -149,30 +171,37 @@ class Feed:
                 number = read_number(raw, _PART, place, context)
                 if number is not None:
                     value, sort = number
-                    if sort == "molar mass":  # mass of the component per mol of gas, from mg/Nm3
+                    if sort == "molar mass" and "Nm3" not in raw:
+                        context.fault(place, f"{shown_name(raw)} is no part of a gas", "write a fraction, ppm or mg/Nm3")
+                    elif sort == "molar mass":  # mass of the component per mol of gas, from mg/Nm3
                         value = self._from_concentration(value, name, place, context)
                     values.numbers[f"{self.form}.{name}"] = value
                     values.sorts[f"{self.form}.{name}"] = "number"
                     values.entries[f"{self.form}.{name}"] = _PART
         if len(context.faults) > faults:
             return
+        if not self.phase and self.form in ("ratios", "loadings"):
+            return  # which basis they refer to is not known
         total = sum(values.group(self.form)[name] for name in self._summed())
-        if self.rest and total > 1.0 + SUM_TOLERANCE:
+        if self.rest and self.rest not in self._summed([self.rest]):
+            what = f"{self.form} are per mol of a basis that '{self.rest}' is no part of, so that it cannot be the rest"
+            context.fault(f"{where}.{self.rest}", what, "write its value, and the rest for one of the basis")
+        elif self.rest and total > 1.0:
             context.fault(where, f"the given parts sum to {total:g}, which leaves no rest", "make them sum to less than 1")
         elif not self.rest and abs(total - 1.0) > SUM_TOLERANCE:
             context.fault(where, f"the parts sum to {total:g}", 'make them sum to 1, or write "rest" for one of them')
 
     def _from_concentration(self, value: float, name: str, place: str, context: Context) -> float:
         mass = self.components[name].molar_mass
-        if self.form != "fractions" or self.phase != "gas":
+        if self.form != "fractions" or self.phase == "liquid":
             context.fault(place, "mass per normal volume is for the fractions of a gas", "write a mole fraction")
         elif mass is None:
             context.fault(f"components.{name}.molar_mass", "entry is missing", "add it, as a feed is given in mg/Nm3")
         return value / (mass or 1.0)
 
-    def _summed(self) -> list[str]:
+    def _summed(self, names: Iterable[str] | None = None) -> list[str]:
         """Give the components whose parts sum to one: all, or those of the basis for ratios."""
-        names = list(self.values.group(self.form))
+        names = list(self.values.group(self.form) if names is None else names)
         if self.form in ("fractions", "mass_fractions"):
             return names
         return [name for name in names if name in self._basis_names()]

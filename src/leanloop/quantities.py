@@ -29,6 +29,7 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "amount": ((0, 0, 0, 0, 1), "40 kmol"),
 }
 
+LONGEST = 200  # letters of a unit
 NORMAL_MOLES = c.atm / (c.R * c.zero_Celsius)  # mol in 1 Nm3: 0 degC, 101.325 kPa
 
 _NONE = (0, 0, 0, 0, 0)
@@ -82,7 +83,7 @@ _NAMED: dict[str, tuple[float, Dimension]] = {
     "ppb": (1e-9, _NONE),
 }
 _OFFSETS = {"degC": c.zero_Celsius, "degF": c.zero_Celsius - 32 * c.degree_Fahrenheit}
-_NUMBER = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*?)\s*\Z", re.DOTALL)
+_NUMBER = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?)\s*(.*)\Z", re.DOTALL)
 _TOKEN = re.compile(r"\s*([A-Za-z%]+3?(?:(?:\^|\*\*)?-?\d{1,4})?|[()/*.])")
 
 
@@ -103,6 +104,10 @@ class Quantity:
     value: float
     dimension: Dimension
     unit: str
+
+
+def _cut(text: str) -> str:
+    return text if len(text) <= 40 else text[:37] + "..."
 
 
 def _atom(token: str) -> tuple[float, Dimension]:
@@ -144,8 +149,11 @@ def unit_factor(text: str) -> tuple[float, Dimension]:
     ValueError
         Where the unit is not understood.
     """
+    text = text.rstrip()
+    if len(text) > LONGEST:
+        raise ValueError(f"unit '{_cut(text)}' is not understood")
     tokens, position = [], 0
-    while position < len(text.rstrip()):
+    while position < len(text):
         match = _TOKEN.match(text, position)
         if match is None:
             raise ValueError(f"unit '{text}' is not understood")
@@ -202,7 +210,8 @@ def parse(text: str, difference: bool = False) -> Quantity:
     ValueError
         Where the text is no finite number with a known unit.
     """
-    match = _NUMBER.match(text)
+    match = _NUMBER.match(text.strip())
+    text = _cut(text)
     if match is None:
         raise ValueError(f"'{text}' does not start with a number")
     value, unit = float(match[1]), match[2]

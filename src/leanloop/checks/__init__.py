@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from typing import Any
 
-from leanloop.checks import equilibrium, recycle, unit_claims, unit_derivatives, units
+from leanloop.checks import equilibrium, recycle, unit_claims, unit_derivatives, units  # noqa: F401  (two only register)
 from leanloop.checks.base import ContractError, Finding, Suite
 from leanloop.units.base import Scene
 

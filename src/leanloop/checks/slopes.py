@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+
+from leanloop.entries import Entry
 
 STEP = 1e-3  # of the value
 FROM_ZERO = 1e-4  # of the variable's size, where it is zero
@@ -58,6 +61,38 @@ def difference(
     return found
 
 
+@dataclass(frozen=True)
+class Variable:
+    """What a unit is differentiated by.
+
+    Parameters
+    ----------
+    name : str
+        Label of an inlet, or local name of a number.
+    place : int or None
+        Place in the inlet's state; None for a number.
+    title : str
+        For messages.
+    value, size, reach : (M,)
+        Value, what errors are measured by, and what a step from zero is measured by.
+    low, high : float
+        Limits.
+    """
+
+    name: str
+    place: int | None
+    title: str
+    value: np.ndarray
+    size: np.ndarray
+    reach: np.ndarray
+    low: float
+    high: float
+
+    def slope(self, call: Callable[[np.ndarray], list[np.ndarray]]) -> list[np.ndarray]:
+        """Give the derivatives of some arrays along it by differences."""
+        return difference(call, self.value, self.reach, self.low, self.high)
+
+
 def miss(own: Any, found: np.ndarray, size: np.ndarray) -> float:
     """Give how far a derivative is from its difference, 1 for as much as is allowed.
 
@@ -78,3 +113,10 @@ def miss(own: Any, found: np.ndarray, size: np.ndarray) -> float:
     with np.errstate(invalid="ignore"):
         wrong = np.abs(own - found) / (RELATIVE * np.abs(found) + FLOOR * size + 1e-300)
     return float(np.nanmax(np.where(own == found, 0.0, wrong), initial=0.0))
+
+
+def bounds(entry: Entry) -> tuple[float, float]:
+    """Give the least and the greatest number that an entry allows, its limits taken as allowed."""
+    low = max((limit for limit in (entry.least, entry.above) if limit is not None), default=-np.inf)
+    high = min((limit for limit in (entry.most, entry.below) if limit is not None), default=np.inf)
+    return low, high

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from leanloop.checks.base import Suite, require
+from leanloop.checks.slopes import Variable, bounds
 from leanloop.components import Component, Components
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
@@ -100,7 +101,8 @@ class Stand:
             state = np.broadcast_to(state, (count, state.shape[-1])).astype(float)
             # by place in the scene, so that the order of the components plays no part
             shift = {name: 0.13 * np.cos(3 * number + place) for number, name in enumerate(sorted(self.components.names))}
-            factor = np.array([*(1 + shift[name] for name in self.components.names), 1 + 0.004 * np.cos(place), 1.02 - 0.01 * place])
+            flows = [1 + shift[name] for name in self.components.names]
+            factor = np.array([*flows, 1 + 0.004 * np.cos(place), 1.02 - 0.01 * place])
             streams[label] = Stream(np.concatenate([state, state * factor]), scene.inlets[label].phase)
         return streams
 
@@ -137,11 +139,17 @@ class Stand:
             whole.memory_tangents.update(found.memory_tangents)
         return whole
 
-    def outlets(self, inlets: Mapping[str, Stream] | None = None, numbers: Mapping[str, Any] | None = None) -> dict[str, np.ndarray]:
+    def outlets(
+        self, inlets: Mapping[str, Stream] | None = None, numbers: Mapping[str, Any] | None = None
+    ) -> dict[str, np.ndarray]:
         """Give the calculated states by label, (M, C + 2); every case must be solved."""
         found = self.evaluate(inlets, numbers)
         require((found.status == OK).all(), f"its cases end with status {found.status.tolist()}, not {OK}")
-        return {label: np.broadcast_to(stream.state, (self.cases, stream.state.shape[-1])) for label, stream in found.outlets.items()}
+        return self.states(found.outlets)
+
+    def states(self, streams: Mapping[str, Stream]) -> dict[str, np.ndarray]:
+        """Give states by label, those of one case for all of them, (M, C + 2)."""
+        return {label: np.broadcast_to(stream.state, self.sizes().shape) for label, stream in streams.items()}
 
     def moved(self, label: str, place: int | slice, change: Callable[[np.ndarray], np.ndarray]) -> Streams:
         """Give the inlets with one part of one of them changed."""
@@ -168,41 +176,31 @@ class Stand:
         worst = np.abs(one - other) / (np.maximum(np.abs(one), np.abs(other)) + LEAST * sizes + 1e-300)
         return float(np.nanmax(worst, initial=0.0))
 
-    def variables(self) -> list[tuple[str, int | None, np.ndarray, np.ndarray, float, float]]:
-        """List what the unit is differentiated by: label and place, or number and None; values, sizes, limits."""
-        found: list[tuple[str, int | None, np.ndarray, np.ndarray, float, float]] = []
+    def variables(self) -> list[Variable]:
+        """List what the unit is differentiated by: what may flow, temperatures, pressures, numbers."""
+        found = []
+        most = np.max([stream.flows for stream in self.inlets.values()], axis=0)
+        reach = np.concatenate([np.where(most > 0, most, self.fed[:, None]), self.sizes()[:, -2:]], axis=1)
         for label, stream in self.inlets.items():
             for place in (*np.flatnonzero(self.around.present[label]), -2, -1):
-                low = 0.0
-                found.append((label, int(place), stream.state[:, place], self.sizes()[:, place], low, np.inf))
+                title = (*self.components.names, "temperature", "pressure")[place]
+                own = stream.state[:, place], self.sizes()[:, place], reach[:, place]
+                found.append(Variable(label, int(place), f"{title} of '{label}'", *own, 0.0, np.inf))
         for key, entry in self.limits.items():
-            value = np.asarray(self.spread[key], dtype=float)
-            found.append((key, None, value, np.where(value == 0, 1.0, np.abs(value)), *bounds(entry)))
+            value = self.spread[key]
+            size = np.where(value == 0, 1.0, np.abs(value))
+            found.append(Variable(key, None, f"number '{key}'", value, size, size, *bounds(entry)))
         return found
 
-    def at(self, name: str, place: int | None, value: np.ndarray) -> tuple[Streams, dict[str, Any]]:
+    def at(self, variable: Variable, value: np.ndarray) -> tuple[Streams, dict[str, Any]]:
         """Give inlets and spread numbers with one variable changed."""
-        if place is None:
-            return self.inlets, {**self.spread, name: value}
-        return self.moved(name, place, lambda _: value), self.spread
+        if variable.place is None:
+            return self.inlets, {**self.spread, variable.name: value}
+        return self.moved(variable.name, variable.place, lambda _: value), self.spread
 
     def copied(self) -> tuple[Streams, dict[str, Any]]:
         """Give copies of the inlets and the spread numbers."""
         return copy.deepcopy(self.inlets), copy.deepcopy(self.spread)
-
-
-def bounds(entry: Entry) -> tuple[float, float]:
-    """Give the least and the greatest number that an entry allows, its limits taken as allowed."""
-    low = max((limit for limit in (entry.least, entry.above) if limit is not None), default=-np.inf)
-    high = min((limit for limit in (entry.most, entry.below) if limit is not None), default=np.inf)
-    return low, high
-
-
-def named(stand: Stand, name: str, place: int | None) -> str:
-    """Name a variable for messages."""
-    if place is None:
-        return f"number '{name}'"
-    return f"{stand.components.names[place] if place >= 0 else ('temperature', 'pressure')[place]} of '{name}'"
 
 
 SUITE = Suite(KINDS, lambda plugin: plugin.examples(), Stand)

@@ -58,8 +58,8 @@ def holds_truthful(stand: Stand) -> None:
     for label in stand.inlets:
         now = sum(stand.outlets(stand.moved(label, PLACES["flows"], lambda flows: flows / MORE)).values())
         for place in np.flatnonzero(stand.unit.holds(stand.components)):
-            gap = np.abs(now - base)[:, place].max()
-            require(gap <= SAME * base[:, place].max(), f"'{stand.components.names[place]}' is said to be held and follows '{label}'")
+            gap, name = np.abs(now - base)[:, place].max(), stand.components.names[place]
+            require(gap <= SAME * base[:, place].max(), f"'{name}' is said to be held and follows '{label}'")
 
 
 @check("a loop leaves out what it cannot change", "let leans_on() list every part of an inlet that moves the outlet")
@@ -71,15 +71,15 @@ def leans_on_truthful(stand: Stand) -> None:
             odd = [pair for pair in told if pair[0] not in stand.inlets or pair[1] not in PLACES]
             require(not odd, f"leans_on() lists {odd}, which are no parts of inlets")
             for inlet in stand.inlets:
-                for part in PLACES.keys() - {part for label, part in told if label == inlet}:
-                    for factor in (MORE, 1 / MORE):
-                        # one component more, not all: a mean does not follow all of them
-                        place = -3 if part == "flows" else PLACES[part]
-                        for own in (place, PLACES[part]):
-                            now = stand.outlets(stand.moved(inlet, own, lambda value, factor=factor: factor * value))
-                            gap = np.abs(now[outlet] - base[outlet])[:, PLACES[what]]
-                            follows = (gap > SAME * base[outlet][:, PLACES[what]]).any()
-                            require(not follows, f"the {what} of '{outlet}' follows the {part} of '{inlet}', which is not listed")
+                listed = [part for label, part in told if label == inlet]
+                for part, place in PLACES.items():
+                    # one flow alone as well, which a composition follows, and a step either way, for the least of several
+                    tries = [(own, by) for own in ((place, -3) if part == "flows" else (place,)) for by in (MORE, 1 / MORE)]
+                    for own, factor in tries if part not in listed else ():
+                        now = stand.outlets(stand.moved(inlet, own, lambda value, factor=factor: factor * value))
+                        gap = np.abs(now[outlet] - base[outlet])[:, PLACES[what]]
+                        follows = (gap > SAME * base[outlet][:, PLACES[what]]).any()
+                        require(not follows, f"the {what} of '{outlet}' follows the {part} of '{inlet}', which is not listed")
 
 
 @check("the order of the components means nothing", "find components by name, never by place")
@@ -101,7 +101,8 @@ def flows_scale(stand: Stand) -> None:
         label: Stream(np.concatenate([factor * stream.flows, stream.state[:, -2:]], axis=1), stream.phase)
         for label, stream in stand.inlets.items()
     }
-    sized = {key: factor * value for key, value in stand.numbers.items() if "flow" in stand.sorts[key] or stand.sorts[key] == "power"}
+    flows = [key for key, sort in stand.sorts.items() if "flow" in sort or sort in ("power", "heat transfer")]
+    sized = {key: factor * stand.numbers[key] for key in flows}
     now = stand.outlets(inlets, {**stand.numbers, **sized})
     for label, state in base.items():
         grown = np.concatenate([factor * state[:, :-2], state[:, -2:]], axis=1)

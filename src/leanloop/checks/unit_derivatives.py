@@ -8,8 +8,8 @@ from typing import Any
 import numpy as np
 
 from leanloop.checks.base import require
-from leanloop.checks.slopes import difference, miss
-from leanloop.checks.stand import SAME, SUITE, Stand, named
+from leanloop.checks.slopes import miss
+from leanloop.checks.stand import SAME, SUITE, Stand, Variable
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.stream import Stream
 
@@ -26,14 +26,15 @@ def seed_ways(stand: Stand, weights: np.ndarray) -> tuple[dict[str, np.ndarray |
     """
     ways: dict[str, np.ndarray | None] = dict.fromkeys(stand.inlets)
     number_ways: dict[str, np.ndarray] = {}
-    for seed, (name, place, *_) in enumerate(stand.variables()):
-        if place is None:
+    for seed, variable in enumerate(stand.variables()):
+        name = variable.name
+        if variable.place is None:
             number_ways[name] = np.zeros_like(weights)
             number_ways[name][seed] = weights[seed]
         else:
             if ways[name] is None:
                 ways[name] = np.zeros((*weights.shape, len(stand.components) + 2))
-            ways[name][seed, :, place] = weights[seed]
+            ways[name][seed, :, variable.place] = weights[seed]
     return ways, number_ways
 
 
@@ -52,26 +53,26 @@ def compare_outlets(stand: Stand, of_numbers: bool) -> None:
     for label, way in whole.tangents.items():
         wanted = (len(weights), stand.cases, len(stand.components) + 2)
         require(way is None or way.shape == wanted, f"the derivatives of '{label}' have the shape {np.shape(way)}, not {wanted}")
-    for seed, (name, place, value, size, low, high) in enumerate(stand.variables()):
-        if of_numbers != (place is None):
+    for seed, variable in enumerate(stand.variables()):
+        if of_numbers != (variable.place is None):
             continue
 
-        def call(moved: np.ndarray, name: str = name, place: int | None = place) -> list[np.ndarray]:
-            now = stand.evaluate(*stand.at(name, place, moved))
-            outlets = [np.broadcast_to(now.outlets[label].state, stand.sizes().shape) for label in labels]
-            return outlets + [now.memory[key] for key in whole.memory_tangents]
+        def call(moved: np.ndarray, variable: Variable = variable) -> list[np.ndarray]:
+            now = stand.evaluate(*stand.at(variable, moved))
+            states = stand.states(now.outlets)
+            return [states[label] for label in labels] + [now.memory[key] for key in whole.memory_tangents]
 
-        found = difference(call, value, size, low, high)
+        found = variable.slope(call)
         for label, slope in zip(labels, found, strict=False):
             way = whole.tangents[label]
             own = np.zeros_like(slope) if way is None else way[seed] / weights[seed][:, None]
-            off = miss(own, slope, stand.sizes() / size[:, None])
-            require(off <= 1, f"the derivative of '{label}' along {named(stand, name, place)} is off {off:.1e} times what is allowed")
+            off = miss(own, slope, stand.sizes() / variable.size[:, None])
+            require(off <= 1, f"the derivative of '{label}' along {variable.title} is off {off:.1e} times what is allowed")
         for (key, way), slope in zip(whole.memory_tangents.items(), found[len(labels) :], strict=True):
             wide = (stand.cases, *(1,) * (slope.ndim - 1))
-            own, sizes = way[seed] / weights[seed].reshape(wide), np.abs(whole.memory[key]).max() / size.reshape(wide)
-            off = miss(own, slope, sizes)
-            require(off <= 1, f"the derivative of memory '{key}' along {named(stand, name, place)} is off {off:.1e} times")
+            sizes = np.abs(whole.memory[key]).max() / variable.size.reshape(wide)
+            off = miss(way[seed] / weights[seed].reshape(wide), slope, sizes)
+            require(off <= 1, f"the derivative of memory '{key}' along {variable.title} is off {off:.1e} times what is allowed")
 
 
 @check("loops and requirements are solved with them", "mend evaluate, or set derivatives = 'difference'")
@@ -84,7 +85,7 @@ def derivatives_along_numbers(stand: Stand) -> None:
     compare_outlets(stand, of_numbers=True)
 
 
-@check("derivatives are taken by complex steps on leading axes", "broadcast over leading axes and take complex numbers, or set derivatives")
+@check("derivatives are complex steps on leading axes", "broadcast over leading axes and take complex numbers, or set derivatives")
 def complex_and_leading_axes(stand: Stand) -> None:
     if stand.unit.derivatives != "complex":
         return
@@ -98,8 +99,7 @@ def complex_and_leading_axes(stand: Stand) -> None:
             flat, deep = stand.unit.calculate(own, stand.spread), stand.unit.calculate(more, stand.spread)
         for label, stream in flat.items():
             state = deep[label].state
-            wide = np.broadcast_to(state, (2, *stand.sizes().shape)) if state.ndim < 3 else state
-            require(wide.shape == (2, *stand.sizes().shape), f"with a leading axis '{label}' has the shape {state.shape}")
+            wide = np.broadcast_to(state, (2, *stand.sizes().shape))
             gap = stand.apart(wide[0].real, np.broadcast_to(stream.state, stand.sizes().shape))
             require(gap <= SAME, f"with a leading axis '{label}' is {gap:.1e} apart")
 
@@ -115,7 +115,7 @@ def leaves(table: Mapping[str, Any], head: str = "") -> dict[str, np.ndarray]:
     return found
 
 
-@check("every reported figure can be differentiated, case by case", "report (M,) or (M, N) arrays by formulas that take complex numbers")
+@check("every reported figure is differentiated, by case", "report (M,) or (M, N) arrays by formulas that take complex numbers")
 def results_differentiable(stand: Stand) -> None:
     unit = stand.unit
     whole, weights, ways, number_ways = derived(stand)
@@ -139,21 +139,21 @@ def results_differentiable(stand: Stand) -> None:
     numbers = stand.spread | {key: stand.spread[key] + step * way for key, way in number_ways.items()}
     memory = whole.memory | {key: whole.memory[key] + step * way for key, way in whole.memory_tangents.items()}
     moved = report(shifted(stand.inlets, ways), shifted(whole.outlets, whole.tangents), numbers, memory)
-    for seed, (name, place, value, size, low, high) in enumerate(stand.variables()):
+    for seed, variable in enumerate(stand.variables()):
 
-        def call(now: np.ndarray, name: str = name, place: int | None = place) -> list[np.ndarray]:
-            inlets, numbers = stand.at(name, place, now)
+        def call(now: np.ndarray, variable: Variable = variable) -> list[np.ndarray]:
+            inlets, numbers = stand.at(variable, now)
             found = stand.evaluate(inlets, numbers)
             given = report(inlets, found.outlets, numbers, found.memory)
             return [np.asarray(given[key], dtype=float) for key in plain]
 
-        for key, slope in zip(plain, difference(call, value, size, low, high), strict=True):
+        for key, slope in zip(plain, variable.slope(call), strict=True):
             imaginary = np.broadcast_to(np.imag(moved[key]) / COMPLEX_STEP, (len(weights), *plain[key].shape))
             wide = (stand.cases, *(1,) * (slope.ndim - 1))
             own = imaginary[seed] / weights[seed].reshape(wide)
             most = np.nanmax(np.abs(plain[key]), initial=1e-300)
-            off = miss(np.where(np.isnan(slope), np.nan, own), slope, most / size.reshape(wide))
-            require(off <= 1, f"the derivative of '{key}' along {named(stand, name, place)} is off {off:.1e} times what is allowed")
+            off = miss(np.where(np.isnan(slope), np.nan, own), slope, most / variable.size.reshape(wide))
+            require(off <= 1, f"the derivative of '{key}' along {variable.title} is off {off:.1e} times what is allowed")
 
 
 @check("the next pass starts from the last one", "let memory shorten the way, never change the answer")

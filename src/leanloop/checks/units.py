@@ -7,7 +7,7 @@ import copy
 import numpy as np
 
 from leanloop.checks.base import documented, require, well_formed
-from leanloop.checks.stand import NAME, SAME, SUITE, Stand, named
+from leanloop.checks.stand import NAME, SAME, SUITE, Stand
 from leanloop.entries import Context
 from leanloop.status import OK
 from leanloop.units.base import Unit
@@ -22,8 +22,8 @@ def entries(plugin: type[Unit]) -> None:
     well_formed(plugin.entries, ("inlet", "outlet", "component", "equilibrium"))
     require(any(entry.sort == "outlet" for entry in plugin.entries), "there is no outlet among its entries")
     require(plugin.derivatives in ("complex", "own", "difference"), f"derivatives is {plugin.derivatives!r}")
-    same = plugin.evaluate is Unit.evaluate
-    require(same != (plugin.derivatives == "own"), f"derivatives is {plugin.derivatives!r} and evaluate is {'not ' * same}overridden")
+    own = plugin.evaluate is not Unit.evaluate
+    require(own or plugin.derivatives != "own", "derivatives is 'own', and evaluate is not its own")
 
 
 @check("without an example nothing is checked", "give one scene or more by a class method examples()", whole=True)
@@ -110,9 +110,8 @@ def cases_alone(stand: Stand) -> None:
     whole = stand.evaluate(numbers=stand.spread)
     for case in range(stand.cases):
         one = stand.evaluate(*stand.take([case]))
-        for label, stream in whole.outlets.items():
-            state = stream.state[[case if len(stream.state) > 1 else 0]]
-            gap = stand.apart(one.outlets[label].state, state, stand.sizes()[[case]])
+        for label, state in stand.states(whole.outlets).items():
+            gap = stand.apart(one.outlets[label].state, state[[case]], stand.sizes()[[case]])
             require(gap <= SAME, f"case {case} alone gives another '{label}', {gap:.1e} apart")
         require(one.status[0] == whole.status[case], f"case {case} alone ends with another status")
 
@@ -120,14 +119,12 @@ def cases_alone(stand: Stand) -> None:
 @check("one bad case must not cost the others", "never reduce over the case axis; leave NaN in its own row")
 def nan_stays(stand: Stand) -> None:
     whole, others = stand.evaluate(numbers=stand.spread), np.arange(1, stand.cases)
-    for name, place, value, *_ in stand.variables():
-        spoilt = np.where(np.arange(stand.cases) == 0, np.nan, value)
-        found = stand.evaluate(*stand.at(name, place, spoilt))
-        where = f"NaN in case 0 of {named(stand, name, place)}"
-        for label, stream in found.outlets.items():
-            whole_state = np.broadcast_to(whole.outlets[label].state, stand.sizes().shape)
-            state = np.broadcast_to(stream.state, stand.sizes().shape)
-            gap = stand.apart(state[1:], whole_state[1:], stand.sizes()[1:])
+    states = stand.states(whole.outlets)
+    for variable in stand.variables():
+        found = stand.evaluate(*stand.at(variable, np.where(np.arange(stand.cases) == 0, np.nan, variable.value)))
+        where = f"NaN in case 0 of {variable.title}"
+        for label, state in stand.states(found.outlets).items():
+            gap = stand.apart(state[1:], states[label][1:], stand.sizes()[1:])
             require(gap <= SAME, f"{where} changes '{label}' of others by {gap:.1e}")
             require(found.status[0] != OK or np.isfinite(state[0]).all(), f"{where} ends with status {OK} and NaN in '{label}'")
         require((found.status[others] == whole.status[others]).all(), f"{where} changes the status of others")
@@ -141,11 +138,11 @@ def zero_flow(stand: Stand) -> None:
     empty = {label: stand.moved(label, slice(None, -2), np.zeros_like)[label] for label in stand.inlets}
     for title, inlets in (*tries, ("everything", empty)):
         found = stand.evaluate(inlets)
-        for label, stream in found.outlets.items():
-            good = np.broadcast_to(found.status == OK, stand.cases)
-            state = np.broadcast_to(stream.state, stand.sizes().shape)[good]
-            require(np.isfinite(state).all(), f"'{label}' is not finite where {title} is zero, and the status is {OK}")
-            require((state[:, :-2] >= -BALANCE * stand.fed.max()).all(), f"'{label}' is negative where {title} is zero, and the status is {OK}")
+        for label, state in stand.states(found.outlets).items():
+            state = state[found.status == OK]
+            where = f"where {title} is zero, and the status is {OK}"
+            require(np.isfinite(state).all(), f"'{label}' is not finite {where}")
+            require((state[:, :-2] >= -BALANCE * stand.fed.max()).all(), f"'{label}' is negative {where}")
         if len(stand.unit.sections()) == 1:
             with np.errstate(all="ignore"):
                 stand.unit.estimate(inlets, stand.numbers)

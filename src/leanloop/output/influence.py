@@ -34,13 +34,17 @@ class Influence:
 
 
 def quantities(result: Result) -> list[str]:
-    """Give what is worth asking of: freed inputs of requirements, else what absorbers let through.
+    """Give what is worth asking of: freed inputs of requirements that hold, else what absorbers let through.
 
     Parameters
     ----------
     result : Result
     """
-    names = [f"requirements.{name}.free_value" for name in result.sheet.requirements]
+    found = result.parts[0].found
+    names = [
+        f"requirements.{name}.free_value" if found[name].active[0] and found[name].reached[0] else item.address
+        for name, item in result.sheet.requirements.items()
+    ]
     if names:
         return names
     out = []
@@ -65,7 +69,7 @@ def influences(result: Result) -> list[Influence]:
     """
     sheet = result.sheet
     asked = quantities(result)
-    freed = {item.free for item in sheet.requirements.values()}
+    freed = {item.free for name, item in sheet.requirements.items() if f"requirements.{name}.free_value" in asked}
     numbers = [address for address in sheet.numbers if sheet.varies(address) and address not in freed]
     if result.axis or not asked or not numbers or not solved(result.parts[0].run.status).all():
         return []
@@ -73,7 +77,7 @@ def influences(result: Result) -> list[Influence]:
     found = []
     for quantity in asked:
         name = quantity.removeprefix("requirements.").removesuffix(".free_value")
-        base = result[quantity] if quantity.startswith("streams.") else result.parts[0].found[name].free_value[0]
+        base = result.parts[0].found[name].free_value[0] if quantity.startswith("requirements.") else result[quantity]
         inputs = result.parts[0].run.inputs
         for number in numbers:
             warm = sheet.sorts[number] == "temperature"

@@ -155,6 +155,8 @@ def _circulation(result: Result, data: dict[str, Any], units: list[str]) -> list
         )
         rows = []
         for solute in data["units"][name]["results"]["removal"]:
+            if solute in names:
+                continue
             low, high = (data["streams"][stream]["loading"][solute] for stream in (lean, rich))
             change = None if low is None or high is None else high - low
             rows.append([solute, number(low), number(high), number(change)])

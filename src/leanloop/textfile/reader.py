@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from pathlib import Path
 from typing import Any
 
+from leanloop.entries import Context, one_line, shown_key, shown_name
 from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 
@@ -31,14 +32,18 @@ def load(path: str | Path) -> dict[str, Any]:
     """
     name = str(path)
     try:
-        text = Path(path).read_bytes().decode("utf-8")
+        text = Path(path).read_bytes().decode("utf-8-sig")  # some editors put a mark at the head
         return tomllib.loads(text)
     except OSError as error:
         raise InputError([Fault("file", f"cannot be read: {error.strerror}", "name an existing file")], name) from None
     except UnicodeDecodeError:
         raise InputError([Fault("file", "is not UTF-8 text", "save it as UTF-8")], name) from None
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
-        raise InputError([Fault("file", f"is no TOML: {error}", "mend the line named")], name) from None
+    except tomllib.TOMLDecodeError as error:
+        raise InputError([Fault("file", f"is no TOML: {one_line(str(error))}", "mend the line named")], name) from None
+    except RecursionError:
+        raise InputError([Fault("file", "is nested too deep", "write plain tables and lists")], name) from None
+    except ValueError:  # a whole number of thousands of digits, or a file name that no system can hold
+        raise InputError([Fault("file", "cannot be read as it stands", "look for a number of thousands of digits")], name) from None
 
 
 def change(data: dict[str, Any], settings: Iterable[str], source: str = "") -> dict[str, Any]:
@@ -61,41 +66,59 @@ def change(data: dict[str, Any], settings: Iterable[str], source: str = "") -> d
     InputError
         Where an address cannot be set.
     """
-    faults = []
+    faults = _change(data, settings)
+    if faults:
+        raise InputError(faults, source)
+    return data
+
+
+def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
+    """Apply the settings that can be applied, and give the faults of the others."""
+    context = Context()
     for setting in settings:
         address, sign, text = setting.partition("=")
         address = address.strip()
         if not sign or not address:
-            faults.append(Fault("--set", f"'{setting}' is no setting", "write --set ADDRESS=VALUE"))
+            context.fault("--set", f"{shown_name(setting)} is no setting", "write --set ADDRESS=VALUE")
             continue
-        try:
-            value = tomllib.loads(f"value = {text.strip()}")["value"]
-        except tomllib.TOMLDecodeError:
-            value = text.strip()
+        value = _value(text.strip())
+        where = ".".join(shown_key(part) for part in address.split("."))
         table: Any = data
         *heads, last = address.split(".")
+        if address in (*SECTIONS[1:], *ELSEWHERE):
+            context.fault(where, "is a whole section", f"go on to one of its entries, {address}.NAME")
+            continue
         if heads[:1] in ([], ["title"]) and address != "title" or (heads and heads[0] not in (*SECTIONS, *ELSEWHERE)):
-            faults.append(Fault(address, "leads nowhere", nearest(address.split(".")[0], SECTIONS)))
+            context.fault(where, "leads nowhere", nearest(address.split(".")[0], SECTIONS))
             continue
         for number, head in enumerate(heads):
             deeper = table.get(head) if isinstance(table, dict) else None
             if not isinstance(deeper, dict):
+                if head in table and number == 0:
+                    break  # what is wrong with the section itself is told when it is read
                 if number == 0 or (number == 1 and heads[0] in ("feeds", "units", "equilibrium", "requirements")):
                     known = table if isinstance(table, dict) else {}
                     if number == 1 or head not in ("loop", "basis", "groups"):
-                        faults.append(Fault(address, f"there is no '{head}'", nearest(head, known)))
+                        context.fault(where, f"there is no {shown_name(head)}", nearest(head, known))
                         break
                 if isinstance(table, dict) and head not in table:
                     deeper = table[head] = {}
                 else:
-                    faults.append(Fault(address, f"'{head}' is no table", "stop at a shorter address"))
+                    context.fault(where, f"{shown_name(head)} is no table", "stop at a shorter address")
                     break
             table = deeper
         else:
             table[last] = value
-    if faults:
-        raise InputError(faults, source)
-    return data
+    return context.faults
+
+
+def _value(text: str) -> Any:
+    """Read what stands behind the sign as one TOML value, else take it as it is."""
+    try:
+        found = tomllib.loads(f"value = {text}")
+    except (ValueError, RecursionError):
+        return text
+    return found["value"] if len(found) == 1 else text
 
 
 def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
@@ -117,11 +140,12 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
         With every fault found.
     """
     name = str(path)
-    data = change(load(path), settings, name)
-    faults = []
+    data = load(path)
+    context = Context()
     for key in data:
         if key not in (*SECTIONS, *ELSEWHERE):
-            faults.append(Fault(key, f"unknown section '{key}'", nearest(key, SECTIONS)))
+            context.fault(shown_key(key), f"unknown section {shown_name(key)}", nearest(key, (*SECTIONS, *ELSEWHERE)))
+    faults = [*context.faults, *_change(data, settings)]
     try:
         sheet = Flowsheet(
             data.get("components"),

@@ -177,7 +177,7 @@ class Unit(ABC):
         unit.inlets, unit.outlets = {}, {}
         ports = [entry for entry in self.entries if entry.sort in ("inlet", "outlet")]
         given = [self.raw.get(entry.name) for entry in ports if entry.sort == "outlet"]
-        outlets = [name for item in given for name in ([item] if isinstance(item, str) else item or [])]
+        outlets = [name for item in given for name in (item if isinstance(item, (list, tuple)) else [item])]
         context = context.knowing(outlet=[name for name in outlets if isinstance(name, str)])
         unit.values = read_values(self.entries, self.raw, address, context)
         for entry in ports:

@@ -1,0 +1,218 @@
+"""What every recycle method must keep: it solves contractions, keeps cases apart, stays in bounds and remembers nothing."""
+
+from __future__ import annotations
+
+import copy
+from typing import Any
+
+import numpy as np
+
+from leanloop.checks.base import Suite, documented, require, well_formed
+from leanloop.errors import InputError
+from leanloop.recycle import METHODS
+from leanloop.recycle.base import RecycleMethod, Trial
+from leanloop.recycle.driver import Outcome, Pass, close
+
+TOLERANCE = 1e-10
+COUNT = 3  # unknowns
+CASES = 5
+
+
+class Problem:
+    """x = g(x) for some of five cases, each a contraction with a little curvature and a known answer.
+
+    Parameters
+    ----------
+    method : RecycleMethod
+    cases : sequence of int
+        Which of the five.
+    spoilt : int or None
+        Number of the case that gives NaN from the second pass on.
+
+    Attributes
+    ----------
+    answer, x : (m, n)
+        The known one, and the last x of each case.
+    calls : (m,) int
+        Evaluations of each case.
+    proposed : list of (m, n)
+    """
+
+    def __init__(self, method: RecycleMethod, cases: Any = range(CASES), spoilt: int | None = None) -> None:
+        self.method, self.which, self.spoilt = method, np.asarray(cases), spoilt
+        every = np.arange(CASES)[:, None] + 0.37 * np.arange(COUNT)
+        self.answer = (1.0 + 0.9 * np.cos(2.0 * every))[self.which]  # some of them near the bound, zero
+        pull = np.array([[0.5, 0.03, 0.0], [0.05, 0.3, 0.02], [0.0, 0.04, 0.45]])
+        self.pull = (pull * (1 + 0.1 * np.sin(np.arange(CASES)))[:, None, None])[self.which]
+        self.start = (3.0 + np.cos(5.0 * every))[self.which]
+        self.x = np.full(self.start.shape, np.nan)
+        self.calls = np.zeros(len(self.which), dtype=int)
+        self.proposed: list[np.ndarray] = []
+
+    def evaluate(self, cases: np.ndarray, x: np.ndarray) -> Pass:
+        """Make one pass."""
+        self.calls[cases] += 1
+        if self.calls.max() > 1:
+            self.proposed.append(x.copy())
+        away = x - self.answer[cases]
+        bent = np.tanh(away)
+        g = self.answer[cases] + np.einsum("mij,mj->mi", self.pull[cases], 0.8 * away + 0.2 * bent)
+        jacobian = self.pull[cases] * (0.8 + 0.2 * (1 - bent**2))[:, None, :]
+        g[(self.which[cases] == self.spoilt) & (self.calls[cases] > 1)] = np.nan
+        return Pass(g, jacobian if self.method.needs_jacobian else None, np.ones_like(x), np.ones(len(x), dtype=bool))
+
+    def settle(self, cases: np.ndarray, rows: np.ndarray, x: np.ndarray, now: Pass) -> None:
+        """Keep the last x."""
+        self.x[cases] = x
+
+    def run(self, start: np.ndarray | None = None, limit: int | None = None) -> Outcome:
+        """Close it."""
+        x = (self.start if start is None else start).copy()
+        low, high = np.zeros(COUNT), np.full(x.shape, np.inf)
+        return close(self.evaluate, self.settle, x, low, high, self.method, TOLERANCE, limit or self.method.most_passes)
+
+
+SUITE = Suite(
+    METHODS,
+    lambda plugin: [{}, *getattr(plugin, "examples", list)()],
+    lambda plugin, options: plugin(**options),
+)
+check = SUITE.check
+
+
+@check("files and messages are made of entries", "declare each option with a doc, its default as a class attribute", whole=True)
+def entries(plugin: type[RecycleMethod]) -> None:
+    documented(plugin, "name")
+    well_formed(plugin.entries)
+    for entry in plugin.entries:
+        require(not entry.required and hasattr(plugin, entry.name), f"option '{entry.name}' has no default")
+    try:
+        plugin(no_such=1.0)
+    except InputError:
+        return
+    require(False, "an unknown option is taken without a word")
+
+
+@check("most loops are contractions, and users count on the passes", "mend propose(), or raise most_passes")
+def contraction_solved(method: RecycleMethod) -> None:
+    problem = Problem(method)
+    outcome = problem.run()
+    told = f"errors {np.array2string(outcome.error, precision=1)} after {outcome.passes.max()} passes"
+    require(outcome.converged.all(), f"a contraction by half is not solved: {told}")
+    gap = np.abs(problem.x - problem.answer).max()
+    require(gap <= 4 * TOLERANCE, f"the answer is {gap:.1e} off")
+
+
+@check("a solved loop must cost nothing again", "leave the start to the driver, and x as it is")
+def answer_costs_one_pass(method: RecycleMethod) -> None:
+    problem = Problem(method)
+    outcome = problem.run(problem.answer)
+    once = outcome.converged.all() and (problem.calls == 1).all()
+    require(once, f"a start at the answer costs {problem.calls.max()} evaluations")
+
+
+@check("what is reported is what was done", "set most_passes to a whole number above 1, and propose as often as asked")
+def passes_counted(method: RecycleMethod) -> None:
+    limit = method.most_passes
+    require(isinstance(limit, int) and limit > 1, f"most_passes is {limit!r}")
+    for most in (1, 2, limit):
+        problem = Problem(method)
+        outcome = problem.run(limit=most)
+        require((outcome.passes == problem.calls).all(), f"{outcome.passes} passes are counted of {problem.calls}")
+        require(outcome.passes.max() <= most, f"{outcome.passes.max()} passes are made where {most} are allowed")
+
+
+@check("one instance serves every loop of a flowsheet", "put what is remembered into the state, never on self")
+def instance_can_be_reused(method: RecycleMethod) -> None:
+    first, second = Problem(method), Problem(method)
+    first.run()
+    Problem(method, [3, 1]).run(limit=3)
+    second.run()
+    require(np.array_equal(first.x, second.x), "a second run of the same instance gives another answer")
+
+
+@check("configuration is shared", "put what is remembered into the state, never on self or its class")
+def configuration_frozen(method: RecycleMethod) -> None:
+    def look() -> dict[str, Any]:
+        return {**{key: value for key, value in vars(type(method)).items() if not callable(value)}, **vars(method)}
+
+    before = copy.copy(look())
+    kept = copy.deepcopy(vars(method))
+    Problem(method).run()
+    now = look()
+    changed = [key for key in {*before, *now} if before.get(key, now) is not now.get(key, before)]
+    require(not changed and vars(method) == kept, f"a run changes {', '.join(sorted(changed)) or 'its attributes'}")
+
+
+@check("a batch is nothing but its cases", "let no case act on another: no sum or norm over the case axis")
+def cases_alone(method: RecycleMethod) -> None:
+    whole = Problem(method)
+    passes = whole.run().passes
+    for case in range(CASES):
+        one = Problem(method, [case])
+        found = one.run().passes[0]
+        require(found == passes[case], f"case {case} takes {found} passes alone and {passes[case]} in a batch")
+        require(np.allclose(one.x[0], whole.x[case], rtol=1e-12, atol=0), f"case {case} alone gives another answer")
+
+
+@check("one bad case must not cost the others", "keep the state in rows, one for each case")
+def nan_stays(method: RecycleMethod) -> None:
+    whole, spoilt = Problem(method), Problem(method, spoilt=1)
+    passes, outcome = whole.run().passes, spoilt.run()
+    others = np.arange(CASES) != 1
+    require(outcome.failed[1] and not outcome.failed[others].any(), f"with NaN in case 1 the failed are {outcome.failed}")
+    same = (outcome.passes == passes)[others].all() and np.array_equal(spoilt.x[others], whole.x[others])
+    require(same, "NaN in case 1 changes the others")
+
+
+@check("the driver drops the rows of cases that are done", "lead every array of the state with the case axis")
+def state_in_rows(method: RecycleMethod) -> None:
+    x = np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT)
+    state = method.begin(x)
+    for trial in trials(method):
+        for key, value in state.items():
+            require(np.shape(value)[:1] == (2,), f"state '{key}' has the shape {np.shape(value)}, without the case axis")
+        _, state = method.propose(trial, state)
+
+
+@check("a pass needs finite flows, none below zero", "fall back on g where a step is not finite or out of bounds")
+def proposals_in_bounds(method: RecycleMethod) -> None:
+    problem = Problem(method)
+    problem.run(40.0 * problem.start)
+    for x in problem.proposed:
+        require(np.isfinite(x).all() and (x >= 0).all(), f"{x.min():g} is proposed in a contraction")
+    state = method.begin(np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT))
+    for number, trial in enumerate(trials(method)):
+        x, state = method.propose(trial, state)
+        told = f"pass {number + 1} of a stalled, a singular, a leaping and an empty one"
+        require(np.shape(x) == trial.x.shape, f"what is proposed has the shape {np.shape(x)}")
+        require(np.isfinite(x).all() and (x >= trial.low).all(), f"{x.min():g} is proposed in {told}")
+
+
+@check("the driver judges by the same arrays", "work on copies")
+def trial_unchanged(method: RecycleMethod) -> None:
+    x = np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT)
+    start = x.copy()
+    state = method.begin(x)
+    require(np.array_equal(x, start), "begin() changes x")
+    for trial in trials(method):
+        kept = copy.deepcopy(trial)
+        _, state = method.propose(trial, state)
+        for key, value in vars(kept).items():
+            require(np.array_equal(getattr(trial, key), value), f"propose() changes {key}")
+
+
+def trials(method: RecycleMethod) -> list[Trial]:
+    """Give trials of two cases in which steps are undefined: stalled, singular, leaping, and empty components."""
+    x = np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT)
+    unit = np.tile(np.eye(COUNT), (2, 1, 1))
+    empty = np.where(np.arange(COUNT) == 1, 0.0, x)
+    found = []
+    for at, g, jacobian in (
+        (x, x + 0.1, 0.5 * unit), (x, x + 0.1, 0.5 * unit), (x + 0.1, x + 0.2, unit), (x + 0.2, 1e6 * x, 1.0001 * unit),
+        (1e6 * x, 1e-6 * x, 3.0 * unit), (empty, 0.5 * empty, 0.5 * unit), (0.5 * empty, 0.25 * empty, 0.0 * unit),
+    ):  # fmt: skip
+        error = np.abs(g - at).max(axis=1)
+        found.append(Trial(at, g, jacobian if method.needs_jacobian else None, error, np.ones_like(at), np.zeros(COUNT)))
+    return found
+
