@@ -22,12 +22,14 @@ check = SUITE.check
 
 @check("files, messages and the catalogue are made of entries", "declare each entry with a sort and a line of doc", whole=True)
 def entries(plugin: type[EquilibriumModel]) -> None:
+    """The class is documented and its entries can be read."""
     documented(plugin, "name")
     well_formed(plugin.entries)
 
 
 @check("without an example nothing is checked", "let examples() give one table or more that reads without a fault", whole=True)
 def examples(plugin: type[EquilibriumModel]) -> None:
+    """There are tables, and each is read without a fault."""
     tables = plugin.examples()
     require(tables, "examples() gives none")
     for table in tables:
@@ -37,6 +39,7 @@ def examples(plugin: type[EquilibriumModel]) -> None:
 
 @check("a slip of the pen must be found, with its place", "let read() note every fault in the context, at its address")
 def faults_have_addresses(own: Model) -> None:
+    """An unknown and a wrong entry give a fault at their address, and no model."""
     table = dict(own.table)
     for odd, name in [({**table, "no_such": 1.0}, "no_such")] + [({**table, key: object()}, key) for key in table]:
         context = Context()
@@ -48,6 +51,7 @@ def faults_have_addresses(own: Model) -> None:
 
 @check("a coordinate is an amount", "mend the formula, or let outside() say where it is stretched")
 def gas_positive(own: Model) -> None:
+    """The gas is finite and not negative wherever the model is not stretched."""
     gas = own.gas()
     require(own.inside.any(), "outside() is true at every point tried, so that nothing is checked: 274 to 369 K, liquid to 1")
     for case, place in np.argwhere(own.inside & ~(np.isfinite(gas) & (gas >= 0)))[:1]:
@@ -57,12 +61,14 @@ def gas_positive(own: Model) -> None:
 
 @check("absent components are ordinary", "write the formula so that a liquid of zero is regular")
 def zero_is_regular(own: Model) -> None:
+    """The gas over a liquid without the component is finite."""
     gas = own.gas(own.shifted(2, np.zeros_like(own.at[2])))
     require(np.isfinite(gas).all(), f"the gas over a liquid without the component is {gas.ravel()[0]:g}")
 
 
 @check("a second liquid with less gas has two answers for one gas", "use a rising curve")
 def gas_rises(own: Model) -> None:
+    """The gas never falls where the liquid rises."""
     gas = np.where(own.inside, own.gas(), np.nan)
     falls = np.diff(gas, axis=1) < -ROUND * np.abs(gas[:, 1:])
     require(not falls.any(), f"the gas falls where the liquid rises, at {own.at[0][falls.any(axis=1)].ravel()} K")
@@ -70,6 +76,7 @@ def gas_rises(own: Model) -> None:
 
 @check("the column skips what does not matter", "let uses name everything that gas/liquid depends on")
 def uses_truthful(own: Model) -> None:
+    """Gas over liquid follows nothing that `uses` does not name."""
     odd = own.model.uses - set(PARTS)
     require(not odd, f"uses names {sorted(odd)}; known: {', '.join(PARTS)}")
     ratio = own.gas() / own.at[2]
@@ -82,6 +89,7 @@ def uses_truthful(own: Model) -> None:
 
 @check("Newton's method and sensitivities follow them", "mend slopes(), or gas() for complex numbers")
 def slopes_right(own: Model) -> None:
+    """The slopes agree with differences."""
     with np.errstate(all="ignore"):
         slopes = own.model.slopes(*own.at, own.numbers)
     for part, name in enumerate(PARTS):
@@ -92,6 +100,7 @@ def slopes_right(own: Model) -> None:
 
 @check("the column differentiates by complex steps", "use no abs, max or comparison on complex values, or set complex_safe = False")
 def complex_truthful(own: Model) -> None:
+    """Complex steps agree with differences, where the model is said to take them."""
     if not own.model.complex_safe:
         require(type(own.model).slopes is not EquilibriumModel.slopes, "complex_safe is False and slopes() is not its own")
         return
@@ -116,6 +125,7 @@ def complex_truthful(own: Model) -> None:
 
 @check("a batch has one number for each case", "combine numbers with the arguments by plain formulas that broadcast")
 def numbers_broadcast(own: Model) -> None:
+    """Numbers by case give in a batch what they give alone."""
     spread = 1 + 0.01 * np.cos(np.arange(len(own.at[0])))[:, None]
     wide = own.gas(numbers={**own.numbers, **{key: own.numbers[key] * spread for key in own.free}})
     for case in range(len(spread)):
@@ -126,6 +136,7 @@ def numbers_broadcast(own: Model) -> None:
 
 @check("one instance serves every case", "take every number from the argument, and keep none in the constructor")
 def numbers_by_argument(own: Model) -> None:
+    """A changed number is honoured by an instance that was made with another."""
     before, kept = dict(vars(own.model)), copy.deepcopy(own.model.values)
     for key, value in own.numbers.items():
         changed = [1.01 * item for item in value] if isinstance(value, list) else type(value)(1.01 * value)
@@ -141,6 +152,7 @@ def numbers_by_argument(own: Model) -> None:
 
 @check("a proportional model is solved without a look at the liquid", "derive from EquilibriumModel where K depends on the liquid")
 def proportional_is_linear(own: Model) -> None:
+    """A proportional model gives twice the gas over twice the liquid."""
     if isinstance(own.model, Proportional):
         require("liquid" not in own.model.uses, "it is Proportional, and uses names the liquid")
         double = own.gas(own.shifted(2, 2 * own.at[2]))
@@ -149,6 +161,7 @@ def proportional_is_linear(own: Model) -> None:
 
 @check("the start of a column and traces rest on it", "give the slope at zero, or leave ratio_at_zero() to the base class")
 def ratio_at_zero_is_the_limit(own: Model) -> None:
+    """The ratio at zero is the slope there."""
     with np.errstate(all="ignore"):
         ratio = own.model.ratio_at_zero(own.at[0], own.at[1], own.numbers)
     require(np.shape(ratio) == own.at[0].shape, f"ratio_at_zero() has the shape {np.shape(ratio)}, not {own.at[0].shape}")
@@ -160,12 +173,14 @@ def ratio_at_zero_is_the_limit(own: Model) -> None:
 
 @check("results say where they are extrapolated", "broadcast all three arguments, and give bool")
 def outside_is_bool(own: Model) -> None:
-    outside = own.model.outside(*own.at, own.numbers)
+    """The judgement of the table has the right form."""
+    outside = np.asarray(own.model.outside(*own.at, own.numbers))
     require(np.shape(outside) == own.at[2].shape and outside.dtype == bool, f"outside() gives {np.shape(outside)} {outside.dtype}")
 
 
 @check("readers rely on what is said", "give a list of sentences, [] for none")
 def cautions_are_sentences(own: Model) -> None:
+    """Cautions have the right form."""
     for factor in (1.0, 3.0):
         said = own.model.cautions(factor * own.at[0], own.at[1], own.at[2])
         require(isinstance(said, list) and all(isinstance(item, str) and item for item in said), f"cautions() gives {said!r}")

@@ -82,6 +82,7 @@ check = SUITE.check
 
 @check("files and messages are made of entries", "declare each option with a doc, its default as a class attribute", whole=True)
 def entries(plugin: type[RecycleMethod]) -> None:
+    """The class is documented, and options have defaults and are read."""
     documented(plugin, "name")
     well_formed(plugin.entries)
     for entry in plugin.entries:
@@ -95,6 +96,7 @@ def entries(plugin: type[RecycleMethod]) -> None:
 
 @check("most loops are contractions, and users count on the passes", "mend propose(), or raise most_passes")
 def contraction_solved(method: RecycleMethod) -> None:
+    """A contraction is solved within the passes that the method allows itself."""
     problem = Problem(method)
     outcome = problem.run()
     told = f"errors {np.array2string(outcome.error, precision=1)} after {outcome.passes.max()} passes"
@@ -105,6 +107,7 @@ def contraction_solved(method: RecycleMethod) -> None:
 
 @check("a solved loop must cost nothing again", "leave the start to the driver, and x as it is")
 def answer_costs_one_pass(method: RecycleMethod) -> None:
+    """A start at the answer costs one evaluation."""
     problem = Problem(method)
     outcome = problem.run(problem.answer)
     once = outcome.converged.all() and (problem.calls == 1).all()
@@ -113,6 +116,7 @@ def answer_costs_one_pass(method: RecycleMethod) -> None:
 
 @check("what is reported is what was done", "set most_passes to a whole number above 1, and propose as often as asked")
 def passes_counted(method: RecycleMethod) -> None:
+    """Passes are counted as they are made, and no more than allowed."""
     limit = method.most_passes
     require(isinstance(limit, int) and limit > 1, f"most_passes is {limit!r}")
     for most in (1, 2, limit):
@@ -124,6 +128,7 @@ def passes_counted(method: RecycleMethod) -> None:
 
 @check("one instance serves every loop of a flowsheet", "put what is remembered into the state, never on self")
 def instance_can_be_reused(method: RecycleMethod) -> None:
+    """A second run of one instance gives the same answer."""
     first, second = Problem(method), Problem(method)
     first.run()
     Problem(method, [3, 1]).run(limit=3)
@@ -133,6 +138,7 @@ def instance_can_be_reused(method: RecycleMethod) -> None:
 
 @check("configuration is shared", "put what is remembered into the state, never on self or its class")
 def configuration_frozen(method: RecycleMethod) -> None:
+    """A run leaves the instance and its class as they were."""
     def look() -> dict[str, Any]:
         return {**{key: value for key, value in vars(type(method)).items() if not callable(value)}, **vars(method)}
 
@@ -146,6 +152,7 @@ def configuration_frozen(method: RecycleMethod) -> None:
 
 @check("a batch is nothing but its cases", "let no case act on another: no sum or norm over the case axis")
 def cases_alone(method: RecycleMethod) -> None:
+    """A case in a batch takes the same passes to the same answer as alone."""
     whole = Problem(method)
     passes = whole.run().passes
     for case in range(CASES):
@@ -157,6 +164,7 @@ def cases_alone(method: RecycleMethod) -> None:
 
 @check("one bad case must not cost the others", "keep the state in rows, one for each case")
 def nan_stays(method: RecycleMethod) -> None:
+    """NaN in one case leaves the others as they were."""
     whole, spoilt = Problem(method), Problem(method, spoilt=1)
     passes, outcome = whole.run().passes, spoilt.run()
     others = np.arange(CASES) != 1
@@ -167,6 +175,7 @@ def nan_stays(method: RecycleMethod) -> None:
 
 @check("the driver drops the rows of cases that are done", "lead every array of the state with the case axis")
 def state_in_rows(method: RecycleMethod) -> None:
+    """The state leads with the case axis."""
     x = np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT)
     state = method.begin(x)
     for trial in trials(method):
@@ -177,6 +186,7 @@ def state_in_rows(method: RecycleMethod) -> None:
 
 @check("a pass needs finite flows, none below zero", "fall back on g where a step is not finite or out of bounds")
 def proposals_in_bounds(method: RecycleMethod) -> None:
+    """What is proposed is finite and within the bounds, even where steps are undefined."""
     problem = Problem(method)
     problem.run(40.0 * problem.start)
     for x in problem.proposed:
@@ -191,6 +201,7 @@ def proposals_in_bounds(method: RecycleMethod) -> None:
 
 @check("the driver judges by the same arrays", "work on copies")
 def trial_unchanged(method: RecycleMethod) -> None:
+    """The trial and the start are left as they are."""
     x = np.linspace(1.0, 2.0, 2 * COUNT).reshape(2, COUNT)
     start = x.copy()
     state = method.begin(x)

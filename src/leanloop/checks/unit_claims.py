@@ -15,6 +15,7 @@ check = SUITE.check
 
 @check("what the sections do not cover is never calculated", "list every label of both sides in exactly one section")
 def sections_cover(stand: Stand) -> None:
+    """Every port is in exactly one section."""
     for side, labels in enumerate((stand.unit.inlets, stand.unit.outlets)):
         listed = sorted(label for section in stand.unit.sections() for label in section[side])
         require(listed == sorted(labels), f"the sections list {listed} of {sorted(labels)}")
@@ -22,6 +23,7 @@ def sections_cover(stand: Stand) -> None:
 
 @check("phases decide what may be connected", "let phase() say what calculate() gives, and None while it is unknown")
 def phase_truthful(stand: Stand) -> None:
+    """The phase told is that of the outlet."""
     phases = {name: inlet.phase for name, inlet in stand.inlets.items()}
     for label, stream in stand.evaluate().outlets.items():
         told, unknown = stand.unit.phase(label, phases), stand.unit.phase(label, {})
@@ -31,6 +33,7 @@ def phase_truthful(stand: Stand) -> None:
 
 @check("ways in and out of loops are found from it", "mark as not passing only what never reaches the outlet by that inlet")
 def passes_truthful(stand: Stand) -> None:
+    """A component that does not pass leaves no trace in the outlet."""
     unit, width = stand.unit, len(stand.components)
     base, adds = stand.outlets(), unit.adds(stand.components)
     reached = {label: np.zeros((stand.cases, width), dtype=bool) for label in base}
@@ -54,6 +57,7 @@ def passes_truthful(stand: Stand) -> None:
 
 @check("a flow that is set ends the search for what may build up", "let holds() name only what the inlets do not change")
 def holds_truthful(stand: Stand) -> None:
+    """A flow that is held does not follow the inlets."""
     base = sum(stand.outlets().values())
     for label in stand.inlets:
         now = sum(stand.outlets(stand.moved(label, PLACES["flows"], lambda flows: flows / MORE)).values())
@@ -64,6 +68,7 @@ def holds_truthful(stand: Stand) -> None:
 
 @check("a loop leaves out what it cannot change", "let leans_on() list every part of an inlet that moves the outlet")
 def leans_on_truthful(stand: Stand) -> None:
+    """Temperature and pressure of an outlet follow nothing that is not listed."""
     base = stand.outlets()
     for outlet in base:
         for what in ("temperature", "pressure"):
@@ -84,6 +89,7 @@ def leans_on_truthful(stand: Stand) -> None:
 
 @check("the order of the components means nothing", "find components by name, never by place")
 def components_permute(stand: Stand) -> None:
+    """Other orders of the components give the same flows."""
     other = Stand(stand.plugin, stand.scene, backwards=True)
     back = [*range(len(stand.components))[::-1], -2, -1]
     now = other.outlets()
@@ -94,6 +100,7 @@ def components_permute(stand: Stand) -> None:
 
 @check("there is no absolute size of a plant", "write formulas without a size of their own, or set scales = False")
 def flows_scale(stand: Stand) -> None:
+    """More of every flow gives as much more of the outlets, where the class says so."""
     if not stand.unit.scales:
         return
     factor, base = 7.0, stand.outlets()
@@ -112,11 +119,12 @@ def flows_scale(stand: Stand) -> None:
 
 @check("readers rely on what is said", "give a list of sentences, and (M,) bool from off_table where there is one")
 def cautions_are_sentences(stand: Stand) -> None:
+    """Cautions and the judgement of tables have the right form."""
     found = stand.evaluate()
     sides = stand.inlets, found.outlets, stand.numbers, found.memory
     said = stand.unit.cautions(*sides)
     good = isinstance(said, list) and all(isinstance(item, str) and item.strip().endswith(".") for item in said)
-    require(good or not said, f"cautions() gives {said!r}")
+    require(good, f"cautions() gives {said!r}")
     if hasattr(stand.unit, "off_table"):
-        off = stand.unit.off_table(stand.inlets, stand.numbers, found.memory)
+        off = np.asarray(stand.unit.off_table(stand.inlets, stand.numbers, found.memory))
         require(off.shape == (stand.cases,) and off.dtype == bool, f"off_table() gives {off.dtype} {off.shape}")

@@ -77,16 +77,19 @@ def compare_outlets(stand: Stand, of_numbers: bool) -> None:
 
 @check("loops and requirements are solved with them", "mend evaluate, or set derivatives = 'difference'")
 def derivatives_along_inlets(stand: Stand) -> None:
+    """Derivatives along inlet flows, temperatures and pressures agree with differences."""
     compare_outlets(stand, of_numbers=False)
 
 
 @check("sensitivities and requirements are made of them", "mend evaluate, or set derivatives = 'difference'")
 def derivatives_along_numbers(stand: Stand) -> None:
+    """Derivatives along numbers agree with differences."""
     compare_outlets(stand, of_numbers=True)
 
 
 @check("derivatives are complex steps on leading axes", "broadcast over leading axes and take complex numbers, or set derivatives")
 def complex_and_leading_axes(stand: Stand) -> None:
+    """A plain formula gives the same on leading axes and with complex numbers."""
     if stand.unit.derivatives != "complex":
         return
     for takes, _ in stand.unit.sections():
@@ -117,6 +120,7 @@ def leaves(table: Mapping[str, Any], head: str = "") -> dict[str, np.ndarray]:
 
 @check("every reported figure is differentiated, by case", "report (M,) or (M, N) arrays by formulas that take complex numbers")
 def results_differentiable(stand: Stand) -> None:
+    """Results have the case axis, and their complex steps agree with differences."""
     unit = stand.unit
     whole, weights, ways, number_ways = derived(stand)
 
@@ -158,6 +162,7 @@ def results_differentiable(stand: Stand) -> None:
 
 @check("the next pass starts from the last one", "let memory shorten the way, never change the answer")
 def memory_keeps_the_answer(stand: Stand) -> None:
+    """A second evaluation from memory gives the same answer."""
     first = stand.evaluate()
     for key, value in first.memory.items():
         require(value.shape[:1] == (stand.cases,), f"memory '{key}' has the shape {value.shape}, without the case axis")

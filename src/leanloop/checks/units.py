@@ -18,6 +18,7 @@ check = SUITE.check
 
 @check("files, messages and the catalogue are made of entries", "declare each entry with a sort and a line of doc", whole=True)
 def entries(plugin: type[Unit]) -> None:
+    """The class is documented and its entries can be read."""
     documented(plugin, "kind")
     well_formed(plugin.entries, ("inlet", "outlet", "component", "equilibrium"))
     require(any(entry.sort == "outlet" for entry in plugin.entries), "there is no outlet among its entries")
@@ -28,6 +29,7 @@ def entries(plugin: type[Unit]) -> None:
 
 @check("without an example nothing is checked", "give one scene or more by a class method examples()", whole=True)
 def examples(plugin: type[Unit]) -> None:
+    """There are scenes, and every case of them is solved."""
     scenes = plugin.examples()
     require(scenes, "examples() gives none")
     for scene in scenes:
@@ -36,6 +38,7 @@ def examples(plugin: type[Unit]) -> None:
 
 @check("faults are collected by read, and one unit may be read often", "keep name and raw, and work in read", whole=True)
 def constructor_stores(plugin: type[Unit]) -> None:
+    """The constructor only stores, and reading gives a copy."""
     odd = {"no such entry": object()}
     unit = plugin(NAME, **odd)
     require(unit.name == NAME and unit.raw == odd, "the constructor changes its name or its entries")
@@ -48,6 +51,7 @@ def constructor_stores(plugin: type[Unit]) -> None:
 
 @check("a slip of the pen must be found, with its place", "leave reading to the base class, or note every fault")
 def faults_have_addresses(stand: Stand) -> None:
+    """An unknown, a wrong and a missing entry give a fault at their address."""
     raw = dict(stand.scene.entries)
     tries = [({**raw, "no_such": 1.0}, "no_such")]
     tries += [({**raw, name: object()}, name) for name in raw]
@@ -63,6 +67,7 @@ def faults_have_addresses(stand: Stand) -> None:
 
 @check("the engine takes outlets by label, with a case axis", "return every outlet by label with states (M, C + 2)")
 def outlets_complete(stand: Stand) -> None:
+    """Every outlet and rough outlet is there in the right shape."""
     unit, width = stand.unit, len(stand.components) + 2
     found = stand.evaluate()
     require(set(found.outlets) == set(unit.outlets), f"the outlets are {list(found.outlets)}, not {list(unit.outlets)}")
@@ -77,6 +82,7 @@ def outlets_complete(stand: Stand) -> None:
 
 @check("other units and methods use the same arrays", "work on copies")
 def inlets_unchanged(stand: Stand) -> None:
+    """Inlets, numbers and memory are bitwise the same after an evaluation."""
     inlets, numbers = stand.copied()
     memory = stand.evaluate(inlets, numbers).memory
     kept = copy.deepcopy(memory)
@@ -90,6 +96,7 @@ def inlets_unchanged(stand: Stand) -> None:
 
 @check("nothing may arise or vanish", "count what comes from outside in added()")
 def balance(stand: Stand) -> None:
+    """Of every component as much leaves as comes in and is added."""
     stand.outlets()
     found = stand.evaluate()
     fed = sum(stream.flows for stream in stand.inlets.values())
@@ -107,6 +114,7 @@ def balance(stand: Stand) -> None:
 
 @check("a batch is nothing but its cases", "let no case act on another: no sum or norm over the case axis")
 def cases_alone(stand: Stand) -> None:
+    """A case in a batch gives what it gives alone."""
     whole = stand.evaluate(numbers=stand.spread)
     for case in range(stand.cases):
         one = stand.evaluate(*stand.take([case]))
@@ -118,6 +126,7 @@ def cases_alone(stand: Stand) -> None:
 
 @check("one bad case must not cost the others", "never reduce over the case axis; leave NaN in its own row")
 def nan_stays(stand: Stand) -> None:
+    """NaN in one case leaves the others as they were."""
     whole, others = stand.evaluate(numbers=stand.spread), np.arange(1, stand.cases)
     states = stand.states(whole.outlets)
     for variable in stand.variables():
@@ -132,6 +141,7 @@ def nan_stays(stand: Stand) -> None:
 
 @check("a loop starts empty and feeds may be shut", "write formulas that are regular at zero, or give a status")
 def zero_flow(stand: Stand) -> None:
+    """Flows of zero give finite outlets or a status."""
     tries = [(f"inlet '{label}'", stand.moved(label, slice(None, -2), np.zeros_like)) for label in stand.inlets]
     for place, name in enumerate(stand.components.names):
         tries.append((f"component '{name}'", {label: stand.moved(label, place, np.zeros_like)[label] for label in stand.inlets}))

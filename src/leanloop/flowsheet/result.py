@@ -10,7 +10,7 @@ import numpy as np
 
 from leanloop.errors import Fault, InputError, NotReached, nearest
 from leanloop.flowsheet.quantity import AddressError, formula, stream_table, walk
-from leanloop.flowsheet.requirements import Found
+from leanloop.flowsheet.requirement import Found
 from leanloop.flowsheet.run import Run
 from leanloop.flowsheet.view import View, derivatives, value
 from leanloop.status import CODE, OK, Status, solved, status_of

@@ -14,9 +14,11 @@ from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet import read
 from leanloop.flowsheet.graph import Structure, Tie
 from leanloop.flowsheet.inputs import Inputs
+from leanloop.flowsheet.loop import solve_step
 from leanloop.flowsheet.plan import Plan, connect
 from leanloop.flowsheet.quantity import Bases, formula
-from leanloop.flowsheet.requirements import RegionSolver, Requirement
+from leanloop.flowsheet.requirement import Requirement
+from leanloop.flowsheet.requirements import RegionSolver
 from leanloop.flowsheet.result import Part, Result
 from leanloop.flowsheet.run import Run, Settings
 from leanloop.flowsheet.view import derivatives
@@ -258,7 +260,7 @@ class Flowsheet:
                 evaluations += solver.evaluations
             else:
                 for step in region.steps:
-                    run.step(step)
+                    solve_step(run, step)
         self._judge_tables(run)
         return Part(rows, run, found, evaluations + run.evaluations)
 
@@ -350,7 +352,7 @@ class Flowsheet:
         run.status = np.where(solved(done.status), OK, done.status)
         for region in self.plan.regions:
             for step in region.steps:
-                run.step(step)
+                solve_step(run, step)
             items = [self.requirements[name] for name in region.requirements if name != released]
             if items:
                 self._hold(run, items, part)

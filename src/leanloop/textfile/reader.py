@@ -96,7 +96,7 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
             if not isinstance(deeper, dict):
                 if head in table and number == 0:
                     break  # what is wrong with the section itself is told when it is read
-                if number == 0 or (number == 1 and heads[0] in ("feeds", "units", "equilibrium", "requirements")):
+                if number == 0 or (number == 1 and heads[0] in ("components", "feeds", "units", "equilibrium", "requirements")):
                     known = table if isinstance(table, dict) else {}
                     if number == 1 or head not in ("loop", "basis", "groups"):
                         context.fault(where, f"there is no {shown_name(head)}", nearest(head, known))

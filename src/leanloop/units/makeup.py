@@ -28,9 +28,14 @@ class Makeup(Unit):
 
     @classmethod
     def examples(cls) -> list[Scene]:
-        """Give a lean oil that has lost some of its solvent, and one that has won some."""
+        """Give an oil that has lost some of its parts and won some of others, and an amine made up with water."""
         lean = Inlet("liquid", {"oil": [1.5, 1.7], "light": [0.0, 0.2], "tar": [0.01, 0.0]}, [300.0, 310.0])
-        return [Scene({"takes": "lean", "gives": "full", "hold": {"oil": 1.6, "light": 0.1}}, {"takes": lean})]
+        amine = Inlet("liquid", {"amine": [1.0, 0.9], "water": [2.0, 3.0]}, 320.0, [1e5, 2e5])
+        mixed = {"hold": {"amine": 1.2}, "composition": {"amine": 0.4, "water": 0.6}, "temperature": 300.0, "pressure": 1.4e5}
+        return [
+            Scene({"takes": "lean", "gives": "full", "hold": {"oil": 1.6, "light": 0.1}}, {"takes": lean}),
+            Scene({"takes": "lean", "gives": "full", **mixed}, {"takes": amine}),
+        ]
 
     def check(self, address: str, context: Context) -> None:
         """Something is held; a composition is complete and goes with one held component."""
