@@ -8,6 +8,7 @@ import math
 import re
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
+from datetime import date, time
 from numbers import Real
 from typing import Any
 
@@ -382,7 +383,7 @@ def _cut(text: str) -> str:
 
 def _shown(raw: Any) -> str:
     try:
-        text = repr(raw)
+        text = raw.isoformat() if isinstance(raw, (date, time)) else repr(raw)
     except (ValueError, RecursionError):  # thousands of digits, or a table thousands deep
         return "this value"
     return text if len(text) <= 40 else text[:37] + "..."

@@ -13,7 +13,7 @@ class Status(Enum):
     converged = "Everything asked for was reached."
     out_of_reach = (
         "A requirement cannot be met with its freed input inside the bounds; "
-        "widen `between`, or ask for what `requirements` reports as the nearest value."
+        "ask for what `requirements` reports as the nearest value, or change what stands in the way."
     )
     off_table = (
         "The answer lies outside an equilibrium table and is an extrapolation; "
@@ -38,6 +38,12 @@ class Status(Enum):
     unit_failed = "A unit could not calculate its outlets; look at its inlets and inputs."
     not_finite = "An input or a result is not a finite number, or a flow is negative; correct that input."
 
+
+REASONS = {
+    "bound": "the bound stands in the way: widen `between`",
+    "pinch": "more of it no longer helps: add stages, or change temperatures, pressures or the other solvent or gas rate",
+    "turning_point": "it first helps and then hurts: change another input, such as stripping gas, stages or temperatures",
+}
 
 LIST = tuple(Status)
 CODE = {status: np.int8(index) for index, status in enumerate(LIST)}

@@ -53,7 +53,7 @@ class Model:
         self.at = temperature[:, None], PRESSURES[:, None], liquid
         with np.errstate(all="ignore"):
             outside = model.outside(*self.at, self.numbers)
-        self.inside = ~np.broadcast_to(outside, liquid.shape)
+        self.inside = np.broadcast_to(np.asarray(outside) == 0, liquid.shape)
         entries = model.values.entries
         self.free = [
             key for key, value in self.numbers.items()

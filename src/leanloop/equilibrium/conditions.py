@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from typing import Any
 
 from leanloop.components import PHASES, Components
-from leanloop.entries import Context
+from leanloop.entries import Context, Entry, near, read_values, shown_key, shown_name
 from leanloop.equilibrium import MODELS
 from leanloop.equilibrium.base import EquilibriumModel
 from leanloop.errors import nearest
 from leanloop.registry import BrokenPlugin, UnknownPlugin
+
+STAYS = (Entry("stays_in", "choice", choices=PHASES, doc="phase of a component under these conditions"),)
 
 
 class Conditions:
@@ -23,41 +25,53 @@ class Conditions:
         By component.
     stays : mapping of str to str
         Phase of components that stay in one under these conditions.
+    doubtful : iterable of str
+        Components with a faulty entry: nothing further is said of them.
     """
 
-    def __init__(self, name: str, models: Mapping[str, EquilibriumModel], stays: Mapping[str, str]) -> None:
-        self.name, self.models, self.stays = name, dict(models), dict(stays)
+    def __init__(
+        self, name: str, models: Mapping[str, EquilibriumModel], stays: Mapping[str, str], doubtful: Iterable[str] = ()
+    ) -> None:
+        self.name, self.models, self.stays, self.doubtful = name, dict(models), dict(stays), frozenset(doubtful)
 
     def stays_in(self, component: str, components: Components) -> str | None:
         """Give the phase that a component stays in here, None where it distributes."""
-        if component in self.models:
+        if component in self.models or component in self.doubtful:
             return None
         return self.stays.get(component, components[component].stays_in)
 
     @classmethod
     def read(cls, name: str, table: Any, components: Components, context: Context) -> Conditions:
         """Read a table and note every fault."""
-        address = f"equilibrium.{name}"
+        address = f"equilibrium.{shown_key(name)}"
+        doubtful = set(context.names.get("doubtful", ()))
         models: dict[str, EquilibriumModel] = {}
         stays: dict[str, str] = {}
         if not isinstance(table, Mapping):
             context.fault(address, "is no table", 'write component = { model = "constant", K = 0.1 }')
-            return cls(name, models, stays)
+            return cls(name, models, stays, components.names)
         for component, entry in table.items():
-            where = f"{address}.{component}"
+            where, faults = f"{address}.{shown_key(component)}", len(context.faults)
             if component not in components.index:
-                context.fault(where, f"unknown component '{component}'", nearest(component, components.names))
+                if len(components):  # none at all is a fault already
+                    context.fault(where, f"unknown component {shown_name(component)}", nearest(component, components.names))
+                meant = near(component, components.names)
+                doubtful |= {meant} - {None, *table}
             elif not isinstance(entry, Mapping):
                 context.fault(where, "is no table", 'write { model = "constant", K = 0.1 }')
             elif "stays_in" in entry:
-                if entry["stays_in"] not in PHASES:
-                    context.fault(f"{where}.stays_in", f"unknown phase {entry['stays_in']!r}", "write gas or liquid")
-                for key in entry:
-                    if key != "stays_in":
-                        context.fault(f"{where}.{key}", "does not go with stays_in", "give a model or stays_in, not both")
-                stays[component] = entry["stays_in"]
+                values = read_values(STAYS, {"stays_in": entry["stays_in"]}, where, context)
+                others = [shown_key(key) for key in entry if key != "stays_in"]
+                if others:
+                    context.fault(f"{where}.stays_in", f"stands beside {', '.join(others)}", "give a model or stays_in, not both")
+                stays[component] = values.words.get("stays_in", "")
             elif "model" not in entry:
-                context.fault(f"{where}.model", "entry is missing", f"add model, one of {', '.join(MODELS)}")
+                wrong = next((key for key in entry if near(key, ("model", "stays_in"))), None)
+                if wrong is None:
+                    context.fault(f"{where}.model", "entry is missing", f"add model, one of {', '.join(MODELS)}")
+                else:
+                    remedy = nearest(wrong, ("model", "stays_in"))
+                    context.fault(f"{where}.{shown_key(wrong)}", f"unknown entry {shown_name(wrong)}", remedy)
             else:
                 model = _read_model(entry, where, context)
                 if model is not None:
@@ -68,9 +82,9 @@ class Conditions:
                             f"'{component}' stays in the {components[component].stays_in}, so no model is used",
                             "take away the model here, or stays_in at the component",
                         )
-                else:
-                    stays[component] = "gas"  # keeps one fault from causing another
-        return cls(name, models, stays)
+            if len(context.faults) > faults and component in components.index:
+                doubtful.add(component)
+        return cls(name, models, stays, doubtful)
 
 
 def _read_model(entry: Mapping[str, Any], where: str, context: Context) -> EquilibriumModel | None:
@@ -82,6 +96,14 @@ def _read_model(entry: Mapping[str, Any], where: str, context: Context) -> Equil
         context.fault(f"{where}.model", str(error), "mend or remove the package that lists it")
         return None
     if kind is None:
-        context.fault(f"{where}.model", f"unknown model {entry['model']!r}", nearest(str(entry["model"]), MODELS.names()))
+        word = entry["model"]
+        if isinstance(word, str) and word:
+            context.fault(f"{where}.model", f"unknown model {shown_name(word)}", nearest(word, MODELS.names()))
+        else:
+            context.fault(f"{where}.model", "is no name of a model", f"write one of {', '.join(MODELS)}")
+        return None
+    file = entry.get("file")
+    if isinstance(file, str) and not file.isprintable():  # no system can hold some of those
+        context.fault(f"{where}.file", f"{shown_name(file)} is no name of a file", "name a CSV file beside the flowsheet")
         return None
     return kind.read({key: value for key, value in entry.items() if key != "model"}, where, context)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -48,14 +49,19 @@ def read_changes(
     lengths: dict[str, int] = {}
     for address, raw in changes.items():
         if address not in sheet.numbers:
-            context.fault(address, "is no numeric input", nearest(address, sheet.numbers))
+            context.fault(str(address), "is no numeric input", nearest(str(address), sheet.numbers))
             continue
-        entry, listed = sheet._entries[address], isinstance(sheet.numbers[address], list)
+        try:
+            np.asarray(raw)
+        except ValueError:
+            context.fault(address, "is a list of uneven lists", "give one value, or one for each case")
+            continue
+        entry, listed = sheet.entry(address), isinstance(sheet.numbers[address], list)
         depth = 2 if listed else 1
         array = raw if isinstance(raw, (str, int, float)) else np.asarray(raw)
         if not isinstance(raw, (str, int, float)) and array.ndim == depth:
             lengths[address] = len(array)
-            values = _read_array(array, entry, sheet.sorts[address], address, context, listed)
+            values = _read_array(sheet, array, address, context, listed)
             if values is None:
                 continue
             if listed or not entry.cases:
@@ -63,7 +69,11 @@ def read_changes(
             else:
                 arrays[address] = np.asarray(values, dtype=float)
         elif listed and not isinstance(raw, (str, int, float)) and array.ndim == 1:
-            base[address] = [float(item) for item in array]
+            values = _read_list(sheet, address, array, context)
+            if values is not None:
+                base[address] = values
+        elif listed and np.ndim(array) == 0:
+            context.fault(address, "is a list in the flowsheet", f"give a list of {len(sheet.numbers[address])} numbers")
         elif np.ndim(array) == 0:
             item = array.item() if isinstance(array, np.ndarray) else array
             number = read_number(item, entry, address, context)
@@ -76,6 +86,9 @@ def read_changes(
     if len(set(lengths.values())) > 1:
         for address, length in lengths.items():
             context.fault(address, f"has {length} cases", "give every array the same length")
+    lists = [address for address in (*base, *apart) if isinstance(sheet.numbers[address], list)]
+    if lists and not context.faults:
+        _check_models(sheet, lists, base, apart, context)
     if context.faults:
         raise InputError(context.faults, sheet.source)
     axis = bool(lengths)
@@ -83,7 +96,47 @@ def read_changes(
     return cases, axis, base, arrays, _groups(apart, cases)
 
 
-def _read_array(array: np.ndarray, entry: Any, sort: str, address: str, context: Context, listed: bool) -> list[Any] | None:
+def _read_list(sheet: Flowsheet, address: str, row: np.ndarray, context: Context) -> list[float] | None:
+    """Read a new list for an input that is one."""
+    sort, entry = sheet.sorts[address], sheet.entry(address)
+    read = [read_number(item, entry, f"{address}[{place}]", context) for place, item in enumerate(row.tolist())]
+    if None in read or any(item[1] != sort for item in read):
+        if None not in read:
+            context.fault(address, f"is given as {sort} in the flowsheet", "keep to that dimension")
+        return None
+    values = [item[0] for item in read]
+    faults = len(context.faults)
+    if len(values) != len(sheet.numbers[address]):
+        context.fault(address, f"has {len(values)} values", f"give {len(sheet.numbers[address])}, as the flowsheet does")
+    return values if len(context.faults) == faults else None
+
+
+def _check_models(
+    sheet: Flowsheet, lists: list[str], base: dict[str, Any], apart: dict[str, list[Any]], context: Context
+) -> None:
+    """Note new lists of which a model can be no curve, such as points that do not rise."""
+    owners = {address.rpartition(".")[0] for address in lists if address.startswith("equilibrium.")}
+    for conditions in sheet.conditions.values():
+        for name, model in conditions.models.items():
+            owner = f"equilibrium.{conditions.name}.{name}"
+            if owner not in owners:
+                continue
+            mine = [address for address in lists if address.startswith(f"{owner}.")]
+            for case in range(max(len(apart.get(address, (None,))) for address in mine)):
+                new = {key[len(owner) + 1 :]: apart[key][case] if key in apart else base[key] for key in mine}
+                numbers = {**model.numbers, **new}
+                try:
+                    with np.errstate(all="ignore"):
+                        model.gas(np.array(300.0), np.array(1e5), np.array(0.01), numbers)
+                        type(model).check(replace(model.values, numbers=numbers), owner, context)
+                except ValueError:
+                    context.fault(mine[0], "makes no curve", "write points in rising order, as many of one as of the other")
+                if context.faults:
+                    return
+
+
+def _read_array(sheet: Flowsheet, array: np.ndarray, address: str, context: Context, listed: bool) -> list[Any] | None:
+    entry, sort = sheet.entry(address), sheet.sorts[address]
     if array.dtype.kind in "fiu":
         values = array.astype(float)
     else:
@@ -95,15 +148,16 @@ def _read_array(array: np.ndarray, entry: Any, sort: str, address: str, context:
             return None
         values = np.array([item[0] for item in read], dtype=float).reshape(array.shape)
     if listed:
-        return [list(row) for row in values]
+        rows = [_read_list(sheet, address, row, context) for row in values]
+        return None if None in rows else rows
     if entry.sort == "integer":
         least = -np.inf if entry.least is None else entry.least
         most = np.inf if entry.most is None else entry.most
         wrong = np.flatnonzero(~(np.isfinite(values) & (values == np.round(values)) & (values >= least) & (values <= most)))
         for place in wrong[:5]:
-            context.fault(f"{address}[{place}]", f"{values[place]!r} is no allowed whole number", f"write one from {least:g} to {most:g}")
+            context.fault(f"{address}[{place}]", f"{values[place]:g} is no allowed whole number", f"write one from {least:g} to {most:g}")
         return None if len(wrong) else [int(item) for item in values]
-    low = np.zeros(values.shape, dtype=bool)
+    low = values <= 0 if sort == "temperature" else np.zeros(values.shape, dtype=bool)
     with np.errstate(invalid="ignore"):
         for limit, test in ((entry.least, np.less), (entry.above, np.less_equal)):
             low |= test(values, limit) if limit is not None else False

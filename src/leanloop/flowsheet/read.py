@@ -168,16 +168,17 @@ def unsettled(raw: Any, read: Mapping[str, Unit], context: Context | None = None
         lost = [item for item in ports if item.required and not read[name].values.words.get(item.name)]
         if name in read and not lost:
             continue
-        own = set(entry) if name not in read else {item.name for item in ports}
-        own |= set(entry) - {item.name for item in read[name].entries} if name in read else set()
+        # what ports say, and what may be a misspelt port
+        others = {"kind", *(item.name for item in read[name].entries if item not in ports)} if name in read else {"kind"}
         said = {
             part
-            for key in own & set(entry)
+            for key in set(entry) - others
             for part in (entry[key] if isinstance(entry[key], list) else [entry[key]])
             if isinstance(part, str) and part
         }
         settled = {part for item in ports for part in _listed(read[name].values.words.get(item.name))}
-        if name in read and len(said - settled) < len(lost):
+        listed = any(item.many and isinstance(entry.get(item.name), list) for item in lost)  # one of several is no name
+        if name in read and (listed or len(said - settled) < len(lost)):
             return _Every()
         names |= said
     return names
@@ -190,7 +191,6 @@ def _listed(words: Any) -> tuple[str, ...]:
 def loop(raw: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
     """Read how recycles are closed: the settings, and the tears that are chosen."""
     name = raw.get("method", "newton") if isinstance(raw, Mapping) else "newton"
-    others = {item.name: other for other in METHODS for item in METHODS.load(other).entries}
     options: tuple[Entry, ...] = ()
     kind = None
     if isinstance(name, str) and name in METHODS:
@@ -205,7 +205,10 @@ def loop(raw: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
     faults = len(context.faults)
     if kind is not None and isinstance(raw, Mapping):
         known = {item.name for item in (*LOOP, *options)}
-        for key in [key for key in raw if key in others and key not in known]:
+        strange = [key for key in raw if key not in known]
+        # only then are the other methods loaded
+        others = {item.name: other for other in METHODS for item in METHODS.load(other).entries} if strange else {}
+        for key in [key for key in strange if key in others]:
             context.fault(f"loop.{key}", f"is no option of {name}", f"write method = \"{others[key]}\", or take it away")
             raw = {own: item for own, item in raw.items() if own != key}
     values = read_values((*LOOP, *{item.name: item for item in options}.values()), {} if raw is None else raw, "loop", context)
@@ -237,14 +240,19 @@ def ways_out(structure: Structure, present: Mapping[str, np.ndarray], context: C
         if item.stays_in == "liquid" and not any(mask[place] for mask in present.values())
     ]
     wet = _wet(structure)
-    for unit in structure.units.values():
-        for label, stream in unit.inlets.items():
-            if label == "liquid_in" and (not present[stream].any() or (never and stream not in wet)):
-                context.fault(
-                    f"units.{unit.name}.{label}",
-                    f"nothing ever flows in '{stream}': no feed brings a solvent and no makeup holds its circulation",
-                    'add a makeup with hold = { solvent = "1.6 mol/s" } to the loop',
-                )
+    dry = {
+        stream: f"units.{unit.name}.{label}"
+        for unit in structure.units.values()
+        for label, stream in unit.inlets.items()
+        if label == "liquid_in" and (not present[stream].any() or (never and stream not in wet))
+    }
+    if dry:
+        names = ", ".join(f"'{stream}'" for stream in dry)
+        context.fault(
+            next(iter(dry.values())),
+            f"nothing ever flows in {names}: no feed brings a solvent and no makeup holds its circulation",
+            'add a makeup with hold = { solvent = "1.6 mol/s" } to the loop',
+        )
 
 
 def _wet(structure: Structure) -> set[str]:
@@ -305,6 +313,7 @@ def _requirement(
     found = None
     if quantity is not None:
         try:
+            _check_address(quantity)
             found = formula(quantity, sheet.plan.phases, sheet.units, sheet.bases)[0]
             _check_quantity(sheet, quantity, found)
         except AddressError as error:
@@ -356,6 +365,21 @@ def _quantity_entry(address: str) -> Entry:
         if part.startswith("mg_per_Nm3"):
             return Entry("target", ("number", "molar mass"), least=0.0)
     return Entry("target", "number")
+
+
+def _check_address(address: str) -> None:
+    """Stop at an address that is too short, or too long for a stream.
+
+    Raises
+    ------
+    AddressError
+    """
+    parts = address.split(".")
+    if len(parts) < 2 or not all(parts):
+        raise AddressError(f"{shown_name(address)} is no quantity", "write streams.NAME.... or units.NAME....")
+    most = 4 if len(parts) > 2 and parts[2] in BY_COMPONENT else 3
+    if parts[0] == "streams" and len(parts) > most:
+        raise AddressError(f"{shown_name(address)} goes too deep", f"stop at '{'.'.join(parts[:most])}'")
 
 
 def _check_quantity(sheet: Flowsheet, address: str, found: Formula) -> None:

@@ -13,7 +13,7 @@ from leanloop.flowsheet.quantity import AddressError, formula, stream_table, wal
 from leanloop.flowsheet.requirement import Found
 from leanloop.flowsheet.run import Run
 from leanloop.flowsheet.view import View, derivatives, value
-from leanloop.status import CODE, OK, Status, solved, status_of
+from leanloop.status import CODE, OK, REASONS, Status, solved, status_of
 from leanloop.stream import Stream, divide
 
 if TYPE_CHECKING:
@@ -130,6 +130,7 @@ class Result:
             missed = [
                 f"{name}: {found.reason[row] or 'not reached'}, nearest value {found.value[row]:.6g} "
                 f"at {self.sheet.requirements[name].free} = {found.free_value[row]:.6g}"
+                + (f"; {REASONS[found.reason[row]]}" if found.reason[row] else "")
                 for name, found in part.found.items()
                 if not found.reached[row]
             ]

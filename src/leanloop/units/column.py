@@ -75,7 +75,7 @@ class Column(Unit):
         unit = super().connect(around, context)
         address, components = f"units.{self.name}", around.components
         for label, phase in around.phases.items():
-            if phase != label.partition("_")[0]:
+            if phase and phase != label.partition("_")[0]:
                 context.fault(
                     f"{address}.{label}",
                     f"stream '{self.inlets[label]}' is {phase}",
@@ -92,7 +92,7 @@ class Column(Unit):
         unit.places = np.flatnonzero(spread)
         names = [components.names[place] for place in unit.places]
         for name in names:
-            if name not in table.models:
+            if name not in table.models and name not in table.doubtful:
                 context.fault(
                     f"equilibrium.{table.name}.{name}",
                     f"'{name}' reaches column '{self.name}' and has no model here",

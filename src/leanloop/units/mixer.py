@@ -32,7 +32,7 @@ class Mixer(Unit):
 
     def connect(self, around: Surroundings, context: Context) -> Unit:
         """Gas and liquid do not mix into one phase."""
-        if len(set(around.phases.values())) > 1:
+        if len(set(around.phases.values()) - {""}) > 1:
             liquid = [self.inlets[label] for label, phase in around.phases.items() if phase == "liquid"]
             context.fault(
                 f"units.{self.name}.takes",
