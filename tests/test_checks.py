@@ -344,6 +344,50 @@ def never_oil(self, inlet, outlet, components, numbers=None):
     return Sieve.passes(self, inlet, outlet, components) & ~components.mask(["oil"])
 
 
+def more_at_last(self, inlet, outlet, components, numbers=None):
+    return Sieve.passes(self, inlet, outlet, components) | (numbers is not None)
+
+
+def fixed():
+    """Sends a set flow of oil up, whatever comes."""
+
+    def change(self, outlets, inlets, numbers):
+        flows = outlets["up"].flows + 0.0
+        flows[..., self.around.components.index["oil"]] = 0.05
+        return {"up": outlets["up"].carrying(flows), "down": outlets["down"].carrying(inlets["takes"].flows - flows)}
+
+    return after(Sieve, change)
+
+
+def lonely(found, arguments):
+    if len(found.status) == 1:
+        found.status = np.full_like(found.status, code(Status.unit_failed))
+    return found
+
+
+def condemning(found, arguments):
+    found.status = np.full_like(found.status, found.status.max())
+    return found
+
+
+def tired(self, *arguments):
+    found = Pair.evaluate(self, *arguments)
+    return replace(found, status=found.status + code(Status.unit_failed)) if arguments[2] else found
+
+
+def owing(self, outlets, inlets, numbers):
+    none = (inlets["takes"].total == 0)[..., None]
+    return {**outlets, "up": outlets["up"].carrying(np.where(none, -1.0, outlets["up"].flows))}
+
+
+def stacked(self, outlets, inlets, numbers):
+    return {**outlets, "up": shifted(outlets["up"], inlets["takes"].temperature.ndim * 1.0)}
+
+
+def never_oil_up(self, inlet, outlet, components, numbers=None):
+    return never_oil(self, inlet, outlet, components) if outlet == "up" else Sieve.passes(self, inlet, outlet, components)
+
+
 def results_of(leaf):
     return variant(Sieve, results=lambda self, inlets, outlets, numbers, memory: {"results": {"leaf": leaf(inlets["takes"])}})
 
@@ -376,12 +420,14 @@ UNITS = [
     ("entries", variant(Sieve, kind=""), "no kind"),
     ("examples", scenes_of(Sieve), "gives none"),
     ("examples", scenes_of(Sieve, WRONG_SCENE), "units.unit.up: entry is missing"),
-    ("examples", scenes_of(Sieve, UNSOLVED_SCENE), "end with status"),
+    ("examples", scenes_of(Sieve, UNSOLVED_SCENE), "end with not_finite"),
     ("examples", scenes_of(Sieve, WRONG_LABEL), "not ['all']"),
     ("constructor_stores", variant(Sieve, __init__=forgetful), "changes its name or its entries"),
     ("constructor_stores", variant(Sieve, __init__=strict), "KeyError"),
     ("constructor_stores", variant(Sieve, read=reading_itself), "changes the unit itself"),
     ("constructor_stores", variant(Sieve, read=lambda self, context: self), "changes the unit itself"),
+    ("constructor_stores", variant(Sieve, read=lambda self, context: Unit.read(self, Context())), "no fault of an unknown entry"),
+    ("examples", variant(Sieve, addresses=lambda self: {"share": "units.unit.part"}), "'units.unit.part', where there is none"),
     ("faults_have_addresses", variant(Sieve, read=lenient), "no fault at units.unit.no_such"),
     ("outlets_complete", after(Sieve, extra_outlet), "down"),
     ("outlets_complete", after(Sieve, flat_state), "'up' is float64"),
@@ -399,9 +445,13 @@ UNITS = [
     ("holds_truthful", variant(Sieve, holds=lambda self, components: components.mask(["oil"])), "'oil' is said to be held"),
     ("cases_alone", after(Sieve, mixing), "case 0 alone gives another 'up'"),
     ("nan_stays", after(Sieve, infecting), "changes 'up' of others"),
+    ("cases_alone", evaluated(Sieve, lonely), "case 0 alone ends with another status"),
     ("nan_stays", evaluated(Sieve, blessing), "NaN in 'up'"),
+    ("nan_stays", evaluated(Sieve, condemning), "changes the status of others"),
     ("zero_flow", after(Sieve, refusing), "ZeroDivisionError: nothing flows"),
     ("zero_flow", evaluated(after(Sieve, undefined), blessing), "not finite where"),
+    ("zero_flow", evaluated(after(Sieve, owing), blessing), "is negative where"),
+    ("complex_and_leading_axes", after(Sieve, stacked), "leading axis 'up' is"),
     ("complex_and_leading_axes", after(Sieve, lambda self, outlets, inlets, numbers: {
         **outlets, "up": outlets["up"].carrying(outlets["up"].flows[:, :2])}), "ValueError"),
     ("complex_and_leading_axes", after(Sieve, lambda self, outlets, inlets, numbers: {
@@ -414,9 +464,12 @@ UNITS = [
     ("results_differentiable", results_of(lambda stream: np.abs(stream.flows)), "along oil of 'takes' is off"),
     ("results_differentiable", results_of(lambda stream: stream.total.sum()), "without the case axis"),
     ("memory_keeps_the_answer", variant(Pair, evaluate=drifting), "from memory 'gas_out'"),
+    ("memory_keeps_the_answer", variant(Pair, evaluate=tired), "from memory a case ends with another status"),
     ("memory_keeps_the_answer", evaluated(Sieve, lambda found, _: replace(found, memory={"count": np.array(3)})), "case axis"),
     ("passes_truthful", variant(Sieve, passes=never_oil), "'oil' of 'takes' is said not to pass to 'up'"),
     ("passes_truthful", variant(Sieve, passes=always_some), "shuts is False"),
+    ("passes_truthful", variant(Sieve, passes=more_at_last), "more passes from 'takes' to 'up' than without"),
+    ("passes_truthful", variant(fixed(), passes=never_oil_up), "'oil' is said to reach 'up' from no inlet"),
     ("passes_truthful", variant(Sieve, passes=lambda *_, **__: np.ones(2)), "passes() gives float64 (2,)"),
     ("leans_on_truthful", variant(Sieve, leans_on=lambda self, outlet, what: []), "temperature of 'up' follows the temperature"),
     ("leans_on_truthful", variant(Sieve, leans_on=lambda self, outlet, what: [("takes", "heat")]), "no parts of inlets"),
@@ -440,6 +493,10 @@ def lenient_read(cls, table, address, context):
     found = super(Binding, cls).read(table, address, own)
     context.faults += [fault for fault in own.faults if "no_such" not in fault.address]
     return found or super(Binding, cls).read(Binding.examples()[0], address, Context())
+
+
+def stubborn_read(cls, table, address, context):
+    return super(Binding, cls).read(table, address, context) or super(Binding, cls).read(cls.examples()[0], address, Context())
 
 
 def kept_numbers(self, values):
@@ -472,6 +529,7 @@ MODELS = [
     ("examples", variant(Binding, coordinates="mass"), "'mass'"),
     ("examples", variant(Binding, read=classmethod(lambda cls, *_: None)), "read() gives None"),
     ("faults_have_addresses", variant(Binding, read=classmethod(lenient_read)), "component.no_such"),
+    ("faults_have_addresses", variant(Binding, read=classmethod(stubborn_read)), "a model in spite of"),
     ("gas_positive", gas_of(Binding, lambda gas, *_: gas - 0.01), "the gas is -0.0"),
     ("gas_positive", gas_of(Binding, lambda gas, temperature, *_: np.where(temperature > 300, np.nan, gas)), "the gas is nan"),
     ("gas_positive", variant(Binding, outside=lambda self, t, p, x, numbers: (t * p * x) > -1), "nothing is checked"),
@@ -485,6 +543,8 @@ MODELS = [
     ("slopes_right", variant(Straight, slopes=lambda self, t, p, x, n: (0 * t, -n["K"] * x / p**2, n["K"] / p)), "has the shape"),
     ("complex_truthful", variant(Binding, complex_safe=False), "slopes() is not its own"),
     ("complex_truthful", gas_of(Binding, lambda gas, t, p, x, n: abs(gas)), "complex step along the temperature"),
+    ("complex_truthful", gas_of(Binding, lambda gas, t, *_: gas * (1 + 0.1 * np.iscomplexobj(t))), "along the temperature is off"),
+    ("complex_truthful", gas_of(Straight, lambda gas, t, p, x, n: gas + 1e-9 * np.iscomplexobj(p)), "changes the real part"),
     ("complex_truthful", gas_of(Straight, lambda gas, t, p, x, n: gas / n["K"] * np.real(n["K"])), "number 'K'"),
     ("numbers_broadcast", gas_of(Straight, lambda gas, t, p, x, n: gas / n["K"] * np.ravel(n["K"])[0]), "of a batch"),
     ("numbers_by_argument", variant(Binding, __init__=kept_numbers, gas=lambda self, t, p, x, n: Binding.gas(
@@ -569,6 +629,9 @@ METHODS = [
     ("proposals_in_bounds", variant(Damped, propose=overshooting, most_passes=500), "is proposed"),
     ("proposals_in_bounds", variant(
         Damped, begin=lambda self, x: {"x": np.full(x.shape, np.nan)}, propose=undefined_step), "nan is proposed in pass 2"),
+    ("proposals_in_bounds", variant(Damped, propose=lambda self, trial, state: (
+        trial.g[:, 0] if trial.g.max() > 1e5 else trial.g, state)), "has the shape (2,)"),
+    ("cases_alone", variant(Damped, propose=by_batch), "passes alone and"),
     ("trial_unchanged", variant(Damped, propose=scribbling), "propose() changes g"),
     ("trial_unchanged", variant(Damped, begin=shifting), "begin() changes x"),
 ]  # fmt: skip

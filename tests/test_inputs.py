@@ -204,8 +204,8 @@ class TestFlows:
 
 ANTOINE = """
 [equilibrium.cold]
-tol = { model = "raoult", vapour_pressure = { form = "antoine", A = 6.95, B = 1345.0, C = 219.5, pressure = "mmHg", temperature = "degC" } }
-"""
+tol = { model = "raoult", vapour_pressure = VAPOUR }
+""".replace("VAPOUR", '{ form = "antoine", A = 6.95, B = 1345.0, C = 219.5, pressure = "mmHg", temperature = "degC" }')
 
 
 class TestSaturation:
@@ -499,7 +499,7 @@ between = ["1 mol/s", "40 mol/s"]
         assert sum(parts) == pytest.approx(9000, rel=1e-8)
         assert min(parts) > 100
 
-    @pytest.mark.parametrize("members", ['["tol", "ethh"]', '["tol", "tol"]', "[]", '"tol"'])
+    @pytest.mark.parametrize("members", ['["tol", "ethh"]', '["tol", "tol"]', "[]", "3"])
     def test_wrong_ones(self, tmp_path, members):
         with pytest.raises(leanloop.InputError, match=r"groups\.solutes"):
             read(tmp_path, column(extra=f"[groups]\nsolutes = {members}\n"))
@@ -790,7 +790,6 @@ tar = {{ molar_mass = "400 g/mol", stays_in = "liquid" }}
         assert result["units.top_up.results.added_mol_s.tar"] == pytest.approx(comes, rel=1e-9)
         assert result["streams.bleed.mol_s.tar"] == pytest.approx(comes, rel=1e-9)
         assert result["streams.full.mol_s.tar"] == pytest.approx(comes / bleed, rel=1e-9)
-        assert result["streams.full.ratio.tar"] * result["streams.full.mol_s.oil"] > 0
         closure = result.to_dict()["balance"]["components"]["tar"]
         assert closure["in_mol_s"] == pytest.approx(comes, rel=1e-9)
         assert abs(closure["closure"]) < 1e-9

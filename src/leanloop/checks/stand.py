@@ -13,7 +13,7 @@ from leanloop.checks.slopes import Variable, bounds
 from leanloop.components import Component, Components
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
-from leanloop.status import OK
+from leanloop.status import OK, status_of
 from leanloop.stream import Stream
 from leanloop.units import KINDS
 from leanloop.units.base import Evaluation, Scene, Surroundings, Unit
@@ -144,7 +144,8 @@ class Stand:
     ) -> dict[str, np.ndarray]:
         """Give the calculated states by label, (M, C + 2); every case must be solved."""
         found = self.evaluate(inlets, numbers)
-        require((found.status == OK).all(), f"its cases end with status {found.status.tolist()}, not {OK}")
+        ends = ", ".join(sorted({status_of(item).name for item in found.status}))
+        require((found.status == OK).all(), f"its cases end with {ends}")
         return self.states(found.outlets)
 
     def states(self, streams: Mapping[str, Stream]) -> dict[str, np.ndarray]:

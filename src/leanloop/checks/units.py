@@ -138,7 +138,7 @@ def nan_stays(stand: Stand) -> None:
         for label, state in stand.states(found.outlets).items():
             gap = stand.apart(state[1:], states[label][1:], stand.sizes()[1:])
             require(gap <= SAME, f"{where} changes '{label}' of others by {gap:.1e}")
-            require(found.status[0] != OK or np.isfinite(state[0]).all(), f"{where} ends with status {OK} and NaN in '{label}'")
+            require(found.status[0] != OK or np.isfinite(state[0]).all(), f"{where} ends as converged with NaN in '{label}'")
         require((found.status[others] == whole.status[others]).all(), f"{where} changes the status of others")
 
 
@@ -153,7 +153,7 @@ def zero_flow(stand: Stand) -> None:
         found = stand.evaluate(inlets)
         for label, state in stand.states(found.outlets).items():
             state = state[found.status == OK]
-            where = f"where {title} is zero, and the status is {OK}"
+            where = f"where {title} is zero, and the status is converged"
             require(np.isfinite(state).all(), f"'{label}' is not finite {where}")
             require((state[:, :-2] >= -BALANCE * stand.fed.max()).all(), f"'{label}' is negative {where}")
         if len(stand.unit.sections()) == 1:
