@@ -86,7 +86,7 @@ temperature = "26 degC"
 
 [requirements.outlet]
 quantity = "streams.cleaned.fraction.toluene"
-equals = 1e-3
+equals = 2e-3
 free = "units.top_up.hold.oil"
 between = ["0.8 mol/s", "3 mol/s"]
 
@@ -160,13 +160,15 @@ def cold(new):
     return (COLD_TOLUENE, f"toluene = {new}")
 
 
-def asked(address, limit="equals = 1e-3"):
-    return (f"{QUANTITY}\nequals = 1e-3", f'quantity = "{address}"\n{limit}')
+def asked(address, limit="equals = 2e-3"):
+    return (f"{QUANTITY}\nequals = 2e-3", f'quantity = "{address}"\n{limit}')
 
 
 def instead(old, new):
     return (old, new)
 
+
+UNTORN = ('tears = ["cool_lean"]\n', "")  # where there is no such stream any more
 
 # name: (edits, the faults: address and words that its line must hold)
 FAULTS = {
@@ -186,11 +188,11 @@ FAULTS = {
                       [("components", "there is no component")]),
     "number for the components": ([instead(RIGHT[PARTS_FROM:TABLES_FROM], ""), head("components = 6")],
                                   [("components", "no table")]),
-    "no units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], "")], [("units", "there is no unit")]),
-    "empty list for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = []")], [("units", "")]),
-    "list of numbers for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = [1, 2]")],
+    "no units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), UNTORN], [("units", "there is no unit")]),
+    "empty list for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = []"), UNTORN], [("units", "")]),
+    "list of numbers for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = [1, 2]"), UNTORN],
                                       [("units", "no table")]),
-    "list of tables for a unit": ([instead("[units.trim]", "[[units.trim]]")], [("units.trim", "no table")]),
+    "list of tables for a unit": ([instead("[units.trim]", "[[units.trim]]"), UNTORN], [("units.trim", "no table")]),
     "list of tables for a feed": ([instead("[feeds.steam]", "[[feeds.steam]]")], [("feeds.steam", "no table")]),
     "no equilibrium table": ([instead(RIGHT[TABLES_FROM:LOOP_FROM], "")],
                              [("units.wash.equilibrium", "[equilibrium.NAME]"), ("units.strip.equilibrium", "[equilibrium.NAME]")]),
@@ -345,7 +347,7 @@ FAULTS = {
     "group named like a component": ([instead("organics =", "toluene =")], [("groups.toluene", "rename")]),
     "group that names one twice": ([instead('["toluene", "ethanol"]', '["toluene", "toluene"]')], [("groups.organics", "twice")]),
     "group with a dot": ([instead("organics =", '"or.ganics" =')], [('groups."or.ganics"', "letters")]),
-    "basis with an unknown component": ([instead('gas = ["air", "steam"]', 'gas = ["aer"]')], [("basis.gas[0]", "'air'")]),
+    "basis with an unknown component": ([instead('gas = ["air", "steam"]', 'gas = ["airr"]')], [("basis.gas[0]", "'air'")]),
     "unknown basis": ([instead('gas = ["air", "steam"]', 'gass = ["air"]')], [("basis.gass", "'gas'")]),
     "empty basis": ([instead('gas = ["air", "steam"]', "gas = []")], [("basis.gas", "empty")]),
 
@@ -387,7 +389,7 @@ FAULTS = {
                                   [("equilibrium.cold.ethanol.solvent_concentration", "missing")]),
     "antoine without C": ([instead("C = 219.5, ", "")], [("equilibrium.hot.toluene.vapour_pressure.C", "missing")]),
     "antoine in a unit of nothing": ([instead('"mmHg"', '"mol"')], [("equilibrium.hot.toluene.vapour_pressure.pressure", "mmHg")]),
-    "antoine over an unknown scale": ([instead('pressure = "mmHg", temperature = "degC"', 'pressure = "mmHg", temperature = "degX"')],
+    "antoine over an unknown scale": ([instead('pressure = "mmHg", temperature = "degC"', 'pressure = "mmHg", temperature = "dgeC"')],
                                       [("equilibrium.hot.toluene.vapour_pressure.temperature", "'degC'")]),
     "misspelt form of vapour pressure": ([instead('"antoine"', '"antonie"')], [("equilibrium.hot.toluene.vapour_pressure.form", "'antoine'")]),
     "list for a vapour pressure": ([instead(ANTOINE, "vapour_pressure = [1]")], [("equilibrium.hot.toluene.vapour_pressure", "pressure such as")]),
@@ -424,16 +426,16 @@ FAULTS = {
     "missing quantity": ([instead(QUANTITY + "\n", "")], [(f"{OUTLET}.quantity", "missing")]),
     "misspelt entry quantity": ([instead('quantity = "streams.cl', 'quantty = "streams.cl')], [(f"{OUTLET}.quantty", "'quantity'")]),
     "same quantity twice": ([asked("streams.hot_rich.temperature_K", 'equals = "140 degC"')],
-                            [("requirements.warmth.quantity", OUTLET), (f"{OUTLET}.free", "cannot change")]),
+                            [("requirements.warmth.quantity", OUTLET)]),
 
     # requirements: the limit, the freed input and its bounds
-    "no limit": ([instead("equals = 1e-3\n", "")], [(OUTLET, "equals, at_most, at_least")]),
-    "misspelt limit": ([instead("equals = 1e-3", "equal = 1e-3")], [(f"{OUTLET}.equal", "'equals'")]),
-    "two limits": ([instead("equals = 1e-3", "equals = 1e-3\nat_most = 1e-3")], [(OUTLET, "equals and at_most")]),
-    "limit of another dimension": ([instead("equals = 1e-3", 'equals = "1 bar"')], [(f"{OUTLET}.equals", "a pressure")]),
+    "no limit": ([instead("equals = 2e-3\n", "")], [(OUTLET, "equals, at_most, at_least")]),
+    "misspelt limit": ([instead("equals = 2e-3", "equal = 2e-3")], [(f"{OUTLET}.equal", "'equals'")]),
+    "two limits": ([instead("equals = 2e-3", "equals = 2e-3\nat_most = 2e-3")], [(OUTLET, "equals and at_most")]),
+    "limit of another dimension": ([instead("equals = 2e-3", 'equals = "1 bar"')], [(f"{OUTLET}.equals", "a pressure")]),
     "limit without its unit": ([instead('at_least = "140 degC"', "at_least = 413")], [("requirements.warmth.at_least", "degC")]),
-    "limit that is not finite": ([instead("equals = 1e-3", "equals = inf")], [(f"{OUTLET}.equals", "finite")]),
-    "list for a limit": ([instead("equals = 1e-3", "equals = [1e-3]")], [(f"{OUTLET}.equals", "no number")]),
+    "limit that is not finite": ([instead("equals = 2e-3", "equals = inf")], [(f"{OUTLET}.equals", "finite")]),
+    "list for a limit": ([instead("equals = 2e-3", "equals = [2e-3]")], [(f"{OUTLET}.equals", "no number")]),
     "unknown input": ([instead('"units.top_up.hold.oil"', '"units.topup.hold.oil"')], [(f"{OUTLET}.free", "'units.top_up.hold.oil'")]),
     "missing free": ([instead('free = "units.top_up.hold.oil"\n', "")], [(f"{OUTLET}.free", "missing")]),
     "freeing a word": ([instead('"units.top_up.hold.oil"', '"units.top_up.kind"')], [(f"{OUTLET}.free", "no numeric input")]),
@@ -476,7 +478,7 @@ FAULTS = {
         [("loop.tears", "join")]),
 }
 
-LINE = re.compile(r'(?P<source>[^\n]+?\.toml): (?P<address>(?:"(?:[^"\\\n]|\\.)*"|[^\s:;"])+|--set): (?P<problem>[^\n;]+); (?P<remedy>[^\n]+)')
+LINE = re.compile(r'(?P<source>[^\n]+?\.toml): (?P<address>(?:"(?:[^"\\\n]|\\.)*"|[^\s:;"])+|--set): (?P<problem>[^\n]+?); (?P<remedy>[^\n]+)')
 
 
 def edited(edits):
@@ -519,7 +521,7 @@ def write(tmp_path, text, name="sheet.toml"):
 def test_the_right_file_is_right(tmp_path):
     result = leanloop.read(write(tmp_path, RIGHT)).solve()
     assert result.status == "converged"
-    assert result["streams.cleaned.fraction.toluene"] == pytest.approx(1e-3, rel=1e-7)
+    assert result["streams.cleaned.fraction.toluene"] == pytest.approx(2e-3, rel=1e-7)
 
 
 def test_a_mark_at_the_head_and_line_ends_of_any_sort_are_right(tmp_path):
@@ -646,12 +648,12 @@ SETTINGS = {
     "units.wash.stages=many": ("units.wash.stages", "'many'"),
     "units.wash.stages.x=3": ("units.wash.stages.x", "no table"),
     "feeds.vent.flow=12": ("feeds.vent.flow", "no unit"),
-    "feeds.vent.flow=12 mol/s\nx": ("feeds.vent.flow", "\\n"),
-    "feeds.vent.flow=1\nother = 2": ("feeds.vent.flow", "\\n"),
+    "feeds.vent.flow=12 mol/s\nx": ("feeds.vent.flow", "'x'"),
+    "feeds.vent.flow=1\nother = 2": ("feeds.vent.flow", "'other = 2'"),
     "feeds.vent.flow=12 bar": ("feeds.vent.flow", "a pressure"),
     "feeds.vent.fractions.toluene=1.2": ("feeds.vent.fractions", "no rest"),
     "feeds.vnt.flow=12 mol/s": ("feeds.vnt.flow", "'vent'"),
-    "components.aer.molar_mass=29 g/mol": ("components.aer.molar_mass", "'air'"),
+    "components.airr.molar_mass=29 g/mol": ("components.airr.molar_mass", "'air'"),
     "units.top_up.hold.oill=1 mol/s": ("units.top_up.hold.oill", "'oil'"),
     "loop.method=newten": ("loop.method", "'newton'"),
     "loop.tolerance=[": ("loop.tolerance", "'['"),

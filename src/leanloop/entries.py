@@ -163,7 +163,7 @@ def read_number(raw: Any, entry: Entry, address: str, context: Context) -> tuple
     elif "number" in sorts or context.plain_si:
         value, sort = _float(raw), "number" if "number" in sorts else sorts[0]
     else:
-        context.fault(address, f"{raw!r} has no unit", f"write {wanted}")
+        context.fault(address, f"{_shown(raw)} has no unit", f"write {wanted}")
         return None
     return (value, sort) if _inside(value, raw, entry, sort, address, context) else None
 

@@ -180,8 +180,10 @@ class Feed:
                     values.entries[f"{self.form}.{name}"] = _PART
         if len(context.faults) > faults:
             return
-        if not self.phase and self.form in ("ratios", "loadings"):
+        if not len(self.components) or self.form in ("ratios", "loadings") and not self.phase:
             return  # which basis they refer to is not known
+        if self.form == "loadings" and self.phase == "gas":
+            return
         total = sum(values.group(self.form)[name] for name in self._summed())
         if self.rest and self.rest not in self._summed([self.rest]):
             what = f"{self.form} are per mol of a basis that '{self.rest}' is no part of, so that it cannot be the rest"

@@ -98,7 +98,7 @@ class Registry:
             module, _, attribute = known[name].partition(":")
             try:
                 plugin = getattr(import_module(module), attribute)
-            except (ImportError, AttributeError) as error:
+            except Exception as error:  # whatever an outside module raises while it is imported
                 raise BrokenPlugin(f"{self.sort} '{name}' cannot be loaded from '{known[name]}': {error}") from error
             self._verify(name, plugin)
             self._loaded[name] = plugin

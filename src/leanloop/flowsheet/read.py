@@ -14,7 +14,7 @@ from leanloop.feed import Feed
 from leanloop.flowsheet.graph import Structure, influences
 from leanloop.flowsheet.inputs import Inputs
 from leanloop.flowsheet.plan import Plan
-from leanloop.flowsheet.quantity import BY_COMPONENT, AddressError, Formula, formula, stream_table
+from leanloop.flowsheet.quantity import BY_COMPONENT, WHOLE, AddressError, Formula, formula, stream_table
 from leanloop.flowsheet.requirement import Requirement
 from leanloop.flowsheet.run import Settings
 from leanloop.quantities import DIMENSIONS, NORMAL_MOLES
@@ -377,8 +377,8 @@ def _check_address(address: str) -> None:
     parts = address.split(".")
     if len(parts) < 2 or not all(parts):
         raise AddressError(f"{shown_name(address)} is no quantity", "write streams.NAME.... or units.NAME....")
-    most = 4 if len(parts) > 2 and parts[2] in BY_COMPONENT else 3
-    if parts[0] == "streams" and len(parts) > most:
+    most = 4 if parts[2:3] and parts[2] in BY_COMPONENT else 3
+    if parts[0] == "streams" and len(parts) > most and parts[2] in (*BY_COMPONENT, *WHOLE):
         raise AddressError(f"{shown_name(address)} goes too deep", f"stop at '{'.'.join(parts[:most])}'")
 
 

@@ -1,0 +1,187 @@
+"""What a column reports: removal, factors, approach to equilibrium, profile, cautions."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any, ClassVar
+
+import numpy as np
+
+from leanloop.column.equations import phases
+from leanloop.equilibrium.base import EquilibriumModel
+from leanloop.equilibrium.water import is_water, vapour_pressure
+from leanloop.stream import Stream, divide
+from leanloop.units.base import Numbers, Unit
+
+_NEVER = EquilibriumModel.outside
+
+
+class ColumnReport(Unit):
+    """The reporting half of `leanloop.units.column.Column`, which solves the stages."""
+
+    cleans: ClassVar[str] = "gas"
+
+    def results(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]
+    ) -> dict[str, Any]:
+        """Give removal, factors, approaches and the profile."""
+        names = self.around.components.names
+        gas_in, liquid_in = inlets["gas_in"], inlets["liquid_in"]
+        gas_out, liquid_out = outlets["gas_out"], outlets["liquid_out"]
+        unknowns = self._unknowns(numbers, inlets, memory)
+        count = unknowns.shape[-2]
+        temperature, pressure = self._conditions(inlets, numbers)
+        law = self.law.at(temperature[..., None], pressure[..., None], self._model_numbers(numbers))
+        fed = gas_in.flows + liquid_in.flows
+        liquid = np.repeat(np.where(self.stays_liquid, liquid_in.flows, 0.0)[..., None, :], count, axis=-2)
+        liquid[..., -1, :] = np.where(self.stays_liquid, fed, 0.0)
+        gas = np.repeat(np.where(self.stays_gas, gas_in.flows, 0.0)[..., None, :], count, axis=-2)
+        gas[..., 0, :] = np.where(self.stays_gas, fed, 0.0)
+        kind = np.result_type(liquid, unknowns)
+        liquid, gas = liquid.astype(kind), gas.astype(kind)
+        liquid[..., self.places] = unknowns[..., 1:]
+        flows = self._gas_flows(law, liquid, gas, unknowns[..., 0])
+        gas[..., self.places] = flows
+        l_total, g_total = liquid.sum(axis=-1), gas.sum(axis=-1)
+        x, y = divide(liquid, l_total[..., None]), divide(gas, g_total[..., None])
+        ratio_x = divide(liquid, liquid[..., self.liquid_basis].sum(axis=-1)[..., None])
+        ratio_y = divide(gas, gas[..., self.gas_basis].sum(axis=-1)[..., None])
+        k = self._k_values(law, x[..., self.places], y[..., self.places])
+        factor = divide(l_total[..., None], k * g_total[..., None])
+        inlet, outlet = (gas_in, gas_out) if self.cleans == "gas" else (liquid_in, liquid_out)
+        removal = 1.0 - divide(outlet.flows, inlet.flows)
+        ends = np.sqrt(factor[..., 0, :] * factor[..., -1, :])
+        if self.cleans == "gas":
+            rich, lean = (gas_in, liquid_out), (gas_out, liquid_in)
+        else:
+            rich, lean = (gas_out, liquid_in), (gas_in, liquid_out)
+        rich, lean = self._approach(numbers, *rich, law), self._approach(numbers, *lean, law)
+        place = dict(zip(self.model_names, range(len(self.model_names)), strict=True))
+
+        def by_name(values: np.ndarray) -> dict[str, np.ndarray]:
+            return {name: values[..., index] for name, index in place.items()}
+
+        def by_component(values: np.ndarray) -> dict[str, np.ndarray]:
+            return {name: values[..., index] for index, name in enumerate(names)}
+
+        moving = [index for index, name in enumerate(names) if name in place]
+        return {
+            "results": {
+                "removal": {names[index]: removal[..., index] for index in moving},
+                "absorption_factor": by_name(ends),
+                "stripping_factor": by_name(divide(np.ones_like(ends), ends)),
+                "solvent_to_gas": divide(
+                    liquid_in.flows[..., self.liquid_basis].sum(axis=-1), gas_in.flows[..., self.gas_basis].sum(axis=-1)
+                ),
+                "approach_rich": by_name(rich),
+                "approach_lean": by_name(lean),
+                "duty_W": None,
+            },
+            "profile": {
+                "stage": np.broadcast_to(np.arange(1, count + 1), l_total.shape),
+                "temperature_K": np.broadcast_to(temperature[..., None], l_total.shape),
+                "x": by_component(x),
+                "y": by_component(y),
+                "X": by_component(ratio_x),
+                "Y": by_component(ratio_y),
+                "liquid_mol_s": l_total,
+                "gas_mol_s": g_total,
+                "K": by_name(k),
+                "A": by_name(factor),
+            },
+        }
+
+    def _unknowns(self, numbers: Numbers, inlets: Mapping[str, Stream], memory: Mapping[str, np.ndarray]) -> np.ndarray:
+        """Give the state inside, NaN where no case has ever come this far."""
+        if "unknowns" in memory:
+            return memory["unknowns"]
+        shape = inlets["gas_in"].state.shape[:-1]
+        return np.full((*shape, int(numbers["stages"]), len(self.places) + 1), np.nan)
+
+    def _coordinates(self, law: Any, liquid: np.ndarray) -> np.ndarray:
+        fraction = divide(liquid, liquid.sum(axis=-1)[..., None])[..., self.places]
+        if law.plain:
+            return fraction
+        ratio = divide(liquid, liquid[..., self.liquid_basis].sum(axis=-1)[..., None])[..., self.places]
+        return np.where(law.ratio, ratio, fraction)
+
+    def _gas_flows(self, law: Any, liquid: np.ndarray, gas: np.ndarray, total: np.ndarray) -> np.ndarray:
+        """Give v on every stage, complex numbers allowed."""
+        y = law.complex_gas(self._coordinates(law, liquid))
+        if not np.iscomplexobj(liquid):
+            y = y.real
+        if law.plain:
+            return y * total[..., None]
+        in_basis = law.law.gas_basis
+        inert = gas[..., self.gas_basis & self.stays_gas].sum(axis=-1)
+        fixed = inert + total * (y @ (in_basis & ~law.ratio).astype(float))
+        basis = fixed / (1.0 - y @ (in_basis & law.ratio).astype(float))
+        return y * np.where(law.ratio, basis[..., None], total[..., None])
+
+    def _k_values(self, law: Any, x: np.ndarray, y: np.ndarray) -> np.ndarray:
+        """Give y/x, the limit at infinite dilution where the component is absent."""
+        found = divide(y, x)
+        dilute = np.broadcast_to(law.k_dilute, found.shape)
+        return np.where(np.isfinite(found), found, dilute)
+
+    def _approach(self, numbers: Numbers, gas: Stream, liquid: Stream, law: Any) -> np.ndarray:
+        """Give partial pressure over that in equilibrium with the liquid at the column's conditions."""
+        state = liquid.flows[..., None, :]
+        wanted = law.complex_gas(self._coordinates(law, state))[..., 0, :]
+        if not np.iscomplexobj(state) and not np.iscomplexobj(gas.flows):
+            wanted = wanted.real
+        have = divide(gas.flows, gas.total[..., None])[..., self.places]
+        if not law.plain:
+            ratio = divide(gas.flows, gas.flows[..., self.gas_basis].sum(axis=-1)[..., None])[..., self.places]
+            have = np.where(law.ratio, ratio, have)
+        return divide(have, wanted)
+
+    def off_table(self, inlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]) -> np.ndarray:
+        """Tell which cases use a model off its table.
+
+        Returns
+        -------
+        (M,) bool
+        """
+        if all(type(model).outside is _NEVER for model in self.models):
+            return np.zeros(len(inlets["gas_in"].state), dtype=bool)
+        stages = self._stages(inlets, numbers)
+        with np.errstate(all="ignore"):
+            liquid = phases(stages, self._unknowns(numbers, inlets, memory)).liquid
+        return stages.law.outside(liquid).any(axis=1)
+
+    def cautions(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]
+    ) -> list[str]:
+        """Say where the pressure of the liquid is too low or a correlation's range is left."""
+        found = []
+        temperature, pressure = self._conditions(inlets, numbers)
+        if np.any(inlets["liquid_in"].pressure < pressure * (1 - 1e-6)):
+            found.append(f"Column {self.name}: its liquid is fed at less than the column's pressure; a pump is needed.")
+        unknowns = self._unknowns(numbers, inlets, memory)
+        found += self._condensing(inlets, temperature, pressure, unknowns[..., 0])
+        stages = self._stages(inlets, numbers)
+        with np.errstate(all="ignore"):
+            liquid = phases(stages, unknowns).liquid
+        for index, (name, model) in enumerate(zip(self.model_names, self.models, strict=True)):
+            for sentence in model.cautions(temperature[:, None], pressure[:, None], liquid[..., index]):
+                found.append(f"Column {self.name}, {name}: {sentence}")
+        return found
+
+    def _condensing(
+        self, inlets: Mapping[str, Stream], temperature: np.ndarray, pressure: np.ndarray, gas_flow: np.ndarray
+    ) -> list[str]:
+        """Say where steam that is declared to stay in the gas would condense."""
+        names = self.around.components.names
+        found = []
+        for place in np.flatnonzero(self.stays_gas):
+            if is_water(names[place]):
+                with np.errstate(all="ignore"):
+                    partial = (inlets["gas_in"].flows[:, place] * pressure)[:, None] / gas_flow
+                    wet = partial.max(axis=1) > vapour_pressure(temperature)
+                if wet.any():
+                    found.append(
+                        f"Column {self.name}: {names[place]} is declared to stay in the gas but is above its "
+                        "saturation pressure, so that it would condense; the result is not honest there."
+                    )
+        return found
