@@ -100,7 +100,9 @@ class TestGasCompositions:
             assert flows(result, stream) == pytest.approx({c: 7 * part for c, part in fractions.items()}, rel=1e-13)
             assert result[f"streams.{stream}.total_mol_s"] == pytest.approx(7, rel=1e-13)
 
-    @pytest.mark.parametrize(("air", "good"), [(0.98, True), (0.9800009, True), (0.9799991, True), (0.980002, False), (0.97, False)])
+    SUMS = [(0.98, True), (0.9800009, True), (0.9799991, True), (0.980002, False), (0.97, False)]
+
+    @pytest.mark.parametrize(("air", "good"), SUMS)
     def test_what_sums_to_one(self, tmp_path, air, good):
         text = warmed(f'flow = "7 mol/s"\nfractions = {{ air = {air}, tol = 0.02 }}')
         if good:
@@ -231,7 +233,8 @@ class TestSaturation:
     def test_it_follows_temperature_and_pressure(self, tmp_path):
         entries = 'flow = "10 mol/s"\nfractions = { air = 1.0 }\nsaturated_with = "tol"'
         warm, high = np.array([290.0, 310.0]), np.array([1.2e5, 3e5])
-        result = read(tmp_path, warmed(entries, extra=ANTOINE)).solve({"feeds.given.temperature": warm, "feeds.given.pressure": high})
+        cases = {"feeds.given.temperature": warm, "feeds.given.pressure": high}
+        result = read(tmp_path, warmed(entries, extra=ANTOINE)).solve(cases)
         pressure = 10 ** (6.95 - 1345 / (219.5 + warm - 273.15)) * 101325 / 760
         np.testing.assert_allclose(result["streams.given.fraction.tol"], pressure / high, rtol=1e-12)
 
@@ -348,6 +351,14 @@ class TestChangingFractions:
         result = read(tmp_path, text, ["feeds.given.fractions.tol=800 mg/Nm3"]).solve()
         assert result["streams.given.mg_per_Nm3.tol"] == pytest.approx(800, rel=1e-12)
 
+    TEXTS = [("800 ppm", 8e-4), ("3 %", 0.03), ("800 mg/Nm3", 800e-6 / MASS["tol"] / NORMAL)]
+
+    @pytest.mark.parametrize(("value", "fraction"), TEXTS)
+    def test_text_with_a_unit_from_python(self, tmp_path, value, fraction):
+        sheet = read(tmp_path, warmed('flow = "10 mol/s"\nfractions = { air = "rest", tol = "500 mg/Nm3" }'))
+        result = sheet.solve({"feeds.given.fractions.tol": value})
+        assert result["streams.given.fraction.tol"] == pytest.approx(fraction, rel=1e-12)
+
     def test_what_no_longer_fits_is_refused(self, tmp_path):
         with pytest.raises(leanloop.InputError, match=r"feeds\.given\.fractions"):
             read(tmp_path, warmed(self.REST), ["feeds.given.fractions.tol=0.99"])
@@ -362,12 +373,29 @@ class TestChangingFractions:
         assert slope == pytest.approx(-0.1 * 1.5e5 / (R * 313.15**2), rel=1e-12)
 
     def test_flow_in_the_unit_of_the_file_or_in_another(self, tmp_path):
-        sheet = read(tmp_path, warmed('flow = "360 m3/h"\nfractions = { air = 0.98, tol = 0.02 }'))
+        text = warmed('flow = "360 m3/h"\nfractions = { air = 0.98, tol = 0.02 }')
+        sheet, total = read(tmp_path, text), "streams.given.total_mol_s"
         per = 1.5e5 / (R * 313.15)
-        assert sheet.solve({"feeds.given.flow": np.array([0.2, 0.3])})["streams.given.total_mol_s"] == pytest.approx([0.2 * per, 0.3 * per])
-        assert sheet.solve({"feeds.given.flow": "720 m3/h"})["streams.given.total_mol_s"] == pytest.approx(0.2 * per)
-        set_anew = read(tmp_path, warmed('flow = "360 m3/h"\nfractions = { air = 0.98, tol = 0.02 }'), ["feeds.given.flow=36 kmol/h"])
-        assert set_anew.solve()["streams.given.total_mol_s"] == pytest.approx(10, rel=1e-12)
+        assert sheet.solve({"feeds.given.flow": np.array([0.2, 0.3])})[total] == pytest.approx([0.2 * per, 0.3 * per], rel=1e-12)
+        assert sheet.solve({"feeds.given.flow": "720 m3/h"})[total] == pytest.approx(0.2 * per, rel=1e-12)
+        set_anew = read(tmp_path, text, ["feeds.given.flow=36 kmol/h"])
+        assert set_anew.solve()[total] == pytest.approx(10, rel=1e-12)
+
+    @pytest.mark.parametrize(
+        ("flow", "per"),
+        [("7 mol/s", 1.0), ("250 kg/h", 1 / (0.98 * MASS["air"] + 0.02 * MASS["tol"])), ("360 m3/h", 1.5e5 / (R * 313.15))],
+    )
+    def test_a_plain_si_number_is_one_of_the_dimension_in_the_file(self, tmp_path, flow, per):
+        """mol/s, kg/s or m3/s; alone just as in an array."""
+        sheet = read(tmp_path, warmed(f'flow = "{flow}"\nfractions = {{ air = 0.98, tol = 0.02 }}'))
+        many = sheet.solve({"feeds.given.flow": np.array([0.2])})["streams.given.total_mol_s"]
+        assert many == pytest.approx([0.2 * per], rel=1e-12)
+        assert sheet.solve({"feeds.given.flow": 0.2})["streams.given.total_mol_s"] == pytest.approx(0.2 * per, rel=1e-12)
+
+    def test_mass_flow_of_one_component_as_a_plain_si_number(self, tmp_path):
+        sheet = read(tmp_path, warmed('flows = { air = "9 mol/s", tol = "36 kg/h" }'))
+        result = sheet.solve({"feeds.given.flows.tol": 0.02})
+        assert result["streams.given.mol_s.tol"] == pytest.approx(0.02 / MASS["tol"], rel=1e-12)
 
 
 def column(kind="absorber", gas='flows = { air = "10 mol/s", tol = "0.2 mol/s", eth = "0.1 mol/s" }',
@@ -417,7 +445,8 @@ class TestBasis:
 
     def test_set_for_the_flowsheet(self, tmp_path):
         own = '[basis]\ngas = ["air", "eth"]\nliquid = ["oil"]\nloading = ["oil", "tar", "water"]\n'
-        result = read(tmp_path, column(liquid='flows = { oil = "8 mol/s", tar = "0.5 mol/s", water = "1 mol/s" }', extra=own)).solve()
+        liquid = 'flows = { oil = "8 mol/s", tar = "0.5 mol/s", water = "1 mol/s" }'
+        result = read(tmp_path, column(liquid=liquid, extra=own)).solve()
         data = result.to_dict()["streams"]
         rich, cleaned = data["rich"]["mol_s"], data["cleaned"]["mol_s"]
         assert data["rich"]["ratio"]["tol"] == pytest.approx(rich["tol"] / rich["oil"], rel=1e-12)
@@ -597,7 +626,10 @@ class TestColumnConditions:
             assert data["streams"][stream]["temperature_K"] == pytest.approx(celsius + 273.15, rel=1e-14)
             assert data["streams"][stream]["pressure_Pa"] == pytest.approx(bar * 1e5, rel=1e-14)
 
-    @pytest.mark.parametrize(("liquid", "entries", "said"), [("1.1 bar", "", True), ("1.2 bar", "", False), ("1.2 bar", 'pressure = "1.3 bar"', True), ("3 bar", "", False)])  # fmt: skip
+    @pytest.mark.parametrize(
+        ("liquid", "entries", "said"),
+        [("1.1 bar", "", True), ("1.2 bar", "", False), ("1.2 bar", 'pressure = "1.3 bar"', True), ("3 bar", "", False)],
+    )
     def test_liquid_at_less_than_the_column_s_pressure(self, tmp_path, liquid, entries, said):
         result = read(tmp_path, column(liquid_pressure=liquid, entries=entries)).solve()
         own = [text for text in result.to_dict()["cautions"] if "tower" in text and "pressure" in text]
@@ -690,7 +722,9 @@ class TestSimpleUnits:
         assert result["streams.b.mol_s.oil"] == pytest.approx([4 * 0.6, 4 * 0.1], rel=1e-12)
         assert sheet.solve().sensitivity("streams.b.mol_s.oil", "units.part.shares.a") == pytest.approx(-4, rel=1e-12)
 
-    @pytest.mark.parametrize("shares", ["{ a = 0.2 }", "{ a = 0.8, c = 0.3 }", "{ a = 0.2, b = 0.5, c = 0.4 }", "{ a = 0.2, d = 0.3 }"])
+    @pytest.mark.parametrize(
+        "shares", ["{ a = 0.2 }", "{ a = 0.8, c = 0.3 }", "{ a = 0.2, b = 0.5, c = 0.4 }", "{ a = 0.2, d = 0.3 }"]
+    )
     def test_shares_that_do_not_add_up(self, tmp_path, shares):
         with pytest.raises(leanloop.InputError, match=r"units\.part\.shares"):
             read(tmp_path, liquids(self.SPLITTER.format(shares)))

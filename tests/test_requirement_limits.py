@@ -73,7 +73,12 @@ class TestOneLimit:
         assert found["other_solutions"] == []
         same(states(column(tmp_path).solve()), states(result), rel=1e-13)
 
-    TIGHT = [(OUTLET, "at_most", outlet() * 0.2), (REMOVAL, "at_least", 0.99), (OUTLET, "at_least", outlet() * 2), (REMOVAL, "at_most", 0.5)]
+    TIGHT = [
+        (OUTLET, "at_most", outlet() * 0.2),
+        (REMOVAL, "at_least", 0.99),
+        (OUTLET, "at_least", outlet() * 2),
+        (REMOVAL, "at_most", 0.5),
+    ]
 
     @pytest.mark.parametrize(("quantity", "kind", "target"), TIGHT)
     def test_that_does_not_hold_is_equals(self, tmp_path, quantity, kind, target):
@@ -131,6 +136,12 @@ class TestCases:
             alone = sheet.solve({"feeds.sour.flows.sol": solute})
             assert found["free_value"][case] == pytest.approx(alone["requirements.limit.free_value"], rel=1e-10)
             assert outlet(found["free_value"][case], solute) <= self.LIMIT * 1.01 * (1 + 1e-8)
+
+    def test_the_target_as_text_with_the_unit_of_the_file(self, tmp_path):
+        sheet = column(tmp_path, asked("limit", "streams.cleaned.mg_per_Nm3.sol", "equals", "5000 mg/Nm3"))
+        for value in ("3000 mg/Nm3", 3000.0, "3 g/Nm3"):
+            result = sheet.solve({"requirements.limit.equals": value})
+            assert result["streams.cleaned.mg_per_Nm3.sol"] == pytest.approx(3000, rel=1e-8)
 
     @pytest.mark.parametrize("kind", ["equals", "at_most", "at_least"])
     def test_the_target_as_an_array(self, tmp_path, kind):
@@ -190,6 +201,24 @@ class TestSensitivity:
         oil, step = result["requirements.limit.free_value"], 1e-5
         expected = 2 * step / (outlet(oil + step) - outlet(oil - step)) if active else 0.0
         assert slope == pytest.approx(expected, rel=1e-6, abs=1e-12)
+
+
+class TestSensitivityOutOfReach:
+    """At a bound the freed input stays there, so that everything moves as without the requirement."""
+
+    @pytest.mark.parametrize("address", TestSensitivity.INPUTS)
+    @pytest.mark.parametrize("kind", ["equals", "at_most"])
+    def test_against_solves(self, tmp_path, address, kind):
+        sheet = column(tmp_path, asked("limit", OUTLET, kind, outlet() * 0.2, between=("1 mol/s", "9 mol/s")))
+        result = sheet.solve()
+        value = TestSensitivity.INPUTS[address]
+        near = sheet.solve({address: value * (1 + 1e-4 * np.array([-1, 1]))})
+        assert list(near.status) == ["out_of_reach"] * 2
+        assert near["requirements.limit.free_value"] == pytest.approx([9.0, 9.0], rel=1e-12)
+        low, high = near[OUTLET]
+        assert result.sensitivity(OUTLET, address) == pytest.approx((high - low) / (2e-4 * value), rel=1e-6)
+        assert result.sensitivity("requirements.limit.free_value", address) == pytest.approx(0.0, abs=1e-9)
+        assert result.sensitivity(OUTLET, f"requirements.limit.{kind}") == pytest.approx(0.0, abs=1e-9)
 
 
 CLEAN, LEAN = "streams.cleaned.ratio.sol", "streams.lean.loading.sol"
@@ -402,6 +431,14 @@ class TestEdges:
         assert list(result.status) == ["converged"] * 2
         assert result["requirements.limit.active"].tolist() == [False, True]
 
+    @pytest.mark.parametrize("kind", ["equals", "at_most"])
+    def test_where_the_file_value_has_no_answer(self, tmp_path, kind):
+        """Without solvent the column is dry, so that the limit does not hold there; with the freed solvent it is met."""
+        sheet = column(tmp_path, asked("limit", OUTLET, kind, outlet()))
+        result = sheet.solve({FREE: np.array([0.0, 2.0])})
+        assert list(result.status) == ["converged"] * 2
+        assert result["requirements.limit.free_value"] == pytest.approx([OIL, OIL], rel=1e-8)
+
     @pytest.mark.parametrize(("kind", "active"), [("equals", True), ("at_most", True), ("at_least", False)])
     def test_two_solutions(self, tmp_path, kind, active):
         """With the steam as it is, more oil cleans the gas better and then worse; the lesser oil is taken."""
@@ -446,8 +483,9 @@ class TestTemperatures:
     ])  # fmt: skip
 
     @pytest.mark.parametrize(
-        ("kind", "target", "cool"), [("equals", "50 degC", 2.0), ("at_most", "323.15 K", 2.0), ("at_most", "61 degC", 1.0), ("equals", "122 degF", 2.0)]
-    )  # fmt: skip
+        ("kind", "target", "cool"),
+        [("equals", "50 degC", 2.0), ("at_most", "323.15 K", 2.0), ("at_most", "61 degC", 1.0), ("equals", "122 degF", 2.0)],
+    )
     def test_of_a_mixture(self, tmp_path, kind, target, cool):
         more = asked("mild", "streams.mixed.temperature_K", kind, target, "feeds.cool.flows.oil", ("0.5 mol/s", "9 mol/s"))
         result = scenes.solve(tmp_path, self.TEXT + more)

@@ -16,6 +16,7 @@ from leanloop.errors import Fault, nearest
 from leanloop.quantities import DIMENSIONS, dimension_name, example, parse
 
 BARE = re.compile(r"[\w-]+")
+NAMES = "use up to 80 letters, digits, _ and -"
 WORDS = ("text", "inlet", "outlet", "component", "equilibrium", "choice")
 
 
@@ -276,7 +277,7 @@ def _read_named(raw: Any, entry: Entry, address: str, context: Context, values: 
     for key, item in raw.items():
         where = f"{address}.{shown_key(key)}"
         if known and key not in known:  # where none is known, that is a fault already
-            context.fault(where, f"unknown {entry.by} {shown_name(key)}", nearest(str(key), known))
+            context.fault(where, f"unknown {entry.by} {shown_name(key)}", nearest(str(key), filter(is_name, known)))
             continue
         number = read_number(item, entry, where, context)
         if number is not None:
@@ -318,7 +319,7 @@ def _read_word(raw: Any, entry: Entry, address: str, context: Context) -> Any:
         if not isinstance(item, str) or not item:
             context.fault(where, f"{_shown(item)} is no name", f"write a name in quotes{' or a list of them' if entry.many else ''}")
         elif entry.sort in ("inlet", "outlet") and not is_name(item):
-            context.fault(where, f"{_shown(item)} is no name of a stream", "use letters, digits, _ and -")
+            context.fault(where, f"{_shown(item)} is no name of a stream", NAMES)
         elif known and entry.sort != "text" and item not in known:
             context.fault(where, f"unknown {what} {shown_name(item)}", nearest(item, known))
         else:
@@ -346,8 +347,8 @@ def _hint(entry: Entry) -> str:
 
 
 def is_name(text: Any) -> bool:
-    """Tell whether a text can stand in an address: letters, digits, _ and - alone."""
-    return isinstance(text, str) and bool(text) and all(letter.isalnum() or letter in "_-" for letter in text)
+    """Tell whether a text can stand in an address: letters, digits, _ and - alone, and not too many."""
+    return isinstance(text, str) and 0 < len(text) <= 80 and all(letter.isalnum() or letter in "_-" for letter in text)
 
 
 def near(name: Any, known: Iterable[str]) -> str | None:

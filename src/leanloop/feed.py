@@ -148,7 +148,9 @@ class Feed:
                 context.fault(where, f"no vapour pressure of '{name}' is known", "give it a raoult model in an equilibrium table")
         numbers = self.values.numbers
         if self.vapour_pressure is not None and {"temperature", "pressure"} <= set(numbers):
-            if float(self.vapour_pressure(np.array(numbers["temperature"]))) >= numbers["pressure"]:
+            with np.errstate(all="ignore"):  # above its critical temperature it has no vapour pressure
+                pressure = float(self.vapour_pressure(np.array(numbers["temperature"])))
+            if not pressure < numbers["pressure"]:
                 context.fault(where, f"'{name}' boils at this temperature and pressure", "lower the temperature")
 
     def _read_parts(self, address: str, context: Context) -> None:

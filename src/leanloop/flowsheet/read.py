@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.components import Component, Components
-from leanloop.entries import Context, Entry, is_name, near, read_number, read_values, shown_key, shown_name
+from leanloop.entries import NAMES, Context, Entry, is_name, near, read_number, read_values, shown_key, shown_name
 from leanloop.errors import InputError, nearest
 from leanloop.feed import Feed
 from leanloop.flowsheet.graph import Structure, influences
@@ -51,7 +51,7 @@ def table(address: str, raw: Any, context: Context) -> Mapping[str, Any]:
         return {}
     for name in raw:
         if not is_name(name):
-            context.fault(f"{address}.{shown_key(name)}", f"{shown_name(name)} is no name", "use letters, digits, _ and -")
+            context.fault(f"{address}.{shown_key(name)}", f"{shown_name(name)} is no name", NAMES)
     return raw
 
 
