@@ -40,7 +40,7 @@ LAYERS = {
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "column", "units", "feed", "recycle",
     ),
     "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet"),
-    "textfile": (*TEXT, "components", "flowsheet"),
+    "textfile": (*TEXT, "components", "feed", "flowsheet"),
     "checks": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle",
     ),

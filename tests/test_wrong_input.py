@@ -575,9 +575,12 @@ def test_a_name_that_no_system_can_hold():
         leanloop.read("a\0b.toml")
 
 
-def test_a_value_nested_thousands_deep_is_shown_short(tmp_path):
-    found = faults_of(write(tmp_path, edited([("stages = 4", "stages" + ".a" * 3000 + " = 1")])))
-    expect(found, [("units.wash.stages", "whole number")])
+@pytest.mark.parametrize("old", ["stages = 4", 'form = "antoine"', 'method = "newton"'])
+def test_a_value_nested_without_end(tmp_path, old):
+    key = old.partition(" = ")[0]
+    expect(faults_of(write(tmp_path, edited([(old, key + ".a" * 3000 + " = 1")]))), [("file", "nested")])
+    (fault,) = faults_of(write(tmp_path, edited([(old, f"{key} = {HUGE}")])))
+    assert fault[0].endswith(key) and "inf" in fault[1]
 
 
 def test_points_in_a_file_that_is_wrong(tmp_path):

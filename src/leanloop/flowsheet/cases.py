@@ -10,6 +10,7 @@ import numpy as np
 
 from leanloop.entries import Context, read_number
 from leanloop.errors import InputError, nearest
+from leanloop.quantities import NORMAL_MOLES
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
@@ -76,11 +77,9 @@ def read_changes(
             context.fault(address, "is a list in the flowsheet", f"give a list of {len(sheet.numbers[address])} numbers")
         elif np.ndim(array) == 0:
             item = array.item() if isinstance(array, np.ndarray) else array
-            number = read_number(item, entry, address, context)
+            number = _read_item(sheet, address, item, address, context)
             if number is not None:
-                if number[1] != sheet.sorts[address] and number[1] != "integer":
-                    context.fault(address, f"is given as {sheet.sorts[address]} in the flowsheet", "keep to that dimension")
-                base[address] = number[0]
+                base[address] = number
         else:
             context.fault(address, f"has {array.ndim} axes", "give one value, or one for each case")
     if len(set(lengths.values())) > 1:
@@ -96,15 +95,34 @@ def read_changes(
     return cases, axis, base, arrays, _groups(apart, cases)
 
 
+def _read_item(sheet: Flowsheet, address: str, raw: Any, where: str, context: Context) -> float | None:
+    """Read one new value; a plain number is SI, of the dimension that the flowsheet gives the input in."""
+    entry, sort = sheet.entry(address), sheet.sorts[address]
+    plain = isinstance(raw, (int, float)) and sort != "integer"
+    found = read_number(raw, replace(entry, sort=sort) if plain else entry, where, context)
+    if found is None:
+        return None
+    value, own = found
+    if own == "molar mass" and sort == "number":  # mass for an amount of gas, such as mg/Nm3
+        head, name, *rest = address.split(".")
+        if head == "requirements":
+            return value * NORMAL_MOLES * 1e6
+        mass = sheet.components[rest[-1]].molar_mass if head == "feeds" else None
+        if mass is not None:
+            return value / mass
+        context.fault(where, f"needs the molar mass of '{rest[-1]}'", "give it, or write a mole fraction")
+        return None
+    if own not in (sort, "integer"):
+        context.fault(where, f"is given as {sort} in the flowsheet", "keep to that dimension")
+        return None
+    return value
+
+
 def _read_list(sheet: Flowsheet, address: str, row: np.ndarray, context: Context) -> list[float] | None:
     """Read a new list for an input that is one."""
-    sort, entry = sheet.sorts[address], sheet.entry(address)
-    read = [read_number(item, entry, f"{address}[{place}]", context) for place, item in enumerate(row.tolist())]
-    if None in read or any(item[1] != sort for item in read):
-        if None not in read:
-            context.fault(address, f"is given as {sort} in the flowsheet", "keep to that dimension")
+    values = [_read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in enumerate(row.tolist())]
+    if None in values:
         return None
-    values = [item[0] for item in read]
     faults = len(context.faults)
     if len(values) != len(sheet.numbers[address]):
         context.fault(address, f"has {len(values)} values", f"give {len(sheet.numbers[address])}, as the flowsheet does")
@@ -140,13 +158,11 @@ def _read_array(sheet: Flowsheet, array: np.ndarray, address: str, context: Cont
     if array.dtype.kind in "fiu":
         values = array.astype(float)
     else:
-        read = [read_number(item, entry, f"{address}[{place}]", context) for place, item in enumerate(array.ravel().tolist())]
-        if any(item is None for item in read):
+        items = enumerate(array.ravel().tolist())
+        read = [_read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in items]
+        if None in read:
             return None
-        if any(item[1] not in (sort, "integer") for item in read):
-            context.fault(address, f"is given as {sort} in the flowsheet", "keep to that dimension")
-            return None
-        values = np.array([item[0] for item in read], dtype=float).reshape(array.shape)
+        values = np.array(read, dtype=float).reshape(array.shape)
     if listed:
         rows = [_read_list(sheet, address, row, context) for row in values]
         return None if None in rows else rows

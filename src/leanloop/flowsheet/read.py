@@ -200,7 +200,7 @@ def loop(raw: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
         except BrokenPlugin as error:
             context.fault("loop.method", str(error), "mend or remove the package that lists it")
     elif isinstance(name, str):
-        context.fault("loop.method", f"unknown method '{name}'", nearest(name, METHODS.names()))
+        context.fault("loop.method", f"unknown method {shown_name(name)}", nearest(name, METHODS.names()))
         options = tuple(item for other in METHODS for item in METHODS.load(other).entries)
     faults = len(context.faults)
     if kind is not None and isinstance(raw, Mapping):
@@ -223,7 +223,11 @@ def loop(raw: Any, context: Context) -> tuple[Settings | None, tuple[str, ...]]:
         return None, ()
     numbers = values.numbers
     settings = Settings(method, numbers.get("tolerance", TOLERANCE), numbers.get("passes", method.most_passes))
-    return settings, values.words.get("tears", ())
+    tears = values.words.get("tears", ())
+    for place, tear in enumerate(tears):
+        if not is_name(tear):
+            context.fault(f"loop.tears[{place}]", f"{shown_name(tear)} is no name of a stream", NAMES)
+    return settings, tuple(tear for tear in tears if is_name(tear))
 
 
 def ways_out(structure: Structure, present: Mapping[str, np.ndarray], context: Context) -> None:
@@ -375,7 +379,7 @@ def _check_address(address: str) -> None:
     AddressError
     """
     parts = address.split(".")
-    if len(parts) < 2 or not all(parts):
+    if len(parts) < 2 or not all(map(is_name, parts)):
         raise AddressError(f"{shown_name(address)} is no quantity", "write streams.NAME.... or units.NAME....")
     most = 4 if parts[2:3] and parts[2] in BY_COMPONENT else 3
     if parts[0] == "streams" and len(parts) > most and parts[2] in (*BY_COMPONENT, *WHOLE):

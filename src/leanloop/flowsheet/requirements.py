@@ -92,7 +92,8 @@ class RegionSolver:
         for number, item in enumerate(idle):
             target = self.run.inputs.value(item.target)[cases]
             over = probe.q[:, number] - target if item.kind == "at_most" else target - probe.q[:, number]
-            new = (over > 1e-9 * np.abs(target)) & ~self.found[item.name].active[cases] & probe.good
+            # where the given input has no answer at all, the limit does not hold there either
+            new = ((over > 1e-9 * np.abs(target)) | ~probe.good) & ~self.found[item.name].active[cases]
             self.found[item.name].active[cases[new]] = True
             more |= new
         return cases[more]

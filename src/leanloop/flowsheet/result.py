@@ -129,7 +129,7 @@ class Result:
         if status is Status.out_of_reach:
             missed = [
                 f"{name}: {found.reason[row] or 'not reached'}, nearest value {found.value[row]:.6g} "
-                f"at {self.sheet.requirements[name].free} = {found.free_value[row]:.6g}"
+                f"at {self.sheet.requirements[name].free} = {found.free_value[row]:.6g} in SI units"
                 + (f"; {REASONS[found.reason[row]]}" if found.reason[row] else "")
                 for name, found in part.found.items()
                 if not found.reached[row]

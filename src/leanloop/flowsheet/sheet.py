@@ -362,7 +362,8 @@ class Flowsheet:
         """Let freed inputs follow, so that active requirements keep their targets."""
         slopes = np.stack([derivatives(run, item.quantity) for item in items])  # (P, E, M)
         places = [run.extra.index(item.free) for item in items]
-        active = np.stack([part.found[item.name].active for item in items], axis=1)  # (M, P)
+        # a requirement that was not reached does not hold: its freed input stays where it is
+        active = np.stack([part.found[item.name].active & part.found[item.name].reached for item in items], axis=1)  # (M, P)
         inner = np.moveaxis(slopes[:, places], 2, 0)  # (M, P, P)
         matrix = np.where(active[:, :, None] & active[:, None, :], inner, np.eye(len(items)))
         right = np.moveaxis(slopes, 2, 0).copy()  # (M, P, E)

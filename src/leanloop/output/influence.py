@@ -13,6 +13,9 @@ if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
 
 
+ROUNDING = 1e-8  # per cent, and of the largest: less than that is no influence
+
+
 @dataclass(frozen=True)
 class Influence:
     """Effect of one input on one quantity.
@@ -84,4 +87,5 @@ def influences(result: Result) -> list[Influence]:
             change = slopes[quantity, number] * (1.0 if warm else 0.01 * float(inputs.value(number)[0]))
             if base and np.isfinite(change) and change != 0.0:
                 found.append(Influence(quantity, number, float(100.0 * change / base), "K" if warm else "%"))
-    return sorted(found, key=lambda item: -abs(item.per_cent))
+    least = ROUNDING * max((abs(item.per_cent) for item in found), default=0.0)
+    return sorted((item for item in found if abs(item.per_cent) > max(least, ROUNDING)), key=lambda item: -abs(item.per_cent))

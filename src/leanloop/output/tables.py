@@ -96,7 +96,10 @@ def put(target: Path, text: str) -> None:
     if target.exists() and not target.is_file():  # a pipe or a device; a directory fails here
         target.write_text(text, encoding="utf-8")
         return
-    handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
+    try:
+        handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
+    except OSError as error:
+        raise OSError(error.errno, error.strerror, str(target)) from None
     try:
         with os.fdopen(handle, "w", encoding="utf-8") as stream:
             stream.write(text)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import tomllib
 from collections.abc import Iterable
 from pathlib import Path
@@ -9,9 +10,15 @@ from typing import Any
 
 from leanloop.entries import Context, one_line, shown_key, shown_name
 from leanloop.errors import Fault, InputError, nearest
+from leanloop.feed import SUM_TOLERANCE
 from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
+from leanloop.quantities import parse
 
+SCALED = ("fractions", "mass_fractions")  # changing one of them scales the others
 ELSEWHERE = ("heat_data", "limits", "studies", "sizing")  # for other questions than a solve
+
+DEEPEST = 50  # tables in one another
+TOO_DEEP = Fault("file", "is nested too deep", "write plain tables and lists")
 
 
 def load(path: str | Path) -> dict[str, Any]:
@@ -41,7 +48,7 @@ def load(path: str | Path) -> dict[str, Any]:
     except tomllib.TOMLDecodeError as error:
         raise InputError([Fault("file", f"is no TOML: {one_line(str(error))}", "mend the line named")], name) from None
     except RecursionError:
-        raise InputError([Fault("file", "is nested too deep", "write plain tables and lists")], name) from None
+        raise InputError([TOO_DEEP], name) from None
     except ValueError:  # a whole number of thousands of digits, or a file name that no system can hold
         raise InputError([Fault("file", "cannot be read as it stands", "look for a number of thousands of digits")], name) from None
 
@@ -75,6 +82,7 @@ def change(data: dict[str, Any], settings: Iterable[str], source: str = "") -> d
 def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
     """Apply the settings that can be applied, and give the faults of the others."""
     context = Context()
+    moved: dict[tuple[str, str], set[str]] = {}
     for setting in settings:
         address, sign, text = setting.partition("=")
         address = address.strip()
@@ -109,7 +117,32 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
             table = deeper
         else:
             table[last] = value
+            if len(heads) == 3 and heads[0] == "feeds" and heads[2] in SCALED:
+                moved.setdefault((heads[1], heads[2]), set()).add(last)
+    for (feed, form), names in moved.items():
+        _scale_others(data["feeds"][feed][form], names)
     return context.faults
+
+
+def _scale_others(parts: dict[str, Any], moved: set[str]) -> None:
+    """Scale the fractions that were not set anew, where none of them is the rest; faulty ones are told when read."""
+    if "rest" in parts.values():
+        return
+    numbers: dict[str, float] = {}
+    for name, raw in parts.items():
+        try:
+            found = parse(raw) if isinstance(raw, str) else None
+        except ValueError:
+            return
+        if found is not None and any(found.dimension):
+            return  # mass per normal volume: the molar mass is not known here
+        numbers[name] = found.value if found is not None else raw
+        if isinstance(numbers[name], bool) or not isinstance(numbers[name], (int, float)):
+            return
+    left = 1.0 - sum(numbers[name] for name in moved)
+    now = sum(value for name, value in numbers.items() if name not in moved)
+    if now > 0 and left >= 0 and abs(sum(numbers.values()) - 1.0) > SUM_TOLERANCE:
+        parts.update({name: value * left / now for name, value in numbers.items() if name not in moved})
 
 
 def _value(text: str) -> Any:
@@ -119,6 +152,23 @@ def _value(text: str) -> Any:
     except (ValueError, RecursionError):
         return text
     return found["value"] if len(found) == 1 else text
+
+
+def _tidy(data: dict[str, Any], source: str) -> None:
+    """Make whole numbers beyond any float infinite, and refuse tables that are nested without end."""
+    level: list[Any] = [data]
+    for _ in range(DEEPEST):
+        inner = []
+        for table in level:
+            for key, item in table.items() if isinstance(table, dict) else enumerate(table):
+                if isinstance(item, (dict, list)):
+                    inner.append(item)
+                elif isinstance(item, int) and item.bit_length() > 1024:
+                    table[key] = math.inf if item > 0 else -math.inf
+        if not inner:
+            return
+        level = inner
+    raise InputError([TOO_DEEP], source)
 
 
 def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
@@ -146,6 +196,7 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
         if key not in (*SECTIONS, *ELSEWHERE):
             context.fault(shown_key(key), f"unknown section {shown_name(key)}", nearest(key, (*SECTIONS, *ELSEWHERE)))
     faults = [*context.faults, *_change(data, settings)]
+    _tidy(data, name)
     try:
         sheet = Flowsheet(
             data.get("components"),

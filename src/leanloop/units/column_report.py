@@ -61,13 +61,20 @@ class ColumnReport(Unit):
         def by_name(values: np.ndarray) -> dict[str, np.ndarray]:
             return {name: values[..., index] for name, index in place.items()}
 
+        groups = {name: self.around.components.places(name) for name in self.around.components.groups}
+
         def by_component(values: np.ndarray) -> dict[str, np.ndarray]:
-            return {name: values[..., index] for index, name in enumerate(names)}
+            own = {name: values[..., index] for index, name in enumerate(names)}
+            return own | {name: values[..., members].sum(axis=-1) for name, members in groups.items()}
 
         moving = [index for index, name in enumerate(names) if name in place]
         return {
             "results": {
-                "removal": {names[index]: removal[..., index] for index in moving},
+                "removal": {names[index]: removal[..., index] for index in moving}
+                | {
+                    name: 1.0 - divide(outlet.flows[..., members].sum(axis=-1), inlet.flows[..., members].sum(axis=-1))
+                    for name, members in groups.items()
+                },
                 "absorption_factor": by_name(ends),
                 "stripping_factor": by_name(divide(np.ones_like(ends), ends)),
                 "solvent_to_gas": divide(

@@ -119,7 +119,9 @@ class Makeup(Unit):
         added = self.added(inlets, outlets, numbers)
         components = self.around.components
         places = np.flatnonzero(self.adds(components))
-        return {"results": {"added_mol_s": {components.names[place]: added[..., place] for place in places}}}
+        own = {components.names[place]: added[..., place] for place in places}
+        groups = {name: added[..., components.places(name)].sum(axis=-1) for name in components.groups}
+        return {"results": {"added_mol_s": own | groups}}
 
     def cautions(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping) -> list[str]:
         """Say where a held component comes in excess, and where a temperature is a mean."""
