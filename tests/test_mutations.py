@@ -153,19 +153,21 @@ b = { model = "polynomial", K = [2.0, 0.01], temperature = "degC", pressure = "1
 BASES = (LOOP, LOOP, OPEN, LOOP.replace('"newton"', '"substitution"').replace("passes = 30", "passes = 4"), LOOP + REQUIREMENT)
 
 VALUES = (
-    0, 1, -1, 7, 1e-300, 1e300, 5e-324, 1.7976931348623157e308, math.inf, -math.inf, math.nan, -0.0, 0.5, 10**30, 2**63, True, False,
-    "", " ", "rest", "gas", "liquid", "air", "oil", "tol", "a", "rich", "vent", "cool", "cold", "warm", "newton", "wegstein", "absorber",
-    "1 mol/s", "0 mol/s", "-1 mol/s", "1e300 mol/s", "1e-300 mol/s", "1e999 kg", "0 K", "-300 degC", "26 degX", "1e8 degC", "0 bar",
-    "1e-30 bar", "1e30 bar", "3 m3/h", "10 %", "150 %", "3 mg/Nm3", "1 kg/s", "1 t/d", "5", "1,5 bar", "1 bar/", "(1 bar", "1 ((((((((((bar",
-    "\u00e4\u00f6\u00fc", "\u6c34", "1 \u00b0C", "26\u00a0degC", "\u0661\u0662 bar", "\u202e26 degC", "x" * 3000, "1 " + "m " * 3000, "1" + " " * 20000 + "x",
-    "9" * 400 + " bar", "a.b.c", "streams.clean.fraction.tol", "units.top.hold.oil", "\x7f", "a\tb", "\\", '"', "'", "nan", "inf", "1e5",
-    [], [0], [1, 2], [0, 0.5, 1], ["a"], ["rich", "vent"], [[1]], [None], {}, {"a": 1}, {"air": "rest"}, {"model": "constant", "K": 0.3},
-    {"stays_in": "gas"}, {"tol": 0.5, "air": 0.5}, {"oil": "1 mol/s"}, {"": ""}, "@date", "@time", "@huge", "@deep",
+    0, 1, -1, 7, 1e-300, 1e300, 5e-324, 1.7976931348623157e308, math.inf, -math.inf, math.nan, -0.0, 0.5, 10**30, 2**63,
+    True, False, "", " ", "rest", "gas", "liquid", "air", "oil", "tol", "a", "rich", "vent", "cool", "cold", "warm",
+    "newton", "wegstein", "absorber", "1 mol/s", "0 mol/s", "-1 mol/s", "1e300 mol/s", "1e-300 mol/s", "1e999 kg",
+    "0 K", "-300 degC", "26 degX", "1e8 degC", "0 bar", "1e-30 bar", "1e30 bar", "3 m3/h", "10 %", "150 %", "3 mg/Nm3",
+    "1 kg/s", "1 t/d", "5", "1,5 bar", "1 bar/", "(1 bar", "1 ((((((((((bar", "\u00e4\u00f6\u00fc", "\u6c34",
+    "1 \u00b0C", "26\u00a0degC", "\u0661\u0662 bar", "\u202e26 degC", "x" * 3000, "1 " + "m " * 3000,
+    "1" + " " * 20000 + "x", "9" * 400 + " bar", "a.b.c", "streams.clean.fraction.tol", "units.top.hold.oil", "\x7f",
+    "a\tb", "\\", '"', "'", "nan", "inf", "1e5", [], [0], [1, 2], [0, 0.5, 1], ["a"], ["rich", "vent"], [[1]], [None],
+    {}, {"a": 1}, {"air": "rest"}, {"model": "constant", "K": 0.3}, {"stays_in": "gas"}, {"tol": 0.5, "air": 0.5},
+    {"oil": "1 mol/s"}, {"": ""}, "@date", "@time", "@huge", "@deep",
 )  # fmt: skip
 NAMES = (
-    "name", "self", "kind", "raw", "", " ", "a.b", "\u00e9t\u00e9", "x\ny", "a: b; c", "takes", "gives", "stages", "flow", "flows",
-    "fractions", "model", "K", "stays_in", "equals", "at_least", "between", "free", "oil", "tol", "rest", "vent", "temperature", "pressure",
-    "efficiency", "units", "feeds", "__class__", "_", "-", "0", "n" * 500,
+    "name", "self", "kind", "raw", "", " ", "a.b", "\u00e9t\u00e9", "x\ny", "a: b; c", "takes", "gives", "stages",
+    "flow", "flows", "fractions", "model", "K", "stays_in", "equals", "at_least", "between", "free", "oil", "tol",
+    "rest", "vent", "temperature", "pressure", "efficiency", "units", "feeds", "__class__", "_", "-", "0", "n" * 500,
 )  # fmt: skip
 
 
@@ -255,14 +257,20 @@ def shake(data, rng):
     if sort == "number":
         path = rng.choice(numbers)
         table = holder(data, path)
-        table[path[-1]] = scaled(table[path[-1]], rng.choice((0, 1e-30, 1e-9, 1e-3, 0.1, 0.5, 0.9, 1.1, 2, 5, 30, 1e3, 1e9, 1e30)))
+        table[path[-1]] = scaled(
+            table[path[-1]], rng.choice((0, 1e-30, 1e-9, 1e-3, 0.1, 0.5, 0.9, 1.1, 2, 5, 30, 1e3, 1e9, 1e30))
+        )
     elif sort == "method" and "loop" in data:
         methods = ("newton", "substitution", "wegstein", "anderson", "broyden", "dominant_eigenvalue")
         data["loop"] = {"method": rng.choice(methods), "passes": rng.choice((1, 2, 5, 30))}
     elif sort == "model":
         table = rng.choice(list(data["equilibrium"].values()))
         basis = rng.choice(("fraction", "ratio"))
-        table[rng.choice(list(table))] = {"model": "constant", "K": rng.choice((0, 1e-12, 0.01, 0.3, 1, 3, 1e12)), "basis": basis}
+        table[rng.choice(list(table))] = {
+            "model": "constant",
+            "K": rng.choice((0, 1e-12, 0.01, 0.3, 1, 3, 1e12)),
+            "basis": basis,
+        }
     elif sort == "order":
         for table in (data, *(item for item in data.values() if isinstance(item, dict))):
             items = list(table.items())
@@ -290,11 +298,13 @@ def noisy(text, rng):
         if sort == "set":
             raw[place] = rng.randrange(256)
         elif sort == "ascii":
-            raw[place] = rng.choice(b' \t\n"\'=[]{}.,#-+0123456789eabz')
+            raw[place] = rng.choice(b" \t\n\"'=[]{}.,#-+0123456789eabz")
         elif sort == "drop":
             del raw[place : place + rng.choice((1, 1, 10))]
         elif sort == "insert":
-            raw[place:place] = rng.choice((b"\x00", b"\xff", b"\xef\xbb\xbf", b"\r", b"\xe2\x80\xa8", b"[", b'"""', b"'''", b"= ", b"\\u"))
+            raw[place:place] = rng.choice(
+                (b"\x00", b"\xff", b"\xef\xbb\xbf", b"\r", b"\xe2\x80\xa8", b"[", b'"""', b"'''", b"= ", b"\\u")
+            )
         elif sort == "cut" and rng.random() < 0.2:
             del raw[place:]
         elif sort == "double":

@@ -176,32 +176,49 @@ FAULTS = {
     "unknown section": ([instead("[groups]", "[group]")], [("group", "groups")]),
     "unknown entry before the sections": ([head("titel = 1")], [("titel", "title")]),
     "title of another type": ([instead('title = "Every', 'title = 5 # "Every')], [("title", "no text")]),
-    "list for the loop": ([instead(RIGHT[LOOP_FROM:RIGHT.index("[basis]")], ""), head("loop = [1]")], [("loop", "no table")]),
+    "list for the loop": ([instead(RIGHT[LOOP_FROM : RIGHT.index("[basis]")], ""), head("loop = [1]")], [("loop", "no table")]),
     "number for the requirements": (
-        [instead(RIGHT[UNITS_TO:PARTS_FROM], ""), head("requirements = 3")], [("requirements", "no table")]),
-    "table for a list of groups": ([instead('organics = ["toluene", "ethanol"]', "organics = { a = 1 }")],
-                                   [("groups.organics", "no name")]),
+        [instead(RIGHT[UNITS_TO:PARTS_FROM], ""), head("requirements = 3")],
+        [("requirements", "no table")],
+    ),
+    "table for a list of groups": (
+        [instead('organics = ["toluene", "ethanol"]', "organics = { a = 1 }")],
+        [("groups.organics", "no name")],
+    ),
     "list for the basis": ([instead('[basis]\ngas = ["air", "steam"]', ""), head('basis = ["air"]')], [("basis", "no table")]),
-    "date for the groups": ([instead('[groups]\norganics = ["toluene", "ethanol"]', ""), head("groups = 2024-02-30T00:00:00".replace("02-30", "02-28"))],
-                            [("groups", "no table")]),
-    "no components": ([instead(RIGHT[PARTS_FROM:TABLES_FROM], ""), instead('[basis]\ngas = ["air", "steam"]', "")],
-                      [("components", "there is no component")]),
-    "number for the components": ([instead(RIGHT[PARTS_FROM:TABLES_FROM], ""), head("components = 6")],
-                                  [("components", "no table")]),
+    "date for the groups": (
+        [instead('[groups]\norganics = ["toluene", "ethanol"]', ""), head("groups = 2024-02-28T00:00:00")],
+        [("groups", "no table")],
+    ),
+    "no components": (
+        [instead(RIGHT[PARTS_FROM:TABLES_FROM], ""), instead('[basis]\ngas = ["air", "steam"]', "")],
+        [("components", "there is no component")],
+    ),
+    "number for the components": (
+        [instead(RIGHT[PARTS_FROM:TABLES_FROM], ""), head("components = 6")],
+        [("components", "no table")],
+    ),
     "no units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), UNTORN], [("units", "there is no unit")]),
     "empty list for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = []"), UNTORN], [("units", "")]),
-    "list of numbers for the units": ([instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = [1, 2]"), UNTORN],
-                                      [("units", "no table")]),
+    "list of numbers for the units": (
+        [instead(RIGHT[UNITS_FROM:UNITS_TO], ""), head("units = [1, 2]"), UNTORN],
+        [("units", "no table")],
+    ),
     "list of tables for a unit": ([instead("[units.trim]", "[[units.trim]]"), UNTORN], [("units.trim", "no table")]),
     "list of tables for a feed": ([instead("[feeds.steam]", "[[feeds.steam]]")], [("feeds.steam", "no table")]),
-    "no equilibrium table": ([instead(RIGHT[TABLES_FROM:LOOP_FROM], "")],
-                             [("units.wash.equilibrium", "[equilibrium.NAME]"), ("units.strip.equilibrium", "[equilibrium.NAME]")]),
-    "flag for the equilibrium": ([instead(RIGHT[TABLES_FROM:LOOP_FROM], ""), head("equilibrium = true")],
-                                 [("equilibrium", "no table")]),
+    "no equilibrium table": (
+        [instead(RIGHT[TABLES_FROM:LOOP_FROM], "")],
+        [("units.wash.equilibrium", "[equilibrium.NAME]"), ("units.strip.equilibrium", "[equilibrium.NAME]")],
+    ),
+    "flag for the equilibrium": (
+        [instead(RIGHT[TABLES_FROM:LOOP_FROM], ""), head("equilibrium = true")],
+        [("equilibrium", "no table")],
+    ),
     "name that no address can hold": ([instead("[units.trim]", '[units."tr im"]')], [('units."tr im"', "letters, digits")]),
-    "table with such a name": ([instead("[equilibrium.cold]", '[equilibrium."c:d"]'),
-                                instead('equilibrium = "cold"', 'equilibrium = "c:d"')], [('equilibrium."c:d"', "letters")]),
-
+    "table with such a name": (
+        [instead("[equilibrium.cold]", '[equilibrium."c:d"]'), instead('equilibrium = "cold"', 'equilibrium = "c:d"')],
+        [('equilibrium."c:d"', "letters")],
+    ),
     # feeds: phase, temperature, pressure, flow
     "missing phase": ([vent('phase = "gas"\n', "")], [("feeds.vent.phase", "missing")]),
     "misspelt phase": ([vent('"gas"', '"gsa"')], [("feeds.vent.phase", "'gas'")]),
@@ -230,19 +247,29 @@ FAULTS = {
     "entry called name": ([vent("flow", 'name = "x"\nflow')], [("feeds.vent.name", "unknown entry")]),
     "entry called self": ([vent("flow", 'self = "x"\nflow')], [("feeds.vent.self", "unknown entry")]),
     "entry that is no plain name": ([vent("flow", '"a: b;\\n" = 1\nflow')], [('feeds.vent."a: b;\\n"', "unknown entry")]),
-
     # feeds: composition
     "no composition": ([instead(VENT_PARTS, "")], [("feeds.vent.fractions", "no form")]),
-    "two forms of composition": ([instead(VENT_PARTS, VENT_PARTS + "\nratios = { air = 1 }")],
-                                 [("feeds.vent.ratios", "fractions and ratios")]),
-    "flow beside flows": ([instead('flows = { steam', 'flow = "1 mol/s"\nflows = { steam')], [("feeds.steam.flow", "keep one")]),
+    "two forms of composition": (
+        [instead(VENT_PARTS, VENT_PARTS + "\nratios = { air = 1 }")],
+        [("feeds.vent.ratios", "fractions and ratios")],
+    ),
+    "flow beside flows": (
+        [instead("flows = { steam", 'flow = "1 mol/s"\nflows = { steam')],
+        [("feeds.steam.flow", "keep one")],
+    ),
     "misspelt form": ([parts("{ air = 1 }", "fractoins")], [("feeds.vent.fractoins", "'fractions'")]),
     "list for fractions": ([parts("[0.5, 0.5]")], [("feeds.vent.fractions", "no table")]),
     "no parts": ([parts("{}")], [("feeds.vent.fractions", "no table")]),
     "no flows": ([instead('{ steam = "1.0 mol/s" }', "{}")], [("feeds.steam.flows", "nothing")]),
     "unknown component in flows": ([instead('{ steam = "1.0', '{ steem = "1.0')], [("feeds.steam.flows.steem", "'steam'")]),
-    "negative part of a flow": ([instead('steam = "1.0 mol/s"', 'steam = "-1 mol/s"')], [("feeds.steam.flows.steam", "at least 0")]),
-    "unknown component in fractions": ([parts('{ air = "rest", tolune = 0.02 }')], [("feeds.vent.fractions.tolune", "'toluene'")]),
+    "negative part of a flow": (
+        [instead('steam = "1.0 mol/s"', 'steam = "-1 mol/s"')],
+        [("feeds.steam.flows.steam", "at least 0")],
+    ),
+    "unknown component in fractions": (
+        [parts('{ air = "rest", tolune = 0.02 }')],
+        [("feeds.vent.fractions.tolune", "'toluene'")],
+    ),
     "fractions beyond one": ([parts("{ air = 0.9, toluene = 0.2 }")], [("feeds.vent.fractions", "sum to 1.1")]),
     "fractions short of one": ([parts("{ air = 0.9, toluene = 0.09 }")], [("feeds.vent.fractions", "sum to 0.99")]),
     "no room for the rest": ([parts('{ air = "rest", toluene = 1.2 }')], [("feeds.vent.fractions", "no rest")]),
@@ -250,31 +277,61 @@ FAULTS = {
     "two rests": ([parts('{ air = "rest", toluene = "rest" }')], [("feeds.vent.fractions.toluene", "rest already")]),
     "negative fraction": ([parts('{ air = "rest", toluene = -0.1 }')], [("feeds.vent.fractions.toluene", "at least 0")]),
     "negative ppm": ([parts('{ air = "rest", toluene = "-3 ppm" }')], [("feeds.vent.fractions.toluene", "at least 0")]),
-    "molar mass for a fraction": ([parts('{ air = "rest", toluene = "92 g/mol" }')], [("feeds.vent.fractions.toluene", "mg/Nm3")]),
-    "pressure for a fraction": ([parts('{ air = "rest", toluene = "2 mbar" }')], [("feeds.vent.fractions.toluene", "a pressure")]),
-    "mg/Nm3 without molar mass": ([parts('{ air = "rest", toluene = "50 mg/Nm3" }'),
-                                   instead('toluene = { molar_mass = "92.14 g/mol" }', "toluene = {}")],
-                                  [("components.toluene.molar_mass", "missing")]),
-    "mass fractions without molar mass": ([parts('{ air = "rest", toluene = 0.1 }', "mass_fractions"),
-                                           instead('air = { molar_mass = "28.96 g/mol", stays', "air = { stays")],
-                                          [("components.air.molar_mass", "mass")]),
-    "mass flow without molar mass": ([vent("10 mol/s", "10 kg/s"), instead('ethanol = { molar_mass = "46.07 g/mol" }', "ethanol = {}")],
-                                     [("components.ethanol.molar_mass", "mass")]),
+    "molar mass for a fraction": (
+        [parts('{ air = "rest", toluene = "92 g/mol" }')],
+        [("feeds.vent.fractions.toluene", "mg/Nm3")],
+    ),
+    "pressure for a fraction": (
+        [parts('{ air = "rest", toluene = "2 mbar" }')],
+        [("feeds.vent.fractions.toluene", "a pressure")],
+    ),
+    "mg/Nm3 without molar mass": (
+        [parts('{ air = "rest", toluene = "50 mg/Nm3" }'), instead('toluene = { molar_mass = "92.14 g/mol" }', "toluene = {}")],
+        [("components.toluene.molar_mass", "missing")],
+    ),
+    "mass fractions without molar mass": (
+        [
+            parts('{ air = "rest", toluene = 0.1 }', "mass_fractions"),
+            instead('air = { molar_mass = "28.96 g/mol", stays', "air = { stays"),
+        ],
+        [("components.air.molar_mass", "mass")],
+    ),
+    "mass flow without molar mass": (
+        [vent("10 mol/s", "10 kg/s"), instead('ethanol = { molar_mass = "46.07 g/mol" }', "ethanol = {}")],
+        [("components.ethanol.molar_mass", "mass")],
+    ),
     "mg/Nm3 in a liquid": ([instead("tar = 0.5", 'tar = "5 mg/Nm3"')], [("feeds.dirt.ratios.tar", "gas")]),
     "loadings of a gas": ([parts("{ oil = 1 }", "loadings")], [("feeds.vent.loadings", "liquids")]),
     "ratios without their basis": ([instead(DIRT_PARTS, "ratios = { toluene = 0.5 }")], [("feeds.dirt.ratios", "sum to 0")]),
-    "rest that is not of the basis": ([instead(DIRT_PARTS, 'ratios = { oil = 0.5, toluene = "rest" }')],
-                                      [("feeds.dirt.ratios.toluene", "rest")]),
-    "saturated with an unknown component": ([vent("flow", 'saturated_with = "toluen"\nflow')], [("feeds.vent.saturated_with", "'toluene'")]),
-    "saturated with what has no vapour pressure": ([vent("flow", 'saturated_with = "oil"\nflow')],
-                                                   [("feeds.vent.saturated_with", "raoult")]),
-    "saturated with what boils": ([instead('temperature = "26 degC"\npressure = "1.07 bar"',
-                                           'saturated_with = "steam"\ntemperature = "126 degC"\npressure = "1.07 bar"')],
-                                  [("feeds.vent.saturated_with", "boils")]),
-    "saturated liquid": ([instead('flow = "1 mol/h"', 'saturated_with = "steam"\nflow = "1 mol/h"')],
-                         [("feeds.dirt.saturated_with", "for a gas")]),
-    "saturated with what is given": ([vent("flow", 'saturated_with = "toluene"\nflow')], [("feeds.vent.saturated_with", "as well")]),
-
+    "rest that is not of the basis": (
+        [instead(DIRT_PARTS, 'ratios = { oil = 0.5, toluene = "rest" }')],
+        [("feeds.dirt.ratios.toluene", "rest")],
+    ),
+    "saturated with an unknown component": (
+        [vent("flow", 'saturated_with = "toluen"\nflow')],
+        [("feeds.vent.saturated_with", "'toluene'")],
+    ),
+    "saturated with what has no vapour pressure": (
+        [vent("flow", 'saturated_with = "oil"\nflow')],
+        [("feeds.vent.saturated_with", "raoult")],
+    ),
+    "saturated with what boils": (
+        [
+            instead(
+                'temperature = "26 degC"\npressure = "1.07 bar"',
+                'saturated_with = "steam"\ntemperature = "126 degC"\npressure = "1.07 bar"',
+            )
+        ],
+        [("feeds.vent.saturated_with", "boils")],
+    ),
+    "saturated liquid": (
+        [instead('flow = "1 mol/h"', 'saturated_with = "steam"\nflow = "1 mol/h"')],
+        [("feeds.dirt.saturated_with", "for a gas")],
+    ),
+    "saturated with what is given": (
+        [vent("flow", 'saturated_with = "toluene"\nflow')],
+        [("feeds.vent.saturated_with", "as well")],
+    ),
     # units and their streams
     "missing kind": ([instead('kind = "mixer"\n', "")], [("units.join.kind", "absorber")]),
     "misspelt entry kind": ([instead('kind = "mixer"', 'knid = "mixer"')], [("units.join.knid", "'kind'")]),
@@ -292,17 +349,32 @@ FAULTS = {
     "empty list of inlets": ([instead('takes = ["rich", "dirt"]', "takes = []")], [("units.join.takes", "empty")]),
     "inlet named twice": ([instead('["rich", "dirt"]', '["rich", "dirt", "rich"]')], [("units.join.takes", "twice")]),
     "empty name of a stream": ([instead('takes = "dirty"', 'takes = ""')], [("units.preheat.takes", "no name")]),
-    "stream name with a dot": ([instead('liquid_out = "lean"', 'liquid_out = "le.an"'), instead('takes = "lean"', 'takes = "le.an"')],
-                               [("units.strip.liquid_out", "letters"), ("units.divide.takes", "letters")]),
+    "stream name with a dot": (
+        [instead('liquid_out = "lean"', 'liquid_out = "le.an"'), instead('takes = "lean"', 'takes = "le.an"')],
+        [("units.strip.liquid_out", "letters"), ("units.divide.takes", "letters")],
+    ),
     "dangling stream": ([instead('takes = "dirty"', 'takes = "dirtyy"')], [("units.preheat.takes", "'dirty'")]),
-    "stream given by two units": ([instead('gas_out = "overhead"', 'gas_out = "cleaned"')],
-                                  [("units.strip.gas_out", "units.wash.gas_out")]),
-    "stream named like a feed": ([instead('gas_out = "overhead"', 'gas_out = "vent"')], [("units.strip.gas_out", "feeds.vent")]),
+    "stream given by two units": (
+        [instead('gas_out = "overhead"', 'gas_out = "cleaned"')],
+        [("units.strip.gas_out", "units.wash.gas_out")],
+    ),
+    "stream named like a feed": (
+        [instead('gas_out = "overhead"', 'gas_out = "vent"')],
+        [("units.strip.gas_out", "feeds.vent")],
+    ),
     "stream taken by two units": ([instead('takes = "dirty"', 'takes = "rich"')], [("units.preheat.takes", "splitter")]),
     "feed that nobody takes": ([instead('["rich", "dirt"]', '["rich"]')], [("feeds.dirt", "no unit takes")]),
-    "gas into a liquid port": ([instead('liquid_in = "cool_lean"\ngas_out', 'liquid_in = "vent"\ngas_out'), instead('gas_in = "vent"', 'gas_in = "cool_lean"')],
-                               [("units.wash.liquid_in", "is gas"), ("units.wash.gas_in", "is liquid")]),
-    "mixing gas and liquid": ([instead('["rich", "dirt"]', '["rich", "dirt", "overhead"]')], [("units.join.takes", "gas and liquid")]),
+    "gas into a liquid port": (
+        [
+            instead('liquid_in = "cool_lean"\ngas_out', 'liquid_in = "vent"\ngas_out'),
+            instead('gas_in = "vent"', 'gas_in = "cool_lean"'),
+        ],
+        [("units.wash.liquid_in", "is gas"), ("units.wash.gas_in", "is liquid")],
+    ),
+    "mixing gas and liquid": (
+        [instead('["rich", "dirt"]', '["rich", "dirt", "overhead"]')],
+        [("units.join.takes", "gas and liquid")],
+    ),
     "missing stages": ([instead("stages = 4\n", "")], [("units.wash.stages", "stages = 8")]),
     "half a stage": ([instead("stages = 4", "stages = 4.5")], [("units.wash.stages", "whole number")]),
     "no stage": ([instead("stages = 4", "stages = 0")], [("units.wash.stages", "at least 1")]),
@@ -310,53 +382,99 @@ FAULTS = {
     "flag for stages": ([instead("stages = 4", "stages = true")], [("units.wash.stages", "whole number")]),
     "huge number of stages": ([instead("stages = 4", f"stages = {HUGE}")], [("units.wash.stages", "whole number")]),
     "text for stages": ([instead("stages = 4", 'stages = "four"')], [("units.wash.stages", "'four'")]),
-    "unknown equilibrium table": ([instead('equilibrium = "cold"', 'equilibrium = "clod"')], [("units.wash.equilibrium", "'cold'")]),
-    "heat that is not offered": ([instead("stages = 4", 'stages = 4\nheat = "isothermic"')], [("units.wash.heat", "'isothermal'")]),
+    "unknown equilibrium table": (
+        [instead('equilibrium = "cold"', 'equilibrium = "clod"')],
+        [("units.wash.equilibrium", "'cold'")],
+    ),
+    "heat that is not offered": (
+        [instead("stages = 4", 'stages = 4\nheat = "isothermic"')],
+        [("units.wash.heat", "'isothermal'")],
+    ),
     "heater below absolute zero": ([instead('"150 degC"', '"-300 degC"')], [("units.preheat.temperature", "absolute zero")]),
-    "misspelt entry of a heater": ([instead('"hot_rich"\ntemperature', '"hot_rich"\ntempreature')], [("units.preheat.tempreature", "'temperature'")]),
+    "misspelt entry of a heater": (
+        [instead('"hot_rich"\ntemperature', '"hot_rich"\ntempreature')],
+        [("units.preheat.tempreature", "'temperature'")],
+    ),
     "shares beyond one": ([instead("bleed = 1e-2", "bleed = 0.7, kept = 0.5")], [("units.divide.shares", "1.2")]),
     "share beyond one": ([instead("bleed = 1e-2", "bleed = 1.2")], [("units.divide.shares.bleed", "at most 1")]),
     "share of an unknown outlet": ([instead("{ bleed = 1e-2", "{ bled = 1e-2")], [("units.divide.shares.bled", "'bleed'")]),
     "two outlets without a share": ([instead("{ bleed = 1e-2 }", "{}")], [("units.divide.shares", "bleed, kept")]),
     "percent of another thing": ([instead("bleed = 1e-2", 'bleed = "1 mol"')], [("units.divide.shares.bleed", "amount")]),
     "list for shares": ([instead("{ bleed = 1e-2 }", "[0.01]")], [("units.divide.shares", "no table")]),
-    "unknown component held": ([instead('{ oil = "1.60 mol/s" }', '{ oill = "1.60 mol/s" }')], [("units.top_up.hold.oill", "'oil'")]),
+    "unknown component held": (
+        [instead('{ oil = "1.60 mol/s" }', '{ oill = "1.60 mol/s" }')],
+        [("units.top_up.hold.oill", "'oil'")],
+    ),
     "negative hold": ([instead('"1.60 mol/s"', '"-1.60 mol/s"')], [("units.top_up.hold.oil", "at least 0")]),
     "empty hold": ([instead('{ oil = "1.60 mol/s" }', "{}")], [("units.top_up.hold", "nothing")]),
     "missing hold": ([instead('hold = { oil = "1.60 mol/s" }\n', "")], [("units.top_up.hold", "missing")]),
     "hold by mass": ([instead('"1.60 mol/s"', '"1.60 kg/s"')], [("units.top_up.hold.oil", "a mass flow")]),
-
     # ways in and out
-    "no bleed": ([instead(RIGHT[RIGHT.index("[units.divide]"):RIGHT.index("[units.top_up]")], ""), instead('takes = "kept"', 'takes = "lean"')],
-                 [("components.tar", "no way out")]),
+    "no bleed": (
+        [
+            instead(RIGHT[RIGHT.index("[units.divide]") : RIGHT.index("[units.top_up]")], ""),
+            instead('takes = "kept"', 'takes = "lean"'),
+        ],
+        [("components.tar", "no way out")],
+    ),
     "a circulation that nothing holds": (
-        [instead('kind = "makeup"\ntakes = "kept"\ngives = "topped_lean"\nhold = { oil = "1.60 mol/s" }',
-                 'kind = "heater"\ntakes = "kept"\ngives = "topped_lean"\ntemperature = "150 degC"'),
-         instead(RIGHT[RIGHT.index("[feeds.dirt]"):UNITS_FROM], ""), instead('["rich", "dirt"]', '["rich"]'),
-         instead(RIGHT[UNITS_TO:RIGHT.index("[requirements.warmth]")], "")],
-        [("units.wash.liquid_in", "makeup")]),
-
+        [
+            instead(
+                'kind = "makeup"\ntakes = "kept"\ngives = "topped_lean"\nhold = { oil = "1.60 mol/s" }',
+                'kind = "heater"\ntakes = "kept"\ngives = "topped_lean"\ntemperature = "150 degC"',
+            ),
+            instead(RIGHT[RIGHT.index("[feeds.dirt]") : UNITS_FROM], ""),
+            instead('["rich", "dirt"]', '["rich"]'),
+            instead(RIGHT[UNITS_TO : RIGHT.index("[requirements.warmth]")], ""),
+        ],
+        [("units.wash.liquid_in", "makeup")],
+    ),
     # components, groups, basis
-    "component that is a text": ([instead('tar = { molar_mass = "400 g/mol", stays_in = "liquid" }', 'tar = "400 g/mol"')], [("components.tar", "no table")]),
-    "misspelt stays_in": ([instead('"28.96 g/mol", stays_in', '"28.96 g/mol", stays_inn')], [("components.air.stays_inn", "'stays_in'")]),
-    "phase that is none": ([instead('"28.96 g/mol", stays_in = "gas"', '"28.96 g/mol", stays_in = "gass"')], [("components.air.stays_in", "'gas'")]),
+    "component that is a text": (
+        [instead('tar = { molar_mass = "400 g/mol", stays_in = "liquid" }', 'tar = "400 g/mol"')],
+        [("components.tar", "no table")],
+    ),
+    "misspelt stays_in": (
+        [instead('"28.96 g/mol", stays_in', '"28.96 g/mol", stays_inn')],
+        [("components.air.stays_inn", "'stays_in'")],
+    ),
+    "phase that is none": (
+        [instead('"28.96 g/mol", stays_in = "gas"', '"28.96 g/mol", stays_in = "gass"')],
+        [("components.air.stays_in", "'gas'")],
+    ),
     "molar mass of zero": ([instead("28.96 g/mol", "0 g/mol")], [("components.air.molar_mass", "above 0")]),
     "molar mass in kg": ([instead("28.96 g/mol", "28.96 kg")], [("components.air.molar_mass", "g/mol")]),
-    "component with a blank": ([instead("tar = {", '"t ar" = {'), instead(DIRT_PARTS, 'ratios = { oil = "rest" }')], [('components."t ar"', "letters")]),
-    "group of an unknown component": ([instead('["toluene", "ethanol"]', '["toluene", "ethanl"]')], [("groups.organics[1]", "'ethanol'")]),
+    "component with a blank": (
+        [instead("tar = {", '"t ar" = {'), instead(DIRT_PARTS, 'ratios = { oil = "rest" }')],
+        [('components."t ar"', "letters")],
+    ),
+    "group of an unknown component": (
+        [instead('["toluene", "ethanol"]', '["toluene", "ethanl"]')],
+        [("groups.organics[1]", "'ethanol'")],
+    ),
     "group named like a component": ([instead("organics =", "toluene =")], [("groups.toluene", "rename")]),
-    "group that names one twice": ([instead('["toluene", "ethanol"]', '["toluene", "toluene"]')], [("groups.organics", "twice")]),
+    "group that names one twice": (
+        [instead('["toluene", "ethanol"]', '["toluene", "toluene"]')],
+        [("groups.organics", "twice")],
+    ),
     "group with a dot": ([instead("organics =", '"or.ganics" =')], [('groups."or.ganics"', "letters")]),
     "basis with an unknown component": ([instead('gas = ["air", "steam"]', 'gas = ["airr"]')], [("basis.gas[0]", "'air'")]),
     "unknown basis": ([instead('gas = ["air", "steam"]', 'gass = ["air"]')], [("basis.gass", "'gas'")]),
     "empty basis": ([instead('gas = ["air", "steam"]', "gas = []")], [("basis.gas", "empty")]),
-
     # equilibrium
     "component without a model": ([instead(COLD_ETHANOL, "")], [("equilibrium.cold.ethanol", "column 'wash'")]),
-    "unknown component with a model": ([instead("toluene = { model = \"table\"", 'tolune = { model = "table"')], [("equilibrium.cold.tolune", "'toluene'")]),
-    "model for a component that stays": ([instead(COLD_ETHANOL, COLD_ETHANOL + '\noil = { model = "constant", K = 0.1 }')],
-                                         [("equilibrium.cold.oil", "stays in the liquid")]),
-    "stays_in beside a model": ([cold('{ model = "constant", K = 0.1, stays_in = "gas" }')], [("equilibrium.cold.toluene.stays_in", "not both")]),
+    "unknown component with a model": (
+        [instead('toluene = { model = "table"', 'tolune = { model = "table"')],
+        [("equilibrium.cold.tolune", "'toluene'")],
+    ),
+    "model for a component that stays": (
+        [instead(COLD_ETHANOL, COLD_ETHANOL + '\noil = { model = "constant", K = 0.1 }')],
+        [("equilibrium.cold.oil", "stays in the liquid")],
+    ),
+    "stays_in beside a model": (
+        [cold('{ model = "constant", K = 0.1, stays_in = "gas" }')],
+        [("equilibrium.cold.toluene.stays_in", "not both")],
+    ),
     "stays_in that is no phase": ([cold('{ stays_in = "liqid" }')], [("equilibrium.cold.toluene.stays_in", "'liquid'")]),
     "list for stays_in": ([cold('{ stays_in = ["gas"] }')], [("equilibrium.cold.toluene.stays_in", "no name")]),
     "number for a model": ([cold("0.1")], [("equilibrium.cold.toluene", "no table")]),
@@ -364,57 +482,109 @@ FAULTS = {
     "misspelt entry model": ([cold('{ modle = "constant", K = 0.1 }')], [("equilibrium.cold.toluene.modle", "'model'")]),
     "misspelt model": ([cold('{ model = "constnat", K = 0.1 }')], [("equilibrium.cold.toluene.model", "'constant'")]),
     "list for a model": ([cold('{ model = ["constant"], K = 0.1 }')], [("equilibrium.cold.toluene.model", "no name")]),
-    "list for a table": ([instead(RIGHT[TABLES_FROM:RIGHT.index("[equilibrium.hot]")], ""), head("equilibrium.cold = [1]")],
-                         [("equilibrium.cold", "no table")]),
+    "list for a table": (
+        [instead(RIGHT[TABLES_FROM : RIGHT.index("[equilibrium.hot]")], ""), head("equilibrium.cold = [1]")],
+        [("equilibrium.cold", "no table")],
+    ),
     "constant without K": ([cold('{ model = "constant" }')], [("equilibrium.cold.toluene.K", "missing")]),
     "negative K": ([cold('{ model = "constant", K = -0.1 }')], [("equilibrium.cold.toluene.K", "at least 0")]),
     "K with a unit": ([cold('{ model = "constant", K = "0.1 bar" }')], [("equilibrium.cold.toluene.K", "a pressure")]),
     "list for K": ([cold('{ model = "constant", K = [0.1] }')], [("equilibrium.cold.toluene.K", "no number")]),
-    "unknown coordinates": ([cold('{ model = "constant", K = 0.1, basis = "ratios" }')], [("equilibrium.cold.toluene.basis", "'ratio'")]),
+    "unknown coordinates": (
+        [cold('{ model = "constant", K = 0.1, basis = "ratios" }')],
+        [("equilibrium.cold.toluene.basis", "'ratio'")],
+    ),
     "table that falls": ([instead("x = [0, 0.1, 0.4]", "x = [0, 0.5, 0.4]")], [("equilibrium.cold.toluene.x[2]", "rising")]),
-    "table of unequal lengths": ([instead("y = [0, 0.01, 0.05]", "y = [0, 0.01]")], [("equilibrium.cold.toluene.y", "one for each")]),
-    "table of one point": ([instead("x = [0, 0.1, 0.4], y = [0, 0.01, 0.05]", "x = [0.1], y = [0.01]")],
-                           [("equilibrium.cold.toluene.x", "two points")]),
+    "table of unequal lengths": (
+        [instead("y = [0, 0.01, 0.05]", "y = [0, 0.01]")],
+        [("equilibrium.cold.toluene.y", "one for each")],
+    ),
+    "table of one point": (
+        [instead("x = [0, 0.1, 0.4], y = [0, 0.01, 0.05]", "x = [0.1], y = [0.01]")],
+        [("equilibrium.cold.toluene.x", "two points")],
+    ),
     "table beyond one": ([instead("x = [0, 0.1, 0.4]", "x = [0, 0.1, 1.4]")], [("equilibrium.cold.toluene.x[2]", "at most 1")]),
     "text in a table": ([instead("x = [0, 0.1, 0.4]", 'x = [0, "a", 0.4]')], [("equilibrium.cold.toluene.x[1]", "'a'")]),
     "table without a column": ([instead(", y = [0, 0.01, 0.05]", "")], [("equilibrium.cold.toluene.y", "missing")]),
-    "table over two pairs": ([instead("y = [0, 0.01, 0.05]", "y = [0, 0.01, 0.05], X = [0, 1], Y = [0, 1]")],
-                             [("equilibrium.cold.toluene", "several pairs")]),
-    "table in a file that is not there": ([cold('{ model = "table", file = "points.csv" }')], [("equilibrium.cold.toluene.file", "'points.csv'")]),
-    "table in a file that cannot be": ([cold('{ model = "table", file = "a\\u0000b" }')], [("equilibrium.cold.toluene.file", "CSV")]),
-    "henry in both forms": ([instead('constant = "0.9 bar",', 'constant = "0.9 bar", solubility = "1e-4 mol/(m3 Pa)",')],
-                            [("equilibrium.cold.ethanol", "both forms")]),
-    "henry in no form": ([instead(COLD_ETHANOL, 'ethanol = { model = "henry", slope = "3000 K" }')], [("equilibrium.cold.ethanol", "neither")]),
-    "henry without its solvent": ([instead(COLD_ETHANOL, 'ethanol = { model = "henry", solubility = "1e-4 mol/(m3 Pa)" }')],
-                                  [("equilibrium.cold.ethanol.solvent_concentration", "missing")]),
+    "table over two pairs": (
+        [instead("y = [0, 0.01, 0.05]", "y = [0, 0.01, 0.05], X = [0, 1], Y = [0, 1]")],
+        [("equilibrium.cold.toluene", "several pairs")],
+    ),
+    "table in a file that is not there": (
+        [cold('{ model = "table", file = "points.csv" }')],
+        [("equilibrium.cold.toluene.file", "'points.csv'")],
+    ),
+    "table in a file that cannot be": (
+        [cold('{ model = "table", file = "a\\u0000b" }')],
+        [("equilibrium.cold.toluene.file", "CSV")],
+    ),
+    "henry in both forms": (
+        [instead('constant = "0.9 bar",', 'constant = "0.9 bar", solubility = "1e-4 mol/(m3 Pa)",')],
+        [("equilibrium.cold.ethanol", "both forms")],
+    ),
+    "henry in no form": (
+        [instead(COLD_ETHANOL, 'ethanol = { model = "henry", slope = "3000 K" }')],
+        [("equilibrium.cold.ethanol", "neither")],
+    ),
+    "henry without its solvent": (
+        [instead(COLD_ETHANOL, 'ethanol = { model = "henry", solubility = "1e-4 mol/(m3 Pa)" }')],
+        [("equilibrium.cold.ethanol.solvent_concentration", "missing")],
+    ),
     "antoine without C": ([instead("C = 219.5, ", "")], [("equilibrium.hot.toluene.vapour_pressure.C", "missing")]),
-    "antoine in a unit of nothing": ([instead('"mmHg"', '"mol"')], [("equilibrium.hot.toluene.vapour_pressure.pressure", "mmHg")]),
-    "antoine over an unknown scale": ([instead('pressure = "mmHg", temperature = "degC"', 'pressure = "mmHg", temperature = "dgeC"')],
-                                      [("equilibrium.hot.toluene.vapour_pressure.temperature", "'degC'")]),
-    "misspelt form of vapour pressure": ([instead('"antoine"', '"antonie"')], [("equilibrium.hot.toluene.vapour_pressure.form", "'antoine'")]),
-    "list for a vapour pressure": ([instead(ANTOINE, "vapour_pressure = [1]")], [("equilibrium.hot.toluene.vapour_pressure", "pressure such as")]),
+    "antoine in a unit of nothing": (
+        [instead('"mmHg"', '"mol"')],
+        [("equilibrium.hot.toluene.vapour_pressure.pressure", "mmHg")],
+    ),
+    "antoine over an unknown scale": (
+        [instead('pressure = "mmHg", temperature = "degC"', 'pressure = "mmHg", temperature = "dgeC"')],
+        [("equilibrium.hot.toluene.vapour_pressure.temperature", "'degC'")],
+    ),
+    "misspelt form of vapour pressure": (
+        [instead('"antoine"', '"antonie"')],
+        [("equilibrium.hot.toluene.vapour_pressure.form", "'antoine'")],
+    ),
+    "list for a vapour pressure": (
+        [instead(ANTOINE, "vapour_pressure = [1]")],
+        [("equilibrium.hot.toluene.vapour_pressure", "pressure such as")],
+    ),
     "activity without a": ([instead("{ a = 0.1 }", "{ b = 100 }")], [("equilibrium.hot.toluene.activity.a", "missing")]),
-    "number for an activity": ([instead("activity = { a = 0.1 }", "activity = 0.1")], [("equilibrium.hot.toluene.activity", "no table")]),
+    "number for an activity": (
+        [instead("activity = { a = 0.1 }", "activity = 0.1")],
+        [("equilibrium.hot.toluene.activity", "no table")],
+    ),
     "polynomial of nothing": ([instead("K = [2.0, 0.01]", "K = []")], [("equilibrium.hot.ethanol.K", "no list")]),
     "polynomial of zeros": ([instead("K = [2.0, 0.01]", "K = [0, 0]")], [("equilibrium.hot.ethanol.K", "zero")]),
-    "polynomial at no pressure": ([instead('pressure = "1 bar" }', 'pressure = "0 bar" }')], [("equilibrium.hot.ethanol.pressure", "above 0")]),
-    "range the wrong way round": ([instead(HOT_ETHANOL, HOT_ETHANOL[:-2] + ', valid = ["90 degC", "20 degC"] }')],
-                                  [("equilibrium.hot.ethanol.valid", "lower and higher")]),
-
+    "polynomial at no pressure": (
+        [instead('pressure = "1 bar" }', 'pressure = "0 bar" }')],
+        [("equilibrium.hot.ethanol.pressure", "above 0")],
+    ),
+    "range the wrong way round": (
+        [instead(HOT_ETHANOL, HOT_ETHANOL[:-2] + ', valid = ["90 degC", "20 degC"] }')],
+        [("equilibrium.hot.ethanol.valid", "lower and higher")],
+    ),
     # requirements: the quantity
     "quantity of an unknown stream": ([asked("streams.cleand.fraction.toluene")], [(f"{OUTLET}.quantity", "'cleaned'")]),
     "quantity of an unknown unit": ([asked("units.wsh.results.removal.toluene")], [(f"{OUTLET}.quantity", "'wash'")]),
     "unknown quantity of a stream": ([asked("streams.cleaned.fracton.toluene")], [(f"{OUTLET}.quantity", "'fraction'")]),
     "unknown result of a unit": ([asked("units.wash.results.remval.toluene")], [(f"{OUTLET}.quantity", "'removal'")]),
     "quantity of an unknown component": ([asked("streams.cleaned.fraction.tolune")], [(f"{OUTLET}.quantity", "'toluene'")]),
-    "quantity of a component that never gets there": ([asked("streams.cleaned.fraction.oil")], [(f"{OUTLET}.quantity", "never in")]),
+    "quantity of a component that never gets there": (
+        [asked("streams.cleaned.fraction.oil")],
+        [(f"{OUTLET}.quantity", "never in")],
+    ),
     "quantity without its component": ([asked("streams.cleaned.fraction")], [(f"{OUTLET}.quantity", "whole table")]),
     "whole table of a unit": ([asked("units.wash.results.removal")], [(f"{OUTLET}.quantity", "whole table")]),
     "whole stream": ([asked("streams.cleaned")], [(f"{OUTLET}.quantity", "whole stream")]),
     "whole unit": ([asked("units.wash")], [(f"{OUTLET}.quantity", "whole unit")]),
     "no quantity at all": ([asked("streams")], [(f"{OUTLET}.quantity", "streams.NAME")]),
-    "quantity too deep": ([asked("streams.cleaned.fraction.toluene.x")], [(f"{OUTLET}.quantity", "stop at 'streams.cleaned.fraction.toluene'")]),
-    "number too deep": ([asked("streams.cleaned.pressure_Pa.x", 'equals = "1 bar"')], [(f"{OUTLET}.quantity", "stop at 'streams.cleaned.pressure_Pa'")]),
+    "quantity too deep": (
+        [asked("streams.cleaned.fraction.toluene.x")],
+        [(f"{OUTLET}.quantity", "stop at 'streams.cleaned.fraction.toluene'")],
+    ),
+    "number too deep": (
+        [asked("streams.cleaned.pressure_Pa.x", 'equals = "1 bar"')],
+        [(f"{OUTLET}.quantity", "stop at 'streams.cleaned.pressure_Pa'")],
+    ),
     "quantity that is text": ([asked("streams.cleaned.phase")], [(f"{OUTLET}.quantity", "text")]),
     "unit's quantity that is text": ([asked("units.wash.kind")], [(f"{OUTLET}.quantity", "text")]),
     "quantity that is a list": ([asked("units.wash.profile.x.toluene")], [(f"{OUTLET}.quantity", "list by stage")]),
@@ -424,39 +594,84 @@ FAULTS = {
     "dew point of a liquid": ([asked("streams.rich.dew_point_K", 'equals = "20 degC"')], [(f"{OUTLET}.quantity", "liquid")]),
     "number for a quantity": ([instead(QUANTITY, "quantity = 4")], [(f"{OUTLET}.quantity", "no name")]),
     "missing quantity": ([instead(QUANTITY + "\n", "")], [(f"{OUTLET}.quantity", "missing")]),
-    "misspelt entry quantity": ([instead('quantity = "streams.cl', 'quantty = "streams.cl')], [(f"{OUTLET}.quantty", "'quantity'")]),
-    "same quantity twice": ([asked("streams.hot_rich.temperature_K", 'equals = "140 degC"')],
-                            [("requirements.warmth.quantity", OUTLET)]),
-
+    "misspelt entry quantity": (
+        [instead('quantity = "streams.cl', 'quantty = "streams.cl')],
+        [(f"{OUTLET}.quantty", "'quantity'")],
+    ),
+    "same quantity twice": (
+        [asked("streams.hot_rich.temperature_K", 'equals = "140 degC"')],
+        [("requirements.warmth.quantity", OUTLET)],
+    ),
     # requirements: the limit, the freed input and its bounds
     "no limit": ([instead("equals = 2e-3\n", "")], [(OUTLET, "equals, at_most, at_least")]),
     "misspelt limit": ([instead("equals = 2e-3", "equal = 2e-3")], [(f"{OUTLET}.equal", "'equals'")]),
     "two limits": ([instead("equals = 2e-3", "equals = 2e-3\nat_most = 2e-3")], [(OUTLET, "equals and at_most")]),
     "limit of another dimension": ([instead("equals = 2e-3", 'equals = "1 bar"')], [(f"{OUTLET}.equals", "a pressure")]),
-    "limit without its unit": ([instead('at_least = "140 degC"', "at_least = 413")], [("requirements.warmth.at_least", "degC")]),
+    "limit without its unit": (
+        [instead('at_least = "140 degC"', "at_least = 413")],
+        [("requirements.warmth.at_least", "degC")],
+    ),
     "limit that is not finite": ([instead("equals = 2e-3", "equals = inf")], [(f"{OUTLET}.equals", "finite")]),
     "list for a limit": ([instead("equals = 2e-3", "equals = [2e-3]")], [(f"{OUTLET}.equals", "no number")]),
-    "unknown input": ([instead('"units.top_up.hold.oil"', '"units.topup.hold.oil"')], [(f"{OUTLET}.free", "'units.top_up.hold.oil'")]),
+    "unknown input": (
+        [instead('"units.top_up.hold.oil"', '"units.topup.hold.oil"')],
+        [(f"{OUTLET}.free", "'units.top_up.hold.oil'")],
+    ),
     "missing free": ([instead('free = "units.top_up.hold.oil"\n', "")], [(f"{OUTLET}.free", "missing")]),
     "freeing a word": ([instead('"units.top_up.hold.oil"', '"units.top_up.kind"')], [(f"{OUTLET}.free", "no numeric input")]),
-    "freeing a whole number": ([instead('"units.top_up.hold.oil"', '"units.wash.stages"')], [(f"{OUTLET}.free", "small amounts")]),
-    "freeing a list": ([instead('"units.top_up.hold.oil"', '"equilibrium.cold.toluene.x"')], [(f"{OUTLET}.free", "small amounts")]),
-    "freeing a target": ([instead('"units.top_up.hold.oil"', '"requirements.outlet.equals"')], [(f"{OUTLET}.free", "no numeric input")]),
-    "freed twice": ([instead('free = "units.preheat.temperature"\nbetween = ["120 degC", "160 degC"]', f'free = "units.top_up.hold.oil"\n{BETWEEN}')],
-                    [("requirements.warmth.free", OUTLET)]),
+    "freeing a whole number": (
+        [instead('"units.top_up.hold.oil"', '"units.wash.stages"')],
+        [(f"{OUTLET}.free", "small amounts")],
+    ),
+    "freeing a list": (
+        [instead('"units.top_up.hold.oil"', '"equilibrium.cold.toluene.x"')],
+        [(f"{OUTLET}.free", "small amounts")],
+    ),
+    "freeing a target": (
+        [instead('"units.top_up.hold.oil"', '"requirements.outlet.equals"')],
+        [(f"{OUTLET}.free", "no numeric input")],
+    ),
+    "freed twice": (
+        [
+            instead(
+                'free = "units.preheat.temperature"\nbetween = ["120 degC", "160 degC"]',
+                f'free = "units.top_up.hold.oil"\n{BETWEEN}',
+            )
+        ],
+        [("requirements.warmth.free", OUTLET)],
+    ),
     "freed downstream only": ([asked("streams.vent.fraction.toluene")], [(f"{OUTLET}.free", "upstream")]),
-    "bounds the wrong way round": ([instead(BETWEEN, 'between = ["3 mol/s", "0.8 mol/s"]')], [(f"{OUTLET}.between", "lower one first")]),
+    "bounds the wrong way round": (
+        [instead(BETWEEN, 'between = ["3 mol/s", "0.8 mol/s"]')],
+        [(f"{OUTLET}.between", "lower one first")],
+    ),
     "one bound": ([instead(BETWEEN, 'between = ["3 mol/s"]')], [(f"{OUTLET}.between", "two bounds")]),
     "missing bounds": ([instead(BETWEEN + "\n", "")], [(f"{OUTLET}.between", "missing")]),
     "misspelt bounds": ([instead(BETWEEN, BETWEEN.replace("between", "betwen"))], [(f"{OUTLET}.betwen", "'between'")]),
-    "bound of another dimension": ([instead(BETWEEN, 'between = ["0.8 bar", "3 mol/s"]')], [(f"{OUTLET}.between[0]", "a pressure")]),
-    "bounds without units": ([instead(BETWEEN, "between = [0.8, 3]")], [(f"{OUTLET}.between[0]", "no unit"), (f"{OUTLET}.between[1]", "no unit")]),
-    "bound outside what is allowed": ([instead(BETWEEN, 'between = ["-1 mol/s", "3 mol/s"]')], [(f"{OUTLET}.between[0]", "outside")]),
-    "bound on an open limit": ([instead('free = "units.top_up.hold.oil"\n' + BETWEEN, 'free = "feeds.vent.pressure"\nbetween = ["0 bar", "3 bar"]')],
-                               [(f"{OUTLET}.between[0]", "outside")]),
-    "requirement that is a number": ([instead("[requirements.warmth]", "[requirements]\nnew = 5\n[requirements.warmth]")], [("requirements.new", "no table")]),
-    "requirement with a blank": ([instead("[requirements.warmth]", '[requirements."warm th"]')], [('requirements."warm th"', "letters")]),
-
+    "bound of another dimension": (
+        [instead(BETWEEN, 'between = ["0.8 bar", "3 mol/s"]')],
+        [(f"{OUTLET}.between[0]", "a pressure")],
+    ),
+    "bounds without units": (
+        [instead(BETWEEN, "between = [0.8, 3]")],
+        [(f"{OUTLET}.between[0]", "no unit"), (f"{OUTLET}.between[1]", "no unit")],
+    ),
+    "bound outside what is allowed": (
+        [instead(BETWEEN, 'between = ["-1 mol/s", "3 mol/s"]')],
+        [(f"{OUTLET}.between[0]", "outside")],
+    ),
+    "bound on an open limit": (
+        [instead('free = "units.top_up.hold.oil"\n' + BETWEEN, 'free = "feeds.vent.pressure"\nbetween = ["0 bar", "3 bar"]')],
+        [(f"{OUTLET}.between[0]", "outside")],
+    ),
+    "requirement that is a number": (
+        [instead("[requirements.warmth]", "[requirements]\nnew = 5\n[requirements.warmth]")],
+        [("requirements.new", "no table")],
+    ),
+    "requirement with a blank": (
+        [instead("[requirements.warmth]", '[requirements."warm th"]')],
+        [('requirements."warm th"', "letters")],
+    ),
     # the loop
     "tolerance of zero": ([instead("tolerance = 1e-9", "tolerance = 0")], [("loop.tolerance", "above 0")]),
     "text for a tolerance": ([instead("tolerance = 1e-9", 'tolerance = "fine"')], [("loop.tolerance", "'fine'")]),
@@ -472,13 +687,22 @@ FAULTS = {
     "tear that cuts nothing": ([instead('["cool_lean"]', '["vent"]')], [("loop.tears", "vent")]),
     "tear named twice": ([instead('["cool_lean"]', '["cool_lean", "cool_lean"]')], [("loop.tears", "twice")]),
     "tears that leave a loop": (
-        [instead('kind = "mixer"\ntakes = ["rich", "dirt"]', 'kind = "mixer"\ntakes = ["rich", "dirt", "again"]'),
-         instead("[units.preheat]", '[units.turn]\nkind = "splitter"\ntakes = "dirty"\ngives = ["again", "on"]\nshares = { again = 0.5 }\n[units.preheat]'),
-         instead('kind = "heater"\ntakes = "dirty"', 'kind = "heater"\ntakes = "on"')],
-        [("loop.tears", "join")]),
+        [
+            instead('kind = "mixer"\ntakes = ["rich", "dirt"]', 'kind = "mixer"\ntakes = ["rich", "dirt", "again"]'),
+            instead(
+                "[units.preheat]",
+                '[units.turn]\nkind = "splitter"\ntakes = "dirty"\ngives = ["again", "on"]\n'
+                "shares = { again = 0.5 }\n[units.preheat]",
+            ),
+            instead('kind = "heater"\ntakes = "dirty"', 'kind = "heater"\ntakes = "on"'),
+        ],
+        [("loop.tears", "join")],
+    ),
 }
 
-LINE = re.compile(r'(?P<source>[^\n]+?\.toml): (?P<address>(?:"(?:[^"\\\n]|\\.)*"|[^\s:;"])+|--set): (?P<problem>[^\n]+?); (?P<remedy>[^\n]+)')
+LINE = re.compile(
+    r'(?P<source>[^\n]+?\.toml): (?P<address>(?:"(?:[^"\\\n]|\\.)*"|[^\s:;"])+|--set): (?P<problem>[^\n]+?); (?P<remedy>[^\n]+)'
+)
 
 
 def edited(edits):
@@ -603,9 +827,23 @@ def test_points_in_a_file_that_is_wrong(tmp_path):
 # --- several at once
 
 COMPATIBLE = [
-    "misspelt phase", "unknown component in flows", "missing kind", "unknown equilibrium table", "no stage", "shares beyond one",
-    "negative hold", "missing flow", "group of an unknown component", "constant without K", "henry in both forms", "antoine without C",
-    "unknown method", "polynomial of zeros", "misspelt entry of a heater", "molar mass in kg", "basis with an unknown component",
+    "misspelt phase",
+    "unknown component in flows",
+    "missing kind",
+    "unknown equilibrium table",
+    "no stage",
+    "shares beyond one",
+    "negative hold",
+    "missing flow",
+    "group of an unknown component",
+    "constant without K",
+    "henry in both forms",
+    "antoine without C",
+    "unknown method",
+    "polynomial of zeros",
+    "misspelt entry of a heater",
+    "molar mass in kg",
+    "basis with an unknown component",
     "misspelt section",
 ]
 EXTRA = {"misspelt section": ([("[requirements.warmth]", "[requirement.warmth]")], [("requirement", "requirements")])}
@@ -676,7 +914,10 @@ def test_a_wrong_setting(tmp_path, setting):
 def test_wrong_settings_do_not_hide_what_is_wrong_in_the_file(tmp_path):
     path = write(tmp_path, edited(FAULTS["misspelt kind"][0]))
     found = faults_of(path, ["units.wsh.stages=3", "feeds.vent.flow=12", "nonsense"])
-    expect(found, [("units.join.kind", "'mixer'"), ("units.wsh.stages", "'wash'"), ("feeds.vent.flow", "no unit"), ("--set", "nonsense")])
+    expect(
+        found,
+        [("units.join.kind", "'mixer'"), ("units.wsh.stages", "'wash'"), ("feeds.vent.flow", "no unit"), ("--set", "nonsense")],
+    )
 
 
 CHANGES = {
@@ -696,7 +937,11 @@ CHANGES = {
     "a short list": ({"equilibrium.cold.toluene.x": [0.0, 0.1]}, "equilibrium.cold.toluene.x", "give 3"),
     "a text in a list": ({"equilibrium.cold.toluene.x": [0.0, "a", 0.3]}, "equilibrium.cold.toluene.x[1]", "'a'"),
     "a list that falls": ({"equilibrium.cold.toluene.x": [0.0, 0.3, 0.2]}, "equilibrium.cold.toluene.x", "rising"),
-    "a list that falls in one case": ({"equilibrium.cold.toluene.x": [[0.0, 0.1, 0.2], [0.0, 0.3, 0.2]]}, "equilibrium.cold.toluene.x", "rising"),
+    "a list that falls in one case": (
+        {"equilibrium.cold.toluene.x": [[0.0, 0.1, 0.2], [0.0, 0.3, 0.2]]},
+        "equilibrium.cold.toluene.x",
+        "rising",
+    ),
     "zeros for a polynomial": ({"equilibrium.hot.ethanol.K": [0.0, 0.0]}, "equilibrium.hot.ethanol.K", "zero"),
 }
 
@@ -714,7 +959,11 @@ def test_a_wrong_change_from_python(right, name):
 def test_wrong_changes_are_told_together(right):
     with pytest.raises(InputError) as caught:
         right.solve({"feeds.vent.flow": [1.0, 2.0], "feeds.steam.flows.steam": [1.0, 2.0, 3.0], "units.wash.stages": "x"})
-    assert {fault.address for fault in caught.value.faults} == {"feeds.vent.flow", "feeds.steam.flows.steam", "units.wash.stages"}
+    assert {fault.address for fault in caught.value.faults} == {
+        "feeds.vent.flow",
+        "feeds.steam.flows.steam",
+        "units.wash.stages",
+    }
 
 
 @pytest.fixture(scope="module")
@@ -724,12 +973,21 @@ def right(tmp_path_factory):
 
 # --- the command line
 
+
 def command(*arguments):
-    return subprocess.run([sys.executable, "-W", "error", "-m", "leanloop", *map(str, arguments)],
-                          capture_output=True, encoding="utf-8", timeout=120, check=False)
+    return subprocess.run(
+        [sys.executable, "-W", "error", "-m", "leanloop", *map(str, arguments)],
+        capture_output=True,
+        encoding="utf-8",
+        timeout=120,
+        check=False,
+    )
 
 
-@pytest.mark.parametrize("name", ["misspelt kind", "huge whole number", "entry that is no plain name", "unknown result of a unit", "number for outlets"])
+@pytest.mark.parametrize(
+    "name",
+    ["misspelt kind", "huge whole number", "entry that is no plain name", "unknown result of a unit", "number for outlets"],
+)
 @pytest.mark.parametrize("word", ["solve", "check"])
 def test_on_the_command_line(tmp_path, name, word):
     edits, wanted = FAULTS[name]

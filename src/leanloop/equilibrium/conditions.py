@@ -63,7 +63,8 @@ class Conditions:
                 values = read_values(STAYS, {"stays_in": entry["stays_in"]}, where, context)
                 others = [shown_key(key) for key in entry if key != "stays_in"]
                 if others:
-                    context.fault(f"{where}.stays_in", f"stands beside {', '.join(others)}", "give a model or stays_in, not both")
+                    problem = f"stands beside {', '.join(others)}"
+                    context.fault(f"{where}.stays_in", problem, "give a model or stays_in, not both")
                 stays[component] = values.words.get("stays_in", "")
             elif "model" not in entry:
                 wrong = next((key for key in entry if near(key, ("model", "stays_in"))), None)

@@ -399,7 +399,8 @@ def _check_quantity(sheet: Flowsheet, address: str, found: Formula) -> None:
     if parts[0] == "streams":
         known = stream_table(_sample(plan, parts[1]), sheet.bases)
         if parts[2] not in known:
-            raise AddressError(f"stream '{parts[1]}' is {plan.phases[parts[1]]} and has no {parts[2]}", nearest(parts[2], known))
+            phase = plan.phases[parts[1]]
+            raise AddressError(f"stream '{parts[1]}' is {phase} and has no {parts[2]}", nearest(parts[2], known))
         if len(parts) > 3 and parts[2] in BY_COMPONENT and not plan.present[parts[1]][sheet.components.places(parts[3])].any():
             raise AddressError(f"'{parts[3]}' is never in stream '{parts[1]}'", "ask for a component that gets there")
     with np.errstate(all="ignore"):

@@ -50,7 +50,8 @@ def load(path: str | Path) -> dict[str, Any]:
     except RecursionError:
         raise InputError([TOO_DEEP], name) from None
     except ValueError:  # a whole number of thousands of digits, or a file name that no system can hold
-        raise InputError([Fault("file", "cannot be read as it stands", "look for a number of thousands of digits")], name) from None
+        remedy = "look for a number of thousands of digits"
+        raise InputError([Fault("file", "cannot be read as it stands", remedy)], name) from None
 
 
 def change(data: dict[str, Any], settings: Iterable[str], source: str = "") -> dict[str, Any]:
