@@ -200,8 +200,8 @@ def test_limits_themselves(table, number):
 
 
 def test_limits_are_told():
-    assert wrong({"share": 1}).remedy == "write a value at least 0 and below 1 (SI)"
-    assert wrong({"stages": 0}).remedy == "write a value at least 1 and at most 100 (SI)"
+    assert wrong({"share": 1}).remedy == "write a value at least 0 and below 1"
+    assert wrong({"stages": 0}).remedy == "write a value at least 1 and at most 100"
 
 
 def test_several_sorts_and_lists_of_one_sort():

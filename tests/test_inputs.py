@@ -632,9 +632,14 @@ class TestColumnConditions:
     )
     def test_liquid_at_less_than_the_column_s_pressure(self, tmp_path, liquid, entries, said):
         result = read(tmp_path, column(liquid_pressure=liquid, entries=entries)).solve()
-        own = [text for text in result.to_dict()["cautions"] if "tower" in text and "pressure" in text]
+        own = [text for text in result.to_dict()["cautions"] if "tower" in text and "liquid is fed at less" in text]
         assert len(own) == said
         assert all(text in str(result) for text in own)
+
+    @pytest.mark.parametrize(("entries", "said"), [("", False), ('pressure = "5 bar"', True)])
+    def test_gas_at_less_than_the_column_s_pressure(self, tmp_path, entries, said):
+        result = read(tmp_path, column(liquid_pressure="6 bar", entries=entries)).solve()
+        assert any("gas is fed at less" in text for text in result.to_dict()["cautions"]) == said
 
     def test_some_cases_of_many_are_enough_for_a_caution(self, tmp_path):
         sheet = read(tmp_path, column())

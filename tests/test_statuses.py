@@ -47,6 +47,7 @@ SCENES = {
     "too few passes": (LIMITED, "pass_limit", "more passes"),
     "no solvent": (loop(oil=0.0), "dry_stage", "Unit wash"),
     "absurd data": (loop(hot=antoine(208.5)), "stages_unsolved", "Unit strip"),
+    "numbers out of all proportion": (loop(hot=scenes.constant(1e16)), "unbalanced", "Unit strip"),
     "data beyond any number": (loop(hot=antoine(6950.0)), "not_finite", "Unit strip"),
 }
 

@@ -683,8 +683,8 @@ FAULTS = {
     "no pass allowed": ([instead("tolerance = 1e-9", "passes = 0")], [("loop.passes", "at least 1")]),
     "unknown tear": ([instead('["cool_lean"]', '["cool_leen"]')], [("loop.tears[0]", "'cool_lean'")]),
     "no tears": ([instead('["cool_lean"]', "[]")], [("loop.tears", "at least one")]),
-    "tear on no loop": ([instead('["cool_lean"]', '["cool_lean", "cleaned"]')], [("loop.tears", "cleaned")]),
-    "tear that cuts nothing": ([instead('["cool_lean"]', '["vent"]')], [("loop.tears", "vent")]),
+    "tear on no loop": ([instead('["cool_lean"]', '["cool_lean", "cleaned"]')], [("loop.tears[1]", "cleaned")]),
+    "tear that cuts nothing": ([instead('["cool_lean"]', '["vent"]')], [("loop.tears[0]", "vent")]),
     "tear named twice": ([instead('["cool_lean"]', '["cool_lean", "cool_lean"]')], [("loop.tears", "twice")]),
     "tears that leave a loop": (
         [

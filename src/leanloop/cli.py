@@ -6,6 +6,7 @@ import argparse
 import os
 import sys
 from collections.abc import Sequence
+from pathlib import Path
 from typing import NoReturn
 
 from leanloop import __version__
@@ -43,22 +44,22 @@ def _parser() -> argparse.ArgumentParser:
 
 def _solve(arguments: argparse.Namespace) -> int:
     result = read(arguments.file, arguments.settings).solve()
-    if arguments.json:
-        json.write(result.to_dict(), arguments.json)
-    if arguments.tables:
-        tables.write(result.to_dict(), arguments.tables)
-    if arguments.json != "-":
-        sys.stdout.write(text.report(result))
+    written = text.report(result)
+    files = tables.texts(result.to_dict(), arguments.tables) if arguments.tables else {}
+    if arguments.json and arguments.json != "-":
+        files[Path(arguments.json)] = json.text(result.to_dict())
+    tables.put(files, arguments.tables)
+    sys.stdout.write(json.text(result.to_dict()) if arguments.json == "-" else written)
     return REACHED if result.converged else NOT_REACHED
 
 
 def _check(arguments: argparse.Namespace) -> int:
     sheet = read(arguments.file)
     found = sheet.check()
-    if arguments.json:
-        json.write(found, arguments.json)
-    if arguments.json != "-":
-        sys.stdout.write(text.structure(sheet, found))
+    written = text.structure(sheet, found)
+    if arguments.json and arguments.json != "-":
+        tables.put({Path(arguments.json): json.text(found)})
+    sys.stdout.write(json.text(found) if arguments.json == "-" else written)
     return REACHED
 
 
@@ -81,6 +82,12 @@ def main(arguments: Sequence[str] | None = None) -> int:
         0 everything was reached, 1 the numbers did not get there, 2 the input is wrong.
     """
     source = "leanloop"
+    if sys.stdout is None or sys.stderr is None:  # closed by the shell: nobody reads
+        silent = open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115 - lives as long as the process
+        sys.stdout, sys.stderr = sys.stdout or silent, sys.stderr or silent
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):  # a terminal that lacks a letter shows its code
+            stream.reconfigure(errors="backslashreplace")
     try:
         parsed = _parser().parse_args(arguments)
         source = getattr(parsed, "file", source)

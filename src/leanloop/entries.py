@@ -202,7 +202,7 @@ def _inside(value: float, raw: Any, entry: Entry, sort: str, address: str, conte
             parts.append(f"at most {entry.most:g}")
         if entry.below is not None:
             parts.append(f"below {entry.below:g}")
-        context.fault(address, f"{_shown(raw)} is out of range", f"write a value {' and '.join(parts)} (SI)")
+        context.fault(address, f"{_shown(raw)} is out of range", f"write a value {' and '.join(parts)}{'' if sort in ('number', 'integer') else ' (SI)'}")
         return False
     return True
 

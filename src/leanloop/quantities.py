@@ -19,6 +19,7 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "mass flow": ((1, 0, -1, 0, 0), "2 kg/s"),
     "volume flow": ((0, 3, -1, 0, 0), "900 m3/h"),
     "molar mass": ((1, 0, 0, 0, -1), "92.14 g/mol"),
+    "mass in gas": ((1, 0, 0, 0, -1), "150 mg/Nm3"),
     "solubility": ((-1, -2, 2, 0, 1), "3.3e-4 mol/(m3 Pa)"),
     "molar concentration": ((0, -3, 0, 0, 1), "55.3 kmol/m3"),
     "power": ((1, 2, -3, 0, 0), "250 kW"),

@@ -31,6 +31,10 @@ class Status(Enum):
         "The liquid of a stage dries up: there is no solvent, or all of it would evaporate; "
         "raise the liquid fed or lower the temperature or the gas flow."
     )
+    unbalanced = (
+        "A component's balance does not close: the numbers are too extreme for the arithmetic; "
+        "look for equilibrium ratios or flows that are out of all proportion."
+    )
     stages_unsolved = (
         "The stage equations of a column were not solved; "
         "look at its feeds and equilibrium data, which may be extreme or inconsistent."

@@ -137,6 +137,9 @@ def solve(stages: Stages, guess: np.ndarray | None = None, ask: Ask | None = Non
         floors[:, 0] = FLOOR * everything
         floors[:, 1:] = np.where(scale > 0, np.maximum(FLOOR * scale, LEAST_FLOOR * everything[:, None]), np.inf)
         answer = _iterate(stages, unknowns, floors, status, ask, good)
+        # nothing that stays in the liquid keeps a stage wet: where no answer was found, it dried up
+        lost = (answer.status == code(Status.stages_unsolved)) & (stages.liquid_inert.min(axis=1) == 0.0)
+        answer.status = np.where(lost, code(Status.dry_stage), answer.status)
         _settle_traces(answer, floors)
     return answer
 

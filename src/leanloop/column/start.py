@@ -13,6 +13,7 @@ from scipy.linalg import lapack
 from leanloop.column.equations import Stages, phases
 
 TINY = 1e-300
+MOST_FACTOR = 1e15  # beyond it the liquid keeps nothing that the arithmetic can tell from nothing
 
 
 def split_fractions(factor: np.ndarray, stages: int) -> tuple[np.ndarray, np.ndarray]:
@@ -104,8 +105,8 @@ def sweep(stages: Stages, gas: np.ndarray, liquid: np.ndarray, ratio: np.ndarray
     (M, N, 1 + D) mol/s
         Unknowns of the column.
     """
-    factor = ratio * (gas / np.maximum(liquid, TINY))[..., None]
-    flows = tridiagonal(np.minimum(factor, 1e15), stages.feeds)
+    factor = np.minimum(ratio * (gas / np.maximum(liquid, TINY))[..., None], MOST_FACTOR)
+    flows = tridiagonal(factor, stages.feeds)
     out = np.empty((*flows.shape[:2], flows.shape[2] + 1))
     out[..., 1:] = flows
     out[..., 0] = stages.gas_inert + (factor * flows).sum(axis=-1)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import errno
 from collections.abc import Callable, Mapping
 from dataclasses import replace
 from functools import lru_cache
@@ -51,6 +52,8 @@ def from_file(table: Mapping[str, Any], address: str, context: Context) -> Mappi
     name, where = table["file"], f"{address}.file"
     path = Path(next(iter(context.names.get("directory", ())), ".")) / name
     try:
+        if path.exists() and not path.is_file():
+            raise OSError(errno.EINVAL, "it is no regular file")
         with path.open(newline="", encoding="utf-8-sig") as stream:
             reader = csv.reader(stream)
             rows = [(reader.line_num, [cell.strip() for cell in row]) for row in reader]
@@ -68,6 +71,10 @@ def from_file(table: Mapping[str, Any], address: str, context: Context) -> Mappi
         return table
     columns: dict[str, list[float]] = {column: [] for column in pairs[0]}
     for line, row in rows[1:]:
+        if len(row) > len(header):
+            problem = f"'{name}' line {line} has {len(row)} cells under {len(header)} columns"
+            context.fault(where, problem, "write numbers with a decimal point, and a comma between columns alone")
+            continue
         for column, numbers in columns.items():
             cell = dict(zip(header, row, strict=False)).get(column, "")
             try:

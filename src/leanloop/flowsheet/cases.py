@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.entries import Context, read_number
-from leanloop.errors import InputError, nearest
+from leanloop.errors import Fault, InputError, nearest
 from leanloop.quantities import NORMAL_MOLES
 
 if TYPE_CHECKING:
@@ -90,6 +90,8 @@ def read_changes(
         _check_models(sheet, lists, base, apart, context)
     if context.faults:
         raise InputError(context.faults, sheet.source)
+    if 0 in lengths.values():
+        raise InputError([Fault(address, "has no cases", "give one value or more") for address in lengths], sheet.source)
     axis = bool(lengths)
     cases = next(iter(lengths.values())) if axis else 1
     return cases, axis, base, arrays, _groups(apart, cases)
@@ -104,14 +106,14 @@ def _read_item(sheet: Flowsheet, address: str, raw: Any, where: str, context: Co
         return None
     value, own = found
     if own == "molar mass" and sort == "number":  # mass for an amount of gas, such as mg/Nm3
-        head, name, *rest = address.split(".")
-        if head == "requirements":
-            return value * NORMAL_MOLES * 1e6
-        mass = sheet.components[rest[-1]].molar_mass if head == "feeds" else None
+        component = address.rpartition(".")[2]
+        mass = sheet.components[component].molar_mass if address.startswith("feeds.") else None
         if mass is not None:
             return value / mass
-        context.fault(where, f"needs the molar mass of '{rest[-1]}'", "give it, or write a mole fraction")
+        context.fault(where, f"needs the molar mass of '{component}'", "give it, or write a mole fraction")
         return None
+    if own == "mass in gas" and isinstance(raw, str):  # kept in mg/Nm3, as the quantity is reported
+        return value * NORMAL_MOLES * 1e6
     if own not in (sort, "integer"):
         context.fault(where, f"is given as {sort} in the flowsheet", "keep to that dimension")
         return None

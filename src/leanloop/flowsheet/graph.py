@@ -147,7 +147,7 @@ class Structure:
                 context.fault(f"feeds.{name}", "no unit takes this feed", "connect it or take it away")
 
     def phases(self) -> dict[str, str]:
-        """Give the phase of every stream."""
+        """Give the phase of every stream; empty where nothing tells it."""
         known = {name: feed.phase for name, feed in self.feeds.items()}
         for _ in range(len(self.units) + 1):
             for unit in self.units.values():
@@ -156,7 +156,7 @@ class Structure:
                     phase = unit.phase(label, inlets)
                     if phase and stream not in known:
                         known[stream] = phase
-        return {stream: known.get(stream, "liquid") for stream in self.makers}
+        return {stream: known.get(stream, "") for stream in self.makers}
 
     def present(self) -> dict[str, np.ndarray]:
         """Give the components that each stream can hold.
@@ -263,6 +263,15 @@ def nodes_of(graph: nx.MultiDiGraph, units: Iterable[str], feeds: Iterable[str])
     """Give the nodes of some units and feeds."""
     units, feeds = set(units), set(feeds)
     return [node for node in graph if node.name in (units if node.sort == "unit" else feeds)]
+
+
+def recycled(graph: nx.MultiDiGraph) -> set[str]:
+    """Give the streams that lie on some loop."""
+    found: set[str] = set()
+    for part in partition(graph):
+        members = set(part)
+        found |= {key for a, b, key in graph.edges(part, keys=True) if b in members and _is_loop(graph, part)}
+    return found
 
 
 def influences(graph: nx.MultiDiGraph, tie: Tie) -> bool:

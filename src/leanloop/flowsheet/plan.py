@@ -10,7 +10,7 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context
 from leanloop.feed import Feed
-from leanloop.flowsheet.graph import Node, Region, Step, Structure, Tie, arrange, nodes_of
+from leanloop.flowsheet.graph import Node, Region, Step, Structure, Tie, arrange, nodes_of, recycled
 from leanloop.units.base import Surroundings, Unit
 
 
@@ -70,6 +70,10 @@ class Plan:
             for name, tie in ties.items()
         }
         self.regions = arrange(self.graph, placed, self._costs(), tears)
+
+    def recycled(self) -> set[str]:
+        """Give the streams that lie on some loop."""
+        return recycled(self.graph)
 
     def _costs(self) -> dict[str, float]:
         """Prefer to tear lean solvent behind its make-up: few components, held flow, known temperature."""

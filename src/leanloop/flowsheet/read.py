@@ -95,10 +95,23 @@ def names_by_key(section: str, raw: Any, keys: tuple[str, ...] | None, context: 
     return words
 
 
+def _objects(section: str, items: Any, context: Context) -> list[Any]:
+    """Check the names of feeds or units that are given as Python objects."""
+    seen: dict[Any, Any] = {}
+    for item in items:
+        name = getattr(item, "name", None)
+        if not is_name(name):
+            context.fault(f"{section}.{shown_key(name)}", f"{shown_name(name)} is no name", "use letters, digits, _ and -")
+        elif name in seen:
+            context.fault(f"{section}.{name}", f"there are two {section} '{name}'", "give each its own name")
+        seen.setdefault(name, item)
+    return [item for name, item in seen.items() if is_name(name)]
+
+
 def feeds(raw: Any, context: Context) -> list[Feed]:
     """Make the feeds of their tables, unread."""
     if isinstance(raw, (list, tuple)) and all(isinstance(item, Feed) for item in raw):
-        return list(raw)
+        return _objects("feeds", raw, context)
     out = []
     for name, entry in table("feeds", raw, context).items():
         out.append(Feed(name))
@@ -113,7 +126,7 @@ def feeds(raw: Any, context: Context) -> list[Feed]:
 def units(raw: Any, context: Context) -> list[Unit]:
     """Make the units of their tables, unread."""
     if isinstance(raw, (list, tuple)) and raw and all(isinstance(item, Unit) for item in raw):
-        return list(raw)
+        return _objects("units", raw, context)
     out = []
     for name, entry in table("units", raw or {}, context).items():
         address = f"units.{shown_key(name)}"
@@ -354,8 +367,8 @@ def _target(sheet: Flowsheet, address: str, limit: str, quantity: str, raw: Any,
     if found is None:
         return None
     value, sort = found
-    if sort == "molar mass":  # mg/Nm3 as mass for an amount of gas
-        value, sort = value * NORMAL_MOLES * 1e6, "number"
+    if sort == "mass in gas" and isinstance(raw, str):  # kept in mg/Nm3, as the quantity is reported
+        value *= NORMAL_MOLES * 1e6
     sheet.add_number(f"{address}.{limit}", value, sort, entry)
     return value
 
@@ -367,7 +380,7 @@ def _quantity_entry(address: str) -> Entry:
             if part.endswith(ending):
                 return Entry("target", sort)
         if part.startswith("mg_per_Nm3"):
-            return Entry("target", ("number", "molar mass"), least=0.0)
+            return Entry("target", "mass in gas", least=0.0)
     return Entry("target", "number")
 
 

@@ -57,7 +57,8 @@ class RegionSolver:
         run = self.run
         cases = np.flatnonzero(run.status == OK)
         if len(cases):
-            self._active_sets(cases)
+            with np.errstate(all="ignore"):  # what has no answer is NaN, and its status says so
+                self._active_sets(cases)
         for item in self.requirements:
             run.inputs.arrays[item.free] = self.found[item.name].free_value
         run.inputs.touched = run.inputs.touched | {item.free for item in self.requirements}
@@ -139,6 +140,7 @@ class RegionSolver:
 
     def _judge(self) -> None:
         run = self.run
+        solved_here = run.status == OK
         for item in self.requirements:
             found = self.found[item.name]
             found.value = value(run, item.quantity)
@@ -149,7 +151,7 @@ class RegionSolver:
                     gap |= found.value <= target
                 elif item.kind == "at_least":
                     gap |= found.value >= target
-            found.reached = gap & (run.status == OK)
+            found.reached = gap & solved_here
             found.reason[found.reached] = None
-            missed = (run.status == OK) & ~gap
+            missed = solved_here & ~gap
             run.status[missed] = code(Status.out_of_reach)

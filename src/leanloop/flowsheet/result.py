@@ -261,6 +261,8 @@ class Result:
                 continue
             try:
                 formulas[address] = formula(address, sheet.plan.phases, sheet.plan.units, sheet.bases)[0]
+                if not isinstance(value(self.parts[0].run, formulas[address]), np.ndarray):
+                    faults.append(Fault(address, "is no number", "name a number of a stream or unit"))
             except AddressError as error:
                 faults.append(Fault(address, error.problem, error.remedy))
         for address in numbers:

@@ -27,6 +27,7 @@ from leanloop.recycle.linear import newton_step
 from leanloop.status import OK, Status, code, solved
 from leanloop.units.base import Unit
 
+CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open by more is no answer
 SECTIONS = (
     "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups",
 )  # fmt: skip
@@ -97,7 +98,8 @@ class Flowsheet:
             units_read[unit.name] = unit.read(known)
             units_read[unit.name].tables = self.conditions
         structure = Structure(self.components, self.feeds, units_read)
-        structure.check(known, read.unsettled(units, units_read))
+        loose = read.unsettled(units, units_read, known)
+        structure.check(known, loose)
         present, phases = structure.present(), structure.phases()
         surroundings = {"components": self.components, "conditions": self.conditions, "basis": self.basis}
         self.units = connect(units_read, structure, surroundings, present, phases, known)
@@ -106,11 +108,15 @@ class Flowsheet:
             read.ways_out(structure, present, known)
         settings, tears = read.loop(loop, known)
         for place, tear in enumerate(tears):
-            if tear not in phases:
+            if tear not in phases and tear not in loose:
                 known.fault(f"loop.tears[{place}]", f"there is no stream '{tear}'", nearest(tear, phases))
         self._stop_on(known)
         self.settings = settings
+        phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         self.plan = Plan(self.components, self.feeds, self.units, structure, present, phases)
+        for place, tear in enumerate(tears):
+            if tear not in self.plan.recycled():
+                known.fault(f"loop.tears[{place}]", f"stream '{tear}' is on no loop", "leave it out")
         held = {
             self.components.names[place]
             for unit in self.units.values()
@@ -261,8 +267,21 @@ class Flowsheet:
             else:
                 for step in region.steps:
                     solve_step(run, step)
+        self._judge_balance(run)
         self._judge_tables(run)
         return Part(rows, run, found, evaluations + run.evaluations)
+
+    def _judge_balance(self, run: Run) -> None:
+        """Let the streams of every column bear witness: an answer that loses or makes anything is none."""
+        for name, unit in self.units.items():
+            if unit.conserves:
+                with np.errstate(all="ignore"):
+                    entering = sum(run.states[stream][:, :-2] for stream in unit.inlets.values())
+                    leaving = sum(run.states[stream][:, :-2] for stream in unit.outlets.values())
+                    lost = np.abs(entering - leaving) > CLOSURE * np.maximum(entering, leaving)
+                lost = lost.any(axis=1) & solved(run.status)
+                run.status[lost] = code(Status.unbalanced)
+                run.culprit[lost] = self.plan.unit_number[name]
 
     def _judge_tables(self, run: Run) -> None:
         from leanloop.flowsheet.view import View

@@ -97,6 +97,7 @@ def derivatives(run: Run, quantity: Formula) -> np.ndarray:
         return np.full((len(run.extra), run.inputs.cases), np.nan)
     found = np.asarray(found)
     imaginary = found.imag if np.iscomplexobj(found) else np.zeros(found.shape)
+    imaginary = np.where(np.isnan(found.real), np.nan, imaginary)
     if imaginary.ndim and imaginary.shape[0] != len(run.extra):
         imaginary = np.broadcast_to(imaginary, (len(run.extra), *imaginary.shape))
     return imaginary / COMPLEX_STEP

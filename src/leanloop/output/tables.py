@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import errno
 import io
 import os
 import tempfile
@@ -53,26 +54,20 @@ def _wide(items: Mapping[str, Mapping[str, Any]], name: str) -> list[list[Any]]:
     return [[name, *keys]] + [[key, *(row.get(column) for column in keys)] for key, row in rows.items()]
 
 
-def write(data: Mapping[str, Any], directory: str) -> None:
-    """Write the tables into a directory, each file whole or not at all.
+def texts(data: Mapping[str, Any], directory: str) -> dict[Path, str]:
+    """Give the tables as CSV by path.
 
     Parameters
     ----------
     data : mapping
     directory : str
-        Made where it does not exist.
-
-    Raises
-    ------
-    OSError
-        Where it cannot be written.
     """
-    folder = Path(directory)
-    folder.mkdir(parents=True, exist_ok=True)
+    out = {}
     for name, rows in files(data).items():
         text = io.StringIO()
         csv.writer(text, lineterminator="\n").writerows([_cell(cell) for cell in row] for row in rows)
-        put(folder / name, text.getvalue())
+        out[Path(directory) / name] = text.getvalue()
+    return out
 
 
 def _cell(cell: Any) -> Any:
@@ -81,32 +76,42 @@ def _cell(cell: Any) -> Any:
     return "; ".join(str(item) for item in cell) if isinstance(cell, Sequence) and not isinstance(cell, str) else cell
 
 
-def put(target: Path, text: str) -> None:
-    """Write a text file whole or not at all.
+def put(texts: Mapping[Path, str], directory: str | None = None) -> None:
+    """Write text files, all of them whole or none.
 
     Parameters
     ----------
-    target : Path
-    text : str
+    texts : mapping of Path to str
+    directory : str, optional
+        Made first where it does not exist.
 
     Raises
     ------
     OSError
+        Where something cannot be written; its `filename` is the one asked for.
     """
-    if target.exists() and not target.is_file():  # a pipe or a device; a directory fails here
-        target.write_text(text, encoding="utf-8")
-        return
+    if directory is not None:
+        Path(directory).mkdir(parents=True, exist_ok=True)
+    ready: list[tuple[Path, Path]] = []
+    mask = os.umask(0)
+    os.umask(mask)
     try:
-        handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
-    except OSError as error:
-        raise OSError(error.errno, error.strerror, str(target)) from None
-    try:
-        with os.fdopen(handle, "w", encoding="utf-8") as stream:
-            stream.write(text)
-        mask = os.umask(0)
-        os.umask(mask)
-        Path(name).chmod(0o666 & ~mask)
-        Path(name).replace(target)
-    except BaseException:
-        Path(name).unlink(missing_ok=True)
-        raise
+        for target, text in texts.items():
+            if target.is_dir():
+                raise OSError(errno.EISDIR, os.strerror(errno.EISDIR), str(target))
+            if target.exists() and not target.is_file():  # a pipe or a device
+                target.write_text(text, encoding="utf-8")
+                continue
+            try:
+                handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
+                ready.append((Path(name), target))
+                with os.fdopen(handle, "w", encoding="utf-8") as stream:
+                    stream.write(text)
+                Path(name).chmod(0o666 & ~mask)
+            except OSError as error:
+                raise OSError(error.errno, error.strerror, str(target)) from None
+        for name, target in ready:
+            name.replace(target)
+    finally:
+        for name, _ in ready:
+            name.unlink(missing_ok=True)

@@ -49,6 +49,11 @@ def table(head: Sequence[str], rows: Iterable[Sequence[str]], indent: str = "  "
     return out
 
 
+def printable(text: str) -> str:
+    """Give a text without control characters, on one line."""
+    return " ".join("".join(letter if letter.isprintable() else " " for letter in text).split())
+
+
 def report(result: Result) -> str:
     """Write the report.
 
@@ -74,7 +79,7 @@ def _batch(result: Result) -> list[str]:
 
 
 def _title(result: Result) -> str:
-    title = result.sheet.title or "Flowsheet"
+    title = printable(result.sheet.title) or "Flowsheet"
     return f"{title}\n{'=' * len(title)}"
 
 
@@ -148,6 +153,7 @@ def _circulation(result: Result, data: dict[str, Any], units: list[str]) -> list
         lean, rich = unit.inlets["liquid_in"], unit.outlets["liquid_out"]
         if unit.cleans != "gas":
             lean, rich = rich, lean
+        names = [solvent for solvent in names if data["streams"][lean]["mol_s"][solvent]] or names
         circulation = sum(data["streams"][lean]["mol_s"][solvent] or 0.0 for solvent in names)
         lines.append(
             f"  {name}: {number(circulation * PER_HOUR)} kmol/h of {' + '.join(names)}, "
@@ -187,11 +193,11 @@ def _column(result: Result, name: str, unit: dict[str, Any]) -> list[str]:
             number(found["approach_rich"].get(component)),
             number(found["approach_lean"].get(component)),
         ]
-        for component in found["removal"]
+        for component in profile["K"]
     ]
     lines += table([f"removal from the {clean}", "removed", factor.replace("_", " "), "p/p* rich end", "p/p* lean end"], rows)
     places = list(dict.fromkeys([0, count - 1]))
-    for component in found["removal"]:
+    for component in profile["K"]:
         rows = [
             [
                 f"stage {profile['stage'][place]}" + (" (top)" if place == 0 else " (bottom)"),
@@ -275,7 +281,9 @@ def _balance(data: dict[str, Any]) -> list[str]:
         for component, item in data["balance"]["components"].items()
     ]
     head = ["component", "in, make-up included", "out", "closure"]
-    return ["", "Combined balance of absorber and regenerator, kmol/h", *table(head, rows)]
+    both = {unit["kind"] for unit in data["units"].values() if "profile" in unit}
+    title = "Combined balance of absorber and regenerator" if len(both) > 1 else "Balance"
+    return ["", f"{title}, kmol/h", *table(head, rows)]
 
 
 def structure(sheet: Any, found: dict[str, Any]) -> str:
@@ -293,7 +301,7 @@ def structure(sheet: Any, found: dict[str, Any]) -> str:
     """
     plan = sheet.plan
     lines = [
-        sheet.title or "Flowsheet",
+        printable(sheet.title) or "Flowsheet",
         f"  {len(sheet.components)} components, {len(sheet.feeds)} feeds, {len(plan.units)} units, {len(plan.phases)} streams",
         f"  order of calculation: {' > '.join(found['order'])}",
     ]

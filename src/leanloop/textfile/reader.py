@@ -121,7 +121,11 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
             if len(heads) == 3 and heads[0] == "feeds" and heads[2] in SCALED:
                 moved.setdefault((heads[1], heads[2]), set()).add(last)
     for (feed, form), names in moved.items():
-        _scale_others(data["feeds"][feed][form], names)
+        parts: Any = data
+        for key in ("feeds", feed, form):  # a later setting may have put something else there
+            parts = parts.get(key) if isinstance(parts, dict) else None
+        if isinstance(parts, dict) and names <= set(parts):
+            _scale_others(parts, names)
     return context.faults
 
 

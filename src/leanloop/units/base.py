@@ -141,6 +141,8 @@ class Unit(ABC):
         Whether scaling all inlet flows (and flow inputs) scales all outlet flows.
     shuts : bool
         Whether `passes` depends on numbers.
+    conserves : bool
+        Whether outlets must hold what inlets bring, so that a case in which they do not is no answer.
     inlets, outlets : dict of str to str
         Stream names by label, once read. The label is the port's name, or the stream's own name
         at a port that takes several.
@@ -153,6 +155,7 @@ class Unit(ABC):
     derivatives: ClassVar[str] = "complex"
     scales: ClassVar[bool] = True
     shuts: ClassVar[bool] = False
+    conserves: ClassVar[bool] = False
     known_failures: ClassVar[Mapping[str, str]] = {}
 
     def __init__(self, name: str, **raw: Any) -> None:

@@ -20,6 +20,7 @@ class ColumnReport(Unit):
     """The reporting half of `leanloop.units.column.Column`, which solves the stages."""
 
     cleans: ClassVar[str] = "gas"
+    conserves: ClassVar[bool] = True
 
     def results(
         self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]
@@ -165,6 +166,8 @@ class ColumnReport(Unit):
         temperature, pressure = self._conditions(inlets, numbers)
         if np.any(inlets["liquid_in"].pressure < pressure * (1 - 1e-6)):
             found.append(f"Column {self.name}: its liquid is fed at less than the column's pressure; a pump is needed.")
+        if np.any(inlets["gas_in"].pressure < pressure * (1 - 1e-6)):
+            found.append(f"Column {self.name}: its gas is fed at less than the column's pressure; a blower is needed.")
         unknowns = self._unknowns(numbers, inlets, memory)
         found += self._condensing(inlets, temperature, pressure, unknowns[..., 0])
         stages = self._stages(inlets, numbers)
