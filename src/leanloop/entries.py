@@ -202,7 +202,8 @@ def _inside(value: float, raw: Any, entry: Entry, sort: str, address: str, conte
             parts.append(f"at most {entry.most:g}")
         if entry.below is not None:
             parts.append(f"below {entry.below:g}")
-        context.fault(address, f"{_shown(raw)} is out of range", f"write a value {' and '.join(parts)}{'' if sort in ('number', 'integer') else ' (SI)'}")
+        units = "" if sort in ("number", "integer") else " (SI)"
+        context.fault(address, f"{_shown(raw)} is out of range", f"write a value {' and '.join(parts)}{units}")
         return False
     return True
 
@@ -317,7 +318,8 @@ def _read_word(raw: Any, entry: Entry, address: str, context: Context) -> Any:
     for index, item in enumerate(items):
         where = f"{address}[{index}]" if many else address
         if not isinstance(item, str) or not item:
-            context.fault(where, f"{_shown(item)} is no name", f"write a name in quotes{' or a list of them' if entry.many else ''}")
+            several = " or a list of them" if entry.many else ""
+            context.fault(where, f"{_shown(item)} is no name", f"write a name in quotes{several}")
         elif entry.sort in ("inlet", "outlet") and not is_name(item):
             context.fault(where, f"{_shown(item)} is no name of a stream", NAMES)
         elif known and entry.sort != "text" and item not in known:

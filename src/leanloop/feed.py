@@ -135,7 +135,8 @@ class Feed:
         if self.form == "flows":
             context.fault(where, "does not go with flows by component", "give flow and fractions of the dry gas")
         if name in self.values.group(self.form) or name == self.rest:
-            context.fault(where, f"'{name}' is given in {self.form} as well", f"take it out of {self.form}, which then is the dry gas")
+            remedy = f"take it out of {self.form}, which then is the dry gas"
+            context.fault(where, f"'{name}' is given in {self.form} as well", remedy)
         for table in conditions.values():
             model = table.models.get(name)
             if hasattr(model, "saturation_pressure"):
@@ -231,7 +232,8 @@ class Feed:
         if self.form == "loadings" and self.phase == "gas":
             context.fault(f"{address}.loadings", "loadings are for liquids", "give ratios or fractions")
         if "temperature" in numbers and not 20.0 <= numbers["temperature"] <= 3000.0:
-            context.fault(f"{address}.temperature", f"{numbers['temperature']:g} K is no temperature of a process stream", "check its unit")
+            problem = f"{numbers['temperature']:g} K is no temperature of a process stream"
+            context.fault(f"{address}.temperature", problem, "check its unit")
 
     def present(self) -> list[str]:
         """Give the components that the feed can hold."""

@@ -173,7 +173,8 @@ def _read_array(sheet: Flowsheet, array: np.ndarray, address: str, context: Cont
         most = np.inf if entry.most is None else entry.most
         wrong = np.flatnonzero(~(np.isfinite(values) & (values == np.round(values)) & (values >= least) & (values <= most)))
         for place in wrong[:5]:
-            context.fault(f"{address}[{place}]", f"{values[place]:g} is no allowed whole number", f"write one from {least:g} to {most:g}")
+            problem = f"{values[place]:g} is no allowed whole number"
+            context.fault(f"{address}[{place}]", problem, f"write one from {least:g} to {most:g}")
         return None if len(wrong) else [int(item) for item in values]
     low = values <= 0 if sort == "temperature" else np.zeros(values.shape, dtype=bool)
     with np.errstate(invalid="ignore"):
