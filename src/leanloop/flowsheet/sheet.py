@@ -28,6 +28,7 @@ from leanloop.status import OK, Status, code, solved
 from leanloop.units.base import Unit
 
 CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open by more is no answer
+NOTHING = 1e-25  # of all that enters: less of a component is not told from none
 SECTIONS = (
     "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups",
 )  # fmt: skip
@@ -278,7 +279,8 @@ class Flowsheet:
                 with np.errstate(all="ignore"):
                     entering = sum(run.states[stream][:, :-2] for stream in unit.inlets.values())
                     leaving = sum(run.states[stream][:, :-2] for stream in unit.outlets.values())
-                    lost = np.abs(entering - leaving) > CLOSURE * np.maximum(entering, leaving)
+                    least = NOTHING * entering.sum(axis=1, keepdims=True)
+                    lost = np.abs(entering - leaving) > CLOSURE * np.maximum(entering, leaving) + least
                 lost = lost.any(axis=1) & solved(run.status)
                 run.status[lost] = code(Status.unbalanced)
                 run.culprit[lost] = self.plan.unit_number[name]
