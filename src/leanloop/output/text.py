@@ -170,6 +170,13 @@ def _circulation(result: Result, data: dict[str, Any], units: list[str]) -> list
     for name in units:
         for component, added in (data["units"][name]["results"].get("added_mol_s") or {}).items():
             lines.append(f"  {name} adds {number(None if added is None else added * PER_HOUR)} kmol/h of {component}")
+    for stream in plan.structure.products:
+        if plan.structure.makers[stream][0] in units and plan.phases[stream] == "liquid":
+            item = data["streams"][stream]
+            if item["total_mol_s"] is None:
+                continue
+            held = [f"{number(_hourly(item['mol_s'][c]))} of {c}" for c in plan.components.names if item["mol_s"][c]]
+            lines.append(f"  {stream} leaves with {number(_hourly(item['total_mol_s']))} kmol/h: {', '.join(held)}")
     return lines
 
 
