@@ -216,17 +216,17 @@ class TestSingleReport:
     def test_requirements(self, results):
         text = str(results["vent"])
         free = results["vent"]["requirements.emission.free_value"]
-        assert f"= 150.00: met, at 150.00 with units.top_up.hold.oil = {free * 3.6:.4f} kmol/h" in text
+        assert f"= 150.00 mg/Nm3: met, at 150.00 mg/Nm3 with units.top_up.hold.oil = {free * 3.6:.4f} kmol/h" in text
         (other,) = results["vent"].to_dict()["requirements"]["emission"]["other_solutions"]
         assert f"also solved by {other * 3.6:.4f} kmol/h" in text
-        assert "<= 150.00: met" in str(results["scrubber"])
+        assert "<= 150.00 mg/Nm3: met" in str(results["scrubber"])
         assert "not met (turning_point)" in str(results["turning"])
         assert "not met (bound)" in str(results["bound"])
 
     def test_a_limit_that_holds_is_told(self):
         result = leanloop.read(SCRUBBER, ["requirements.emission.at_most=500 mg/Nm3"]).solve()
         assert not result["requirements.emission.active"]
-        assert "<= 500.00: met" in str(result)
+        assert "<= 500.00 mg/Nm3: met" in str(result)
         assert "320.00 kmol/h, as given" in str(result)
 
 

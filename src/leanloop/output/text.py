@@ -109,11 +109,27 @@ def _requirements(result: Result, data: dict[str, Any]) -> list[str]:
         how = f"{item.free} = {_shown(result, item.free, found['free_value'])}"
         if not found["active"]:
             how += ", as given"
-        lines.append(f"  {name}: {item.address} {verb} {number(target)}: {outcome}, at {number(found['value'])} with {how}")
+        wanted, have = _figure(item.address, target), _figure(item.address, found["value"])
+        lines.append(f"  {name}: {item.address} {verb} {wanted}: {outcome}, at {have} with {how}")
         if found["other_solutions"]:
             others = ", ".join(_shown(result, item.free, other) for other in found["other_solutions"])
             lines.append(f"    also solved by {others}")
     return ["", "Asked for", *lines] if lines else []
+
+
+def _figure(address: str, value: float | None) -> str:
+    """Write a quantity in the unit of a report, which the end of its address tells."""
+    parts = address.split(".")
+    if any(part.startswith("mg_per_Nm3") for part in parts):
+        return f"{number(value)} mg/Nm3"
+    for ending, write in (
+        ("mol_s", lambda own: f"{number(own * PER_HOUR)} kmol/h"),
+        ("_K", lambda own: f"{number(own - 273.15)} degC"),
+        ("_Pa", lambda own: f"{number(own / 1e5)} bar"),
+    ):
+        if value is not None and any(part.endswith(ending) for part in parts):
+            return write(value)
+    return number(value)
 
 
 def _shown(result: Result, address: str, value: float | None) -> str:
