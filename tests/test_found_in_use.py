@@ -91,3 +91,13 @@ def test_a_column_that_dries_up():
         {"tower": dict(kind="absorber", gas_in="g", liquid_in="l", gas_out="c", liquid_out="r", stages=4, equilibrium="t")},
     )
     assert sheet.solve().status == "dry_stage"
+
+
+def test_components_as_objects():
+    air, oil = leanloop.Component("air", 0.02896, "gas"), leanloop.Component("oil", stays_in="liquid")
+    feed = leanloop.Feed("a", phase="gas", temperature=300.0, pressure=1e5, flows={"air": 1.0})
+    units = {"warm": dict(kind="heater", takes="a", gives="b", temperature=320.0)}
+    result = leanloop.Flowsheet([air, oil], feeds=[feed], units=units).solve()
+    assert result["streams.b.temperature_K"] == 320.0
+    with pytest.raises(leanloop.InputError, match="two components"):
+        leanloop.Flowsheet([air, air], feeds=[feed], units=units)

@@ -57,6 +57,8 @@ def table(address: str, raw: Any, context: Context) -> Mapping[str, Any]:
 
 def components(raw: Any, groups: Any, context: Context) -> Components:
     """Read components and their groups."""
+    if isinstance(raw, (list, tuple)) and raw and all(isinstance(item, Component) for item in raw):
+        raw = {item.name: item for item in _objects("components", raw, context)}
     items, doubtful = [], []
     for name, entry in table("components", raw, context).items():
         faults = len(context.faults)

@@ -39,7 +39,7 @@ class Flowsheet:
 
     Parameters
     ----------
-    components : mapping of str to Component or mapping
+    components : mapping of str to Component or mapping, or list of Component
     equilibrium : mapping of str to mapping
         Tables by name, each a model or ``stays_in`` by component.
     feeds : mapping of str to mapping, or list of Feed
