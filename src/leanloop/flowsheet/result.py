@@ -14,7 +14,7 @@ from leanloop.flowsheet.requirement import Found
 from leanloop.flowsheet.run import Run
 from leanloop.flowsheet.view import View, derivatives, value
 from leanloop.status import CODE, OK, REASONS, Status, solved, status_of
-from leanloop.stream import Stream, divide
+from leanloop.stream import Stream
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
@@ -329,7 +329,7 @@ class Result:
                 "status": self.status,
                 "status_text": self.status_text,
                 "loop": self._loop(),
-                "loops": self._loops(),
+                "loops": self._loops_cached(),
                 "streams": {
                     name: self._tree(lambda part, name=name: stream_table(View(part.run).stream(name), sheet.bases))
                     for name in sheet.plan.structure.streams
@@ -458,6 +458,3 @@ def plain(item: Any) -> Any:
         number = float(item)
         return number if np.isfinite(number) else None
     return item
-
-
-__all__ = ["Part", "Result", "divide", "plain", "value"]

@@ -11,7 +11,7 @@ from leanloop.column.band import BYTES_A_CHUNK
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
 from leanloop.errors import Fault, InputError, nearest
-from leanloop.flowsheet import read
+from leanloop.flowsheet import read, read_requirements
 from leanloop.flowsheet.graph import Structure, Tie
 from leanloop.flowsheet.inputs import Inputs
 from leanloop.flowsheet.loop import solve_step
@@ -125,7 +125,7 @@ class Flowsheet:
         }
         self.bases = Bases(self.components, self.basis, held)
         self._gather_numbers()
-        self.requirements = read.requirements(self, requirements, known)
+        self.requirements = read_requirements.requirements(self, requirements, known)
         self._stop_on(known)
         try:
             self.plan.arrange({name: self.tie(item) for name, item in self.requirements.items()}, tears)
