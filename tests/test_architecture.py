@@ -39,18 +39,20 @@ LAYERS = {
     "flowsheet": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "column", "units", "feed", "recycle",
     ),
-    "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet"),
+    "pinch": (*TEXT, "status", "components", "stream", "equilibrium", "units", "flowsheet"),
+    "pictures": ("errors", "units", "flowsheet", "pinch"),
+    "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch"),
     "textfile": (*TEXT, "components", "feed", "flowsheet"),
     "checks": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle",
     ),
-    "cli": (*TEXT, "output", "flowsheet", "textfile", "package"),
+    "cli": (*TEXT, "output", "pictures", "flowsheet", "textfile", "package"),
     "__main__": ("cli",),
-    "package": (*TEXT, "components", "stream", "feed", "flowsheet", "textfile"),  # leanloop/__init__.py
+    "package": (*TEXT, "components", "stream", "feed", "flowsheet", "pinch", "textfile"),  # leanloop/__init__.py
 }
 ORDER = (
     "errors", "status", "registry", "quantities", "entries", "components", "stream", "equilibrium", "column", "feed",
-    "units", "recycle", "checks", "flowsheet", "output", "textfile", "package", "cli", "__main__",
+    "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
@@ -58,6 +60,7 @@ OUTSIDE = {
     "numpy": ("",),
     "scipy": ("",),
     "networkx": ("flowsheet/graph.py", "flowsheet/tearing.py"),
+    "matplotlib": ("pictures/",),
 }
 STANDARD_ONLY_IN = {"argparse": ("cli.py",), "tomllib": ("textfile/",)}
 NOT_IN = {("scipy", "recycle/"), ("scipy", "textfile/"), ("scipy", "cli.py"), ("numpy", "cli.py"), ("numpy", "quantities.py")}
@@ -194,7 +197,8 @@ class TestImports:
         ("recycle/driver.py", 1, "from leanloop.stream import Stream\n", "recycle imports leanloop.stream"),
         ("recycle/newton.py", 1, "import scipy.optimize\n", "scipy has no place here"),
         ("units/mixer.py", 1, "import argparse\n", "argparse is for cli.py alone"),
-        ("output/text.py", 1, "import matplotlib.pyplot as plt\n", "matplotlib is no package"),
+        ("output/text.py", 1, "import matplotlib.pyplot as plt\n", "matplotlib has no place here"),
+        ("pictures/base.py", 1, "import seaborn\n", "seaborn is no package"),
         ("errors.py", 1, "from . import status\n", "relative import"),
         ("hidden.py", 1, "", "is in no layer"),
         ("registry.py", 2, "try:\n    from leanloop.entries import Entry\nfinally:\n    pass\n", "leanloop.entries"),

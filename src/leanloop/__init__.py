@@ -5,6 +5,7 @@ from leanloop.errors import InputError, LeanloopError, NotReached
 from leanloop.feed import Feed
 from leanloop.flowsheet.result import Result
 from leanloop.flowsheet.sheet import Flowsheet
+from leanloop.pinch.limits import Limits, limits
 from leanloop.stream import Stream
 from leanloop.textfile.reader import read
 
@@ -16,9 +17,11 @@ __all__ = [
     "Flowsheet",
     "InputError",
     "LeanloopError",
+    "Limits",
     "NotReached",
     "Result",
     "Stream",
     "__version__",
+    "limits",
     "read",
 ]

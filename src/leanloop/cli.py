@@ -9,9 +9,10 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import NoReturn
 
-from leanloop import __version__
-from leanloop.errors import Fault, InputError, LeanloopError
-from leanloop.output import catalogue, json, tables, text
+from leanloop import __version__, limits
+from leanloop.errors import Fault, InputError, LeanloopError, MissingExtra
+from leanloop.output import catalogue, content_limits, html, json, tables, text
+from leanloop.pictures import gather
 from leanloop.textfile.reader import read
 
 REACHED, NOT_REACHED, WRONG_INPUT = 0, 1, 2
@@ -28,18 +29,30 @@ def _parser() -> argparse.ArgumentParser:
     parser = _Parser(prog="leanloop", description="Absorber and stripper on one circulating solvent.")
     parser.add_argument("--version", action="version", version=f"leanloop {__version__}")
     commands = parser.add_subparsers(dest="command", metavar="COMMAND", required=True, parser_class=_Parser)
-    solve = commands.add_parser("solve", help="solve a flowsheet and report it")
-    solve.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
-    solve.add_argument(
-        "--set", dest="settings", action="append", default=[], metavar="ADDRESS=VALUE", help="change an entry of the file"
-    )
+    solve = _command(commands, "solve", "solve a flowsheet and report it")
     solve.add_argument("--json", metavar="PATH", help="write the result as JSON; - for standard output, and nothing else there")
     solve.add_argument("--tables", metavar="DIR", help="write streams, profiles, units and balance as CSV files into a directory")
-    check = commands.add_parser("check", help="read a flowsheet and show its order, loops and tears; solve nothing")
-    check.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
+    solve.add_argument("--pictures", metavar="DIR", help="draw flowsheet, stages, profiles, window and convergence into a directory")
+    solve.add_argument("--report", metavar="FILE.html", help="write report, limits and pictures as one page that can be printed")
+    check = _command(commands, "check", "read a flowsheet and show its order, loops and tears; solve nothing", changes=False)
     check.add_argument("--json", metavar="PATH", help="write what was found as JSON; - for standard output")
+    limited = _command(commands, "limits", "least and most solvent, least stripping gas, where each column pinches and how")
+    limited.add_argument("--json", metavar="PATH", help="write the limits as JSON; - for standard output, and nothing else there")
+    draw = _command(commands, "draw", "solve a flowsheet and draw its pictures")
+    draw.add_argument("--out", metavar="DIR", required=True, help="directory for the pictures, SVG and PNG")
     commands.add_parser("catalogue", help="list installed unit kinds, equilibrium models and recycle methods")
     return parser
+
+
+def _command(commands: argparse._SubParsersAction, name: str, what: str, changes: bool = True) -> argparse.ArgumentParser:
+    """Add a command that reads a flowsheet."""
+    command = commands.add_parser(name, help=what, description=what[:1].upper() + what[1:] + ".")
+    command.add_argument("file", metavar="FILE", help="flowsheet file (TOML)")
+    if changes:
+        command.add_argument(
+            "--set", dest="settings", action="append", default=[], metavar="ADDRESS=VALUE", help="change an entry of the file"
+        )
+    return command
 
 
 def _solve(arguments: argparse.Namespace) -> int:
@@ -48,8 +61,41 @@ def _solve(arguments: argparse.Namespace) -> int:
     files = tables.texts(result.to_dict(), arguments.tables) if arguments.tables else {}
     if arguments.json and arguments.json != "-":
         files[Path(arguments.json)] = json.text(result.to_dict())
-    tables.put(files, arguments.tables)
+    found = limits(result) if arguments.pictures or arguments.report else None
+    shown = []
+    if arguments.pictures:
+        shown = gather.pictures(result, found)
+        files.update(gather.files(shown, arguments.pictures))
+    if arguments.report:
+        missing = ""
+        try:
+            shown = shown or gather.pictures(result, found)
+        except MissingExtra as error:
+            missing = f"No pictures: {error}."
+            sys.stderr.write(f"{arguments.report}: without pictures: {error}\n")
+        extra = content_limits.limits_sections(found, alone=False)
+        files[Path(arguments.report)] = html.page(result, extra, gather.inline(shown), missing, __version__)
+    tables.put(files, arguments.tables, arguments.pictures)
     sys.stdout.write(json.text(result.to_dict()) if arguments.json == "-" else written)
+    return REACHED if result.converged else NOT_REACHED
+
+
+def _limits(arguments: argparse.Namespace) -> int:
+    result = read(arguments.file, arguments.settings).solve()
+    found = limits(result)
+    written = text.limits(found)
+    if arguments.json and arguments.json != "-":
+        tables.put({Path(arguments.json): json.text(found.to_dict())})
+    sys.stdout.write(json.text(found.to_dict()) if arguments.json == "-" else written)
+    return REACHED if result.converged else NOT_REACHED
+
+
+def _draw(arguments: argparse.Namespace) -> int:
+    result = read(arguments.file, arguments.settings).solve()
+    files = gather.files(gather.pictures(result), arguments.out)
+    tables.put(files, arguments.out)
+    sys.stdout.write(f"{result.sheet.title or 'Flowsheet'}: {result.status}. {result.status_text}\n")
+    sys.stdout.write("".join(f"  {path}\n" for path in files))
     return REACHED if result.converged else NOT_REACHED
 
 
@@ -91,7 +137,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         parsed = _parser().parse_args(arguments)
         source = getattr(parsed, "file", source)
-        code = {"solve": _solve, "check": _check, "catalogue": _catalogue}[parsed.command](parsed)
+        code = {"solve": _solve, "check": _check, "limits": _limits, "draw": _draw, "catalogue": _catalogue}[parsed.command](parsed)
         sys.stdout.flush()
         return code
     except InputError as error:

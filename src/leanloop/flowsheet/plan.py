@@ -71,6 +71,10 @@ class Plan:
         }
         self.regions = arrange(self.graph, placed, self._costs(), tears)
 
+    def forget(self) -> None:
+        """Drop what depends on the arrangement, before it is made anew."""
+        self._memo = {}
+
     def recycled(self) -> set[str]:
         """Give the streams that lie on some loop."""
         return recycled(self.graph)

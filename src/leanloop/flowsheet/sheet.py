@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 from collections.abc import Mapping
 from typing import Any
 
@@ -11,7 +12,7 @@ from leanloop.column.band import BYTES_A_CHUNK
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
 from leanloop.errors import Fault, InputError, nearest
-from leanloop.flowsheet import read, read_requirements
+from leanloop.flowsheet import read, read_limits, read_requirements
 from leanloop.flowsheet.graph import Structure, Tie
 from leanloop.flowsheet.inputs import Inputs
 from leanloop.flowsheet.loop import solve_step
@@ -30,7 +31,7 @@ from leanloop.units.base import Unit
 CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open by more is no answer
 NOTHING = 1e-25  # of all that enters: less of a component is not told from none
 SECTIONS = (
-    "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups",
+    "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups", "limits",
 )  # fmt: skip
 
 
@@ -49,6 +50,8 @@ class Flowsheet:
     loop : mapping, optional
         ``method``, ``tolerance``, ``passes``, ``tears``.
     basis, groups : mapping of str to list of str, optional
+    limits : mapping of str to mapping, optional
+        Ends of columns for `leanloop.limits`: ``key``, ``gas_in``, ``gas_out``, ``liquid_in``, ``liquid_out``, ``removal``.
     plain_si : bool
         Whether plain numbers may stand for quantities with a dimension, in SI units.
     source : str
@@ -73,6 +76,7 @@ class Flowsheet:
         loop: Any = None,
         basis: Any = None,
         groups: Any = None,
+        limits: Any = None,
         *,
         plain_si: bool = True,
         source: str = "",
@@ -112,7 +116,7 @@ class Flowsheet:
             if tear not in phases and tear not in loose:
                 known.fault(f"loop.tears[{place}]", f"there is no stream '{tear}'", nearest(tear, phases))
         self._stop_on(known)
-        self.settings = settings
+        self.settings, self.tears = settings, tears
         phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         self.plan = Plan(self.components, self.feeds, self.units, structure, present, phases)
         for place, tear in enumerate(tears):
@@ -126,6 +130,7 @@ class Flowsheet:
         self.bases = Bases(self.components, self.basis, held)
         self._gather_numbers()
         self.requirements = read_requirements.requirements(self, requirements, known)
+        self.limits = read_limits.limits(limits, self.units, known)
         self._stop_on(known)
         try:
             self.plan.arrange({name: self.tie(item) for name, item in self.requirements.items()}, tears)
@@ -189,6 +194,15 @@ class Flowsheet:
             tuple(name for name, addresses in self.plan.addresses.items() if item.free in addresses.values()),
             tuple(name for name in self.feeds if item.free.startswith(f"feeds.{name}.")),
         )
+
+    def released(self) -> Flowsheet:
+        """Give the same flowsheet without its requirements: what they free is an input like any other."""
+        sheet = copy.copy(self)
+        sheet.requirements = {}
+        sheet.plan = copy.copy(self.plan)
+        sheet.plan.forget()
+        sheet.plan.arrange({}, self.tears)
+        return sheet
 
     # --- checking and solving
 

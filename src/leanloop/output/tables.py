@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import Any
 
 
-def files(data: Mapping[str, Any]) -> dict[str, list[list[Any]]]:
+def rows_by_file(data: Mapping[str, Any]) -> dict[str, list[list[Any]]]:
     """Give the tables of one case by file name.
 
     Parameters
@@ -63,7 +63,7 @@ def texts(data: Mapping[str, Any], directory: str) -> dict[Path, str]:
     directory : str
     """
     out = {}
-    for name, rows in files(data).items():
+    for name, rows in rows_by_file(data).items():
         text = io.StringIO()
         csv.writer(text, lineterminator="\n").writerows([_cell(cell) for cell in row] for row in rows)
         out[Path(directory) / name] = text.getvalue()
@@ -76,37 +76,40 @@ def _cell(cell: Any) -> Any:
     return "; ".join(str(item) for item in cell) if isinstance(cell, Sequence) and not isinstance(cell, str) else cell
 
 
-def put(texts: Mapping[Path, str], directory: str | None = None) -> None:
-    """Write text files, all of them whole or none.
+def put(files: Mapping[Path, str | bytes], *directories: str | None) -> None:
+    """Write files, all of them whole or none.
 
     Parameters
     ----------
-    texts : mapping of Path to str
-    directory : str, optional
-        Made first where it does not exist.
+    files : mapping of Path to str or bytes
+        Text is written as UTF-8.
+    *directories : str or None
+        Made first where they do not exist.
 
     Raises
     ------
     OSError
         Where something cannot be written; its `filename` is the one asked for.
     """
-    if directory is not None:
-        Path(directory).mkdir(parents=True, exist_ok=True)
+    for directory in directories:
+        if directory is not None:
+            Path(directory).mkdir(parents=True, exist_ok=True)
     ready: list[tuple[Path, Path]] = []
     mask = os.umask(0)
     os.umask(mask)
     try:
-        for target, text in texts.items():
+        for target, content in files.items():
+            content = content.encode("utf-8") if isinstance(content, str) else content
             if target.is_dir():
                 raise OSError(errno.EISDIR, os.strerror(errno.EISDIR), str(target))
             if target.exists() and not target.is_file():  # a pipe or a device
-                target.write_text(text, encoding="utf-8")
+                target.write_bytes(content)
                 continue
             try:
                 handle, name = tempfile.mkstemp(dir=target.parent, prefix=".leanloop-")
                 ready.append((Path(name), target))
-                with os.fdopen(handle, "w", encoding="utf-8") as stream:
-                    stream.write(text)
+                with os.fdopen(handle, "wb") as stream:
+                    stream.write(content)
                 Path(name).chmod(0o666 & ~mask)
             except OSError as error:
                 raise OSError(error.errno, error.strerror, str(target)) from None

@@ -15,7 +15,7 @@ from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 from leanloop.quantities import parse
 
 SCALED = ("fractions", "mass_fractions")  # changing one of them scales the others
-ELSEWHERE = ("heat_data", "limits", "studies", "sizing")  # for other questions than a solve
+ELSEWHERE = ("heat_data", "studies", "sizing")  # for other questions than a solve
 
 DEEPEST = 50  # tables in one another
 TOO_DEEP = Fault("file", "is nested too deep", "write plain tables and lists")
@@ -213,6 +213,7 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
             data.get("loop"),
             data.get("basis"),
             data.get("groups"),
+            data.get("limits"),
             plain_si=False,
             source=name,
             directory=str(Path(path).parent),

@@ -143,13 +143,15 @@ class Column(ColumnReport):
 
     # --- calculating
 
-    def _conditions(self, inlets: Mapping[str, Stream], numbers: Numbers) -> tuple[np.ndarray, np.ndarray]:
+    def conditions_of(self, inlets: Mapping[str, Stream], numbers: Numbers) -> tuple[np.ndarray, np.ndarray]:
+        """Give temperature and pressure of the stages, (...,) K and Pa."""
         shape = inlets["gas_in"].state.shape[:-1]
         temperature = numbers.get("temperature", inlets["liquid_in"].temperature)
         pressure = numbers.get("pressure", inlets["gas_in"].pressure)
         return _filled(temperature, shape), _filled(pressure, shape)
 
-    def _model_numbers(self, numbers: Numbers) -> list[dict[str, Any]]:
+    def model_numbers(self, numbers: Numbers) -> list[dict[str, Any]]:
+        """Give the numbers of each distributing component's model, by their names there."""
         return [
             {key: numbers[f"{name}.{key}"] for key in model.numbers}
             for name, model in zip(self.model_names, self.models, strict=True)
@@ -161,8 +163,8 @@ class Column(ColumnReport):
         feeds = np.zeros((cases, count, len(self.places)))
         feeds[:, 0] += liquid[:, self.places]
         feeds[:, -1] += gas[:, self.places]
-        temperature, pressure = self._conditions(inlets, numbers)
-        law = self.law.at(temperature[:, None], pressure[:, None], self._model_numbers(numbers))
+        temperature, pressure = self.conditions_of(inlets, numbers)
+        law = self.law.at(temperature[:, None], pressure[:, None], self.model_numbers(numbers))
         inert = inert_flows(gas, liquid, count, *self.weights)
         if law.plain:
             return Stages(feeds, *inert, *inert, law)
@@ -174,7 +176,7 @@ class Column(ColumnReport):
     ) -> dict[str, Stream]:
         """Put the outlets together from the distributing flows that leave."""
         fed = inlets["gas_in"].flows + inlets["liquid_in"].flows
-        temperature, pressure = self._conditions(inlets, numbers)
+        temperature, pressure = self.conditions_of(inlets, numbers)
         gas, liquid = fed * self.weights[0], fed * self.weights[1]
         gas[..., self.places], liquid[..., self.places] = top, bottom
         return {
@@ -191,9 +193,9 @@ class Column(ColumnReport):
         gas, liquid = inlets["gas_in"], inlets["liquid_in"]
         if not liquid.flows.any():  # nothing has come round the loop yet
             return self._leaving(inlets, numbers, gas.flows[:, self.places], liquid.flows[:, self.places])
-        temperature, pressure = self._conditions(inlets, numbers)
+        temperature, pressure = self.conditions_of(inlets, numbers)
         with np.errstate(all="ignore"):
-            law = self.law.at(temperature[:, None], pressure[:, None], self._model_numbers(numbers))
+            law = self.law.at(temperature[:, None], pressure[:, None], self.model_numbers(numbers))
             g, l = gas.total[:, None] + 1e-300, liquid.total[:, None]
             factor = law.k_dilute[:, 0] * g / np.maximum(l, 1e-9 * g)
             stripped, absorbed = split_fractions(np.clip(np.nan_to_num(factor), 1e-15, 1e15), int(numbers["stages"]))

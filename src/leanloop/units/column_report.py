@@ -31,8 +31,8 @@ class ColumnReport(Unit):
         gas_out, liquid_out = outlets["gas_out"], outlets["liquid_out"]
         unknowns = self._unknowns(numbers, inlets, memory)
         count = unknowns.shape[-2]
-        temperature, pressure = self._conditions(inlets, numbers)
-        law = self.law.at(temperature[..., None], pressure[..., None], self._model_numbers(numbers))
+        temperature, pressure = self.conditions_of(inlets, numbers)
+        law = self.law.at(temperature[..., None], pressure[..., None], self.model_numbers(numbers))
         fed = gas_in.flows + liquid_in.flows
         liquid = np.repeat(np.where(self.stays_liquid, liquid_in.flows, 0.0)[..., None, :], count, axis=-2)
         liquid[..., -1, :] = np.where(self.stays_liquid, fed, 0.0)
@@ -163,7 +163,7 @@ class ColumnReport(Unit):
     ) -> list[str]:
         """Say where the pressure of the liquid is too low or a correlation's range is left."""
         found = []
-        temperature, pressure = self._conditions(inlets, numbers)
+        temperature, pressure = self.conditions_of(inlets, numbers)
         if np.any(inlets["liquid_in"].pressure < pressure * (1 - 1e-6)):
             found.append(f"Column {self.name}: its liquid is fed at less than the column's pressure; a pump is needed.")
         if np.any(inlets["gas_in"].pressure < pressure * (1 - 1e-6)):

@@ -1,0 +1,1 @@
+"""Pictures of a solved flowsheet, by matplotlib, which the extra `pictures` brings."""

@@ -1,0 +1,104 @@
+"""All pictures of a result, with their file names and captions."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from leanloop.pictures import base, convergence, drawing, profiles, stage_diagram, window
+from leanloop.pinch import diagram
+from leanloop.pinch.limits import Limits, limits
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+    from leanloop.flowsheet.result import Result
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A figure and what it is called.
+
+    Attributes
+    ----------
+    name : str
+        Of its files, without an ending.
+    place : str
+        Address of what it shows, as sections of a report have it.
+    caption : str
+    figure : matplotlib.figure.Figure
+    """
+
+    name: str
+    place: str
+    caption: str
+    figure: Figure
+
+
+def pictures(result: Result, found: Limits | None = None) -> list[Picture]:
+    """Draw everything there is to draw of one case.
+
+    Parameters
+    ----------
+    result : Result
+        With a case axis, its first case is drawn.
+    found : Limits, optional
+        Of that case, where they are known already.
+
+    Returns
+    -------
+    list of Picture
+
+    Raises
+    ------
+    MissingExtra
+        Where matplotlib is not installed.
+    """
+    base.library()
+    found = limits(result) if found is None else found
+    drawn = None if result.axis else result
+    out = [Picture("flowsheet", "", "The flowsheet", drawing.figure(result.sheet, drawn))]
+    for name in found.columns if found.case.usable else ():
+        place = f"units.{name}"
+        shown = diagram.stage_diagram(found, name)
+        if shown is not None:
+            out.append(Picture(f"stages_{name}", place, f"Stages of {name} on mole ratios", stage_diagram.figure(shown)))
+        out.append(Picture(f"profiles_{name}", place, f"Profiles of {name}", profiles.figure(result, name)))
+    opening = diagram.window(found) if found.case.usable else None
+    if opening is not None:
+        caption = "Outlet of the closed pair against its circulation"
+        out.append(Picture("window", "limits.loop", caption, window.figure(opening)))
+    history = convergence.figure(result)
+    if history is not None:
+        out.append(Picture("convergence", "loops.0", "How the loops converged", history))
+    return out
+
+
+def files(shown: list[Picture], directory: str) -> dict[Path, str | bytes]:
+    """Give the pictures as files, each as SVG and as PNG.
+
+    Parameters
+    ----------
+    shown : list of Picture
+    directory : str
+
+    Returns
+    -------
+    dict of Path to str or bytes
+    """
+    out: dict[Path, str | bytes] = {}
+    for item in shown:
+        out[Path(directory) / f"{item.name}.svg"] = base.svg(item.figure, item.name)
+        out[Path(directory) / f"{item.name}.png"] = base.png(item.figure)
+    return out
+
+
+def inline(shown: list[Picture]) -> dict[tuple[str, str], str]:
+    """Give the pictures as SVG by place and caption, for a page.
+
+    Parameters
+    ----------
+    shown : list of Picture
+    """
+    return {(item.place, item.caption): base.svg(item.figure, item.name) for item in shown}
