@@ -113,10 +113,13 @@ AS_IS = 1.6 * WITHOUT_LIMIT + 6e-6 / FLOW
 LOWEST = (float(FLOW[AS_IS.argmin()]), float(AS_IS.min())), (float(FLOW[WITHOUT_LIMIT.argmin()]), float(WITHOUT_LIMIT.min()))
 GAPS = np.where(FLOW < 0.5, np.nan, AS_IS)
 PAIR = ("wash", "strip", "toluene", "oil", "air")
+# stages without limit leave next to nothing between the ends of the window
+DEEP = np.where((FLOW > 0.7) & (FLOW < 1.4), 4e-5 * 10 ** (-150 * np.sin(np.pi * (FLOW - 0.7) / 0.7).clip(0)), AS_IS)
 WINDOWS = {
     "whole": Window(*PAIR, FLOW, AS_IS, WITHOUT_LIMIT, 4e-5, 0.68, 1.38, *LOWEST, (0.62, 8.9e-5)),
     "gaps": Window(*PAIR, FLOW, GAPS, np.full(80, np.nan), None, None, None, None, None, (0.62, 8.9e-5)),
     "one side": Window(*PAIR, FLOW[20:50], AS_IS[20:50], WITHOUT_LIMIT[20:50], 5e-5, 0.5, None, None, LOWEST[1], (0.9, 5e-5)),
+    "deep": Window(*PAIR, FLOW, AS_IS, DEEP, 4e-5, 0.7, 1.4, LOWEST[0], (1.05, 4e-155), (0.62, 8.9e-5)),
     "empty": Window(*PAIR, FLOW, AS_IS, WITHOUT_LIMIT, 1e-6, None, None, *LOWEST, (0.62, 8.9e-5)),
     "long names": Window("first_absorber_of_the_train", "regenerator_of_the_train", "benzene_toluene_xylene_lumped", "oil + tar",
                          "air + nitrogen + methane", FLOW, AS_IS, WITHOUT_LIMIT, 4e-5, 0.68, 1.38, *LOWEST, (0.62, 8.9e-5)),
@@ -475,8 +478,8 @@ class TestWindow:
             assert list(found["required"].get_ydata()) == [given.required] * 2
         for gid in ("turning", "turning-unlimited", "operating"):
             spot = getattr(given, gid.replace("-", "_"))
-            assert (gid in found) == (spot is not None)
-            if spot is not None:
+            assert (gid in found) == (spot is not None and spot[1] > 1e-100)
+            if gid in found:
                 assert data_of(found[gid]) == ([pytest.approx(3.6 * spot[0], rel=1e-15)], [spot[1]])
 
     @pytest.mark.parametrize(("name", "ends"), [
@@ -504,6 +507,14 @@ class TestWindow:
         left, right = axes.get_xlim()
         assert left <= 3.6 * given.circulation[0] and 3.6 * given.circulation[-1] <= right <= 1.1 * 3.6 * given.circulation[-1]
         assert given.least is None or left < 3.6 * given.least
+
+    def test_next_to_nothing_does_not_flatten_the_rest(self, pictures):
+        figure = pictures["window", "deep"]
+        axes = panel(figure, "window")
+        low, high = axes.get_ylim()
+        assert axes.get_yscale() == "log" and 4e-5 / 50 < low < 4e-5 and AS_IS.max() < high < 2 * AS_IS.max()
+        assert lines(figure)["unlimited"].get_ydata().min() < 1e-150
+        assert "stages without limit, partly below" in [text.get_text() for text in figure.legends[0].get_texts()]
 
     def test_note_tells_the_window(self, pictures):
         assert "between 2.448 and 4.968 kmol/h" in text_of(pictures["window", "whole"], "note")

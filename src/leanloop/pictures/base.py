@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import io
 import re
-import textwrap
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -13,12 +12,13 @@ from xml.sax.saxutils import escape
 
 from leanloop.errors import MissingExtra
 from leanloop.pictures.looks import GREEN, GREY, INK, LINES, NAVY, PALE, RUST, STYLE, look
+from leanloop.pictures.words import literal, short, wrapped
 
 if TYPE_CHECKING:
     from matplotlib.axis import Axis
     from matplotlib.figure import Figure
 
-__all__ = [  # the looks are given on
+__all__ = [  # looks and words are given on
     "GREEN", "GREY", "INK", "LINES", "MM", "NAVY", "PAGE_WIDTH", "PALE", "PER_HOUR", "PNG_DPI", "RUST", "STYLE", "canvas",
     "legend_below", "library", "linear_axis", "literal", "log_axis", "look", "png", "settle", "short", "style", "svg", "wrapped",
 ]
@@ -29,22 +29,6 @@ MM = 1.0 / 25.4  # inch
 PAGE_WIDTH = 170.0  # mm, an A4 page upright less its margins
 PNG_DPI = 150
 PER_HOUR = 3.6  # mol/s to kmol/h
-
-
-def short(value: float, digits: int = 3) -> str:
-    """Write a number shortly, such as 4e-5.
-
-    Parameters
-    ----------
-    value : float
-    digits : int
-        Significant ones.
-
-    Returns
-    -------
-    str
-    """
-    return re.sub(r"e([+-])0", r"e\1", f"{value:.{digits}g}").replace("e+", "e")
 
 
 def library() -> Any:
@@ -197,28 +181,9 @@ def linear_axis(axis: Axis, low: float, high: float, count: int = 6) -> None:
     """
     ticker = library().ticker
     (axis.axes.set_xlim if axis.axis_name == "x" else axis.axes.set_ylim)(low, high)
-    axis.set_major_locator(ticker.MaxNLocator(nbins=count, min_n_ticks=3, steps=[1, 2, 2.5, 5, 10]))
+    axis.set_major_locator(ticker.MaxNLocator(nbins=count, min_n_ticks=2, steps=[1, 2, 2.5, 5, 10]))
     if not 0.01 <= max(abs(low), abs(high)) < 1e5:
         axis.set_major_formatter(ticker.FuncFormatter(lambda value, _: short(value)))
-
-
-def wrapped(text: str, width_mm: float, letter_mm: float = 1.85) -> str:
-    """Break a text into lines that fit a width.
-
-    Parameters
-    ----------
-    text : str
-        Line breaks in it are kept.
-    width_mm : float
-    letter_mm : float
-        Width of a letter on the average; the default is that of axis labels.
-
-    Returns
-    -------
-    str
-    """
-    letters = max(8, int(width_mm / letter_mm))
-    return "\n".join("\n".join(textwrap.wrap(line, letters)) for line in text.splitlines())
 
 
 def settle(figure: Figure) -> None:
@@ -236,21 +201,6 @@ def settle(figure: Figure) -> None:
         figure.draw_without_rendering()
         figure.draw_without_rendering()
     figure.set_layout_engine("none")
-
-
-def literal(text: str) -> str:
-    """Give a text as matplotlib has to get it to show it as it is, on the lines it has.
-
-    Parameters
-    ----------
-    text : str
-
-    Returns
-    -------
-    str
-    """
-    shown = "".join(letter if letter.isprintable() or letter == "\n" else " " for letter in text)
-    return shown.replace("$", r"\$")
 
 
 def png(figure: Figure, dpi: int = PNG_DPI) -> bytes:

@@ -6,7 +6,7 @@ tracks (`layout_route`), texts stand where they touch nothing (`layout_labels`).
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
@@ -14,7 +14,7 @@ import numpy as np
 
 from leanloop.pictures import layout_labels as texts
 from leanloop.pictures.layout_labels import LINE, POINT, Label, text_width
-from leanloop.pictures.layout_place import GRID, Box, Link, Placement, best_placement
+from leanloop.pictures.layout_place import GRID, Box, Link, Placement, placements
 from leanloop.pictures.layout_route import Router, Wire
 
 if TYPE_CHECKING:
@@ -24,7 +24,9 @@ MARGIN, HEADER, FOOTER = 6.0, 9.0, 10.0  # mm around the drawing, for its title,
 PAPER = ((297.0, 210.0), (420.0, 297.0))  # A4 and A3, landscape; beyond, as much as the drawing needs
 SMALLEST, LARGEST = 0.89, 1.3  # scales at which a drawing is set on its paper
 STREAM_SIZE, DATA_SIZE, TEAR_SIZE = 7.0, 6.8, 6.8  # points at scale 1; 6 on paper at the least
-ATTEMPTS = 8
+ATTEMPTS = 18
+MORE_ROOM = 5.0  # mm for a name that found no place
+ROUTED, CROSSING, BEND = 4, 0.01, 0.003  # placements that are routed; what each crossing and bend costs against the size
 
 
 @dataclass
@@ -98,17 +100,42 @@ def lay_out(sheet: Flowsheet, data: Mapping[str, str] | None = None) -> Layout:
         part = item.address.split(".")
         if part[0] == "streams" and part[1] in between:
             notes.setdefault(part[1], []).append(f"required: {name}")
+    room: dict[str, float] = {}
+    done: list[tuple[float, int, Layout]] = []
     for attempt in range(ATTEMPTS):
-        placement = best_placement(sheet, links, data or {}, attempt)
-        wires = {link.name: Wire(link.name, *placement.ports(link)) for link in links}
-        solid = [box.corners for box in placement.boxes.values()]
-        router = Router(placement.width, placement.height, solid)
-        if router.route(list(wires.values())):
-            continue
-        layout = _in_mm(placement, wires, links, loops)
-        if _label(layout, data or {}, notes):
-            return layout
+        tried = []
+        for cost, placement in placements(sheet, links, data or {}, room, attempt // 3, ROUTED):
+            wires = {link.name: Wire(link.name, *placement.ports(link)) for link in links}
+            router = Router(placement.width, placement.height, [box.corners for box in placement.boxes.values()])
+            if not router.route(list(wires.values())):
+                bends = sum(len(wire.corners()) - 2 for wire in wires.values())
+                tried.append((cost + CROSSING * crossings(wires.values()) + BEND * bends, len(tried), placement, wires))
+        short: set[str] = set()
+        for cost, _, placement, wires in sorted(tried, key=lambda item: item[:2]):
+            layout = _in_mm(placement, wires, links, loops)
+            lost = _label(layout, data or {}, notes)
+            if not lost:
+                done.append((cost, attempt, layout))
+                break
+            short |= lost
+        for name in short:
+            room[name] = room.get(name, 0.0) + MORE_ROOM
+        # a name that finds no place in a good drawing asks for room in it before a worse one is taken
+        if done and (not short or attempt >= 2):
+            return min(done, key=lambda item: item[:2])[2]
     raise RuntimeError("the flowsheet found no place on paper")
+
+
+def crossings(wires: Iterable[Wire]) -> int:
+    """Count the points at which two streams cross.
+
+    Parameters
+    ----------
+    wires : iterable of Wire
+        Routed.
+    """
+    points = [point for wire in wires for point in wire.path]
+    return len(points) - len(set(points))
 
 
 def _links(sheet: Flowsheet) -> tuple[list[Link], list[list[str]]]:
@@ -148,8 +175,8 @@ def _in_mm(placement: Placement, wires: Mapping[str, Wire], links: list[Link], l
     return layout
 
 
-def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str]]) -> bool:
-    """Set the texts; data that find no place are left out."""
+def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str]]) -> set[str]:
+    """Set the texts; data that find no place are left out. Give the streams whose names or marks found none."""
     boxes = np.array(list(layout.extents.values()))
     lines = np.array([extent for route in layout.routes.values() for extent in texts.segment_extents(route.points)])
     free = (2.0, FOOTER, layout.width - 2.0, layout.height - HEADER)
@@ -181,8 +208,8 @@ def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str
         lost = texts.place(labels, along, boxes, lines, free)
         if not lost:
             layout.labels = labels
-            return True
+            return set()
         long = {label.name for label in lost if len(label.lines) > 1 + label.notes}
         if not long:
-            return False
+            return {label.name for label in lost}
         bare |= long

@@ -18,8 +18,10 @@ if TYPE_CHECKING:
 GRID = 3.0  # mm from track to track
 SIZES = {"name": 7.4, "kind": 6.8, "note": 6.8, "data": 6.8}  # points at scale 1
 LONGEST = 15  # letters of a name on one line
+MOST_GAP = 14  # steps of the grid that a name may open between two ranks
 TALL, TALL_OF_MANY, MANY = 14, 12, 12  # steps of the grid, height of a column; less where there are more units than this
-A4 = (285.0 / GRID, 179.0 / GRID)  # free paper in steps of the grid
+A4, MOST_A3 = (95.0, 59.0), (153.0, 100.0)  # free paper in steps of the grid; the most that A3 takes at the least scale
+BEYOND = 3.0  # what it costs to be too large for A3, against being larger
 LEAST_FILL = 0.85  # of the free paper: a smaller drawing is no better
 CUT, CUT_LOOP, ROW = 0.03, 0.12, 0.03  # of the paper's size: a stream between two rows, one of a loop, a further row
 
@@ -266,8 +268,10 @@ class Row:
     through: int = 0
 
 
-def best_placement(sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, str], extra: int) -> Placement:
-    """Place all boxes in as many rows as give the smallest drawing in the shape of paper.
+def placements(
+    sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, str], room: Mapping[str, float], extra: int, count: int
+) -> list[tuple[float, Placement]]:
+    """Place all boxes in rows, in the ways that give the smallest drawings in the shape of paper.
 
     Parameters
     ----------
@@ -275,12 +279,17 @@ def best_placement(sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, s
     links : sequence of Link
     data : mapping of str to str
         Texts below the names of streams.
+    room : mapping of str to float
+        mm by which streams need more than their names seem to.
     extra : int
         Steps of the grid by which gaps are wider than they seem to need.
+    count : int
+        Placements wanted at most.
 
     Returns
     -------
-    Placement
+    list of (float, Placement)
+        Cost, about the size against A4, and placement; the best first.
     """
     inner = [(link.maker, link.taker) for link in links if link.maker and link.taker and link.maker != link.taker]
     sequence = sheet.check()["order"]
@@ -288,6 +297,7 @@ def best_placement(sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, s
     more = data if len(sequence) <= MANY else {}
     widths = {
         link.name: max(text_width(text, SIZES["name"]) for text in (link.name, *more.get(link.name, "").split("\n")))
+        + room.get(link.name, 0.0)
         for link in links
     }
     tried, seen = [], set()
@@ -299,8 +309,9 @@ def best_placement(sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, s
         found = Placement(_boxes(sheet, links, data))
         cut = _placed(links, inner, sequence, starts, extra, found, widths)
         scale = max(found.width / A4[0], found.height / A4[1], LEAST_FILL)
+        scale += BEYOND * max(0.0, found.width / MOST_A3[0] - 1.0, found.height / MOST_A3[1] - 1.0)
         tried.append((scale + cut + ROW * len(starts), len(tried), found))
-    return min(tried, key=lambda item: item[:2])[2] if tried else Placement({}, 2, 2)
+    return [(cost, found) for cost, _, found in sorted(tried, key=lambda item: item[:2])[:count]]
 
 
 def _placed(
@@ -474,7 +485,7 @@ def _gap(row: Row, number: int, boxes: dict) -> int:
     into = sum(
         link.taker in sides and boxes["unit", link.taker].column for side in ("top", "bottom") for _, link in row.flags[side]
     )
-    return max(4 + into, min(9, math.ceil((row.names[number] + 4.0) / GRID)), 3 + (2 * bent + 2) // 3 + into)
+    return max(4 + into, min(MOST_GAP, math.ceil((row.names[number] + 4.0) / GRID)), 3 + (2 * bent + 2) // 3 + into)
 
 
 def _along(item: tuple[Box, Link], boxes: dict) -> tuple[float, float]:

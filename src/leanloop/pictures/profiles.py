@@ -88,7 +88,7 @@ def figure(result: Result, unit: str, case: int | None = None) -> Figure:
             axes[3].set_gid("temperature")
             axes[3].set_title("temperature")
             handles += axes[3].plot(warm, stages, gid="temperature", label="temperature", **_fitting(TEMPERATURE, stages))
-            linear_axis(axes[3].xaxis, known.min() - 0.06 * np.ptp(known), known.max() + 0.06 * np.ptp(known), 4)
+            linear_axis(axes[3].xaxis, known.min() - 0.06 * np.ptp(known), known.max() + 0.06 * np.ptp(known), 3)
             axes[3].set_xlabel("degC")
         _stage_axis(axes[0], stages)
         if handles:

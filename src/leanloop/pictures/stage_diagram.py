@@ -113,7 +113,7 @@ def note(diagram: StageDiagram) -> str:
         parts.append(f"no least rate of {what} known")
     if diagram.pinch is not None and any(_beyond(diagram)):
         parts.append(f"pinch outside the picture, at X = {short(diagram.pinch.x)}, Y = {short(diagram.pinch.y)}")
-    return stages + "\n" + "; ".join(parts)
+    return "\n".join([stages, *parts])
 
 
 def needs_log(diagram: StageDiagram) -> bool:

@@ -31,6 +31,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 LOG_FROM = 10**1.5  # highest over lowest outlet
+BELOW = 0.03  # of the lowest of all other values: how far the curve without limit is followed down
 ROOM = 1.12  # factor beyond the last value of a log axis
 
 AS_IS = {"color": NAVY, "linestyle": "-", "linewidth": 1.9}
@@ -55,7 +56,8 @@ def figure(window: Window) -> Figure:
     -------
     matplotlib.figure.Figure
         Lines have the gids ``outlet``, ``unlimited``, ``required``, ``least``, ``most``, ``turning``,
-        ``turning-unlimited`` and ``operating``, the shaded window ``allowed``; what is not known is left out.
+        ``turning-unlimited`` and ``operating``, the shaded window ``allowed``; what is not known is left out, and so is
+        the lowest outlet without limit where it is next to nothing.
 
     Raises
     ------
@@ -109,12 +111,14 @@ def _known(*groups: Any) -> np.ndarray:
 
 def _curves(axes: Axes, window: Window) -> list[Any]:
     lines = []
-    flow = np.asarray(window.circulation) * PER_HOUR
+    flow, shown = np.asarray(window.circulation) * PER_HOUR, _outlets(window)
     for outlet, gid, label, look in (
         (window.outlet, "outlet", "stages as they are", AS_IS),
         (window.outlet_unlimited, "unlimited", "stages without limit", UNLIMITED),
     ):
         if np.isfinite(outlet).any():
+            if _known(outlet).min() < shown.min():
+                label += ", partly below"
             lines += axes.plot(flow, outlet, gid=gid, label=label, zorder=4, **look)
     return lines
 
@@ -143,13 +147,13 @@ def _limits(axes: Axes, window: Window) -> list[Any]:
 
 
 def _points(axes: Axes, window: Window) -> list[Any]:
-    handles = []
+    handles, lowest = [], _outlets(window).min()
     for spot, gid, label, look in (
         (window.turning, "turning", "lowest, stages as they are", TURNING),
         (window.turning_unlimited, "turning-unlimited", "lowest, stages without limit", TURNING_UNLIMITED),
         (window.operating, "operating", "operation", OPERATING),
     ):
-        if spot is not None and np.isfinite(spot).all():
+        if spot is not None and np.isfinite(spot).all() and spot[1] >= lowest:
             handles += axes.plot([spot[0] * PER_HOUR], [spot[1]], gid=gid, label=label, **look)
     return handles
 
@@ -160,13 +164,22 @@ def _flows(window: Window) -> np.ndarray:
     return _known(window.circulation, window.least, window.most, window.operating[0], turning)
 
 
+def _outlets(window: Window) -> np.ndarray:
+    """Give every outlet ratio that is shown; without limit of stages it may be next to nothing, which is not."""
+    turning = None if window.turning is None else window.turning[1]
+    sure = _known(window.outlet, window.required, window.operating[1], turning)
+    further = _known(window.outlet_unlimited)
+    if not len(sure[sure > 0]):
+        return np.concatenate([sure, further])
+    return np.concatenate([sure, np.maximum(further, BELOW * sure[sure > 0].min())])
+
+
 def _scales(axes: Axes, window: Window) -> None:
     flows = _flows(window) * PER_HOUR
     low, high = flows.min(), flows.max()
     room = 0.03 * ((high - low) or high or 1.0)
     linear_axis(axes.xaxis, 0.0 if 0 <= low < 0.15 * high else low - room, high + room, 9)
-    turning = [spot[1] for spot in (window.turning, window.turning_unlimited) if spot is not None]
-    outlets = _known(window.outlet, window.outlet_unlimited, window.required, window.operating[1], turning)
+    outlets = _outlets(window)
     positive = outlets[outlets > 0]
     if len(positive) and positive.max() > LOG_FROM * positive.min():
         stretch = max(ROOM, (positive.max() / positive.min()) ** 0.05)
