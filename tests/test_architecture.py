@@ -30,29 +30,31 @@ LAYERS = {
     "registry": ("errors",),
     "entries": ("errors", "quantities"),
     "components": TEXT,
+    "enthalpy": (*TEXT, "components"),
     "stream": ("quantities", "components"),
     "equilibrium": (*TEXT, "registry", "components"),
     "column": ("errors", "status", "entries", "equilibrium"),
+    "flash": ("errors", "status", "entries", "components", "stream", "equilibrium", "enthalpy", "column"),
     "feed": (*TEXT, "components", "stream", "equilibrium"),
-    "units": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "column"),
+    "units": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "enthalpy", "column"),
     "recycle": ("errors", "registry", "entries"),
     "flowsheet": (
-        *TEXT, "status", "registry", "components", "stream", "equilibrium", "column", "units", "feed", "recycle",
+        *TEXT, "status", "registry", "components", "stream", "equilibrium", "enthalpy", "column", "units", "feed", "recycle",
     ),
     "pinch": (*TEXT, "status", "components", "stream", "equilibrium", "units", "flowsheet"),
     "pictures": ("errors", "units", "flowsheet", "pinch"),
     "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch"),
     "textfile": (*TEXT, "components", "feed", "flowsheet"),
     "checks": (
-        *TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle",
+        *TEXT, "status", "registry", "components", "stream", "equilibrium", "enthalpy", "units", "recycle",
     ),
     "cli": (*TEXT, "output", "pictures", "flowsheet", "textfile", "package"),
     "__main__": ("cli",),
     "package": (*TEXT, "components", "stream", "feed", "flowsheet", "pinch", "textfile"),  # leanloop/__init__.py
 }
 ORDER = (
-    "errors", "status", "registry", "quantities", "entries", "components", "stream", "equilibrium", "column", "feed",
-    "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package", "cli", "__main__",
+    "errors", "status", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "column", "flash",
+    "feed", "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.

@@ -35,6 +35,29 @@ def antoine(a):
     )
 
 
+BOILED = """
+[components]
+water = { molar_mass = "18.015 g/mol" }
+salt = { molar_mass = "100 g/mol", stays_in = "liquid" }
+[equilibrium.hot]
+water = { model = "raoult", vapour_pressure = { form = "antoine", A = 5.19621, B = 1730.63, C = 233.426, pressure = "bar", temperature = "degC" } }
+[heat_data.salt]
+liquid_heat_capacity = "150 J/(mol K)"
+[feeds.rich]
+phase = "liquid"
+temperature = "90 degC"
+pressure = "2 bar"
+flows = { water = "100 mol/s", salt = "5 mol/s" }
+[units.strip]
+kind = "stripper"
+liquid_in = "rich"
+gas_out = "vapour"
+liquid_out = "lean"
+stages = 4
+equilibrium = "hot"
+pressure = "1.8 bar"
+reboiler = { temperature = "400 degC" }
+"""  # noqa: E501 - as a file has it
 LIMITED = loop(method="substitution").replace("[loop]", "[loop]\npasses = 3")
 
 # name: (file, status, words of its sentence)
@@ -46,7 +69,8 @@ SCENES = {
     "off the table": (loop(cold=scenes.table("xy", [0, 1e-3], [0, 1e-4])), "off_table", "Unit wash"),
     "too few passes": (LIMITED, "pass_limit", "more passes"),
     "no solvent": (loop(oil=0.0), "dry_stage", "Unit wash"),
-    "absurd data": (loop(hot=antoine(208.5)), "stages_unsolved", "Unit strip"),
+    "absurd data": (loop(hot=antoine(208.5)), "unbalanced", "Unit strip"),
+    "hotter than it can boil": (BOILED, "stages_unsolved", "Unit strip"),
     "numbers out of all proportion": (loop(hot=scenes.constant(1e16)), "unbalanced", "Unit strip"),
     "data beyond any number": (loop(hot=antoine(6950.0)), "not_finite", "Unit strip"),
 }

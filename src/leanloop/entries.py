@@ -29,16 +29,18 @@ class Entry:
     name : str
     sort : str or tuple of str
         A name of `quantities.DIMENSIONS` (several: any of them), ``"integer"``, ``"flag"``,
-        ``"table"`` (nested entries), or one of `WORDS`.
+        ``"table"`` (nested entries), ``"tables"`` (a list of such), or one of `WORDS`.
     required : bool
     many : bool
         Whether a list is taken (for ports: a name or a list).
     by : str
         ``"component"`` or ``"outlet"`` for a table of values by such names, else empty.
+    either : bool
+        Whether one number, or with `many` a list, may stand in the place of such a table.
     choices : tuple of str
         Allowed words, for sort ``"choice"``.
     nested : tuple of Entry
-        For sort ``"table"``.
+        For sorts ``"table"`` and ``"tables"``.
     least, most : float or None
         Limits in SI units, themselves allowed.
     above, below : float or None
@@ -55,6 +57,7 @@ class Entry:
     required: bool = False
     many: bool = False
     by: str = ""
+    either: bool = False
     choices: tuple[str, ...] = ()
     nested: tuple[Entry, ...] = ()
     least: float | None = None
@@ -67,7 +70,7 @@ class Entry:
     @property
     def numeric(self) -> bool:
         """Whether the entry holds numbers."""
-        return self.sort not in (*WORDS, "flag", "table")
+        return self.sort not in (*WORDS, "flag", "table", "tables")
 
 
 @dataclass
@@ -242,13 +245,15 @@ def read_values(entries: Iterable[Entry], table: Any, address: str, context: Con
                 context.fault(where, "entry is missing", f"add {entry.name}{_hint(entry)}")
             continue
         raw = table[entry.name]
-        if entry.by:
+        if entry.by and not (entry.either and not isinstance(raw, Mapping)):
             _read_named(raw, entry, where, context, values)
+        elif entry.sort == "tables":
+            _read_tables(raw, entry, where, context, values)
         elif entry.sort == "table":
             inner = read_values(entry.nested, raw, where, context)
             values.words[entry.name] = inner.words
             _adopt(values, inner, entry.name)
-        elif entry.numeric and entry.many:
+        elif entry.numeric and entry.many and not (entry.either and not isinstance(raw, (list, tuple))):
             _read_list(raw, entry, where, context, values)
         elif entry.numeric:
             number = read_number(raw, entry, where, context)
@@ -268,6 +273,20 @@ def _store(values: Values, name: str, number: Any, sort: str, entry: Entry) -> N
 def _adopt(values: Values, inner: Values, head: str) -> None:
     for key, number in inner.numbers.items():
         _store(values, f"{head}.{key}", number, inner.sorts[key], inner.entries[key])
+
+
+def _read_tables(raw: Any, entry: Entry, address: str, context: Context, values: Values) -> None:
+    """Read a list of tables; numbers get the place in the list into their name, ``side_draws.0.flow``."""
+    if not isinstance(raw, (list, tuple)):
+        example_ = ", ".join(f"{item.name} = ..." for item in entry.nested if item.required)
+        context.fault(address, f"{_shown(raw)} is no list of tables", f"write [{{ {example_} }}]")
+        return
+    words = []
+    for place, item in enumerate(raw):
+        inner = read_values(entry.nested, item, f"{address}[{place}]", context)
+        words.append(inner.words)
+        _adopt(values, inner, f"{entry.name}.{place}")
+    values.words[entry.name] = tuple(words)
 
 
 def _read_named(raw: Any, entry: Entry, address: str, context: Context, values: Values) -> None:

@@ -25,6 +25,8 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "power": ((1, 2, -3, 0, 0), "250 kW"),
     "molar energy": ((1, 2, -2, 0, -1), "44.0 kJ/mol"),
     "molar heat capacity": ((1, 2, -2, -1, -1), "75.3 J/(mol K)"),
+    "specific energy": ((0, 2, -2, 0, 0), "2257 kJ/kg"),
+    "specific heat capacity": ((0, 2, -2, -1, 0), "4.18 kJ/(kg K)"),
     "heat transfer": ((1, 2, -3, -1, 0), "12 kW/K"),
     "length": ((0, 1, 0, 0, 0), "6 m"),
     "amount": ((0, 0, 0, 0, 1), "40 kmol"),
@@ -74,7 +76,7 @@ _NAMED: dict[str, tuple[float, Dimension]] = {
     "torr": (c.atm / 760, _PA),
     "Torr": (c.atm / 760, _PA),
     "Btu": (c.Btu_IT, _J),
-    "cal": (c.calorie_th, _J),
+    "cal": (c.calorie_th, _J),  # thermochemical, 4.184 J
     "kcal": (c.kilo * c.calorie_th, _J),
     "degC": (1.0, _K),
     "degF": (c.degree_Fahrenheit, _K),

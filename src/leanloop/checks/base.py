@@ -185,7 +185,7 @@ def well_formed(entries: Sequence[Entry], ports: tuple[str, ...] = ()) -> None:
     ports : tuple of str
         Sorts of entry that this sort of plug-in alone may have.
     """
-    words = {*WORDS, "integer", "flag", "table"} - ({"inlet", "outlet", "component", "equilibrium"} - set(ports))
+    words = {*WORDS, "integer", "flag", "table", "tables"} - ({"inlet", "outlet", "component", "equilibrium"} - set(ports))
     names = [entry.name for entry in entries]
     require(len(set(names)) == len(names), f"an entry is listed twice: {', '.join(names)}")
     for entry in entries:
@@ -197,7 +197,7 @@ def well_formed(entries: Sequence[Entry], ports: tuple[str, ...] = ()) -> None:
         require(entry.doc.strip() and "\n" not in entry.doc, f"{where} has no doc of one line")
         require((entry.sort == "choice") == bool(entry.choices), f"{where} has choices, or should have")
         require(entry.by in ("", "component", "outlet"), f"{where} is a table by unknown names '{entry.by}'")
-        require((entry.sort == "table") == bool(entry.nested), f"{where} has nested entries, or should have")
+        require((entry.sort in ("table", "tables")) == bool(entry.nested), f"{where} has nested entries, or should have")
         low = max((limit for limit in (entry.least, entry.above) if limit is not None), default=float("-inf"))
         high = min((limit for limit in (entry.most, entry.below) if limit is not None), default=float("inf"))
         require(low <= high, f"{where} has limits that no value keeps")

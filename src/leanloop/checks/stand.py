@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from leanloop import enthalpy
 from leanloop.checks.base import Suite, require
 from leanloop.checks.slopes import Variable, bounds
 from leanloop.components import Component, Components
@@ -65,7 +66,9 @@ class Stand:
         self.inlets = self._streams(scene, unit)
         present = {label: (stream.flows > 0).any(axis=0) for label, stream in self.inlets.items()}
         phases = {label: stream.phase for label, stream in self.inlets.items()}
-        self.around = Surroundings(self.components, tables, scene.basis, present, phases)
+        warm = bool(scene.heat_data) or unit.wants_heat
+        self.heat = enthalpy.read(scene.heat_data, self.components, known) if warm else None
+        self.around = Surroundings(self.components, tables, scene.basis, present, phases, self.heat)
         self.unit = unit.connect(self.around, known)
         self._stop_on(context)
         self.cases = len(next(iter(self.inlets.values())).state)
@@ -73,6 +76,7 @@ class Stand:
         owners = {f"units.{NAME}": unit.values} | {
             f"equilibrium.{table.name}.{name}": model.values for table in tables.values() for name, model in table.models.items()
         }
+        owners.update({f"heat_data.{item.name}": item.values for item in (self.heat.items if self.heat else ()) if item is not None})
         known_numbers = {f"{head}.{key}": (values, key) for head, values in owners.items() for key in values.numbers}
         self.numbers: dict[str, Any] = {}
         self.limits: dict[str, Entry] = {}

@@ -7,6 +7,8 @@ rows are not finite or singular would spoil its neighbours: such rows are replac
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from scipy.linalg import lapack
 
@@ -114,9 +116,12 @@ class Band:
         if not _finite(derivatives):
             sums = derivatives.sum(axis=-1)  # may overflow where its terms do not
             bad = ~(np.isfinite(derivatives).all(axis=(1, 2, 3)) & np.isfinite(sums).all(axis=(1, 2)))
+        return self._factor(derivatives, drag, bad)
+
+    def _factor(self, content: Any, drag: np.ndarray, bad: np.ndarray) -> np.ndarray:
         while True:
             self._store[...] = 0.0
-            self.fill(derivatives, drag)
+            self.fill(content, drag)
             self.isolate(bad)
             _, self._pivots, info = lapack.dgbtrf(self._store.T, self.lower, self.upper, overwrite_ab=1)
             self.factorisations += 1

@@ -208,7 +208,14 @@ def _iterate(
             new[broken | failed] = now[broken | failed]
             size[broken | failed] = 0.0
             late = size > DONE if iterations >= ITERATIONS else np.zeros(len(size), dtype=bool)
-            status[own] = np.where(broken | late, code(Status.stages_unsolved), status[own])
+            if iterations < PLAIN_ITERATIONS:  # a bad step of the plain method is no failure yet: the column is filled soon
+                again = np.flatnonzero(broken)
+                if len(again):
+                    new[again] = filling_start(local if len(again) == len(new) else local.take(again))
+                    size[again] = 1.0
+            else:
+                late |= broken
+            status[own] = np.where(late, code(Status.stages_unsolved), status[own])
             size[late] = 0.0
         if part is None:
             unknowns = new

@@ -14,7 +14,7 @@ from leanloop.entries import Context
 from leanloop.errors import nearest
 from leanloop.feed import Feed
 from leanloop.flowsheet.tearing import calculation_order, least_tears, partition
-from leanloop.units.base import Unit
+from leanloop.units.base import Unit, ports
 
 
 class Node(NamedTuple):
@@ -252,11 +252,8 @@ class Structure:
 
 
 def _port(unit: Unit, label: str) -> str:
-    return next((entry.name for entry in unit.entries if entry.name == label), None) or next(
-        entry.name
-        for entry in unit.entries
-        if entry.sort in ("inlet", "outlet") and label in (unit.values.words.get(entry.name) or ())
-    )
+    """Give the address of a port inside its unit."""
+    return next((where for own, where, _, _ in ports(unit.entries, unit.values.words) if own == label), label)
 
 
 def nodes_of(graph: nx.MultiDiGraph, units: Iterable[str], feeds: Iterable[str]) -> list[Node]:

@@ -192,7 +192,7 @@ def connect(
     units : mapping of str to Unit
     structure : Structure
     surroundings : mapping
-        ``components``, ``conditions`` and ``basis``.
+        ``components``, ``conditions``, ``basis`` and ``heat``.
     present, phases
         By stream.
     context : Context
@@ -206,6 +206,7 @@ def connect(
                 surroundings["basis"],
                 {label: present.get(stream, none) for label, stream in unit.inlets.items()},
                 {label: phases.get(stream, "liquid") for label, stream in unit.inlets.items() if stream in structure.makers},
+                surroundings.get("heat"),
             ),
             context,
         )

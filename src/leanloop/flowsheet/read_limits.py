@@ -46,19 +46,17 @@ def limits(raw: Any, units: Mapping[str, Unit], context: Context) -> dict[str, V
         if not isinstance(entry, Mapping):
             context.fault(address, "is no table", "write [limits.NAME] with its entries")
             continue
-        faults = len(context.faults)
         unit = units[name]
-        moving = list(getattr(unit, "model_names", ()))
+        moving = getattr(unit, "model_names", None)  # not known where the column itself is faulty
         values = read_values(ENTRIES, entry, address, context)
-        if len(context.faults) > faults:
-            continue
         key = values.words.get("key")
-        if key is not None and key not in moving:
+        asked = [item.name for item in ENTRIES[1:] if item.name in entry]
+        if key is not None and moving is not None and key not in moving:
             context.fault(f"{address}.key", f"'{key}' does not distribute in column '{name}'", nearest(key, moving))
-        elif key is None and values.numbers and len(moving) > 1:
+        elif "key" not in entry and asked and moving is not None and len(moving) > 1:
             context.fault(f"{address}.key", "entry is missing", f"say which component the ends are for: {', '.join(moving)}")
         clean = "gas_out" if unit.cleans == "gas" else "liquid_out"
-        if "removal" in values.numbers and clean in values.numbers:
+        if "removal" in entry and clean in entry:
             context.fault(f"{address}.removal", f"stands beside {clean}, which it sets", "keep one of the two")
         found[name] = values
     return found

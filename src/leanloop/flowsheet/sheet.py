@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from leanloop import enthalpy
 from leanloop.column.band import BYTES_A_CHUNK
 from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
@@ -32,6 +33,7 @@ CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open b
 NOTHING = 1e-25  # of all that enters: less of a component is not told from none
 SECTIONS = (
     "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups", "limits",
+    "heat_data",
 )  # fmt: skip
 
 
@@ -52,6 +54,8 @@ class Flowsheet:
     basis, groups : mapping of str to list of str, optional
     limits : mapping of str to mapping, optional
         Ends of columns for `leanloop.limits`: ``key``, ``gas_in``, ``gas_out``, ``liquid_in``, ``liquid_out``, ``removal``.
+    heat_data : mapping of str to mapping, optional
+        Enthalpies by component; where it is given, or a unit balances heat, common species have built-in data.
     plain_si : bool
         Whether plain numbers may stand for quantities with a dimension, in SI units.
     source : str
@@ -77,6 +81,7 @@ class Flowsheet:
         basis: Any = None,
         groups: Any = None,
         limits: Any = None,
+        heat_data: Any = None,
         *,
         plain_si: bool = True,
         source: str = "",
@@ -106,15 +111,23 @@ class Flowsheet:
         loose = read.unsettled(units, units_read, known)
         structure.check(known, loose)
         present, phases = structure.present(), structure.phases()
-        surroundings = {"components": self.components, "conditions": self.conditions, "basis": self.basis}
+        asked = heat_data is not None or any(unit.wants_heat for unit in units_read.values())
+        self.heat = enthalpy.read(heat_data, self.components, known) if asked else None
+        surroundings = {
+            "components": self.components, "conditions": self.conditions, "basis": self.basis, "heat": self.heat,
+        }  # fmt: skip
         self.units = connect(units_read, structure, surroundings, present, phases, known)
         structure.units = self.units
         if not known.faults:
             read.ways_out(structure, present, known)
+        aside = Context(plain_si=plain_si, names=known.names)  # faults there do not keep from reading on
+        self.limits = read_limits.limits(limits, self.units, aside)
         settings, tears = read.loop(loop, known)
         for place, tear in enumerate(tears):
             if tear not in phases and tear not in loose:
                 known.fault(f"loop.tears[{place}]", f"there is no stream '{tear}'", nearest(tear, phases))
+        if known.faults:
+            known.faults.extend(aside.faults)
         self._stop_on(known)
         self.settings, self.tears = settings, tears
         phases = {stream: phase or "liquid" for stream, phase in phases.items()}
@@ -130,7 +143,7 @@ class Flowsheet:
         self.bases = Bases(self.components, self.basis, held)
         self._gather_numbers()
         self.requirements = read_requirements.requirements(self, requirements, known)
-        self.limits = read_limits.limits(limits, self.units, known)
+        known.faults.extend(aside.faults)
         self._stop_on(known)
         try:
             self.plan.arrange({name: self.tie(item) for name, item in self.requirements.items()}, tears)
@@ -156,6 +169,11 @@ class Flowsheet:
                 (f"equilibrium.{conditions.name}.{name}", model.values)
                 for conditions in self.conditions.values()
                 for name, model in conditions.models.items()
+            ),
+            *(
+                (f"heat_data.{item.name}", item.values)
+                for item in (self.heat.items if self.heat else ())
+                if item is not None
             ),
         ):
             for key, number in values.numbers.items():

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING
 
 from leanloop.pictures.base import INK, NAVY, PER_HOUR, RUST, canvas, library, literal, style
 from leanloop.pictures.layout import DATA_SIZE, FOOTER, MARGIN, STREAM_SIZE, TEAR_SIZE, Layout, Route, lay_out
+from leanloop.pictures.layout_boxes import SIZES, Box
 from leanloop.pictures.layout_labels import LINE, POINT, Label
-from leanloop.pictures.layout_place import SIZES, Box
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -180,19 +180,22 @@ def _text(axes: Axes, label: Label, layout: Layout) -> None:
     if label.sort == "loop":
         left, bottom, right, top = label.extent
         halo = HALOS[int(label.name) % len(HALOS)]
-        axes.fill([left, right, right, left], [bottom, bottom, top, top], facecolor=halo, edgecolor=INK, linewidth=0.5 * layout.scale, zorder=4)
+        corners = [left, right, right, left], [bottom, bottom, top, top]
+        axes.fill(*corners, facecolor=halo, edgecolor=INK, linewidth=0.5 * layout.scale, zorder=ABOVE_LINE + 1)
     if label.sort == "tear":
         _bars(axes, label, layout)
-    sizes = [STREAM_SIZE, *[DATA_SIZE] * (len(label.lines) - 1)] if label.sort == "stream" else [TEAR_SIZE]
+    sizes = [STREAM_SIZE] * label.names + [DATA_SIZE] * (len(label.lines) - label.names) if label.sort == "stream" else [TEAR_SIZE]
     total = sum(LINE * size * POINT for _, size in zip(label.lines, sizes))
     at = total / 2
     for number, (text, size) in enumerate(zip(label.lines, sizes)):
         high = LINE * size * POINT
         off = at - high / 2
+        x, y = (label.x - off, label.y) if label.turned else (label.x, label.y + off)
         axes.text(
-            label.x - (off if label.turned else 0.0), label.y + (0.0 if label.turned else off), literal(text), size=size * layout.scale, color=INK,
-            rotation=90 if label.turned else 0, ha="center", va="center", weight="bold" if label.sort == "loop" else "normal",
-            style="italic" if label.sort == "tear" or 0 < number <= label.notes else "normal", zorder=6, gid=gid + (f":{number}" if number else ""),
+            x, y, literal(text), size=size * layout.scale, color=INK, rotation=90 if label.turned else 0, ha="center", va="center",
+            weight="bold" if label.sort == "loop" else "normal",
+            style="italic" if label.sort == "tear" or 0 <= number - label.names < label.notes else "normal",
+            zorder=ABOVE_BOX + 1, gid=gid + (f":{number}" if number else ""),
         )  # fmt: skip
         at -= high
 

@@ -1,6 +1,6 @@
 """The flowsheet laid out on paper: boxes, routed streams and texts in mm, without any drawing.
 
-Units stand in rows by rank (`layout_ranks`), feeds and products at the edges of the rows, streams run on a grid of
+Units stand in rows by rank (`layout_place`, `layout_ranks`), feeds and products at the edges of the rows, streams run on a grid of
 tracks (`layout_route`), texts stand where they touch nothing (`layout_labels`).
 """
 
@@ -13,8 +13,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from leanloop.pictures import layout_labels as texts
+from leanloop.pictures.layout_boxes import GRID, Box, Link, broken
 from leanloop.pictures.layout_labels import LINE, POINT, Label, text_width
-from leanloop.pictures.layout_place import GRID, Box, Link, Placement, placements
+from leanloop.pictures.layout_place import Placement, placements
 from leanloop.pictures.layout_route import Router, Wire
 
 if TYPE_CHECKING:
@@ -24,9 +25,10 @@ MARGIN, HEADER, FOOTER = 6.0, 9.0, 10.0  # mm around the drawing, for its title,
 PAPER = ((297.0, 210.0), (420.0, 297.0))  # A4 and A3, landscape; beyond, as much as the drawing needs
 SMALLEST, LARGEST = 0.89, 1.3  # scales at which a drawing is set on its paper
 STREAM_SIZE, DATA_SIZE, TEAR_SIZE = 7.0, 6.8, 6.8  # points at scale 1; 6 on paper at the least
-ATTEMPTS = 18
+ATTEMPTS = 9
 MORE_ROOM = 5.0  # mm for a name that found no place
-ROUTED, CROSSING, BEND = 4, 0.01, 0.003  # placements that are routed; what each crossing and bend costs against the size
+ROUTED, FARTHEST = 3, 0.5  # placements that are routed, and by how much their cost may be above the least
+CROSSING, BEND = 0.01, 0.003  # what each costs against the size
 
 
 @dataclass
@@ -91,7 +93,7 @@ def lay_out(sheet: Flowsheet, data: Mapping[str, str] | None = None) -> Layout:
     Raises
     ------
     RuntimeError
-        Where streams or names find no way even on a much larger paper.
+        Where streams find no way even on a much larger paper. A name that finds no place clear of all lines stands on one.
     """
     links, loops = _links(sheet)
     between = {link.name for link in links if link.maker and link.taker}
@@ -102,11 +104,16 @@ def lay_out(sheet: Flowsheet, data: Mapping[str, str] | None = None) -> Layout:
             notes.setdefault(part[1], []).append(f"required: {name}")
     room: dict[str, float] = {}
     done: list[tuple[float, int, Layout]] = []
+    spare: Layout | None = None
     for attempt in range(ATTEMPTS):
         tried = []
-        for cost, placement in placements(sheet, links, data or {}, room, attempt // 3, ROUTED):
+        choice = placements(sheet, links, data or {}, room, attempt // 3)
+        for cost, placement in choice[:ROUTED]:
+            if cost > choice[0][0] + FARTHEST:
+                break
             wires = {link.name: Wire(link.name, *placement.ports(link)) for link in links}
-            router = Router(placement.width, placement.height, [box.corners for box in placement.boxes.values()])
+            solid = [box.corners for box in placement.boxes.values()]
+            router = Router(placement.width, placement.height, solid, attempt // 3)
             if not router.route(list(wires.values())):
                 bends = sum(len(wire.corners()) - 2 for wire in wires.values())
                 tried.append((cost + CROSSING * crossings(wires.values()) + BEND * bends, len(tried), placement, wires))
@@ -118,11 +125,14 @@ def lay_out(sheet: Flowsheet, data: Mapping[str, str] | None = None) -> Layout:
                 done.append((cost, attempt, layout))
                 break
             short |= lost
+            spare = layout
         for name in short:
             room[name] = room.get(name, 0.0) + MORE_ROOM
         # a name that finds no place in a good drawing asks for room in it before a worse one is taken
         if done and (not short or attempt >= 2):
             return min(done, key=lambda item: item[:2])[2]
+    if spare is not None and not _label(spare, {}, notes, anyhow=True):
+        return spare
     raise RuntimeError("the flowsheet found no place on paper")
 
 
@@ -175,7 +185,7 @@ def _in_mm(placement: Placement, wires: Mapping[str, Wire], links: list[Link], l
     return layout
 
 
-def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str]]) -> set[str]:
+def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str]], anyhow: bool = False) -> set[str]:
     """Set the texts; data that find no place are left out. Give the streams whose names or marks found none."""
     boxes = np.array(list(layout.extents.values()))
     lines = np.array([extent for route in layout.routes.values() for extent in texts.segment_extents(route.points)])
@@ -190,8 +200,10 @@ def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str
                 labels.append(Label("tear", name, ["tear"], width, LINE * TEAR_SIZE * POINT, 1.3))
                 along.append(own)
             if route.link.maker and route.link.taker:  # feeds and products are named at the edge
-                label = Label("stream", name, [name], text_width(name, STREAM_SIZE), LINE * STREAM_SIZE * POINT)
-                label.notes = len(notes.get(name, ()))
+                parts = broken(name)
+                width = max(text_width(text, STREAM_SIZE) for text in parts)
+                label = Label("stream", name, parts, width, LINE * STREAM_SIZE * POINT * len(parts))
+                label.names, label.notes = len(parts), len(notes.get(name, ()))
                 more = [*notes.get(name, ()), *(data[name].split("\n") if name in data and name not in bare else ())]
                 label.lines += more
                 label.width = max([label.width, *(text_width(text, DATA_SIZE) for text in more)])
@@ -205,11 +217,11 @@ def _label(layout: Layout, data: Mapping[str, str], notes: Mapping[str, list[str
                 width = text_width(text, TEAR_SIZE, True) + 1.6
                 labels.append(Label("loop", str(number), [text], width, LINE * TEAR_SIZE * POINT + 0.8, 0.8))
                 along.append(own)
-        lost = texts.place(labels, along, boxes, lines, free)
+        lost = texts.place(labels, along, boxes, lines, free, anyhow)
         if not lost:
             layout.labels = labels
             return set()
-        long = {label.name for label in lost if len(label.lines) > 1 + label.notes}
+        long = {label.name for label in lost if len(label.lines) > label.names + label.notes}
         if not long:
             return {label.name for label in lost}
         bare |= long

@@ -12,6 +12,7 @@ LINE = 1.2  # height of a line of text in its own size
 NARROW, WIDE = frozenset("fijlrtI.,:;'|!()[] -/"), frozenset("mwMW%@")
 CLEAR = 0.25  # mm between a text and what it must not touch
 HEAD = 2.6  # mm, length of an arrowhead
+COVERED = 20.0  # what it costs to cover a line
 BARS = 1.4  # mm, half of the bars across a torn stream
 
 
@@ -28,7 +29,7 @@ def text_width(text: str, size: float, bold: bool = False) -> float:
     ems = 0.0
     for letter in text:
         if letter in NARROW:
-            ems += 0.42
+            ems += 0.46 if bold else 0.42
         elif letter in WIDE:
             ems += 1.0
         else:
@@ -47,8 +48,8 @@ class Label:
     name : str
         Of the stream, or number of the loop.
     lines : list of str
-    notes : int
-        How many lines after the first name requirements.
+    names, notes : int
+        How many lines the name takes, and how many lines after it name requirements.
     width, height : float
         mm, as read, not as turned.
     off : float
@@ -67,6 +68,7 @@ class Label:
     width: float
     height: float
     off: float = 0.4
+    names: int = 1
     notes: int = 0
     x: float = 0.0
     y: float = 0.0
@@ -99,9 +101,7 @@ def segment_extents(points: Sequence[tuple[float, float]]) -> Iterator[tuple[flo
     cx = bx - HEAD * np.sign(bx - ax)
     cy = by - HEAD * np.sign(by - ay)
     half = 1.0
-    yield (
-        (min(bx, cx), by - half, max(bx, cx), by + half) if ay == by else (bx - half, min(by, cy), bx + half, max(by, cy))
-    )
+    yield ((min(bx, cx), by - half, max(bx, cx), by + half) if ay == by else (bx - half, min(by, cy), bx + half, max(by, cy)))
 
 
 def places(label: Label, routes: Sequence[Sequence[tuple[float, float]]]) -> tuple[np.ndarray, np.ndarray, list[tuple]]:
@@ -187,6 +187,7 @@ def place(
     boxes: np.ndarray,
     lines: np.ndarray,
     sheet: tuple[float, float, float, float],
+    anyhow: bool = False,
 ) -> list[Label]:
     """Set every label where it touches nothing, those with the least choice first.
 
@@ -199,6 +200,8 @@ def place(
         Extents that no text may touch.
     sheet : (float, float, float, float)
         Left, bottom, right, top of the free paper.
+    anyhow : bool
+        Whether a text may cover lines rather than find no place.
 
     Returns
     -------
@@ -210,10 +213,12 @@ def place(
     for label, own in zip(labels, routes):
         extents, costs, spots = places(label, own)
         inside = (extents[:, 0] > left) & (extents[:, 1] > bottom) & (extents[:, 2] < right) & (extents[:, 3] < top)
-        free = inside & ~meet(extents, boxes, 0.5).any(axis=1) & ~meet(extents, lines).any(axis=1)
+        covered = meet(extents, lines).sum(axis=1)
+        free = inside & ~meet(extents, boxes, 0.5).any(axis=1) & (anyhow | (covered == 0))
         kept = np.flatnonzero(free)
         crowd = meet(extents[kept], lines, 1.0).sum(axis=1)  # its own line among them
-        costs = costs[kept] + 1.2 * np.maximum(crowd - 1, 0) + 0.2 * meet(extents[kept], boxes, 1.5).sum(axis=1)
+        costs = costs[kept] + COVERED * covered[kept] + 1.2 * np.maximum(crowd - 1, 0)
+        costs += 0.2 * meet(extents[kept], boxes, 1.5).sum(axis=1)
         order = np.argsort(costs, kind="stable")
         ground = extents[kept][order]
         spots = [spots[kept[number]] for number in order]

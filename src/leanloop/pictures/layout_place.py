@@ -1,103 +1,25 @@
-"""Boxes of units, feeds and products on the grid of a drawing."""
+"""Boxes of a flowsheet placed in rows on the grid of a drawing."""
 
 from __future__ import annotations
 
 import math
-import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from leanloop.pictures import layout_ranks as order
-from leanloop.pictures.layout_labels import LINE, POINT, text_width
+from leanloop.pictures.layout_boxes import GRID, MANY, SIZES, Box, Link, boxes_of, broken, port_height, ports
+from leanloop.pictures.layout_labels import text_width
 from leanloop.pictures.layout_route import Port
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
 
-GRID = 3.0  # mm from track to track
-SIZES = {"name": 7.4, "kind": 6.8, "note": 6.8, "data": 6.8}  # points at scale 1
-LONGEST = 15  # letters of a name on one line
 MOST_GAP = 14  # steps of the grid that a name may open between two ranks
-TALL, TALL_OF_MANY, MANY = 14, 12, 12  # steps of the grid, height of a column; less where there are more units than this
 A4, MOST_A3 = (95.0, 59.0), (153.0, 100.0)  # free paper in steps of the grid; the most that A3 takes at the least scale
 BEYOND = 3.0  # what it costs to be too large for A3, against being larger
 LEAST_FILL = 0.85  # of the free paper: a smaller drawing is no better
 CUT, CUT_LOOP, ROW = 0.03, 0.12, 0.03  # of the paper's size: a stream between two rows, one of a loop, a further row
-
-
-@dataclass(frozen=True)
-class Link:
-    """A stream between two ports.
-
-    Attributes
-    ----------
-    name, maker, outlet, taker, inlet : str
-        An empty maker is a feed, an empty taker a product.
-    phase : str
-    torn : bool
-    loop : int or None
-        The loop it is a part of.
-    """
-
-    name: str
-    maker: str
-    outlet: str
-    taker: str
-    inlet: str
-    phase: str
-    torn: bool
-    loop: int | None
-
-    @property
-    def source(self) -> tuple[str, str]:
-        """Box that it comes from."""
-        return ("unit", self.maker) if self.maker else ("feed", self.name)
-
-    @property
-    def target(self) -> tuple[str, str]:
-        """Box that it goes to."""
-        return ("unit", self.taker) if self.taker else ("product", self.name)
-
-
-@dataclass
-class Box:
-    """A unit, or the name of a feed or product at the edge of its row.
-
-    Attributes
-    ----------
-    sort, name : str
-        ``"unit"``, ``"feed"`` or ``"product"``.
-    lines : list of (str, str)
-        Style (``"name"``, ``"kind"``, ``"note"``, ``"data"``) and text.
-    width, height : int
-        Steps of the grid.
-    stages : int or None
-        Of a column.
-    side : str
-        For feeds and products, the edge of the row: ``"left"``, ``"right"``, ``"top"`` or ``"bottom"``.
-    x, y : int
-        Left and top, y downwards.
-    row : int
-        Of a unit, from the top.
-    """
-
-    sort: str
-    name: str
-    lines: list[tuple[str, str]]
-    width: int
-    height: int
-    stages: int | None = None
-    column: bool = False
-    side: str = ""
-    x: int = 0
-    y: int = 0
-    row: int = 0
-
-    @property
-    def corners(self) -> tuple[int, int, int, int]:
-        """Left, top, right, bottom."""
-        return self.x, self.y, self.x + self.width, self.y + self.height
 
 
 @dataclass
@@ -118,126 +40,9 @@ class Placement:
     def ports(self, link: Link) -> tuple[list[Port], list[Port]]:
         """Give where a stream may begin and end."""
         return (
-            _ports(self.boxes[link.source], link.outlet, True),
-            _ports(self.boxes[link.target], link.inlet, False),
+            ports(self.boxes[link.source], link.outlet, True),
+            ports(self.boxes[link.target], link.inlet, False),
         )
-
-
-def port_height(box: Box, label: str, out: bool) -> float:
-    """Give the height of a column's port, -0.5 at the top to 0.5 at the bottom; 0 for any other unit."""
-    if not box.column:
-        return 0.0
-    edge = {"gas_out": -0.5, "liquid_out": 0.5, "liquid_in": 2 / box.height - 0.5, "gas_in": 0.5 - 2 / box.height}
-    return edge.get(label, 0.0)
-
-
-def _ports(box: Box, label: str, out: bool) -> list[Port]:
-    left, top, right, bottom = box.corners
-    middle, level = (left + right) // 2, (top + bottom) // 2
-    if box.side:
-        edge = {
-            "left": Port(right, level, 0), "right": Port(left, level, 2),
-            "top": Port(middle, bottom, 1), "bottom": Port(middle, top, 3),
-        }  # fmt: skip
-        return [edge[box.side]]
-    if box.column:
-        if label == "gas_out":
-            return [Port(middle, top, 3)]
-        if label == "liquid_out":
-            return [Port(middle, bottom, 1)]
-        at = {"liquid_in": [top + 2], "gas_in": [bottom - 2]}.get(label, range(top + 4, bottom - 3))
-        first, second = (right, left) if out else (left, right)
-        near, far = (0, 2) if out else (2, 0)
-        return [
-            *(Port(first, y, near, 0.2 * abs(y - level)) for y in at),
-            *(Port(second, y, far, 1.5 + 0.2 * abs(y - level)) for y in at),
-        ]
-    side, way = (right, 0) if out else (left, 2)
-    found = [Port(side, y, way, 0.4 * abs(y - level)) for y in range(top + 1, bottom)]
-    for y, up in ((top, 3), (bottom, 1)):
-        found += [Port(x, y, up, 3.0 + 0.2 * abs(x - middle)) for x in range(left + 1, right)]
-    return found
-
-
-# --- sizes
-
-
-def broken(text: str, most: int = LONGEST) -> list[str]:
-    """Break a long name behind ``_``, ``-`` or ``.``, and where there is none, anywhere.
-
-    Parameters
-    ----------
-    text : str
-    most : int
-        Letters of a line.
-
-    Returns
-    -------
-    list of str
-    """
-    lines = [""]
-    for part in re.findall(r"[^_\-. ]*[_\-. ]?", text):
-        while len(part) > most:
-            if lines[-1]:
-                lines.append("")
-            lines[-1], part = part[:most], part[most:]
-            lines.append("")
-        if lines[-1] and len(lines[-1]) + len(part) > most:
-            lines.append("")
-        lines[-1] += part
-    return [line for line in lines if line] or [""]
-
-
-def _size(lines: Sequence[tuple[str, str]], least: tuple[int, int], pad: float) -> tuple[int, int]:
-    width = max(text_width(text, SIZES[style], style == "name") for style, text in lines)
-    height = sum(LINE * SIZES[style] * POINT for style, _ in lines)
-    return (
-        max(least[0], 2 * math.ceil((width + pad) / GRID / 2)),
-        max(least[1], 2 * math.ceil((height + 1.2) / GRID / 2)),
-    )
-
-
-def _boxes(sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, str]) -> dict[tuple[str, str], Box]:
-    """Make the boxes with their texts and sizes."""
-    notes: dict[tuple[str, str], list[str]] = {}
-    by_name = {link.name: link for link in links}
-    for name, item in sheet.requirements.items():
-        tie = sheet.tie(item)
-        asked = item.address.split(".")
-        if asked[0] == "streams":
-            link = by_name[asked[1]]  # between two units the note stands at the stream's name
-            holder = link.target if not link.taker else link.source if not link.maker else None
-        else:
-            holder = ("unit", asked[1]) if asked[0] == "units" else None
-        if holder:
-            notes.setdefault(holder, []).append(f"required: {name}")
-        for key in (*(("unit", unit) for unit in tie.free_units), *(("feed", feed) for feed in tie.free_feeds)):
-            if item.free.startswith(f"{key[0]}s.{key[1]}."):
-                notes.setdefault(key, []).append(f"freed: {item.free.split('.', 2)[2]}")
-    boxes: dict[tuple[str, str], Box] = {}
-    tall = TALL_OF_MANY if len(sheet.units) > MANY else TALL
-    for name, unit in sheet.units.items():
-        column = hasattr(unit, "cleans")
-        lines = [("name", text) for text in broken(name)] + [("kind", unit.kind)]
-        stages = unit.values.numbers.get("stages") if column else None
-        if stages is not None:
-            stages = int(stages)
-            lines.append(("kind", f"{stages} stage" + "s" * (stages != 1)))
-        lines += [("note", text) for note in notes.get(("unit", name), ()) for text in broken(note, 17)]
-        ports = max(len(unit.inlets), len(unit.outlets), 3) + 1
-        width, height = _size(lines, (6, tall if column else ports + ports % 2), 4.0 if column else 2.4)
-        boxes["unit", name] = Box("unit", name, lines, width, height, stages, column)
-    for link in links:
-        for sort, here in (("feed", not link.maker), ("product", not link.taker)):
-            if here:
-                lines = [("name", text) for text in broken(link.name, 20)]
-                lines += [("data", text) for text in data.get(link.name, "").split("\n") if text]
-                lines += [("note", text) for note in notes.get((sort, link.name), ()) for text in broken(note, 20)]
-                boxes[sort, link.name] = Box(sort, link.name, lines, *_size(lines, (4, 2), 3.2))
-    return boxes
-
-
-# --- rows
 
 
 @dataclass
@@ -269,7 +74,7 @@ class Row:
 
 
 def placements(
-    sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, str], room: Mapping[str, float], extra: int, count: int
+    sheet: Flowsheet, links: Sequence[Link], data: Mapping[str, str], room: Mapping[str, float], extra: int
 ) -> list[tuple[float, Placement]]:
     """Place all boxes in rows, in the ways that give the smallest drawings in the shape of paper.
 
@@ -283,8 +88,6 @@ def placements(
         mm by which streams need more than their names seem to.
     extra : int
         Steps of the grid by which gaps are wider than they seem to need.
-    count : int
-        Placements wanted at most.
 
     Returns
     -------
@@ -296,7 +99,7 @@ def placements(
     # room for numbers only where there are few streams
     more = data if len(sequence) <= MANY else {}
     widths = {
-        link.name: max(text_width(text, SIZES["name"]) for text in (link.name, *more.get(link.name, "").split("\n")))
+        link.name: max(text_width(text, SIZES["name"]) for text in (*broken(link.name), *more.get(link.name, "").split("\n")))
         + room.get(link.name, 0.0)
         for link in links
     }
@@ -306,16 +109,21 @@ def placements(
         if tuple(starts) in seen:
             continue
         seen.add(tuple(starts))
-        found = Placement(_boxes(sheet, links, data))
+        found = Placement(boxes_of(sheet, links, data, extra))
         cut = _placed(links, inner, sequence, starts, extra, found, widths)
         scale = max(found.width / A4[0], found.height / A4[1], LEAST_FILL)
         scale += BEYOND * max(0.0, found.width / MOST_A3[0] - 1.0, found.height / MOST_A3[1] - 1.0)
         tried.append((scale + cut + ROW * len(starts), len(tried), found))
-    return [(cost, found) for cost, _, found in sorted(tried, key=lambda item: item[:2])[:count]]
+    return [(cost, found) for cost, _, found in sorted(tried, key=lambda item: item[:2])]
 
 
 def _placed(
-    links: Sequence[Link], inner: Sequence[tuple], sequence: Sequence[str], starts: Sequence[int], extra: int, found: Placement,
+    links: Sequence[Link],
+    inner: Sequence[tuple],
+    sequence: Sequence[str],
+    starts: Sequence[int],
+    extra: int,
+    found: Placement,
     widths: Mapping[str, float],
 ) -> float:
     """Place all boxes in rows that begin at given places of the order; tell what the streams that change the row cost."""
@@ -362,8 +170,8 @@ def _row(
             ahead = rank[link.maker] < rank[link.taker]
             row.back += not ahead
             first, last = (link.maker, link.taker) if ahead else (link.taker, link.maker)
-            high = port_height(boxes["unit", link.maker], link.outlet, True)
-            low = port_height(boxes["unit", link.taker], link.inlet, False)
+            high = port_height(boxes["unit", link.maker], link.outlet)
+            low = port_height(boxes["unit", link.taker], link.inlet)
             if not ahead:
                 high, low = low, high
             chain = [first, *((link.name, between_rank) for between_rank in range(rank[first] + 1, rank[last])), last]
@@ -404,17 +212,12 @@ def _side(row: Row, box: Box, link: Link, unit: str, first: bool, last: bool, bo
         side = "bottom" if link.maker else "top"
     if not link.maker and first:
         side = "left"
-    elif link.maker and last and side == port_side(boxes["unit", unit], label):
+    elif link.maker and last and not (boxes["unit", unit].column and label in ("gas_out", "liquid_out")):
         side = "right"
     box.side = side
     if side in ("top", "bottom"):
         row.pulls.setdefault(unit, []).append(-1.0 if side == "top" else 1.0)
     row.flags[side].append((box, link))
-
-
-def port_side(box: Box, label: str) -> str:
-    """Give the edge that a product of this port would take anywhere but at the end of a row."""
-    return "" if box.column and label in ("gas_out", "liquid_out") else "bottom"
 
 
 def _place_row(row: Row, boxes: dict, top: int, extra: int, placement: Placement) -> int:
@@ -467,8 +270,10 @@ def _place_row(row: Row, boxes: dict, top: int, extra: int, placement: Placement
     for side in ("left", "right"):
         flags = sorted(row.flags[side], key=lambda item: (_up(item, boxes), item[0].name))
         gaps = [(a.height + b.height) // 2 + 1 for (a, _), (b, _) in zip(flags, flags[1:])]
+        free = top + 1
         for (box, _), middle in zip(flags, order.snapped([_up(item, boxes) for item in flags], [1.0] * len(flags), gaps)):
-            box.x, box.y = (1 if side == "left" else edge), max(top + 1, middle - box.height // 2)
+            box.x, box.y = (1 if side == "left" else edge), max(free, middle - box.height // 2)
+            free = box.y + box.height + 1
         if side == "right" and flags:
             right = edge + max(box.width for box, _ in flags)
     low += lanes["bottom"]
@@ -507,4 +312,4 @@ def _up(item: tuple[Box, Link], boxes: dict) -> float:
     box, link = item
     unit = boxes["unit", link.maker or link.taker]
     label = link.outlet if link.maker else link.inlet
-    return unit.y + unit.height / 2 + unit.height * port_height(unit, label, bool(link.maker))
+    return unit.y + unit.height / 2 + unit.height * port_height(unit, label)

@@ -13,6 +13,7 @@ from dataclasses import dataclass, field
 
 BEND, CROSSING, BESIDE, NEAR_BOX = 4.0, 9.0, 0.5, 0.8  # in steps of the grid
 STEPS = ((1, 0), (0, 1), (-1, 0), (0, -1))  # right, down, left, up
+FAR = 1e30
 TURNS = 2  # times all streams are laid again
 
 
@@ -75,14 +76,18 @@ class Router:
         Steps of the grid in each direction.
     boxes : sequence of (int, int, int, int)
         Left, top, right, bottom; no stream enters them.
+    spread : int
+        How much streams keep apart, where they can: more where names found no room between them.
     """
 
-    def __init__(self, width: int, height: int, boxes: Sequence[tuple[int, int, int, int]]) -> None:
+    def __init__(self, width: int, height: int, boxes: Sequence[tuple[int, int, int, int]], spread: int = 0) -> None:
+        self.beside, self.reach = BESIDE * (1 + 3 * spread), 1 + min(spread, 2)
         self.across, self.down = width + 1, height + 1
         size = self.across * self.down
         self.solid = bytearray(size)
         self.dear = [0.0] * size
-        self.used = (bytearray(size), bytearray(size))  # along x, along y
+        # along x, along y; longer than the sheet, so that one may look beside its last row
+        self.used = (bytearray(size + 4 * self.across), bytearray(size + 4 * self.across))
         for left, top, right, bottom in boxes:
             for y in range(top - 1, bottom + 2):
                 for x in range(left - 1, right + 2):
@@ -149,26 +154,29 @@ class Router:
     def _lay(self, wire: Wire) -> bool:
         """Search the cheapest path; a state is a point and the direction in which it was entered."""
         across, solid, dear, used = self.across, self.solid, self.dear, self.used
+        beside, reach = self.beside, self.reach
         moves = (1, across, -1, -across)
         goals = {port.y * across + port.x: ((port.way + 2) % 4, port.cost) for port in wire.ends}
         xs, ys = [port.x for port in wire.ends], [port.y for port in wire.ends]
         left, right, top, bottom = min(xs), max(xs), min(ys), max(ys)
-        best: dict[int, float] = {}
-        origin: dict[int, int] = {}
+        best = [FAR] * (4 * len(solid))
+        origin = [-1] * (4 * len(solid))
+        first = set()
         heap: list[tuple[float, float, int]] = []
 
         def left_over(point: int) -> float:
             y, x = divmod(point, across)
-            return max(left - x, 0, x - right) + max(top - y, 0, y - bottom)
+            along = left - x if x < left else x - right if x > right else 0
+            up = top - y if y < top else y - bottom if y > bottom else 0
+            return along + up + BEND if along and up else along + up
 
         for port in wire.starts:
             point = port.y * across + port.x
             if not used[0][point] and not used[1][point]:
                 state = point * 4 + port.way
                 best[state] = port.cost
-                origin[state] = -1
+                first.add(state)
                 heapq.heappush(heap, (port.cost + left_over(point), port.cost, state))
-        first = set(best)
         while heap:
             _, cost, state = heapq.heappop(heap)
             if cost > best[state]:
@@ -198,17 +206,18 @@ class Router:
                     lane, other = used[turn & 1], used[1 - (turn & 1)]
                     if lane[new]:
                         continue
-                    side = moves[1 - (turn & 1)]
+                    side = across if turn & 1 == 0 else 1
                     step = 1.0 + dear[new]
                     if other[new]:
                         step += CROSSING
-                    if lane[new + side] or lane[new - side]:
-                        step += BESIDE
+                    for off in range(side, side * (reach + 1), side):
+                        if lane[new + off] or lane[new - off]:
+                            step += beside
                 if turn != way:
                     step += BEND
                 following = new * 4 + turn
                 total = cost + step
-                if total < best.get(following, 1e30) - 1e-9:
+                if total < best[following] - 1e-9:
                     best[following] = total
                     origin[following] = state
                     heapq.heappush(heap, (total + left_over(new), total, following))

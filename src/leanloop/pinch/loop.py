@@ -179,7 +179,7 @@ def _hourly(circulation: float) -> str:
 
 def _by_curves(found: LoopLimits) -> LoopLimits:
     pair, share, asked = found.pair, found.per_liquid, found.asked
-    edges = pair.window(asked.ratio, lambda liquid: _hourly(share * liquid))
+    edges = pair.window(asked.ratio, lambda liquid: _hourly(share * liquid), found.circulation / share)
     steam, why = pair.least_steam(found.circulation / share, asked.ratio)
     reasons = [text for text in (edges.why, why) if text]
     return replace(

@@ -151,7 +151,7 @@ class Pair:
         for place in range(len(circulations)):
             line = y_a - s[place] * grid
             rest = np.maximum.accumulate(line[::-1])[::-1]  # of X and all above
-            left = np.where(grid >= floor, grid - r[place] * (y_s - self.y_steam), -np.inf)
+            left = np.where(grid >= floor, grid - r[place] * (y_s - self.y_steam), grid)  # below, nothing is stripped
             left = np.maximum.accumulate(left)  # of X and all below
             limit = np.maximum(rest + s[place] * grid, 0.0)
             clean = np.where(grid < x_end, np.minimum(limit, self.y_feed), self.y_feed)
@@ -168,8 +168,11 @@ class Pair:
             out[place] = clean[at - 1] + part * (clean[at] - clean[at - 1])
         return out
 
-    def window(self, required: float, span: Callable[[float], str]) -> Edges:
+    def window(self, required: float, span: Callable[[float], str], near: float | None = None) -> Edges:
         """Give the least and the most circulation at which the outlet is at most a required one.
+
+        With a bleed there may be a second window at very high circulations, where the bleed alone carries the solute
+        away; the one around `near` is given, else the first.
 
         Parameters
         ----------
@@ -177,25 +180,15 @@ class Pair:
             Y.
         span : callable
             Writes a circulation with its unit, for sentences.
+        near : float, optional
+            L, mol/s, as it is.
         """
         x_end, _ = self._ends()
         carrying = self.gas * max(self.y_feed - required, 1e-12 * self.y_feed)
         start = 0.999 * carrying / x_end if np.isfinite(x_end) else 1e-3 * carrying
         circulations = np.geomspace(start, start * 10**DECADES, SCANNED)
         rough = self.scan(circulations)
-        at = int(np.argmin(rough))
-        left, right = circulations[max(at - 1, 0)], circulations[min(at + 1, SCANNED - 1)]
-        best = float(circulations[at])
-        lowest = self.outlet(best)[0]
-        if rough[at] > CLEAR * required:  # near the edge of having a window at all: look closely
-            found = minimize_scalar(
-                lambda log: self.outlet(float(np.exp(log)))[0],
-                bounds=(np.log(left), np.log(right)),
-                method="bounded",
-                options={"xatol": 1e-8},
-            )
-            if found.fun < lowest:
-                best, lowest = float(np.exp(found.x)), float(found.fun)
+        best, lowest = self._best(circulations, rough, required, near)
         if lowest > required:
             return Edges(
                 None,
@@ -221,6 +214,40 @@ class Pair:
         if below is None:
             why = f"there is no least circulation above {span(float(start))}"
         return Edges(edge(below) if below else None, edge(above) if above else None, (best, lowest), why)
+
+    def _best(
+        self, circulations: np.ndarray, rough: np.ndarray, required: float, near: float | None
+    ) -> tuple[float, float]:
+        """Give a circulation that meets, as far inside its window as a first look can tell, else that of the lowest outlet."""
+        meets = np.flatnonzero(rough <= required)
+        if near is not None and self.outlet(near)[0] <= required:
+            at = int(np.searchsorted(circulations, near).clip(1, SCANNED - 1))
+            meets = np.arange(at - 1, at + 1) if not np.isin([at - 1, at], meets).any() else meets
+            inside = [run for run in _runs(meets) if {at - 1, at} & set(run)]
+            low = min(inside[0], key=lambda place: rough[place]) if inside else at
+            best = float(circulations[low])
+            outlet = self.outlet(best)[0]
+            here = self.outlet(near)[0]
+            return (best, outlet) if outlet <= here else (near, here)
+        for run in _runs(meets):
+            place = min(run, key=lambda place: rough[place])
+            best = float(circulations[place])
+            outlet = self.outlet(best)[0]
+            if outlet <= required and rough[place] <= CLEAR * required:
+                return best, outlet
+        hills = np.flatnonzero((rough <= np.append(rough[1:], np.inf)) & (rough <= np.append(np.inf, rough[:-1])))
+        found = []
+        for at in hills[np.argsort(rough[hills])][:3]:  # near the edge of having a window at all: look closely
+            left, right = circulations[max(at - 1, 0)], circulations[min(at + 1, SCANNED - 1)]
+            closer = minimize_scalar(
+                lambda log: self.outlet(float(np.exp(log)))[0],
+                bounds=(np.log(left), np.log(right)),
+                method="bounded",
+                options={"xatol": 1e-8},
+            )
+            found += [(float(np.exp(closer.x)), float(closer.fun)), (float(circulations[at]), self.outlet(float(circulations[at]))[0])]
+        good = [item for item in found if item[1] <= required]
+        return min(good) if good else min(found, key=lambda item: item[1])
 
     def _misses(self, circulation: float, required: float, rough: np.ndarray, circulations: np.ndarray) -> bool:
         """Tell whether the outlet is above the required one, exactly only where the first look is near it."""
@@ -283,3 +310,8 @@ class Pair:
         first = largest(lambda x: self.absorber(x) - s * (x - x_lean), x_lean, high)[0] if x_lean < high else x_lean
         second = largest(lambda x: x - r * (self.stripper(x) - self.y_steam), floor, x_rich)[0] if floor < x_rich else floor
         return first, second
+
+
+def _runs(places: np.ndarray) -> list[list[int]]:
+    """Give whole numbers in a row as runs."""
+    return [run.tolist() for run in np.split(places, np.flatnonzero(np.diff(places) > 1) + 1) if run.size]

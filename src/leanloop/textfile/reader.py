@@ -15,7 +15,7 @@ from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 from leanloop.quantities import parse
 
 SCALED = ("fractions", "mass_fractions")  # changing one of them scales the others
-ELSEWHERE = ("heat_data", "studies", "sizing")  # for other questions than a solve
+ELSEWHERE = ("studies", "sizing")  # for other questions than a solve
 
 DEEPEST = 50  # tables in one another
 TOO_DEEP = Fault("file", "is nested too deep", "write plain tables and lists")
@@ -101,7 +101,10 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
             context.fault(where, "leads nowhere", nearest(address.split(".")[0], SECTIONS))
             continue
         for number, head in enumerate(heads):
-            deeper = table.get(head) if isinstance(table, dict) else None
+            deeper = _inside(table, head)
+            if isinstance(deeper, list) and number > 1:
+                table = deeper
+                continue
             if not isinstance(deeper, dict):
                 if head in table and number == 0:
                     break  # what is wrong with the section itself is told when it is read
@@ -117,6 +120,12 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
                     break
             table = deeper
         else:
+            if isinstance(table, list):
+                if not (last.isdigit() and int(last) < len(table)):
+                    context.fault(where, f"{shown_name(last)} is no place in the list", f"count from 0 to {len(table) - 1}")
+                    continue
+                table[int(last)] = value
+                continue
             table[last] = value
             if len(heads) == 3 and heads[0] == "feeds" and heads[2] in SCALED:
                 moved.setdefault((heads[1], heads[2]), set()).add(last)
@@ -127,6 +136,13 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
         if isinstance(parts, dict) and names <= set(parts):
             _scale_others(parts, names)
     return context.faults
+
+
+def _inside(table: Any, head: str) -> Any:
+    """Give what stands at a key of a table, or at a place of a list."""
+    if isinstance(table, list):
+        return table[int(head)] if head.isdigit() and int(head) < len(table) else None
+    return table.get(head) if isinstance(table, dict) else None
 
 
 def _scale_others(parts: dict[str, Any], moved: set[str]) -> None:
@@ -214,6 +230,7 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
             data.get("basis"),
             data.get("groups"),
             data.get("limits"),
+            data.get("heat_data"),
             plain_si=False,
             source=name,
             directory=str(Path(path).parent),

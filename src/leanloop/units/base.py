@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import copy
 from abc import ABC, abstractmethod
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, ClassVar
 
 import numpy as np
 
 from leanloop.components import Components
+from leanloop.enthalpy.heat import Heat
 from leanloop.entries import Context, Entry, Values, read_values
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.equilibrium.conditions import Conditions
@@ -36,6 +37,8 @@ class Surroundings:
         By inlet label, which components its stream can hold.
     phases : mapping of str to str
         By inlet label.
+    heat : Heat or None
+        Enthalpies of the components, where any are known.
     """
 
     components: Components
@@ -43,6 +46,7 @@ class Surroundings:
     basis: Mapping[str, tuple[str, ...]]
     present: Mapping[str, np.ndarray]
     phases: Mapping[str, str]
+    heat: Heat | None = None
 
 
 @dataclass
@@ -108,6 +112,8 @@ class Scene:
         Tables as in a file.
     basis : mapping of str to tuple of str
         As in `Surroundings`.
+    heat_data : mapping of str to mapping
+        Tables as in a file.
     """
 
     entries: Mapping[str, Any]
@@ -115,6 +121,7 @@ class Scene:
     components: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
     equilibrium: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
     basis: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    heat_data: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
 
 
 class Unit(ABC):
@@ -178,19 +185,14 @@ class Unit(ABC):
         unit = copy.copy(self)
         address = f"units.{self.name}"
         unit.inlets, unit.outlets = {}, {}
-        ports = [entry for entry in self.entries if entry.sort in ("inlet", "outlet")]
-        given = [self.raw.get(entry.name) for entry in ports if entry.sort == "outlet"]
-        outlets = [name for item in given for name in (item if isinstance(item, (list, tuple)) else [item])]
-        context = context.knowing(outlet=[name for name in outlets if isinstance(name, str)])
+        given = [name for _, _, name, side in ports(self.entries, self.raw) if side == "outlet"]
+        context = context.knowing(outlet=[name for name in given if isinstance(name, str)])
         unit.values = read_values(self.entries, self.raw, address, context)
-        for entry in ports:
-            names = unit.values.words.get(entry.name)
-            side = unit.inlets if entry.sort == "inlet" else unit.outlets
-            for stream in names if isinstance(names, tuple) else (names,) if names else ():
-                label = stream if entry.many else entry.name
-                if label in side:
-                    context.fault(f"{address}.{entry.name}", f"stream '{stream}' is named twice", "name each stream once")
-                side[label] = stream
+        for label, where, stream, way in ports(self.entries, unit.values.words):
+            side = unit.inlets if way == "inlet" else unit.outlets
+            if label in side:
+                context.fault(f"{address}.{where}", f"stream '{stream}' is named twice", "name each stream once")
+            side[label] = stream
         unit.check(address, context)
         return unit
 
@@ -206,6 +208,11 @@ class Unit(ABC):
     def addresses(self) -> dict[str, str]:
         """Give the address of every number that `calculate` takes, by its local name."""
         return {key: f"units.{self.name}.{key}" for key in self.values.numbers}
+
+    @property
+    def wants_heat(self) -> bool:
+        """Whether the unit, as it was read, balances heat and so needs enthalpies; no by default."""
+        return False
 
     # --- what the engine may know without calculating
 
@@ -407,6 +414,40 @@ class Unit(ABC):
     ) -> list[str]:
         """Say in sentences what a careful reader of the result must know."""
         return []
+
+
+def ports(entries: Sequence[Entry], words: Any, head: str = "", shown: str = "") -> Iterator[tuple[str, str, Any, str]]:
+    """Give the ports among what is written at a unit.
+
+    Parameters
+    ----------
+    entries : sequence of Entry
+    words : mapping
+        As written, or as read.
+    head, shown : str
+        What goes before labels, and before entries in addresses.
+
+    Yields
+    ------
+    label : str
+        The port's name; the stream's own at a port that takes several; ``side_draws.0`` for a stream in a list of tables.
+    where : str
+        Address inside the unit.
+    stream : str
+    side : str
+        ``"inlet"`` or ``"outlet"``.
+    """
+    for entry in entries:
+        raw = words.get(entry.name) if isinstance(words, Mapping) else None
+        if entry.sort in ("inlet", "outlet"):
+            for stream in raw if isinstance(raw, (tuple, list)) else (raw,) if raw else ():
+                label = head.removesuffix(".") if head else stream if entry.many else entry.name
+                yield label, f"{shown}{entry.name}", stream, entry.sort
+        elif entry.sort == "table" and isinstance(raw, Mapping):
+            yield from ports(entry.nested, raw, f"{head}{entry.name}.", f"{shown}{entry.name}.")
+        elif entry.sort == "tables" and isinstance(raw, (tuple, list)):
+            for place, item in enumerate(raw):
+                yield from ports(entry.nested, item, f"{head}{entry.name}.{place}.", f"{shown}{entry.name}[{place}].")
 
 
 def outlet_status(outlets: Mapping[str, Stream]) -> np.ndarray:

@@ -1,0 +1,1 @@
+"""Equilibrium flash: a stream split into gas and liquid at a temperature, an enthalpy or a share of gas."""
