@@ -626,6 +626,24 @@ class TestDerivatives:
                 np.testing.assert_allclose(getattr(split, part).imag / STEP, sided, rtol=1e-6, atol=1e-8)
             np.testing.assert_allclose((split.gas + split.liquid).imag / STEP, unit, atol=1e-14)
 
+    @pytest.mark.parametrize(("temperature", "way"), [(310.0, 0), (420.0, 1)])
+    def test_a_phase_that_begins_at_given_enthalpy(self, temperature, way):
+        """Air over a liquid below its bubble point, oil in a gas above its dew point: both take some along."""
+        m = real_mixture(("water", "toluene"), ("air", "oil"))
+        flows, unit = np.array([0.0, 0.0, 2.0, 1.0]), np.eye(4)[way]
+        start = at_temperature(m, flows, temperature, 1e5)
+        assert not (start.gas if way == 0 else start.liquid).any()
+        enthalpy = m.enthalpy(start.gas, start.liquid, temperature)
+        exact = at_enthalpy(m, flows + 1j * STEP * unit, enthalpy, 1e5)
+        base, near, far = (at_enthalpy(m, flows + s * unit, enthalpy, 1e5) for s in (0.0, 1e-5, 2e-5))
+        for part, size in (("gas", 1.0), ("liquid", 1.0), ("temperature", 100.0)):
+            at = [getattr(item, part) for item in (base, near, far)]
+            sided = (4 * at[1] - 3 * at[0] - at[2]) / 2e-5
+            np.testing.assert_allclose(getattr(exact, part).imag / STEP, sided, rtol=1e-6, atol=1e-7 * size)
+        other = exact.gas if way == 0 else exact.liquid
+        assert (other.imag[2:] > 0.01 * STEP).all()
+        np.testing.assert_array_equal(other.real, 0.0)
+
     def test_no_flow(self):
         m = real_mixture(("water",), ("air",))
         split = at_temperature(m, np.array([1.0, 1.0]) * 1j * STEP, 300.0 + 2j * STEP, 1e5)

@@ -56,7 +56,7 @@ liquid_out = "lean"
 stages = 4
 equilibrium = "hot"
 pressure = "1.8 bar"
-reboiler = { temperature = "400 degC" }
+reboiler = { duty = "300 MW" }
 """  # noqa: E501 - as a file has it
 LIMITED = loop(method="substitution").replace("[loop]", "[loop]\npasses = 3")
 
@@ -70,7 +70,7 @@ SCENES = {
     "too few passes": (LIMITED, "pass_limit", "more passes"),
     "no solvent": (loop(oil=0.0), "dry_stage", "Unit wash"),
     "absurd data": (loop(hot=antoine(208.5)), "unbalanced", "Unit strip"),
-    "hotter than it can boil": (BOILED, "stages_unsolved", "Unit strip"),
+    "more heat than there is to boil": (BOILED, "stages_unsolved", "Unit strip"),
     "numbers out of all proportion": (loop(hot=scenes.constant(1e16)), "unbalanced", "Unit strip"),
     "data beyond any number": (loop(hot=antoine(6950.0)), "not_finite", "Unit strip"),
 }

@@ -13,9 +13,13 @@ v = Y*(X) G on mole ratios (`leanloop.column.law`). Rows:
 
     heat        duty + heat of feeds + h(above) + H(below) - h - H = 0, or what is given in its place
     material    l(above) + v(below) + feed - l - v = 0             for each l
-    summation   sum of all gas flows - V = 0
+    summation   a + b - sqrt(a^2 + b^2 + 2 c) = 0,  a = V / scale, b = 1 - sum of explicit gas flows / V, c = others / scale
     gas         v - V ((1 - E) y(below) + E y*) = 0                for each w with an efficiency E
                 v(below) + feed - v = 0                            for each w that stays in the gas
+
+For c > 0 the summation is a b = c, the sum of all gas flows; where nothing keeps a gas, it says that either V is zero
+and the liquid is below its bubble point, or the gas fractions sum to one, so that stages may be subcooled (smoothing of
+complementarity by C. Chen and O. L. Mangasarian and by C. Kanzow, SIAM J. Matrix Anal. Appl. 17 (1996) 851, from memory).
 
 A draw takes a part of what leaves a stage; the rest passes on. With the names of E. V. Murphree, Ind. Eng. Chem. 17
 (1925) 747 for the efficiency, and the equations of L. M. Naphtali and D. P. Sandholm, AIChE J. 17 (1971) 148, in other
@@ -33,6 +37,7 @@ import numpy as np
 from leanloop.column.law import BoundLaw, Law
 
 HEAT, TEMPERATURE, REFLUX, BOIL_UP, VAPOUR = "heat", "temperature", "reflux", "boil_up", "vapour"
+TINY = 1e-300
 HEAT_SCALE = 2500.0  # J/mol, about R times 300 K: the heat row in the size of the others
 Enthalpy = Callable[[np.ndarray, Mapping[str, Any]], np.ndarray]
 
@@ -295,7 +300,7 @@ def residual(tower: Tower, at: State) -> np.ndarray:
     material[..., 1:, :] += passing_down[..., :-1, falling]
     material[..., :-1, :] += passing_up[..., 1:, falling]
     out[..., 1:last] = material
-    out[..., last] = at.gas.sum(axis=-1) - at.total_gas
+    out[..., last] = summation(tower, at)[0]
     own = form.places[form.murphree]
     if len(own):
         e = tower.efficiency[..., form.murphree]
@@ -307,6 +312,21 @@ def residual(tower: Tower, at: State) -> np.ndarray:
         staying[..., :-1, :] += passing_up[..., 1:, form.gas_only]
         out[..., last + 1 + len(own) :] = staying
     return out
+
+
+def summation(tower: Tower, at: State) -> tuple[np.ndarray, ...]:
+    """Evaluate the summation rows, and what their derivatives need: a, b, the root and the scale, (..., M, S) each."""
+    form = tower.form
+    scale = (0.5 * np.real(tower.fed).sum(axis=(-1, -2)) + TINY)[..., None]
+    explicit = ~form.murphree
+    if form.law.plain:
+        b = 1.0 - (at.wanted * explicit).sum(axis=-1)
+    else:
+        b = 1.0 - (at.equilibrium * explicit).sum(axis=-1) / at.total_gas
+    others = at.gas[..., form.gas_only].sum(axis=-1) + at.gas[..., form.places[form.murphree]].sum(axis=-1)
+    a = at.total_gas / scale
+    root = np.sqrt(a * a + b * b + 2.0 * others / scale + TINY)
+    return scale * (a + b - root), a, b, root, scale
 
 
 def beyond(tower: Tower) -> np.ndarray | None:

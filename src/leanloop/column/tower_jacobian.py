@@ -19,6 +19,7 @@ from leanloop.column.tower import (
     assembled,
     below,
     split,
+    summation,
 )
 from leanloop.equilibrium.base import COMPLEX_STEP
 
@@ -137,7 +138,18 @@ def blocks(tower: Tower, sloped: Sloped) -> Blocks:
     up = np.zeros((cases, count, n, n))
     own[..., 1:last] = -d_liquid[:, falling] - d_gas[..., falling]
     up[..., 1:last] = rising[..., falling]
-    own[..., last] = d_gas.sum(axis=-1) - d_v
+    _, a, b, root, scale = summation(tower, at)
+    d_a = d_v / scale[..., None]
+    if law.plain:
+        d_b = -(d_y * explicit).sum(axis=-1)
+    else:
+        d_e = (d_eq * explicit).sum(axis=-1) - ((at.equilibrium * explicit).sum(axis=-1) / at.total_gas)[..., None] * d_v
+        d_b = -d_e / at.total_gas[..., None]
+    kept = np.zeros(d_liquid.shape[1])
+    kept[implicit] = 1.0
+    d_c = (d_gas @ kept) / scale[..., None]
+    pull = (a[..., None] * d_a + b[..., None] * d_b + d_c) / root[..., None]
+    own[..., last] = scale[..., None] * (d_a + d_b - pull)
     murphree = places[form.murphree]
     if len(murphree):
         e = tower.efficiency[..., form.murphree][:, :, None, :]

@@ -14,6 +14,7 @@ from leanloop.status import OK, Status, code
 
 STEP_LIMIT = 0.2  # a flow falls to no less than this part of itself in one step
 GROWTH = 5.0  # and the gas rises to no more than this many times itself
+LITTLE = 1e-4  # of all that is fed: from less than this a gas may vanish in one step
 WARMEST = 20.0  # K in one step
 FLOOR = 1e-9  # flows below this part of the component's feed are judged against it
 LEAST_FLOOR = 1e-11  # of all that is fed
@@ -79,7 +80,10 @@ def limited(tower: Tower, now: np.ndarray, step: np.ndarray) -> np.ndarray:
     """Add a step so that flows stay positive and temperatures move by no more than 20 K."""
     at = len(tower.form.implicit)
     new = np.maximum(now + step, STEP_LIMIT * now)
-    new[..., at] = np.minimum(new[..., at], GROWTH * np.maximum(now[..., at], TINY))
+    size = tower.fed.sum(axis=(1, 2))[:, None]
+    gas = now[..., at]
+    low = (gas < LITTLE * size) & (gas + step[..., at] <= 0.0)  # a gas may vanish, and come back
+    new[..., at] = np.where(low, 0.0, np.minimum(new[..., at], GROWTH * np.maximum(gas, 0.01 * size)))
     warm = now[..., at + 1]
     new[..., at + 1] = np.clip(warm + np.clip(step[..., at + 1], -WARMEST, WARMEST), COLDEST, HOTTEST)
     return new
