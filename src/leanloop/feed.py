@@ -16,14 +16,17 @@ from leanloop.equilibrium.conditions import Conditions
 from leanloop.equilibrium.water import is_water
 from leanloop.equilibrium.water import vapour_pressure as water_vapour_pressure
 from leanloop.errors import nearest
-from leanloop.stream import Stream
+from leanloop.flash.mixture import Mixture
+from leanloop.flash.solve import at_temperature, enthalpy
+from leanloop.stream import TWO_PHASE, Stream, divide
 
 FORMS = ("fractions", "mass_fractions", "ratios", "loadings")
 FLOW_SORTS = ("molar flow", "mass flow", "volume flow")
 SUM_TOLERANCE = 1e-6
 
 ENTRIES = (
-    Entry("phase", "choice", required=True, choices=PHASES, doc="gas or liquid"),
+    Entry("phase", "choice", required=True, choices=(*PHASES, TWO_PHASE), doc="gas, liquid, or two-phase at its T and P"),
+    Entry("equilibrium", "equilibrium", doc="table by which a two-phase feed is split"),
     Entry("temperature", "temperature", required=True),
     Entry("pressure", "pressure", required=True, above=0.0),
     Entry("saturated_with", "component", doc="component of which the gas holds what it can at its T and P"),
@@ -53,10 +56,11 @@ class Feed:
         self.values = Values()
         self.form, self.rest = "", ""
         self.vapour_pressure: Callable[[np.ndarray], np.ndarray] | None = None
+        self.mixture: Mixture | None = None
 
     @property
     def phase(self) -> str:
-        """``"gas"`` or ``"liquid"``, empty where it is not rightly given."""
+        """``"gas"``, ``"liquid"`` or ``"two-phase"``, empty where it is not rightly given."""
         return self.values.words.get("phase", "")
 
     def read(
@@ -235,6 +239,35 @@ class Feed:
             problem = f"{numbers['temperature']:g} K is no temperature of a process stream"
             context.fault(f"{address}.temperature", problem, "check its unit")
 
+    def connect(self, conditions: Mapping[str, Conditions], heat: Any, context: Context) -> None:
+        """Settle how a two-phase feed is split; faults are noted.
+
+        Parameters
+        ----------
+        conditions : mapping of str to Conditions
+        heat : Heat or None
+        context : Context
+        """
+        address, table = f"feeds.{self.name}", self.values.words.get("equilibrium")
+        if self.phase != TWO_PHASE:
+            if table is not None:
+                context.fault(f"{address}.equilibrium", "is for a two-phase feed", 'take it away, or write phase = "two-phase"')
+            return
+        if table is None:
+            if "equilibrium" not in self.raw:
+                context.fault(f"{address}.equilibrium", "entry is missing", "name the table that splits the feed")
+            return
+        present = self.components.mask(self.present())
+        place = f"two-phase feed '{self.name}'"
+        self.mixture = Mixture.connect(self.components, conditions[table], present, self.basis, heat, place, context)
+        names = self.components.names
+        lost = [name for name, here in zip(names, present, strict=True) if here] if heat is None else [
+            *heat.lacking("gas", present & ~self.mixture.stays_liquid), *heat.lacking("liquid", present & ~self.mixture.stays_gas)
+        ] if self.mixture is not None else []  # fmt: skip
+        for name in dict.fromkeys(lost):
+            remedy = 'add gas_heat_capacity = "33.6 J/(mol K)", liquid_heat_capacity and heat_of_vaporisation as they apply'
+            context.fault(f"heat_data.{name}", f"feed '{self.name}' is two-phase and '{name}' has no enthalpy", remedy)
+
     def present(self) -> list[str]:
         """Give the components that the feed can hold."""
         names = list(self.values.group(self.form))
@@ -243,10 +276,11 @@ class Feed:
 
     def addresses(self) -> dict[str, str]:
         """Give the address of every number by its local name."""
-        return {key: f"feeds.{self.name}.{key}" for key in self.values.numbers}
+        own = {key: f"feeds.{self.name}.{key}" for key in self.values.numbers}
+        return own if self.mixture is None else {**self.mixture.addresses(), **own}
 
     def stream(self, numbers: Mapping[str, Any], changed: frozenset[str] = frozenset()) -> Stream:
-        """Give the stream.
+        """Give the stream; a two-phase one is split at its temperature to find its enthalpy.
 
         Parameters
         ----------
@@ -260,7 +294,7 @@ class Feed:
         Stream
             State (..., C + 2).
         """
-        shape = np.broadcast_shapes(*(np.shape(value) for value in numbers.values()))
+        shape = np.broadcast_shapes(*(np.shape(value) for value in numbers.values() if not isinstance(value, list)))
         parts = {
             name: np.asarray(numbers[f"{self.form}.{name}"])
             for name in self.components.names
@@ -282,7 +316,12 @@ class Feed:
         flows = np.zeros((*shape, len(self.components)), dtype=kind)
         for name, value in amounts.items():
             flows[..., self.components.index[name]] = value
-        return Stream.of(flows, np.asarray(numbers["temperature"]), np.asarray(numbers["pressure"]), self.phase)
+        temperature, pressure = np.asarray(numbers["temperature"]), np.asarray(numbers["pressure"])
+        if self.phase != TWO_PHASE:
+            return Stream.of(flows, temperature, pressure, self.phase)
+        split = at_temperature(self.mixture, flows, temperature, pressure, numbers)
+        energy = enthalpy(self.mixture, split.gas, split.liquid, split.temperature, numbers)
+        return Stream.of(flows, divide(energy, flows.sum(axis=-1)), pressure, TWO_PHASE)
 
     def _complete(self, parts: dict[str, Any], changed: frozenset[str]) -> dict[str, Any]:
         """Give parts in proportion to moles."""

@@ -8,6 +8,7 @@ import numpy as np
 
 from leanloop.quantities import NORMAL_MOLES
 
+TWO_PHASE = "two-phase"
 
 @dataclass(frozen=True)
 class Stream:
@@ -19,7 +20,8 @@ class Stream:
         Molar flows of the C components in mol/s, then temperature in K and pressure in Pa. May be
         complex where derivatives are taken by the complex step.
     phase : str
-        ``"gas"`` or ``"liquid"``.
+        ``"gas"``, ``"liquid"`` or ``"two-phase"``. Of a stream that may be of two phases, the molar enthalpy in J/mol
+        stands in the place of the temperature: `Flashed` finds the temperature.
     """
 
     state: np.ndarray
@@ -160,6 +162,28 @@ class Stream:
         volume = self.flows[..., ~without].sum(axis=-1) / NORMAL_MOLES
         masses = np.where(self.flows == 0, 0.0, self.flows * molar_masses) * 1e6
         return divide(np.where(without, np.nan, masses), volume[..., None])
+
+
+@dataclass(frozen=True)
+class Flashed(Stream):
+    """A stream that may be of two phases, with its temperature and gas fraction.
+
+    Parameters
+    ----------
+    state, phase
+        As for `Stream`.
+    warmth : (...,) K
+    gas_fraction : (...,)
+        mol of gas per mol.
+    """
+
+    warmth: np.ndarray
+    gas_fraction: np.ndarray
+
+    @property
+    def temperature(self) -> np.ndarray:
+        """Temperature, (...,) K."""
+        return self.warmth
 
 
 def divide(above: np.ndarray, below: np.ndarray) -> np.ndarray:

@@ -9,9 +9,10 @@ from leanloop.flowsheet.run import ClosedLoop, Local, Run, put, wide
 from leanloop.recycle.driver import Pass, close
 from leanloop.recycle.linear import newton_step
 from leanloop.status import OK, Status, code
-from leanloop.stream import Stream
+from leanloop.stream import TWO_PHASE, Stream
 
 TEMPERATURE_TOLERANCE = 1e-6  # K
+ENTHALPY_TOLERANCE = 1e-4  # J/mol of a stream that may be of two phases, about as much
 PRESSURE_TOLERANCE = 1e-9  # relative
 NEGLIGIBLE = 4 * np.finfo(float).eps  # a last correction smaller than this changes nothing
 LEAST_SCALE = 1e-12  # of the loop flow, where a component has no external input
@@ -154,7 +155,8 @@ class LoopRun:
             for number, place in enumerate(self.places[tear]):
                 own = x[:, begin + number]
                 if place == self.run.plan.width - 2:
-                    own = np.full(len(x), TEMPERATURE_TOLERANCE / tolerance)
+                    warm = self.run.plan.phases[tear] != TWO_PHASE
+                    own = np.full(len(x), (TEMPERATURE_TOLERANCE if warm else ENTHALPY_TOLERANCE) / tolerance)
                 elif place == self.run.plan.width - 1:
                     own = PRESSURE_TOLERANCE / tolerance * np.abs(own)
                 else:
@@ -262,6 +264,9 @@ class LoopRun:
         run = self.run
         x = self._start()
         low = np.concatenate([np.where(self.places[tear] < run.plan.width - 2, 0.0, 1e-3) for tear in self.step.tears])
+        for tear in self.step.tears:
+            if run.plan.phases[tear] == TWO_PHASE:  # enthalpies may be below zero
+                low[self._part(tear)][self.places[tear] == run.plan.width - 2] = -np.inf
         settings = run.settings
         high = np.full(x.shape, np.inf)
         for tear in self.step.tears:

@@ -10,7 +10,9 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context
 from leanloop.feed import Feed
+from leanloop.flash.mixture import Mixture
 from leanloop.flowsheet.graph import Node, Region, Step, Structure, Tie, arrange, nodes_of, recycled
+from leanloop.stream import TWO_PHASE
 from leanloop.units.base import Surroundings, Unit
 
 
@@ -53,6 +55,7 @@ class Plan:
                     {label: unit.inlets[label] for label in inlets},
                     {label: unit.outlets[label] for label in outlets},
                 )
+        self.mixtures = self._mixtures()
         self.regions: list[Region] = []
         self._memo: dict[tuple, Any] = {}
 
@@ -70,6 +73,23 @@ class Plan:
             for name, tie in ties.items()
         }
         self.regions = arrange(self.graph, placed, self._costs(), tears)
+
+    def _mixtures(self) -> dict[str, Mixture]:
+        """Give what splits each stream that may be of two phases: its maker's, else what comes into the maker."""
+        found = {name: feed.mixture for name, feed in self.feeds.items() if feed.mixture is not None}
+        grew = True
+        while grew:
+            grew = False
+            for unit in self.units.values():
+                for label, stream in unit.outlets.items():
+                    if self.phases[stream] != TWO_PHASE or stream in found:
+                        continue
+                    own = unit.mixture(label)
+                    come = [found[source] for source in unit.inlets.values() if source in found]
+                    if own is not None or come:
+                        found[stream] = own if own is not None else come[0]
+                        grew = True
+        return found
 
     def forget(self) -> None:
         """Drop what depends on the arrangement, before it is made anew."""

@@ -10,7 +10,7 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.equilibrium.water import is_water, saturation_temperature
 from leanloop.errors import nearest
-from leanloop.stream import Stream, divide
+from leanloop.stream import TWO_PHASE, Stream, divide
 
 BY_COMPONENT = (
     "mol_s",
@@ -81,6 +81,8 @@ def stream_quantity(stream: Stream, bases: Bases, key: str) -> Any:
     if key == "total_mol_s":
         return stream.total
     if key == "vapour_fraction":
+        if stream.phase == TWO_PHASE:
+            return stream.gas_fraction
         return np.full(stream.temperature.shape, 1.0 if stream.phase == "gas" else 0.0)
     if key == "dew_point_K":
         water = stream.flows[..., bases.water].sum(axis=-1)
@@ -89,7 +91,7 @@ def stream_quantity(stream: Stream, bases: Bases, key: str) -> Any:
         "mol_s": lambda: stream.flows,
         "fraction": lambda: stream.fractions,
         "fraction_dry": lambda: stream.fractions_dry(bases.water),
-        "ratio": lambda: stream.ratios(bases.ratio[stream.phase]),
+        "ratio": lambda: stream.ratios(bases.ratio["gas" if stream.phase == "gas" else "liquid"]),
         "mass_fraction": lambda: stream.mass_fractions(masses),
         "loading": lambda: divide(stream.flows, stream.flows[..., bases.loading].sum(axis=-1)[..., None]),
         "mg_per_Nm3": lambda: stream.concentrations(masses, none),

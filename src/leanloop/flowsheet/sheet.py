@@ -27,6 +27,7 @@ from leanloop.flowsheet.view import derivatives
 from leanloop.recycle import METHODS
 from leanloop.recycle.linear import newton_step
 from leanloop.status import OK, Status, code, solved
+from leanloop.stream import TWO_PHASE
 from leanloop.units.base import Unit
 
 CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open by more is no answer
@@ -100,7 +101,8 @@ class Flowsheet:
             for name, entry in read.table("equilibrium", equilibrium, known).items()
         }
         self.feeds = {
-            feed.name: feed.read(self.components, self.basis, self.conditions, known) for feed in read.feeds(feeds, known)
+            feed.name: feed.read(self.components, self.basis, self.conditions, known.knowing(equilibrium=self.conditions))
+            for feed in read.feeds(feeds, known)
         }
         known = known.knowing(equilibrium=self.conditions)
         units_read: dict[str, Unit] = {}
@@ -112,7 +114,10 @@ class Flowsheet:
         structure.check(known, loose)
         present, phases = structure.present(), structure.phases()
         asked = heat_data is not None or any(unit.wants_heat for unit in units_read.values())
+        asked = asked or any(feed.phase == TWO_PHASE for feed in self.feeds.values())
         self.heat = enthalpy.read(heat_data, self.components, known) if asked else None
+        for feed in self.feeds.values():
+            feed.connect(self.conditions, self.heat, known)
         surroundings = {
             "components": self.components, "conditions": self.conditions, "basis": self.basis, "heat": self.heat,
         }  # fmt: skip

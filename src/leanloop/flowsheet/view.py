@@ -8,9 +8,10 @@ from typing import Any
 import numpy as np
 
 from leanloop.equilibrium.base import COMPLEX_STEP
+from leanloop.flash.solve import at_enthalpy
 from leanloop.flowsheet.quantity import Formula
 from leanloop.flowsheet.run import Run
-from leanloop.stream import Stream
+from leanloop.stream import TWO_PHASE, Flashed, Stream, divide
 
 
 class View:
@@ -27,6 +28,7 @@ class View:
     def __init__(self, run: Run, moved: bool = False) -> None:
         self.run, self.moved = run, moved
         self._units: dict[str, dict[str, Any]] = {}
+        self._splits: dict[str, tuple[np.ndarray, np.ndarray]] = {}
 
     def stream(self, name: str) -> Stream:
         """Give a stream, states (M, C + 2) or (E, M, C + 2)."""
@@ -34,12 +36,30 @@ class View:
         if self.moved:
             way = self.run.ways.get(name)
             state = state + 1j * COMPLEX_STEP * (np.zeros((len(self.run.extra), *state.shape)) if way is None else way)
-        return Stream(state, self.run.plan.phases[name])
+        phase = self.run.plan.phases[name]
+        return Stream(state, phase) if phase != TWO_PHASE else self._flashed(name, state)
+
+    def _flashed(self, name: str, state: np.ndarray) -> Stream:
+        """Give a stream that may be of two phases, split as its maker would."""
+        mixture = self.run.plan.mixtures.get(name)
+        if mixture is None:
+            nothing = np.full(state.shape[:-1], np.nan)
+            return Flashed(state, TWO_PHASE, nothing, nothing)
+        if name not in self._splits:
+            with np.errstate(all="ignore"):
+                flows = state[..., :-2]
+                total = flows.sum(axis=-1)
+                numbers = self._moved(mixture.addresses())
+                split = at_enthalpy(mixture, flows, total * state[..., -2], state[..., -1], numbers)
+                self._splits[name] = split.temperature, divide(split.gas.sum(axis=-1), total)
+        return Flashed(state, TWO_PHASE, *self._splits[name])
 
     def numbers(self, unit: str) -> dict[str, Any]:
         """Give the numbers of a unit by local name."""
+        return self._moved(self.run.plan.addresses[unit])
+
+    def _moved(self, addresses: Mapping[str, str]) -> dict[str, Any]:
         run = self.run
-        addresses = run.plan.addresses[unit]
         numbers = run.inputs.of(addresses)
         if self.moved:
             for local, address in addresses.items():

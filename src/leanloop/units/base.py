@@ -15,6 +15,7 @@ from leanloop.enthalpy.heat import Heat
 from leanloop.entries import Context, Entry, Values, read_values
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.equilibrium.conditions import Conditions
+from leanloop.flash.mixture import Mixture
 from leanloop.status import OK, Status, code
 from leanloop.stream import Stream
 
@@ -79,11 +80,11 @@ class Inlet:
     Parameters
     ----------
     phase : str
-        ``"gas"`` or ``"liquid"``.
+        ``"gas"``, ``"liquid"`` or ``"two-phase"``.
     flows : mapping of str to float or list of float
         mol/s by component, one value or one for each case.
     temperature : float or list of float
-        K.
+        K; of a two-phase stream its molar enthalpy in J/mol.
     pressure : float or list of float
         Pa.
     """
@@ -223,6 +224,10 @@ class Unit(ABC):
     def phase(self, outlet: str, phases: Mapping[str, str]) -> str | None:
         """Give the phase of an outlet from those of the inlets; None while it is unknown."""
         return next(iter(phases.values()), None)
+
+    def mixture(self, outlet: str) -> Mixture | None:
+        """Give what splits an outlet that may be of two phases; None for what splits the inlets."""
+        return None
 
     def passes(self, inlet: str, outlet: str, components: Components, numbers: Numbers | None = None) -> np.ndarray:
         """Tell which components can get from an inlet to an outlet.

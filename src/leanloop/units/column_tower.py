@@ -26,9 +26,10 @@ from leanloop.column.start import split_fractions
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.equilibrium.water import is_water, vapour_pressure
 from leanloop.status import OK, Status, code
-from leanloop.stream import Stream, divide
+from leanloop.stream import TWO_PHASE, Stream, divide
 from leanloop.units.base import Evaluation, Numbers, outlet_status
 from leanloop.units.column_inside import Inside
+from leanloop.units.warmth import heat_flow
 from leanloop.units.column_entries import balances_heat, stage_count
 
 if TYPE_CHECKING:
@@ -184,11 +185,7 @@ class TowerPart:
 
     def enthalpy_of(self, stream: Stream, numbers: Numbers) -> np.ndarray:
         """Give the enthalpy flow of a feed, (...,) W."""
-        if stream.phase == "two-phase":
-            return stream.state[..., -2]
-        heat = self.column.around.heat
-        function = heat.gas if stream.phase == "gas" else heat.liquid
-        return (stream.flows * function(stream.temperature, numbers)).sum(axis=-1)
+        return heat_flow(stream, self.column.around.heat, numbers)
 
     # --- starts
 
@@ -476,4 +473,4 @@ def k_step(temperature: np.ndarray) -> int:
 
 def _warmth(stream: Stream) -> np.ndarray:
     """Give a temperature to begin with; of a stream that may be two-phase only its enthalpy is known."""
-    return np.full(stream.state.shape[:-1], 350.0) if stream.phase == "two-phase" else stream.temperature
+    return np.full(stream.state.shape[:-1], 350.0) if stream.phase == TWO_PHASE else stream.temperature
