@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 
 from leanloop.components import Components
+from leanloop.enthalpy.heat import Heat
 from leanloop.entries import Context
 from leanloop.feed import Feed
 from leanloop.flash.mixture import Mixture
@@ -56,6 +57,7 @@ class Plan:
                     {label: unit.outlets[label] for label in outlets},
                 )
         self.mixtures = self._mixtures()
+        self.heat: Heat | None = None
         self.regions: list[Region] = []
         self._memo: dict[tuple, Any] = {}
 

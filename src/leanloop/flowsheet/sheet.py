@@ -137,6 +137,7 @@ class Flowsheet:
         self.settings, self.tears = settings, tears
         phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         self.plan = Plan(self.components, self.feeds, self.units, structure, present, phases)
+        self.plan.heat = self.heat
         for place, tear in enumerate(tears):
             if tear not in self.plan.recycled():
                 known.fault(f"loop.tears[{place}]", f"stream '{tear}' is on no loop", "leave it out")

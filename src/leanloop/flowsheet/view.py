@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from leanloop.equilibrium.base import COMPLEX_STEP
-from leanloop.flash.solve import at_enthalpy
+from leanloop.flash.solve import Split, at_enthalpy
 from leanloop.flowsheet.quantity import Formula
 from leanloop.flowsheet.run import Run
 from leanloop.stream import TWO_PHASE, Flashed, Stream, divide
@@ -28,7 +28,7 @@ class View:
     def __init__(self, run: Run, moved: bool = False) -> None:
         self.run, self.moved = run, moved
         self._units: dict[str, dict[str, Any]] = {}
-        self._splits: dict[str, tuple[np.ndarray, np.ndarray]] = {}
+        self._splits: dict[str, Split] = {}
 
     def stream(self, name: str) -> Stream:
         """Give a stream, states (M, C + 2) or (E, M, C + 2)."""
@@ -51,8 +51,16 @@ class View:
                 total = flows.sum(axis=-1)
                 numbers = self._moved(mixture.addresses())
                 split = at_enthalpy(mixture, flows, total * state[..., -2], state[..., -1], numbers)
-                self._splits[name] = split.temperature, divide(split.gas.sum(axis=-1), total)
-        return Flashed(state, TWO_PHASE, *self._splits[name])
+                self._splits[name] = split
+        split = self._splits[name]
+        return Flashed(state, TWO_PHASE, split.temperature, divide(split.gas.sum(axis=-1), state[..., :-2].sum(axis=-1)))
+
+    def parts(self, name: str) -> tuple[np.ndarray, np.ndarray]:
+        """Give gas and liquid of a stream that may be of two phases, (M, C) mol/s each; NaN where nothing splits it."""
+        stream = self.stream(name)
+        if name not in self._splits:
+            return np.full(stream.flows.shape, np.nan), np.full(stream.flows.shape, np.nan)
+        return self._splits[name].gas, self._splits[name].liquid
 
     def numbers(self, unit: str) -> dict[str, Any]:
         """Give the numbers of a unit by local name."""

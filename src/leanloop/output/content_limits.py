@@ -53,11 +53,19 @@ def _column(item: ColumnLimits) -> Section:
         return Section(title, [Sentence(_sentence(item.why or "nothing is known"))], place=place)
     at, absorbs = item.ends, item.cleans == "gas"
     word = "solvent" if absorbs else "stripping gas"
+    boiled = item.least_duty_W is not None or item.times_least is not None
     now = at.liquid if absorbs else at.gas
+    if boiled:
+        duty = item.least_duty_W
+        flows = [["least reboiler duty", number(None if duty is None else duty / 1e3), "kW"]]
+    else:
+        flows = [
+            [f"least {word}, solute-free", number(hourly(item.least_mol_s)), "kmol/h"],
+            [f"{word} as it is" if not at.stated else f"{word} between these ends", number(hourly(now)), "kmol/h"],
+        ]
     rows = [
-        [f"least {word}, solute-free", number(hourly(item.least_mol_s)), "kmol/h"],
-        [f"{word} as it is" if not at.stated else f"{word} between these ends", number(hourly(now)), "kmol/h"],
-        ["ratio to the least", number(item.ratio_to_least), ""],
+        *flows,
+        ["boil-up over that at the least" if boiled else "ratio to the least", number(item.ratio_to_least), ""],
         ["equilibrium stages needed", number(item.stages_needed), ""],
     ]
     pinch = item.pinch
@@ -102,16 +110,24 @@ def _loop(loop: LoopLimits) -> Section:
                     number(hourly(loop.circulation)),
                     number(hourly(loop.most)),
                 ],
-                [
-                    "stripping gas at this circulation, solute-free",
-                    number(hourly(loop.least_gas)),
-                    number(hourly(loop.gas)),
-                    "",
-                ],
+                *(
+                    []
+                    if loop.circuit.boil
+                    else [
+                        [
+                            "stripping gas at this circulation, solute-free",
+                            number(hourly(loop.least_gas)),
+                            number(hourly(loop.gas)),
+                            "",
+                        ]
+                    ]
+                ),
             ],
             "Window of circulation, and least stripping gas",
         ),
     ]
+    if loop.least_duty is not None:
+        parts.append(Sentence(f"Least reboiler duty at this circulation: {number(loop.least_duty / 1e3)} kW."))
     if loop.method:
         parts.append(Sentence(f"Found {METHODS[loop.method]}."))
     if loop.why:

@@ -63,6 +63,27 @@ class Case:
         return {address: value for address, value in found.items() if not address.startswith("requirements.")}
 
 
+def stretched(numbers: Mapping[str, Any], now: int, stages: int) -> dict[str, Any]:
+    """Give a column's numbers with other stages; side streams keep their place in proportion.
+
+    Parameters
+    ----------
+    numbers : mapping of str to float or list
+        By local name.
+    now, stages : int
+        As they are, and as wanted.
+    """
+    out: dict[str, Any] = {}
+    if "stages" in numbers:
+        out["stages"] = stages
+    else:
+        out["height"] = stages * numbers["hetp"]
+    for key, value in numbers.items():
+        if key.endswith(".stage") and key.partition(".")[0] in ("side_feeds", "side_draws", "stage_duties"):
+            out[key] = 1 if value == 1 else int(np.clip(round(value * stages / now), 1, stages))
+    return out
+
+
 class Alone:
     """A column by itself, between the streams that enter it in a case.
 
@@ -72,18 +93,26 @@ class Alone:
     name : str
     inlets : mapping of str to Stream
         States (C + 2,), by port.
+
+    Attributes
+    ----------
+    scaled : str
+        What is multiplied: a port, or a number such as ``reboiler.duty``; empty where nothing can be.
     """
 
     def __init__(self, case: Case, name: str, inlets: Mapping[str, Stream]) -> None:
         self.unit, self.inlets = case.plan.units[name], inlets
         self.given = case.numbers(name)
-        self.stages = int(self.given["stages"])
+        self.stages = self.unit.count(self.given)
         absorbs = self.unit.cleans == "gas"
         self.scaled = "liquid_in" if absorbs else "gas_in"
+        if self.scaled not in inlets:
+            boils = [f"reboiler.{key}" for key in ("duty", "boil_up", "stripping_ratio")]
+            self.scaled = next((key for key in boils if key in self.given), "")
         self.clean = "gas_out" if absorbs else "liquid_out"
 
-    def solve(self, factors: np.ndarray, stages: int) -> tuple[dict[str, Stream], Evaluation]:
-        """Solve it with its solvent (absorber) or gas (stripper) multiplied.
+    def solve(self, factors: np.ndarray, stages: int) -> tuple[dict[str, Stream], dict[str, Any], Evaluation]:
+        """Solve it with its solvent (absorber), gas or boil-up (stripper) multiplied.
 
         Parameters
         ----------
@@ -94,6 +123,7 @@ class Alone:
         -------
         inlets : dict of str to Stream
             States (R, C + 2).
+        numbers : dict
         answer : Evaluation
             Of R cases.
         """
@@ -103,20 +133,21 @@ class Alone:
             if label == self.scaled:
                 state[:, :-2] *= factors[:, None]
             entering[label] = Stream(state, stream.phase)
-        numbers = {**self.given, "stages": stages}
+        numbers = {**self.given, **stretched(self.given, self.stages, stages)}
+        if self.scaled in self.given:
+            numbers[self.scaled] = self.given[self.scaled] * factors
         with np.errstate(all="ignore"):
-            return entering, self.unit.evaluate(entering, numbers, None, {}, {}, 0)
+            return entering, numbers, self.unit.evaluate(entering, numbers, None, {}, {}, 0)
 
     def outlets(self, factors: np.ndarray, stages: int) -> np.ndarray:
         """Give what leaves with the cleaned stream, (R, C) mol/s; NaN where not solved."""
-        _, answer = self.solve(factors, stages)
+        *_, answer = self.solve(factors, stages)
         flows = answer.outlets[self.clean].flows.copy()
         flows[~solved(answer.status)] = np.nan
         return flows
 
-    def profile(self, factor: float, stages: int) -> Mapping[str, Any]:
-        """Give the profile at one rate, as a column reports it."""
-        entering, answer = self.solve(np.array([factor]), stages)
+    def report(self, factor: float, stages: int) -> Mapping[str, Any]:
+        """Give what the column reports at one rate: results and profile, on a case axis of one."""
+        entering, numbers, answer = self.solve(np.array([factor]), stages)
         with np.errstate(all="ignore"):
-            found = self.unit.results(entering, answer.outlets, {**self.given, "stages": stages}, answer.memory)
-        return found["profile"]
+            return self.unit.results(entering, answer.outlets, numbers, answer.memory)

@@ -23,6 +23,9 @@ class Circuit:
         Addresses of the flows that the make-up holds.
     steam : tuple of str
         Addresses of the flow of the stripping gas; empty where it is none of a feed's.
+    boil : tuple of str
+        Address of what boils the reboiler of a stripper without stripping gas; empty where there is none, or where it
+        is a temperature.
     requirement : Requirement or None
         What is asked of the cleaned gas; None where the outlet as solved is taken.
     """
@@ -32,6 +35,7 @@ class Circuit:
     makeup: str
     hold: tuple[str, ...]
     steam: tuple[str, ...]
+    boil: tuple[str, ...]
     requirement: Requirement | None
 
 
@@ -68,7 +72,10 @@ def find(case: Case) -> Circuit | str:
     requirement = asked[0] if asked else None
     if requirement is not None and not _on_outlet(case, requirement, absorbers[0]):
         return f"requirement {requirement.name} asks for nothing in the gas that {absorbers[0]} cleans"
-    return Circuit(absorbers[0], strippers[0], makeup, hold, _gas_flow(case, strippers[0], set(units)), requirement)
+    stripper = plan.units[strippers[0]]
+    kinds = [f"reboiler.{key}" for key in ("duty", "boil_up", "stripping_ratio")]
+    boil = () if "gas_in" in stripper.inlets else tuple(f"units.{stripper.name}.{key}" for key in kinds if key in stripper.values.numbers)
+    return Circuit(absorbers[0], stripper.name, makeup, hold, _gas_flow(case, stripper.name, set(units)), boil, requirement)
 
 
 def _on_outlet(case: Case, item: Requirement, absorber: str) -> bool:

@@ -31,6 +31,10 @@ class ColumnLimits:
     ends : Ends or None
     least_mol_s : float or None
         Solute-free solvent of an absorber, gas of a stripper.
+    least_duty_W : float or None
+        Reboiler duty of a stripper without stripping gas.
+    times_least : float or None
+        Operating rate over the least, where it is not that of the flows.
     pinch : Pinch or None
     stages_needed : float or None
     why : str or None
@@ -47,6 +51,8 @@ class ColumnLimits:
     method: str | None = None
     ends: Ends | None = None
     least_mol_s: float | None = None
+    least_duty_W: float | None = None
+    times_least: float | None = None
     pinch: Pinch | None = None
     stages_needed: float | None = None
     why: str | None = None
@@ -56,6 +62,8 @@ class ColumnLimits:
     @property
     def ratio_to_least(self) -> float | None:
         """Operating rate over the least."""
+        if self.times_least is not None:
+            return self.times_least
         if not self.least_mol_s or self.ends is None:
             return None
         return (self.ends.liquid if self.cleans == "gas" else self.ends.gas) / self.least_mol_s
@@ -69,6 +77,7 @@ class ColumnLimits:
             "key": self.key,
             "method": self.method,
             "least_solvent_mol_s" if lean_first else "least_gas_mol_s": self.least_mol_s,
+            **({} if lean_first else {"least_duty_W": self.least_duty_W}),
             "ratio_to_least": self.ratio_to_least,
             "pinch": {
                 "kind": None if pinch is None else pinch.kind,
@@ -112,8 +121,11 @@ def column_limits(case: Case, name: str) -> ColumnLimits:
         doubled = {item.key: item for item in _doubled(case, coupled)}
         found = [doubled.get(item.key, item) for item in found]
     # where several components count, the one that asks for most sets the limit; one that no rate suffices for comes first
-    lost = [item for item in found if item.least_mol_s is None]
-    return lost[0] if lost else max(found, key=lambda item: item.least_mol_s)
+    def size(item: ColumnLimits) -> float | None:
+        return item.least_duty_W if item.least_mol_s is None else item.least_mol_s
+
+    lost = [item for item in found if size(item) is None]
+    return lost[0] if lost else max(found, key=size)
 
 
 def _keys(case: Case, name: str, chosen: str | None) -> list[str]:
@@ -145,6 +157,13 @@ def _keys(case: Case, name: str, chosen: str | None) -> list[str]:
 
 def _for_key(case: Case, blank: ColumnLimits, key: str, numbers: dict[str, float]) -> ColumnLimits:
     at = stated(ends(case, blank.unit, key), blank.cleans, numbers)
+    unit = case.plan.units[blank.unit]
+    if isinstance(case.numbers(blank.unit).get("efficiency"), list):
+        return replace(blank, key=key, why="efficiencies are given by stage, so that the stages cannot be doubled")
+    if unit.inner is not None:
+        if at.stated:
+            return replace(blank, key=key, why="with heat, efficiencies or side streams only the ends as solved are looked at")
+        return replace(blank, key=key, method=DOUBLING, ends=at)
     if not all(np.isfinite((at.liquid, at.gas, at.x_lean, at.x_rich, at.y_lean, at.y_rich))) or at.gas <= 0 or at.liquid <= 0:
         why = f"ratios of {key} to the solute-free flows are not defined: no solvent, or no gas that does not distribute"
         return replace(blank, key=key, ends=None, why=why)
@@ -157,7 +176,7 @@ def _for_key(case: Case, blank: ColumnLimits, key: str, numbers: dict[str, float
         least, flow = rates.least_solvent(curve, at.x_lean, at.y_rich, at.y_lean), at.gas
     else:
         least, flow = rates.least_gas(curve, at.x_lean, at.x_rich, at.y_lean), at.liquid
-    needed: float | None = float(case.numbers(blank.unit)["stages"])
+    needed: float | None = float(unit.count(case.numbers(blank.unit)))
     why = least.why
     if at.stated:
         needed = None
@@ -196,12 +215,21 @@ def _together(case: Case, items: list[ColumnLimits]) -> list[ColumnLimits]:
     column = Alone(case, first.unit, inlets_at(case, first.unit, first.key, first.ends))
     places = np.array([case.sheet.components.index[item.key] for item in items])
     lean_first = first.cleans == "gas"
-    limits = np.array([item.ends.y_lean * item.ends.gas if lean_first else item.ends.x_lean * item.ends.liquid for item in items])
+    if not column.scaled:
+        return [replace(item, why="the reboiler is run by its temperature, which has no least rate") for item in items]
+    boiled = column.scaled.startswith("reboiler.")
+    clean = case.state(column.unit.outlets[column.clean]).flows
+    limits = np.array(
+        [
+            clean[place] if not item.ends.stated else item.ends.y_lean * item.ends.gas if lean_first else item.ends.x_lean * item.ends.liquid
+            for item, place in zip(items, places, strict=True)
+        ]
+    )
     out = []
     for item, place, limit, found in zip(
         items, places, limits, doubling.least_by_doubling(column, places, limits), strict=True
     ):
-        word = "solvent" if lean_first else "gas"
+        word = "solvent" if lean_first else "boil-up" if boiled else "gas"
         least = found.factor * (item.ends.liquid if lean_first else item.ends.gas)
         why, pinch = None, None
         if not np.isfinite(found.factor):
@@ -210,6 +238,9 @@ def _together(case: Case, items: list[ColumnLimits]) -> list[ColumnLimits]:
             least, why = None, f"there is no least rate: {item.key} comes down to its outlet at any rate tried"
         else:
             pinch = doubling.pinch_of(column, item.key, found.factor, found.stages)
+            if boiled:
+                duty = column.report(found.factor, found.stages)["results"]["reboiler_duty_W"]
+                item = replace(item, least_duty_W=None if duty is None else float(duty[0]), times_least=1 / found.factor)
             if not found.settled:
                 why = f"with {found.stages} stages the rate still changes by more than 1e-3 as stages double"
         needed = float(column.stages)
@@ -217,5 +248,7 @@ def _together(case: Case, items: list[ColumnLimits]) -> list[ColumnLimits]:
             needed = doubling.stages_by_count(column, int(place), float(limit))
             if needed is None and why is None:
                 why = "no number of stages reaches the stated ends at this rate"
+        if boiled:
+            least = None
         out.append(replace(item, least_mol_s=least, pinch=pinch, stages_needed=needed, why=why))
     return out

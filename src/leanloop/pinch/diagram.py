@@ -29,7 +29,7 @@ def stage_diagram(found: Limits, name: str) -> StageDiagram | None:
         Of the column.
     """
     column, case = found.columns[name], found.case
-    if column.key is None or column.ends is None or not case.usable:
+    if column.key is None or column.ends is None or not case.usable or "gas_in" not in case.plan.units[name].inlets:
         return None
     key, at = column.key, column.ends
     steps = _steps(column, case)
@@ -133,7 +133,7 @@ def _least_line(column: ColumnLimits, case: Case) -> tuple[np.ndarray | None, np
         reach = at.y_lean + (at.x_rich - at.x_lean) * at.liquid / column.least_mol_s
         return np.array([at.x_lean, at.x_rich]), np.array([at.y_lean, reach])
     alone = Alone(case, column.unit, inlets_at(case, column.unit, column.key, at))
-    profile = alone.profile(1 / column.ratio_to_least, max(FINE, 2 * alone.stages))
+    profile = alone.report(1 / column.ratio_to_least, max(FINE, 2 * alone.stages))["profile"]
     x, y = (np.asarray(profile[axis][column.key])[0] for axis in "XY")
     if column.cleans == "gas":
         found = np.concatenate([[at.x_lean], x]), np.concatenate([y, [at.y_rich]])

@@ -118,9 +118,14 @@ def least_by_doubling(column: Alone, places: np.ndarray, limits: np.ndarray) -> 
 
 
 def pinch_of(column: Alone, component: str, factor: float, stages: int) -> Pinch:
-    """Give the place where the gas changes least from stage to stage: there operating line and equilibrium meet."""
-    profile = column.profile(factor, stages)
-    x, y = profile["X"][component][0], profile["Y"][component][0]
+    """Give the place where the gas changes least from stage to stage: there operating line and equilibrium meet.
+
+    Its ratios are NaN where no solute-free flow defines them.
+    """
+    profile = column.report(factor, stages)["profile"]
+    stage = np.asarray(profile["stage"])[0]
+    trays = (stage >= 1) & (stage <= stages)
+    x, y = (np.asarray(profile[axis][component])[0][trays] for axis in "xy")
     steps = np.abs(np.diff(y))
     at = int(np.argmin(steps))
     flat = steps <= 10 * steps[at]
@@ -131,7 +136,8 @@ def pinch_of(column: Alone, component: str, factor: float, stages: int) -> Pinch
     if kind != "tangent":
         at = int(np.argmax(part) if kind == "rich end" else np.argmin(part))
         at = int(np.flatnonzero(flat)[at])
-    return Pinch(kind, float(x[at + 1]), float(y[at + 1]))
+    ratios = (np.asarray(profile[axis][component])[0][trays][at + 1] for axis in "XY")
+    return Pinch(kind, *(float(value) for value in ratios))
 
 
 def stages_by_count(column: Alone, place: int, limit: float) -> float | None:

@@ -61,9 +61,11 @@ def ends(case: Case, name: str, component: str) -> Ends:
         with np.errstate(all="ignore"):
             return float(flows[place] / flows[basis].sum())
 
-    liquid, gas = (case.state(unit.inlets[label]).flows for label in ("liquid_in", "gas_in"))
+    blown = unit.inlets.get("gas_in")  # a reboiled stripper may have none
+    liquid = case.state(unit.inlets["liquid_in"]).flows
+    gas = case.state(blown).flows if blown else np.zeros_like(liquid)
     liquid_in, liquid_out = (ratio(stream, unit.liquid_basis) for stream in (unit.inlets["liquid_in"], unit.outlets["liquid_out"]))
-    gas_in, gas_out = (ratio(stream, unit.gas_basis) for stream in (unit.inlets["gas_in"], unit.outlets["gas_out"]))
+    gas_in, gas_out = ratio(blown, unit.gas_basis) if blown else 0.0, ratio(unit.outlets["gas_out"], unit.gas_basis)
     lean_first = unit.cleans == "gas"
     return Ends(
         float(liquid[unit.liquid_basis].sum()),
@@ -143,8 +145,8 @@ def curve_of(case: Case, name: str, component: str) -> Curve | None:
     """
     unit = case.plan.units[name]
     place = case.sheet.components.index[component]
-    if unit.liquid_basis[place] or unit.gas_basis[place]:
-        return None
+    if unit.liquid_basis[place] or unit.gas_basis[place] or unit.inner is not None:
+        return None  # with heat, efficiencies or side streams there is no one line
     sides = {label: case.state(stream) for label, stream in {**unit.inlets, **unit.outlets}.items()}
     shares = {}
     for label, inert, basis in (("gas", unit.stays_gas, unit.gas_basis), ("liquid", unit.stays_liquid, unit.liquid_basis)):

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 
+from leanloop.flowsheet.quantity import formula
 from leanloop.pinch.case import Case
 from leanloop.pinch.circuit import Circuit
 from leanloop.pinch.column import CURVE, DOUBLING, ColumnLimits
@@ -36,6 +37,8 @@ class LoopLimits:
         As they are, mol/s: what the make-up holds, and the solute-free stripping gas.
     least, most, least_gas : float or None
         mol/s: circulation of what the make-up holds, and solute-free stripping gas.
+    least_duty : float or None
+        W, of the reboiler where no stripping gas is fed.
     best : (float, float) or None
         Circulation with the lowest outlet, and that outlet in the quantity held.
     why : str or None
@@ -52,6 +55,7 @@ class LoopLimits:
     least: float | None = None
     most: float | None = None
     least_gas: float | None = None
+    least_duty: float | None = None
     best: tuple[float, float] | None = None
     why: str | None = None
     pair: Pair | None = None
@@ -73,7 +77,7 @@ class LoopLimits:
             "least_circulation_mol_s": self.least,
             "most_circulation_mol_s": self.most,
             "least_gas_mol_s": self.least_gas,
-            "least_duty_W": None,
+            "least_duty_W": self.least_duty,
             "why": self.why,
         }
 
@@ -103,7 +107,7 @@ def loop_limits(case: Case, circuit: Circuit | str, columns: dict[str, ColumnLim
     pair, per_liquid = _pair(case, circuit, trials, asked)
     if pair is not None:
         return _by_curves(replace(blank, pair=pair, method=CURVE, per_liquid=per_liquid))
-    return _by_doubling(replace(blank, method=DOUBLING), trials)
+    return _by_doubling(replace(blank, method=DOUBLING), case, trials)
 
 
 def _pair(case: Case, circuit: Circuit, trials: Trials, asked: Asked) -> tuple[Pair | None, float]:
@@ -115,7 +119,7 @@ def _pair(case: Case, circuit: Circuit, trials: Trials, asked: Asked) -> tuple[P
         return None, 1.0
     first, second = case.plan.units[circuit.absorber], case.plan.units[circuit.stripper]
     place = case.sheet.components.index[asked.key]
-    if place not in second.places:
+    if place not in second.places or "gas_in" not in second.inlets:
         return None, 1.0
     curves = curve_of(case, circuit.absorber, asked.key), curve_of(case, circuit.stripper, asked.key)
     if None in curves:
@@ -192,19 +196,32 @@ def _by_curves(found: LoopLimits) -> LoopLimits:
     )
 
 
-def _by_doubling(found: LoopLimits, trials: Trials) -> LoopLimits:
+def _by_doubling(found: LoopLimits, case: Case, trials: Trials) -> LoopLimits:
+    circuit = found.circuit
+    if any(isinstance(numbers.get("efficiency"), list) for numbers in trials.numbers.values()):
+        return replace(found, why="efficiencies are given by stage, so that the stages cannot be doubled")
     search = Search(trials, found.asked)
     window = search.window()
-    steam, why = search.least_steam() if found.circuit.steam else (None, "no single feed gives the stripping gas")
+    steam, why = None, None
+    if circuit.steam or circuit.boil:
+        steam, why = search.least_steam()
+    elif "gas_in" in case.plan.units[circuit.stripper].inlets:
+        why = "no single feed gives the stripping gas"
+    else:
+        why = "the reboiler is run by its temperature, so that there is no least duty to look for"
+    duty = None
+    if steam is not None and circuit.boil:
+        plan = case.plan
+        quantity = formula(f"units.{circuit.stripper}.results.reboiler_duty_W", plan.phases, plan.units, case.sheet.bases)[0]
+        duty = float(trials.values(quantity, np.ones(1), np.full(1, steam), search.times[min(4, len(search.times) - 1)])[0])
     reasons = [text for text in (window.why, why) if text]
     hold = trials.circulation
     return replace(
         found,
         least=None if window.least is None else hold * window.least,
         most=None if window.most is None else hold * window.most,
-        least_gas=None if steam is None or found.gas is None else steam * found.gas,
+        least_gas=None if steam is None or not circuit.steam or found.gas is None else steam * found.gas,
+        least_duty=duty if duty is not None and np.isfinite(duty) else None,
         best=(hold * window.best[0], window.best[1]) if window.best else None,
         why="; ".join(reasons) or None,
     )
-
-

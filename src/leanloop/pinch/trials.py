@@ -10,7 +10,7 @@ import numpy as np
 from leanloop.errors import InputError
 from leanloop.flowsheet.result import Result
 from leanloop.flowsheet.view import value
-from leanloop.pinch.case import Case
+from leanloop.pinch.case import Case, stretched
 from leanloop.pinch.circuit import Circuit
 from leanloop.status import solved
 
@@ -33,7 +33,8 @@ class Trials:
         self.case, self.circuit = case, circuit
         self.sheet = case.sheet.released()
         self.base: dict[str, Any] = case.changes()
-        self.stages = {name: int(case.numbers(name)["stages"]) for name in (circuit.absorber, circuit.stripper)}
+        self.numbers = {name: case.numbers(name) for name in (circuit.absorber, circuit.stripper)}
+        self.stages = {name: case.plan.units[name].count(numbers) for name, numbers in self.numbers.items()}
 
     def _at(self, address: str) -> float:
         return float(self.base.get(address, self.case.sheet.numbers[address]))
@@ -49,17 +50,18 @@ class Trials:
         Parameters
         ----------
         hold, steam : (R,)
-            Factors.
+            Factors; the second on the stripping gas, or on the boil-up where none is fed.
         times : int
             Factor on the stages of both columns.
         """
         changes: dict[str, Any] = dict(self.base)
         for address in self.circuit.hold:
             changes[address] = self._at(address) * hold
-        for address in self.circuit.steam if steam is not None else ():
+        for address in (self.circuit.steam or self.circuit.boil) if steam is not None else ():
             changes[address] = self._at(address) * steam
         for name, count in self.stages.items():
-            changes[f"units.{name}.stages"] = count * times
+            for key, value in stretched(self.numbers[name], count, count * times).items():
+                changes[f"units.{name}.{key}"] = value
         return self.sheet.solve(changes)
 
     def values(self, quantity: Any, hold: np.ndarray, steam: np.ndarray | None = None, times: int = 1) -> np.ndarray:

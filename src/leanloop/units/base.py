@@ -154,6 +154,8 @@ class Unit(ABC):
     inlets, outlets : dict of str to str
         Stream names by label, once read. The label is the port's name, or the stream's own name
         at a port that takes several.
+    draws_heat : tuple of str
+        Keys of its results that are heat or work from outside, in W.
     known_failures : dict of str to str
         Contract checks that the kind fails, each with the reason; one that it passes is an error.
     """
@@ -164,6 +166,7 @@ class Unit(ABC):
     scales: ClassVar[bool] = True
     shuts: ClassVar[bool] = False
     conserves: ClassVar[bool] = False
+    draws_heat: ClassVar[tuple[str, ...]] = ("duty_W", "reboiler_duty_W", "condenser_duty_W", "power_W")
     known_failures: ClassVar[Mapping[str, str]] = {}
 
     def __init__(self, name: str, **raw: Any) -> None:
@@ -398,6 +401,10 @@ class Unit(ABC):
         self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers
     ) -> np.ndarray | None:
         """Give what the unit adds from outside, (..., C) mol/s; None for nothing."""
+        return None
+
+    def added_heat(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers) -> np.ndarray | None:
+        """Give the enthalpy flow of what the unit adds from outside, (...,) W; None for nothing, or where it is not known."""
         return None
 
     def results(

@@ -190,6 +190,10 @@ class Column(ColumnReport):
                 "give one efficiency for all, or a component that stays in the gas",
             )
 
+    def count(self, numbers: Numbers) -> int:
+        """Give the equilibrium stages, reboiler and condenser apart; whole ones where a height is given."""
+        return column_entries.stage_count(numbers)
+
     def addresses(self) -> dict[str, str]:
         """Own numbers, those of the models by ``component.number``, and of the heat data where heat is balanced."""
         own = super().addresses()

@@ -74,7 +74,7 @@ class ColumnReport(Unit):
                 "absorption_factor": by_name(ends),
                 "stripping_factor": by_name(divide(np.ones_like(ends), ends)),
                 "solvent_to_gas": None
-                if gas_in is None
+                if gas_in is None or not (self.liquid_basis & self.present).any() or not (self.gas_basis & self.present).any()
                 else divide(liquid_in.flows[..., self.liquid_basis].sum(axis=-1), gas_in.flows[..., self.gas_basis].sum(axis=-1)),
                 "approach_rich": by_name(rich),
                 "approach_lean": by_name(lean),

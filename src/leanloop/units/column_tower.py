@@ -53,12 +53,9 @@ class TowerPart:
         words, numbers = column.values.words, column.values.numbers
         self.warm = balances_heat(column.values)
         self.condenser, self.reboiler = "condenser" in words, "reboiler" in words
-        self.feeds = [(f"side_feeds.{place}", int(numbers[f"side_feeds.{place}.stage"])) for place in range(len(words.get("side_feeds", ())))]
-        self.draws = [
-            (f"side_draws.{place}", int(numbers[f"side_draws.{place}.stage"]), word["phase"])
-            for place, word in enumerate(words.get("side_draws", ()))
-        ]
-        self.duties = [(f"stage_duties.{place}", int(numbers[f"stage_duties.{place}.stage"])) for place in range(len(words.get("stage_duties", ())))]
+        self.feeds = [f"side_feeds.{place}" for place in range(len(words.get("side_feeds", ())))]
+        self.draws = [(f"side_draws.{place}", word["phase"]) for place, word in enumerate(words.get("side_draws", ()))]
+        self.duties = [f"stage_duties.{place}" for place in range(len(words.get("stage_duties", ())))]
         self.condensate = "condenser.draw" in column.outlets
         self.by_component = {key.partition(".")[2] for key in numbers if key.startswith("efficiency.")}
         self.efficient = "efficiency" in numbers or bool(self.by_component)
@@ -75,8 +72,8 @@ class TowerPart:
             gas_basis=column.gas_basis,
             liquid_basis=column.liquid_basis,
             murphree=murphree,
-            draws_liquid=self.condensate or any(phase == "liquid" for _, _, phase in self.draws),
-            draws_gas=any(phase == "gas" for _, _, phase in self.draws),
+            draws_liquid=self.condensate or any(phase == "liquid" for _, phase in self.draws),
+            draws_gas=any(phase == "gas" for _, phase in self.draws),
             liquid_enthalpy=heat.liquid if self.known else None,
             gas_enthalpy=heat.gas if self.known else None,
         )
@@ -90,6 +87,19 @@ class TowerPart:
         return list(dict.fromkeys([*gas, *heat.lacking("liquid", column.present & ~column.stays_gas)]))
 
     # --- stages from streams
+
+    def place(self, label: str, numbers: Numbers) -> int:
+        """Give the place among all stages of a side feed, a draw or a duty.
+
+        Raises
+        ------
+        ValueError
+            Where the column has no such stage.
+        """
+        stage, count = int(numbers[f"{label}.stage"]), stage_count(numbers)
+        if stage > count:
+            raise ValueError(f"{label} is at stage {stage} of a column with {count}")
+        return int(self.condenser) + stage - 1
 
     def roles(self, count: int) -> tuple[str, ...]:
         """Give what the first row of each stage is."""
@@ -115,7 +125,7 @@ class TowerPart:
         fed = np.zeros((*lead, total, width), dtype=kind)
         heat = np.zeros((*lead, total), dtype=kind)
         blown = np.zeros((*lead, total, width), dtype=kind)
-        placed = [("liquid_in", ahead)] + [(label, ahead + stage - 1) for label, stage in self.feeds]
+        placed = [("liquid_in", ahead)] + [(label, self.place(label, numbers)) for label in self.feeds]
         if "gas_in" in inlets:
             placed.append(("gas_in", ahead + count - 1))
         for label, stage in placed:
@@ -127,8 +137,8 @@ class TowerPart:
         spec = np.zeros((*lead, total), dtype=kind)
         if not self.warm:
             spec[..., ahead : ahead + count] = np.asarray(numbers.get("temperature", liquid.temperature))[..., None]
-        for label, stage in self.duties:
-            spec[..., ahead + stage - 1] += numbers[f"{label}.duty"]
+        for label in self.duties:
+            spec[..., self.place(label, numbers)] += numbers[f"{label}.duty"]
         if self.condenser:
             spec[..., 0] = numbers.get("condenser.temperature", numbers.get("condenser.reflux_ratio"))
         if self.reboiler:
@@ -136,8 +146,8 @@ class TowerPart:
             value = numbers[f"reboiler.{key}"]
             spec[..., -1] = value * liquid.total if key == "stripping_ratio" else value
         drawn = {phase: np.zeros((*lead, total), dtype=kind) for phase in ("liquid", "gas")}
-        for label, stage, phase in self.draws:
-            drawn[phase][..., ahead + stage - 1] += numbers[f"{label}.flow"]
+        for label, phase in self.draws:
+            drawn[phase][..., self.place(label, numbers)] += numbers[f"{label}.flow"]
         if self.condensate:
             drawn["liquid"][..., 0] += numbers["condenser.draw.flow"]
         return Tower(
@@ -197,12 +207,12 @@ class TowerPart:
         gas, liquid = np.zeros((cases, total)), np.zeros((cases, total))
         top = _warmth(inlets["liquid_in"])
         liquid[:, ahead:] += inlets["liquid_in"].total[:, None]
-        for label, stage in self.feeds:
-            stream = inlets[label]
+        for label in self.feeds:
+            stream, place = inlets[label], self.place(label, numbers)
             if stream.phase == "gas":
-                gas[:, : ahead + stage] += stream.total[:, None]
+                gas[:, : place + 1] += stream.total[:, None]
             else:
-                liquid[:, ahead + stage - 1 :] += stream.total[:, None]
+                liquid[:, place:] += stream.total[:, None]
         if "gas_in" in inlets:
             end = total - int(self.reboiler)
             gas[:, :end] += inlets["gas_in"].total[:, None]
@@ -271,7 +281,7 @@ class TowerPart:
                 bool(seeds),
             )
             state = evaluate(tower, answer.unknowns)
-            outlets = self.outlets(tower, state)
+            outlets = self.outlets(tower, state, numbers)
             failed = answer.status != OK
             dry = ((state.down < DRY) | (state.up < DRY)).any(axis=1) & ~failed
             status = np.where(dry, code(Status.dry_stage), answer.status)
@@ -312,7 +322,7 @@ class TowerPart:
         nothing = beyond(answer.tower)
         if nothing is not None:
             way[:, nothing] = 0.0
-        outlets = self.outlets(tower, evaluate(tower, answer.unknowns + step * way))
+        outlets = self.outlets(tower, evaluate(tower, answer.unknowns + step * way), numbers)
         found = {}
         for label, stream in outlets.items():
             own = np.broadcast_to(stream.state.imag / COMPLEX_STEP, (seeds, len(answer.status), stream.state.shape[-1])).copy()
@@ -320,16 +330,15 @@ class TowerPart:
             found[label] = own
         return found, way
 
-    def outlets(self, tower: Tower, at: State) -> dict[str, Stream]:
+    def outlets(self, tower: Tower, at: State, numbers: Numbers) -> dict[str, Stream]:
         """Give what leaves the column."""
         temperature, pressure = at.temperature, tower.pressure + 0.0 * at.temperature
-        ahead = int(self.condenser)
         found = {
             "gas_out": (at.up[..., 0, None] * at.gas[..., 0, :], 0, "gas"),
             "liquid_out": (at.down[..., -1, None] * at.liquid[..., -1, :], -1, "liquid"),
         }
-        for label, stage, phase in self.draws:
-            place = ahead + stage - 1
+        for label, phase in self.draws:
+            place = self.place(label, numbers)
             own, flow = (at.gas, at.total_gas) if phase == "gas" else (at.liquid, at.total_liquid)
             drawn = (tower.gas_draw if phase == "gas" else tower.liquid_draw)[..., place] / flow[..., place]
             found[label] = (drawn[..., None] * own[..., place, :], place, phase)
@@ -361,8 +370,8 @@ class TowerPart:
             up[:, column.places] = stripped * above[:, column.places] + (1 - absorbed) * (fed - above)[:, column.places]
             left = fed - up
             found: dict[str, Stream] = {}
-            for label, stage, phase in self.draws:
-                place = int(self.condenser) + stage - 1
+            for label, phase in self.draws:
+                place = self.place(label, numbers)
                 flow = (tower.gas_draw if phase == "gas" else tower.liquid_draw)[:, place]
                 own = up if phase == "gas" else left
                 taken = own * np.minimum(flow / np.maximum(own.sum(axis=1), tower_start.TINY), 0.5)[:, None]
@@ -418,7 +427,7 @@ class TowerPart:
         names = column.around.components.names
         head, found = f"Column {column.name}", []
         places = {"liquid_in": int(self.condenser), "gas_in": len(tower.form.roles) - 1 - int(self.reboiler)}
-        places.update({label: int(self.condenser) + stage - 1 for label, stage in self.feeds})
+        places.update({label: self.place(label, numbers) for label in self.feeds})
         for label, place in places.items():
             if label in inlets and np.any(inlets[label].pressure < tower.pressure[..., place] * (1 - 1e-6)):
                 need = "blower" if inlets[label].phase == "gas" else "pump"
