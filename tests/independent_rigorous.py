@@ -79,7 +79,7 @@ class Column:
         own = self.pressure - self.pressure_drop * (1 - share) if self.stages > 1 else np.array([self.pressure])
         P = list(own)
         if self.condenser:
-            P.insert(0, P[0])
+            P.insert(0, self.pressure - self.pressure_drop)
         if self.reboiler:
             P.append(P[-1])
         self.P = np.array(P)
@@ -91,10 +91,12 @@ class Column:
         for stage, phase, flows, T in self.feeds:
             flows = np.asarray(flows, float)
             self.fed[stage - self.top] += flows
-            if phase == "gas":
-                self.fed_gas[stage - self.top] += flows
             if self.temperature is None:
                 self.heat[stage - self.top] += self.h(phase, T, flows)
+        for stage, phase, flows, _ in self.feeds:
+            if phase == "gas" and stage == self.stages:
+                self.fed_gas[stage - self.top] += flows
+                break
         for stage, duty in self.duties:
             self.heat[stage - self.top] += duty
         self.taken = {"gas": np.zeros(self.n), "liquid": np.zeros(self.n)}
@@ -141,10 +143,13 @@ class Column:
     def balance(self, l, v):
         return self.rising(v)[0] + self.falling(l)[0] + self.fed - l - v
 
-    def equilibrium(self, l, v, T, with_feeds=True):
-        """y - E K x - (1 - E) y entering, with zero for what never changes phase. With `with_feeds` gas fed counts as entering."""
+    def equilibrium(self, l, v, T):
+        """y - E K x - (1 - E) y entering, or the flow in the phase where a component never is.
+
+        What enters is the gas of the stage below or the gas fed at the bottom; side feeds join the stage itself.
+        """
         x, y = self.fractions(l, v)
-        enters = self.rising(v)[0] + (self.fed_gas if with_feeds else 0)
+        enters = self.rising(v)[0] + self.fed_gas
         total = enters.sum(-1, keepdims=True)
         entering = enters / np.where(total == 0, 1, total)
         gap = y - self.eff * self.k(T) * x - (1 - self.eff) * entering

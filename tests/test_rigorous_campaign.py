@@ -98,7 +98,7 @@ def flashed(items, z, pressure, phi):
         K = np.array([0.0 if s.stays else float(s.k(T, pressure)) for s in items])
         return z * (K - 1) / (1 + phi * (K - 1)), K
 
-    T = brentq(lambda T: split(T)[0].sum(), 120, 1500)
+    T = brentq(lambda T: split(T)[0].sum(), 20, 5000)
     K = split(T)[1]
     x = z / (1 + phi * (K - 1))
     y = K * x
@@ -108,7 +108,7 @@ def flashed(items, z, pressure, phi):
 
 
 def reboiled(rng, family):
-    """Reboiled stripper, with or without a condenser, given by its duty (and its reflux ratio)."""
+    """Reboiled stripper, with or without a condenser, given by its boil-up (and its reflux ratio)."""
     at, pressure = rng.uniform(300, 380), 10 ** rng.uniform(4.5, 6.3)
     count = int(rng.integers(2, 7))
     heavy = rng.random() < 0.3
@@ -120,13 +120,12 @@ def reboiled(rng, family):
     room = 1 - (z[-1] if heavy else 0)
     phi = rng.uniform(0.05, 0.8) * room
     _, needed, latent = flashed(items, z, pressure, phi)
-    _, bubble, _ = flashed(items, z, pressure, 0.0)
     feed_at = flashed(items, z, pressure, 0.0)[0] - rng.uniform(0, 40)
     liquid = sum(a * s.h_liquid(feed_at) for s, a in zip(items, z))
     stages = int(np.exp(rng.uniform(0, np.log(41))))
     reflux = 10 ** rng.uniform(-1, 0.7) if family == "condensed" else 0.0
-    duty = needed - liquid + reflux * phi * latent
-    column = Column(items, stages, [(1, "liquid", z, feed_at)], pressure, reboiler=("duty", duty),
+    boil_up = ((needed - liquid) / latent + reflux * phi) / (1 - phi)
+    column = Column(items, stages, [(1, "liquid", z, feed_at)], pressure, reboiler=("boil_up", boil_up),
                     condenser=("reflux_ratio", reflux) if family == "condensed" else None)
     column = extras(rng, column, gas=phi, liquid=1 - phi, inert=False)
     if column.condenser and rng.random() < 0.3:
@@ -142,14 +141,15 @@ def drawn(seed):
 
 
 def again(column, result, rng):
-    """The same column posed by what was found instead of by duty and reflux."""
+    """The same column posed by what was found instead of by boil-up and reflux."""
     l, v, T = columns.profiles(result, column)
-    L, V = l.sum(1), v.sum(1)
-    change = {}
+    V, change = v.sum(1), {}
+    duties = column.duty(l, v, T)
     if column.reboiler:
-        what = str(rng.choice(["temperature", "boil_up", "stripping_ratio"]))
-        change["reboiler"] = (what, {"temperature": T[-1], "boil_up": V[-1] / L[-1], "stripping_ratio": V[-1] / column.liquid_fed}[what])
-    if column.condenser and rng.random() < 0.7:
+        found = {"duty": duties[-1], "temperature": T[-1], "stripping_ratio": V[-1] / column.liquid_fed}
+        what = str(rng.choice(list(found)))
+        change["reboiler"] = (what, found[what])
+    if column.condenser and rng.random() < 0.6:
         change["condenser"] = ("temperature", T[0])
     return dataclasses.replace(column, **change)
 

@@ -14,8 +14,12 @@ PHASES = ("gas", "liquid")
 
 ENTRIES = (
     Entry("molar_mass", "molar mass", above=0.0, doc="needed for mass fractions, mass flows and mg/Nm3"),
+    Entry(
+        "flammable", "number", many=True, least=0.0, most=1.0, cases=False,
+        doc="lower and upper limit of flammability in air, mole fractions",
+    ),
     Entry("stays_in", "choice", choices=PHASES, doc="the only phase it is ever in; without it the component distributes"),
-)
+)  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -29,17 +33,27 @@ class Component:
         kg/mol.
     stays_in : str or None
         ``"gas"``, ``"liquid"``, or None where it distributes.
+    flammable : (float, float) or None
+        Lower and upper limit of flammability in air, mole fractions.
     """
 
     name: str
     molar_mass: float | None = None
     stays_in: str | None = None
+    flammable: tuple[float, float] | None = None
 
     @classmethod
     def read(cls, name: str, table: Any, address: str, context: Context) -> Component:
         """Read a component and note every fault."""
         values = read_values(ENTRIES, table, address, context)
-        return cls(name, values.numbers.get("molar_mass"), values.words.get("stays_in"))
+        limits = values.numbers.get("flammable")
+        if limits is not None and (len(limits) != 2 or not 0 < limits[0] < limits[1]):
+            remedy = 'write the lower and the upper limit, such as [0.011, 0.071] or ["1.1 %", "7.1 %"]'
+            context.fault(f"{address}.flammable", "is no lower and higher mole fraction", remedy)
+            limits = None
+        return cls(
+            name, values.numbers.get("molar_mass"), values.words.get("stays_in"), None if limits is None else tuple(limits)
+        )
 
 
 class Components:

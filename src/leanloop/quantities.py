@@ -30,6 +30,8 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "heat transfer": ((1, 2, -3, -1, 0), "12 kW/K"),
     "length": ((0, 1, 0, 0, 0), "6 m"),
     "amount": ((0, 0, 0, 0, 1), "40 kmol"),
+    "density": ((1, -3, 0, 0, 0), "1020 kg/m3"),
+    "molar volume": ((0, 3, 0, 0, -1), "18.1 cm3/mol"),
 }
 
 LONGEST = 200  # letters of a unit

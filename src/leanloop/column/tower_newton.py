@@ -24,9 +24,12 @@ NEAR = 1e-4
 LEFT = 1e-13
 SHARP = 1e-10  # relative step above which the state before it is not near enough for derivatives
 PLAIN_ITERATIONS = 20  # then the columns are filled
-ITERATIONS = 250
+ITERATIONS = 600
 TINY = 1e-300
-SLOWEST = 1e-7  # merit, in feeds, below which no drag is put on
+SETTLED = 1e-6  # residual, in feeds, that is none
+ASTRAY = 10.0  # residual, in feeds, at which the plain method is given up
+MODERATE = 0.8  # change in a step of a filling that keeps the step's length
+SHORTER, LONGER, LEAST_DRAG = 0.25, 4.0, 1e-3
 
 
 @dataclass
@@ -143,8 +146,8 @@ def _iterate(
         unknowns = np.where(absent, 0.0, unknowns)
     few = len(absent) == cases and absent.any()
     scale = tower.fed.sum(axis=(1, 2)) + TINY
-    drag, before = np.zeros(cases), np.zeros(cases)
-    lowest = np.full(cases, np.inf)
+    drag, before = np.zeros(cases), np.ones(cases)
+    filling, broken_before, stuck = np.zeros(cases, dtype=bool), np.zeros(cases, dtype=int), np.zeros(cases, dtype=int)
     part: np.ndarray | None = None
     local, iterations, filled, first_step = tower, 0, 0, None
     while True:
@@ -153,14 +156,19 @@ def _iterate(
         now, floor, failed = unknowns[own], floors[own], status[own] != OK
         sloped = Sloped(local, now)
         lead = residual(local, sloped.at)
-        if iterations > PLAIN_ITERATIONS:
-            merit = np.abs(lead).max(axis=(1, 2)) / scale[own]
-            better = merit < lowest[own]
-            lowest[own] = np.minimum(lowest[own], merit)
-            grown = np.where(better, 0.5, 1.5) * drag[own]
-            drag[own] = np.where((merit > SLOWEST) & (iterations < ITERATIONS - 50), np.clip(grown, 1e-6, 1e3), 0.0)
-            drag[own] = np.where(drag[own] <= 2e-3, 0.0, drag[own])
-            filled += 1
+        merit = np.abs(lead).max(axis=(1, 2)) / scale[own]
+        lost = (merit > ASTRAY) | (iterations > PLAIN_ITERATIONS) | (stuck[own] > 2)
+        lost &= ~filling[own] & ~failed & (before[own] > NEAR)
+        if lost.any() and iterations > 1:
+            again = np.flatnonzero(lost) if part is None else part[lost]
+            unknowns[again] = fill(tower.take(again), again)
+            if few:
+                unknowns = np.where(absent, 0.0, unknowns)
+            filling[again], drag[again], stuck[again] = True, 1.0, 0
+            now = unknowns[own]
+            sloped = Sloped(local, now)
+            lead = residual(local, sloped.at)
+        filled += int(filling[own].any())
         content = blocks(local, sloped)
         if failed.any():
             content.own[failed] = np.nan
@@ -170,16 +178,28 @@ def _iterate(
             step = np.where(absent[own], 0.0, step)
         new = limited(local, now, step)
         size = (np.abs(step) / (np.where(np.isfinite(floor), floor, 1.0)[:, None, :] + _judged(form, new))).max(axis=(1, 2))
-        size = np.where(drag[own] > 0, 1.0, size)
+        if filling[own].any():  # implicit Euler steps of the column's own filling, as long as changes stay moderate
+            moved = _moved(form, now, step, scale[own])
+            grown = drag[own] * np.clip(moved / MODERATE, SHORTER, LONGER)
+            grown = np.where((drag[own] == 0) & (moved > 2.0), 0.05, np.where(grown < LEAST_DRAG, 0.0, np.minimum(grown, 1e3)))
+            size = np.where(filling[own] & (drag[own] > 0), 1.0, size)
+            drag[own] = np.where(filling[own], grown, 0.0)
+        still = (np.abs(new - now) <= 1e-10 * (np.abs(now) + scale[own][:, None, None])).all(axis=(1, 2)) & (merit > SETTLED)
+        stuck[own] = np.where(still & ((drag[own] == 0) | ~filling[own]), stuck[own] + 1, 0)
         broken = (jacobian.bad | ~np.isfinite(size)) & ~failed
         new[broken | failed] = now[broken | failed]
-        late = (size > DONE) if iterations >= ITERATIONS else np.zeros(len(size), dtype=bool)
-        if broken.any() and iterations < PLAIN_ITERATIONS:  # a bad step of the plain method is no failure yet
-            size[broken] = 1.0
-            new[broken] = np.nan
-        else:
-            status[own] = np.where(broken | late, code(Status.stages_unsolved), status[own])
-            size[broken | late] = 0.0
+        late = (size > DONE) if iterations >= ITERATIONS else filling[own] & (stuck[own] > 2)  # flows below zero are asked for
+        if broken.any() and iterations < ITERATIONS:
+            hopeless = broken & filling[own] & (broken_before[own] > 3)
+            size[broken], before_own = 1.0, broken & ~hopeless
+            broken_before[own] += broken
+            again = np.flatnonzero(before_own) if part is None else part[before_own]
+            if len(again):
+                new[before_own] = fill(tower.take(again), again)
+                filling[again], drag[again] = True, 1.0 * 10.0 ** broken_before[again]
+            late |= hopeless
+        status[own] = np.where(late, code(Status.stages_unsolved), status[own])
+        size[late] = 0.0
         size[failed] = 0.0
         if part is None:
             unknowns = new
@@ -197,19 +217,18 @@ def _iterate(
                 return TowerAnswer(tower, unknowns, sloped.at, jacobian, status, iterations, filled, first_step)
         before[own] = size
         own = np.arange(cases) if part is None else part
-        again = own[(size > NEAR) & ~np.isfinite(new).all(axis=(1, 2))]
-        if iterations == PLAIN_ITERATIONS:
-            again = own[size > NEAR]
-        if len(again):
-            unknowns[again] = fill(tower.take(again), again)
-            drag[again] = 1.0
-            if few:
-                unknowns = np.where(absent, 0.0, unknowns)
         far = own[size > NEAR]
         if not len(far):
             part, local = None, tower
         elif len(far) < 0.5 * len(own) and iterations > 1:
             part, local = far, tower.take(far)
+
+
+def _moved(form: Form, now: np.ndarray, step: np.ndarray, scale: np.ndarray) -> np.ndarray:
+    """Give the largest change that a step asks for, in parts of what is there and of a hundredth of the feed, or of 10 K."""
+    against = np.abs(now) + 0.01 * scale[:, None, None]
+    against[..., len(form.implicit) + 1] = 10.0
+    return (np.abs(step) / against).max(axis=(1, 2))
 
 
 def _judged(form: Form, new: np.ndarray) -> np.ndarray:

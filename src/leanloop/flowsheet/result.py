@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.errors import Fault, InputError, NotReached, nearest
+from leanloop.flowsheet.flammable import flammable
 from leanloop.flowsheet.quantity import AddressError, formula, stream_table, walk
 from leanloop.flowsheet.requirement import Found
 from leanloop.flowsheet.run import Run
@@ -417,6 +418,11 @@ class Result:
             for name, unit in run.plan.units.items():
                 for sentence in unit.cautions(*view.sides(name), view.numbers(name), view.memory(name)):
                     found[sentence] = None
+            if any(item.flammable for item in run.plan.components):
+                for name in run.plan.structure.streams:
+                    sentence = flammable(name, view.stream(name), run.plan.components)
+                    if sentence:
+                        found[sentence] = None
         return list(found)
 
     def __str__(self) -> str:

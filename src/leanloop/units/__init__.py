@@ -13,6 +13,13 @@ KINDS = Registry(
         "heater": "leanloop.units.heater:Heater",
         "cooler": "leanloop.units.cooler:Cooler",
         "makeup": "leanloop.units.makeup:Makeup",
+        "exchanger": "leanloop.units.exchanger:Exchanger",
+        "flash_drum": "leanloop.units.flash_drum:FlashDrum",
+        "decanter": "leanloop.units.decanter:Decanter",
+        "valve": "leanloop.units.valve:Valve",
+        "pump": "leanloop.units.pump:Pump",
+        "blower": "leanloop.units.blower:Blower",
+        "cleanup": "leanloop.units.cleanup:Cleanup",
     },
     "leanloop.units.base:Unit",
 )

@@ -1,4 +1,4 @@
-"""Cooler: brings a stream to a lower temperature."""
+"""Cooler: brings a stream to a lower temperature, or takes heat from it."""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ from leanloop.units.heater import Heater
 
 
 class Cooler(Heater):
-    """Sets the temperature of a stream; its phase and pressure stay; no duty is calculated yet."""
+    """Brings a stream to a lower temperature, or takes a duty from it; flashed with `equilibrium`, else its phase stays."""
 
     kind = "cooler"
     warms = False
