@@ -24,7 +24,7 @@ def species(rng, name, k, at, pressure, stays=None):
     latent = rng.uniform(15e3, 90e3)
     slope = latent * rng.uniform(0.75, 1.25) / R
     cp = rng.uniform(70, 350)
-    less = rng.uniform(0, min(0.6 * cp, latent / 250))
+    less = rng.uniform(0, min(0.6 * cp, latent / 500))
     if stays == "gas":
         return Species(name, stays, cp_gas=rng.uniform(28, 60))
     if stays == "liquid":
@@ -109,15 +109,18 @@ def flashed(items, z, pressure, phi):
 
 def reboiled(rng, family):
     """Reboiled stripper, with or without a condenser, given by its boil-up (and its reflux ratio)."""
-    at, pressure = rng.uniform(300, 380), 10 ** rng.uniform(4.5, 6.3)
-    count = int(rng.integers(2, 7))
-    heavy = rng.random() < 0.3
-    k = 10 ** (rng.uniform(-3, 3) * rng.uniform(0, 1, count))
-    items = [species(rng, f"s{i}", k[i], at, pressure) for i in range(count)]
-    if heavy:
-        items[-1] = species(rng, "oil", 1, at, pressure, "liquid")
-    z = rng.dirichlet(np.ones(count)) * 0.98 + 0.02 / count
-    room = 1 - (z[-1] if heavy else 0)
+    while True:  # until the mixture boils at a temperature at which its heat data mean something
+        at, pressure = rng.uniform(300, 380), 10 ** rng.uniform(4.5, 6.3)
+        count = int(rng.integers(2, 7))
+        heavy = rng.random() < 0.3
+        k = 10 ** (rng.uniform(-3, 3) * rng.uniform(0, 1, count))
+        items = [species(rng, f"s{i}", k[i], at, pressure) for i in range(count)]
+        if heavy:
+            items[-1] = species(rng, "oil", 1, at, pressure, "liquid")
+        z = rng.dirichlet(np.ones(count)) * 0.98 + 0.02 / count
+        room = 1 - (z[-1] if heavy else 0)
+        if flashed(items, z, pressure, 0.0)[0] > 180 and flashed(items, z, pressure, 0.95 * room)[0] < 600:
+            break
     phi = rng.uniform(0.05, 0.8) * room
     _, needed, latent = flashed(items, z, pressure, phi)
     feed_at = flashed(items, z, pressure, 0.0)[0] - rng.uniform(0, 40)

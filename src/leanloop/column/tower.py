@@ -124,6 +124,10 @@ class Tower:
         Duty in W, temperature in K, reflux over gas, boil-up over bottoms, or gas flow in mol/s, by role.
     liquid_draw, gas_draw : (..., M, S) mol/s
     efficiency : (..., M, S, D)
+    blend : (M,) or None
+        Part of the heat rows that is their own, and of what efficiencies lack; the rest of each heat row holds the gas flow
+        of its stage at `held`. One, or None, for the equations as they are: the path of a continuation.
+    held : (M, S) mol/s or None
     """
 
     form: Form
@@ -137,6 +141,8 @@ class Tower:
     liquid_draw: np.ndarray
     gas_draw: np.ndarray
     efficiency: np.ndarray
+    blend: np.ndarray | None = None
+    held: np.ndarray | None = None
 
     def take(self, cases: np.ndarray) -> Tower:
         """Give the columns of some cases, (m,) int; only without further leading axes."""
@@ -149,10 +155,17 @@ class Tower:
             numbers=[{key: own(value) for key, value in item.items()} for item in self.numbers],
             heat_numbers={key: own(value) for key, value in self.heat_numbers.items()},
             **{
-                name: getattr(self, name)[cases]
-                for name in ("fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency")
-            },
+                name: own(getattr(self, name))
+                for name in (
+                    "fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency", "blend", "held",
+                )
+            },  # fmt: skip
         )
+
+    def efficient(self) -> np.ndarray:
+        """Give the efficiencies of the components that have one, those of the blend, (..., M, S, E)."""
+        own = self.efficiency[..., self.form.murphree]
+        return own if self.blend is None else 1.0 - self.blend[..., None, None] * (1.0 - own)
 
     def bound(self, temperature: np.ndarray) -> BoundLaw:
         """Give the equilibrium at stage temperatures, (..., M, S) K."""
@@ -303,7 +316,7 @@ def residual(tower: Tower, at: State) -> np.ndarray:
     out[..., last] = summation(tower, at)[0]
     own = form.places[form.murphree]
     if len(own):
-        e = tower.efficiency[..., form.murphree]
+        e = tower.efficient()
         under = below(tower, at)[..., form.murphree]
         wanted = (1.0 - e) * under * at.total_gas[..., None] + e * at.equilibrium[..., form.murphree]
         out[..., last + 1 : last + 1 + len(own)] = at.gas[..., own] - wanted
@@ -349,6 +362,9 @@ def first_rows(tower: Tower, at: State) -> np.ndarray:
     """Evaluate the first row of each stage, by its role, (..., M, S)."""
     form = tower.form
     heats = (tower.spec - balances(tower, at)) / HEAT_SCALE if form.warms else 0.0 * at.total_gas
+    if tower.blend is not None:
+        part = tower.blend[..., None]
+        heats = part * heats + (1.0 - part) * (tower.held - at.total_gas)
     out = np.where(form.rows(HEAT), heats, 0.0)
     for role, row in (
         (TEMPERATURE, tower.spec - at.temperature),

@@ -152,7 +152,7 @@ def blocks(tower: Tower, sloped: Sloped) -> Blocks:
     own[..., last] = scale[..., None] * (d_a + d_b - pull)
     murphree = places[form.murphree]
     if len(murphree):
-        e = tower.efficiency[..., form.murphree][:, :, None, :]
+        e = tower.efficient()[:, :, None, :]
         under = below(tower, at)[..., form.murphree]
         rows = slice(last + 1, last + 1 + len(murphree))
         own[..., rows] = (
@@ -193,12 +193,14 @@ def _first(tower: Tower, sloped: Sloped, changes: tuple, parts: tuple, ahead: in
         d_lh = cold.real @ d_liquid.T + liquid_capacity[..., None] * d_t
         d_gh = np.einsum("msnc,msc->msn", d_gas, hot.real) + gas_capacity[..., None] * d_t
         mask = form.rows(HEAT)
-        own[..., 0][:, mask] = -(d_lh + d_gh)[:, mask] / HEAT_SCALE
+        part = np.ones((1, 1, 1)) if tower.blend is None else tower.blend[:, None, None]
+        row = -part * (d_lh + d_gh) / HEAT_SCALE - (1.0 - part) * d_v
+        own[..., 0][:, mask] = row[:, mask]
         sinking = at.down[..., None] * d_lh if d_down is None else at.down[..., None] * d_lh + d_down * at.liquid_heat[..., None]
         rising = at.up[..., None] * d_gh if d_up is None else at.up[..., None] * d_gh + d_up * at.gas_heat[..., None]
         above, under = np.append(False, mask[:-1]), np.append(mask[1:], False)  # whose neighbour balances heat
-        up[..., 0][:, above] = rising[:, above] / HEAT_SCALE
-        down[..., 0][:, under] = sinking[:, under][..., ahead:] / HEAT_SCALE
+        up[..., 0][:, above] = part * rising[:, above] / HEAT_SCALE
+        down[..., 0][:, under] = part * sinking[:, under][..., ahead:] / HEAT_SCALE
     passing = at.down[..., None] * d_total
     if d_down is not None:
         passing = passing + d_down * at.total_liquid[..., None]

@@ -9,6 +9,7 @@ import numpy as np
 
 from leanloop.column.tower import Form, State, Tower, beyond, residual
 from leanloop.column.tower_jacobian import Sloped, TowerJacobian, blocks
+from leanloop.column.tower_path import BLENDING, FILLING, PLAIN, Path
 from leanloop.column.tower_start import COLDEST, HOTTEST
 from leanloop.status import OK, Status, code
 
@@ -23,13 +24,13 @@ DONE = 1e-8
 NEAR = 1e-4
 LEFT = 1e-13
 SHARP = 1e-10  # relative step above which the state before it is not near enough for derivatives
-PLAIN_ITERATIONS = 20  # then the columns are filled
-ITERATIONS = 600
+PLAIN_ITERATIONS = 20  # then the safeguarded paths begin
+ITERATIONS = 700
 TINY = 1e-300
 SETTLED = 1e-6  # residual, in feeds, that is none
 ASTRAY = 10.0  # residual, in feeds, at which the plain method is given up
-MODERATE = 0.8  # change in a step of a filling that keeps the step's length
-SHORTER, LONGER, LEAST_DRAG = 0.25, 4.0, 1e-3
+MOST_FILLING, MOST_LAST = 400, 40  # Newton steps of a filling, and after the last blend
+Begin = Callable[[Tower, np.ndarray], np.ndarray]
 
 
 @dataclass
@@ -46,7 +47,7 @@ class TowerAnswer:
         Factorised there.
     status : (M,) int8
     iterations, filled : int
-        Newton iterations in all, and those among them with a drag.
+        Newton iterations in all, and those among them on a safeguarded path.
     first_step : (M,)
         Relative size of the first step.
     """
@@ -93,8 +94,7 @@ def limited(tower: Tower, now: np.ndarray, step: np.ndarray) -> np.ndarray:
 
 
 def solve(
-    tower: Tower, begin: Callable[[Tower, np.ndarray], np.ndarray], fill: Callable[[Tower, np.ndarray], np.ndarray],
-    guess: np.ndarray | None = None, sharp: bool = False,
+    tower: Tower, begin: Begin, fill: Begin, guess: np.ndarray | None = None, sharp: bool = False, boils: bool = False,
 ) -> TowerAnswer:  # fmt: skip
     """Solve the stage equations of a batch of columns.
 
@@ -107,6 +107,8 @@ def solve(
         Unknowns to start from instead; rows that are not finite are started afresh.
     sharp : bool
         Whether the answer's factorisation is to be made where its derivatives are exact.
+    boils : bool
+        Whether the columns boil, rather than have a gas that stays one.
 
     Returns
     -------
@@ -129,99 +131,126 @@ def solve(
             if len(lost):
                 unknowns[lost] = begin(tower.take(lost), lost)
         unknowns[status != OK] = 1.0
-        return _iterate(tower, unknowns, floors_of(tower), status, fill, sharp)
+        return _iterate(tower, unknowns, floors_of(tower), status, Ways(tower, begin, fill, boils), sharp)
 
 
 def _iterate(
-    tower: Tower, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray,
-    fill: Callable[[Tower, np.ndarray], np.ndarray], sharp: bool,
-) -> TowerAnswer:  # fmt: skip
+    tower: Tower, unknowns: np.ndarray, floors: np.ndarray, status: np.ndarray, ways: Ways, sharp: bool
+) -> TowerAnswer:
     form, cases = tower.form, len(unknowns)
     absent = ~np.isfinite(floors)[:, None, :]
-    if absent.any():
-        unknowns = np.where(absent, 0.0, unknowns)
     nothing = beyond(tower)
     if nothing is not None:
         absent = absent | nothing
-        unknowns = np.where(absent, 0.0, unknowns)
-    few = len(absent) == cases and absent.any()
+    absent = absent if absent.any() else None
+    unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
     scale = tower.fed.sum(axis=(1, 2)) + TINY
-    drag, before = np.zeros(cases), np.ones(cases)
-    filling, broken_before, stuck = np.zeros(cases, dtype=bool), np.zeros(cases, dtype=int), np.zeros(cases, dtype=int)
+    path, before, stuck = Path.of(unknowns, form.warms or bool(form.murphree.any())), np.ones(cases), np.zeros(cases, dtype=int)
+    every = np.arange(cases)
     part: np.ndarray | None = None
     local, iterations, filled, first_step = tower, 0, 0, None
     while True:
         iterations += 1
-        own = slice(None) if part is None else part
+        own = every if part is None else part
         now, floor, failed = unknowns[own], floors[own], status[own] != OK
+        underway = path.underway(own)
+        if underway.any():
+            filled += 1
+            local.blend, local.held = path.blend[own], ways.held[own]
+        else:
+            local.blend = None
         sloped = Sloped(local, now)
         lead = residual(local, sloped.at)
-        merit = np.abs(lead).max(axis=(1, 2)) / scale[own]
-        lost = (merit > ASTRAY) | (iterations > PLAIN_ITERATIONS) | (stuck[own] > 2)
-        lost &= ~filling[own] & ~failed & (before[own] > NEAR)
-        if lost.any() and iterations > 1:
-            again = np.flatnonzero(lost) if part is None else part[lost]
-            unknowns[again] = fill(tower.take(again), again)
-            if few:
-                unknowns = np.where(absent, 0.0, unknowns)
-            filling[again], drag[again], stuck[again] = True, 1.0, 0
-            now = unknowns[own]
-            sloped = Sloped(local, now)
-            lead = residual(local, sloped.at)
-        filled += int(filling[own].any())
         content = blocks(local, sloped)
         if failed.any():
             content.own[failed] = np.nan
-        jacobian = TowerJacobian(form, content, drag[own])
+        jacobian = TowerJacobian(form, content, path.drag[own])
         step = jacobian.solve(-lead)
-        if few:
+        if absent is not None:
             step = np.where(absent[own], 0.0, step)
         new = limited(local, now, step)
         size = (np.abs(step) / (np.where(np.isfinite(floor), floor, 1.0)[:, None, :] + _judged(form, new))).max(axis=(1, 2))
-        if filling[own].any():  # implicit Euler steps of the column's own filling, as long as changes stay moderate
-            moved = _moved(form, now, step, scale[own])
-            grown = drag[own] * np.clip(moved / MODERATE, SHORTER, LONGER)
-            grown = np.where((drag[own] == 0) & (moved > 2.0), 0.05, np.where(grown < LEAST_DRAG, 0.0, np.minimum(grown, 1e3)))
-            size = np.where(filling[own] & (drag[own] > 0), 1.0, size)
-            drag[own] = np.where(filling[own], grown, 0.0)
-        still = (np.abs(new - now) <= 1e-10 * (np.abs(now) + scale[own][:, None, None])).all(axis=(1, 2)) & (merit > SETTLED)
-        stuck[own] = np.where(still & ((drag[own] == 0) | ~filling[own]), stuck[own] + 1, 0)
+        merit = np.abs(lead).max(axis=(1, 2)) / scale[own]
         broken = (jacobian.bad | ~np.isfinite(size)) & ~failed
+        still = (np.abs(new - now) <= 1e-10 * (np.abs(now) + scale[own][:, None, None])).all(axis=(1, 2)) & (merit > SETTLED)
+        stuck[own] = np.where(still & (path.drag[own] == 0), stuck[own] + 1, 0)
         new[broken | failed] = now[broken | failed]
-        late = (size > DONE) if iterations >= ITERATIONS else filling[own] & (stuck[own] > 2)  # flows below zero are asked for
-        if broken.any() and iterations < ITERATIONS:
-            hopeless = broken & filling[own] & (broken_before[own] > 3)
-            size[broken], before_own = 1.0, broken & ~hopeless
-            broken_before[own] += broken
-            again = np.flatnonzero(before_own) if part is None else part[before_own]
-            if len(again):
-                new[before_own] = fill(tower.take(again), again)
-                filling[again], drag[again] = True, 1.0 * 10.0 ** broken_before[again]
-            late |= hopeless
-        status[own] = np.where(late, code(Status.stages_unsolved), status[own])
-        size[late] = 0.0
-        size[failed] = 0.0
+        if (path.way[own] != PLAIN).any() or broken.any() or iterations > 1 and (merit > ASTRAY).any() or iterations > PLAIN_ITERATIONS:
+            size = np.where(broken, 1.0, size)
+            moved = _moved(form, now, step, scale[own])
+            lost = broken | (stuck[own] > 2)
+            ended = path.advance(own, new, size, lost)
+            path.pace(own, np.where(np.isfinite(moved), moved, 1.0))
+            plain = path.way[own] == PLAIN
+            ended |= plain & (lost | (merit > ASTRAY) & (iterations > 1) | (iterations > PLAIN_ITERATIONS)) & (size > NEAR)
+            ended |= (path.way[own] == FILLING) & (lost | (path.tries[own] > MOST_FILLING))
+            ended |= (path.way[own] == BLENDING) & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
+            ended &= ~failed
+            size = np.where(path.underway(own), 1.0, size)
+            if ended.any():
+                gone = ways.begin(tower, own[ended], path, new, np.flatnonzero(ended))
+                status[gone] = code(Status.stages_unsolved)
+                if absent is not None:
+                    new = np.where(absent[own], 0.0, new)
+                stuck[own[ended]] = 0
+                size = np.where(ended, 1.0, size)
+        if iterations >= ITERATIONS:
+            status[own[size > DONE]] = code(Status.stages_unsolved)
+        size[status[own] != OK] = 0.0
         if part is None:
             unknowns = new
         else:
             unknowns[part] = new
         first_step = size if first_step is None else first_step
-        if part is None:
+        if part is None and not path.underway(own[status[own] == OK]).any():
             bend = np.maximum(size / np.maximum(before**2, TINY), 1e-2)
             if (size <= np.maximum(DONE, np.sqrt(LEFT / bend))).all():
-                if sharp and size.max(initial=0.0) > SHARP:  # derivatives are taken at the answer itself
+                tower.blend = None
+                if (sharp and size.max(initial=0.0) > SHARP) or underway.any():  # derivatives are taken at the answer itself
                     sloped = Sloped(tower, unknowns)
                     content = blocks(tower, sloped)
                     content.own[status != OK] = np.nan
                     jacobian = TowerJacobian(form, content, np.zeros(cases))
                 return TowerAnswer(tower, unknowns, sloped.at, jacobian, status, iterations, filled, first_step)
         before[own] = size
-        own = np.arange(cases) if part is None else part
         far = own[size > NEAR]
         if not len(far):
             part, local = None, tower
         elif len(far) < 0.5 * len(own) and iterations > 1:
             part, local = far, tower.take(far)
+
+
+class Ways:
+    """Where the safeguarded paths begin.
+
+    Parameters
+    ----------
+    tower : Tower
+    begin, fill : callable
+        As for `solve`.
+    boils : bool
+        Whether the columns boil, so that continuation is tried before filling.
+    """
+
+    def __init__(self, tower: Tower, begin: Begin, fill: Begin, boils: bool) -> None:
+        self._begin, self._fill = begin, fill
+        self.order = (BLENDING, FILLING) if boils else (FILLING, BLENDING)
+        self.held = np.ones(tower.fed.shape[:2])
+
+    def begin(self, tower: Tower, cases: np.ndarray, path: Path, new: np.ndarray, rows: np.ndarray) -> np.ndarray:
+        """Send cases on the next way that they have not tried, from its start; give those that have none left."""
+        left = np.full(len(cases), True)
+        for way in self.order:
+            mine = left & ((path.left[cases] & way) > 0)
+            if mine.any():
+                own = cases[mine]
+                start = (self._begin if way == BLENDING else self._fill)(tower.take(own), own)
+                new[rows[mine]] = start
+                gas = start[..., len(tower.form.implicit)]
+                self.held[own] = np.maximum(gas, 1e-3 * tower.fed[own].sum(axis=(1, 2))[:, None])
+                path.begin(own, way)
+                left &= ~mine
+        return cases[left]
 
 
 def _moved(form: Form, now: np.ndarray, step: np.ndarray, scale: np.ndarray) -> np.ndarray:

@@ -279,6 +279,7 @@ class TowerPart:
                 lambda own, rows: tower_start.filling(own, *(item[rows] for item in rough[:3])),
                 guess,
                 bool(seeds),
+                bool(rough[3].any()),
             )
             state = evaluate(tower, answer.unknowns)
             outlets = self.outlets(tower, state, numbers)

@@ -13,8 +13,8 @@ from __future__ import annotations
 
 import numpy as np
 
-STEPS, POLISH, FLIPS, HALVINGS = 100, 12, 8, 40
-NEAR, SMALL_GAP = 1e-15, 1e-20  # of a mol fed, where the interior-point method ends
+STEPS, POLISH, FLIPS, HALVINGS = 100, 12, 8, 12
+NEAR, SMALL_GAP = 1e-13, 1e-20  # of a mol fed, where the interior-point method ends
 TINY = 1e-140
 EXACT = 1e-12  # of a mol fed, how well the sums must be satisfied
 

@@ -16,6 +16,7 @@ from leanloop.units.base import Numbers
 from leanloop.units.warmth import heat_flow, temperature_at, two_phase
 
 GUESS = 320.0  # K
+TRACE = 1e-9  # of the second phase, at bubble and dew point: there derivatives are those of two phases
 
 
 class Side:
@@ -84,12 +85,12 @@ class Side:
             return found
         flows = self.stream.flows
         some = (np.real(flows) > 0).reshape(-1, flows.shape[-1]).any(axis=0)
-        for share, kept in ((0.0, self.mixture.stays_gas), (1.0, self.mixture.stays_liquid)):
+        for share, kept in ((TRACE, self.mixture.stays_gas), (1.0 - TRACE, self.mixture.stays_liquid)):
             if (some & kept).all() or not (some & ~kept).any():
                 continue
             split = at_gas_fraction(self.mixture, flows, share, self.numbers, pressure=self.pressure)
             energy = self.mixture.enthalpy(split.gas, split.liquid, split.temperature, self.numbers)
-            here = (split.status == OK) & ~self.empty & ((np.real(flows) > 0) & kept).any(axis=-1).__invert__()
+            here = (split.status == OK) & ~self.empty & ~((np.real(flows) > 0) & kept).any(axis=-1)
             found.append(np.where(here, energy, self.energy))
         return found
 
