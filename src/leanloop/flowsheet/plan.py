@@ -220,17 +220,17 @@ def connect(
     context : Context
     """
     none = np.zeros(len(structure.components), dtype=bool)
-    return {
-        name: unit.connect(
-            Surroundings(
-                surroundings["components"],
-                surroundings["conditions"],
-                surroundings["basis"],
-                {label: present.get(stream, none) for label, stream in unit.inlets.items()},
-                {label: phases.get(stream, "liquid") for label, stream in unit.inlets.items() if stream in structure.makers},
-                surroundings.get("heat"),
-            ),
-            context,
+    found = {}
+    for name, unit in units.items():
+        around = Surroundings(
+            surroundings["components"],
+            surroundings["conditions"],
+            surroundings["basis"],
+            {label: present.get(stream, none) for label, stream in unit.inlets.items()},
+            {label: phases.get(stream, "liquid") if stream in structure.makers else "" for label, stream in unit.inlets.items()},
+            surroundings.get("heat"),
         )
-        for name, unit in units.items()
-    }
+        ports = [entry for entry in unit.entries if entry.sort == "inlet" and entry.required]
+        whole = all(entry.name in unit.values.words for entry in ports)  # else a fault is noted, and nothing further is said
+        found[name] = unit.connect(around, context) if whole else Unit.connect(unit, around, context)
+    return found

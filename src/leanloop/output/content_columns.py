@@ -7,9 +7,14 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.output.content import PER_HOUR, Part, Section, Sentence, Table, celsius, hourly, number
+from leanloop.output.content_heat import degrees
+from leanloop.units.column_entries import balances_heat
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
+    from leanloop.units.base import Unit
+
+SHOWN = 0.05  # K, half of the last digit of a temperature as it is written
 
 
 def loops(result: Result, data: dict[str, Any]) -> list[Section]:
@@ -105,8 +110,8 @@ def columns(result: Result, data: dict[str, Any]) -> list[Section]:
 
 def _column(result: Result, name: str, unit: dict[str, Any]) -> Section:
     found, profile = unit["results"], unit["profile"]
-    count = len(profile["stage"])
-    clean = "gas" if result.sheet.plan.units[name].cleans == "gas" else "liquid"
+    own = result.sheet.plan.units[name]
+    clean = "gas" if own.cleans == "gas" else "liquid"
     factor = "absorption_factor" if clean == "gas" else "stripping_factor"
     rows = [
         [
@@ -119,22 +124,103 @@ def _column(result: Result, name: str, unit: dict[str, Any]) -> Section:
         for component in profile["K"]
     ]
     head = [f"removal from the {clean}", "removed", factor.replace("_", " "), "p/p* rich end", "p/p* lean end"]
-    parts = [Table(head, rows, "Removal, and partial pressure over that in equilibrium")]
-    places = list(dict.fromkeys([0, count - 1]))
+    parts: list[Part] = [Sentence(text) for text in _inside(result, own, found)]
+    parts.append(Table(head, rows, "Removal, and partial pressure over that in equilibrium"))
+    varies = _span(profile) is not None
     for component in profile["K"]:
         rows = [
             [
-                f"stage {profile['stage'][place]}" + (" (top)" if place == 0 else " (bottom)"),
+                label,
+                *([degrees(profile["temperature_K"][place])] if varies else []),
                 *(number(profile[key][component][place]) for key in ("x", "y", "X", "Y", "K")),
                 number(hourly(profile["liquid_mol_s"][place])),
                 number(hourly(profile["gas_mol_s"][place])),
             ]
-            for place in places
+            for place, label in _places(own, profile)
         ]
-        head = [component, "x", "y", "X", "Y", "K", "liquid kmol/h", "gas kmol/h"]
+        head = [component, *(["degC"] if varies else []), "x", "y", "X", "Y", "K", "liquid kmol/h", "gas kmol/h"]
         parts.append(Table(head, rows, f"What leaves the end stages: {component} in mole fractions x, y and mole ratios X, Y"))
-    detail = (
-        f"{count} equilibrium stages at {number(celsius(profile['temperature_K'][0]))} degC, isothermal, "
-        f"solvent to gas {number(found['solvent_to_gas'])} mol/mol"
-    )
-    return Section(f"Column {name} ({unit['kind']})", parts, detail, f"units.{name}")
+    return Section(f"Column {name} ({unit['kind']})", parts, _kind(result, own, found, profile), f"units.{name}")
+
+
+def _kind(result: Result, unit: Unit, found: dict[str, Any], profile: dict[str, Any]) -> str:
+    """Say what kind of column it is: stages and what belongs to them, temperatures, solvent to gas."""
+    ends = [part for part in ("condenser", "reboiler") if part in unit.values.words]
+    count, numbers = len(profile["stage"]) - len(ends), _numbers(result, unit)
+    stages = f"{count} equilibrium stages" if count > 1 or result.sheet.heat is None else "1 equilibrium stage"
+    if "hetp" in numbers:
+        stages += f" ({number(_one(numbers['height']), 3)} m of packing at {number(_one(numbers['hetp']), 3)} m a stage)"
+    if balances_heat(unit.values):
+        if ends:
+            stages += f", a {' and a '.join(ends)}"
+        stages += f", adiabatic, {_span(profile) or degrees(profile['temperature_K'][0])} degC"
+    else:
+        stages += f" at {number(celsius(profile['temperature_K'][0]))} degC, isothermal"
+    said = [stages]
+    efficiencies = {key.partition(".")[2]: value for key, value in numbers.items() if key.partition(".")[0] == "efficiency"}
+    if efficiencies:
+        said.append(f"Murphree vapour efficiency {_efficiency(efficiencies)}")
+    if found["solvent_to_gas"] is not None or result.sheet.heat is None:
+        said.append(f"solvent to gas {number(found['solvent_to_gas'])} mol/mol")
+    return ", ".join(said)
+
+
+def _numbers(result: Result, unit: Unit) -> dict[str, Any]:
+    """Give the numbers of a unit, with those that were set or freed as they were solved."""
+    return result.parts[0].run.inputs.of({key: f"units.{unit.name}.{key}" for key in unit.values.numbers})
+
+
+def _efficiency(values: dict[str, Any]) -> str:
+    """Write efficiencies: one, from the least to the most of those by stage, or by component."""
+    if "" not in values:
+        return " and ".join(f"{number(_one(value), 3)} for {name}" for name, value in values.items()) + ", else 1"
+    value = values[""]
+    if isinstance(value, list):
+        return f"{number(min(value), 3)} to {number(max(value), 3)} by stage"
+    return number(_one(value), 3)
+
+
+def _one(value: Any) -> float:
+    """Give the number of the one case."""
+    return float(np.ravel(value)[0])
+
+
+def _inside(result: Result, unit: Unit, found: dict[str, Any]) -> list[str]:
+    """Tell what happens between the ends: boil-up and reflux, side feeds, draws."""
+    numbers, ratios = _numbers(result, unit), []
+    if "reflux_ratio" in found:
+        ratios.append(f"reflux {number(found['reflux_ratio'], 4)} mol per mol of overhead gas")
+    if "boil_up" in found:
+        ratios.append(f"boil-up {number(found['boil_up'], 4)} mol per mol of bottoms")
+    out = ["; ".join(ratios)] if ratios else []
+    for place, word in enumerate(unit.values.words.get("side_feeds", ())):
+        out.append(f"{word['stream']} is fed to stage {int(_one(numbers[f'side_feeds.{place}.stage']))}")
+    for place, word in enumerate(unit.values.words.get("side_draws", ())):
+        stage, flow = (_one(numbers[f"side_draws.{place}.{key}"]) for key in ("stage", "flow"))
+        out.append(f"{word['stream']} draws {number(hourly(flow))} kmol/h of {word['phase']} from stage {int(stage)}")
+    return out
+
+
+def _span(profile: dict[str, Any]) -> str | None:
+    """Write the lowest and the highest temperature in degC; None where all stages have the same or it is not known."""
+    known = [value for value in profile["temperature_K"] if value is not None]
+    if len(known) < len(profile["temperature_K"]) or max(known) - min(known) <= SHOWN:
+        return None
+    return f"{degrees(min(known))} to {degrees(max(known))}"
+
+
+def _places(unit: Unit, profile: dict[str, Any]) -> list[tuple[int, str]]:
+    """Give the stages to show, with their labels: both ends, condenser, reboiler, and the hottest where it lies inside."""
+    count = len(profile["stage"])
+    first, last = int("condenser" in unit.values.words), count - 1 - int("reboiler" in unit.values.words)
+    labels = {last: f"stage {profile['stage'][last]} (bottom)", first: f"stage {profile['stage'][first]} (top)"}
+    if first:
+        labels[0] = "condenser"
+    if last < count - 1:
+        labels[count - 1] = "reboiler"
+    if _span(profile) is not None:
+        warm = profile["temperature_K"]
+        hottest = int(np.argmax(warm))
+        if warm[hottest] > max(warm[place] for place in labels) + SHOWN:
+            labels[hottest] = f"stage {profile['stage'][hottest]} (hottest)"
+    return sorted(labels.items())

@@ -8,6 +8,7 @@ import numpy as np
 
 from leanloop.output.content import Listing, Section, Sentence, Table, celsius, hourly, number, printable
 from leanloop.output.content_columns import columns, loops
+from leanloop.output.content_heat import NO_HEAT, energy, heat, heat_cautions
 from leanloop.output.influence import influences
 from leanloop.quantities import NORMAL_MOLES
 
@@ -19,7 +20,7 @@ CAUTIONS = (
     "This is a screening calculation with equilibrium stages; have it verified by a licensed engineer "
     "against local codes and measured data.",
     "Toxic or flammable gases, pressure and hot solvent: no figure here replaces a safety review.",
-    "No heat is balanced: temperatures are those given, and no duty is calculated.",
+    NO_HEAT,
 )
 
 
@@ -50,7 +51,9 @@ def report_sections(result: Result) -> list[Section]:
     list of Section
         The last holds the cautions.
     """
-    caution = Section("Cautions", [Listing([*result.cautions(), *CAUTIONS])], place="cautions")
+    of_heat = heat_cautions(result)
+    standing = CAUTIONS if of_heat == [NO_HEAT] else (*of_heat, *CAUTIONS[:-1])
+    caution = Section("Cautions", [Listing([*result.cautions(), *standing])], place="cautions")
     if result.axis:
         return [_statuses(result), caution]
     data = result.to_dict()
@@ -60,9 +63,11 @@ def report_sections(result: Result) -> list[Section]:
         *_requirements(result, data),
         *loops(result, data),
         *columns(result, data),
+        *heat(result, data),
         _streams(result, data),
         *_gases(result, data),
         _balance(data),
+        *energy(result, data),
         *_influence(result),
         caution,
     ]
@@ -130,6 +135,7 @@ def _shown(result: Result, address: str, value: float | None) -> str:
 def _streams(result: Result, data: dict[str, Any]) -> Section:
     names = result.sheet.components.names
     masses = result.sheet.components.molar_masses
+    mixed = any(item["phase"] == "two-phase" for item in data["streams"].values())
     rows = []
     for stream, item in data["streams"].items():
         flows = [item["mol_s"][c] for c in names]
@@ -141,6 +147,7 @@ def _streams(result: Result, data: dict[str, Any]) -> Section:
             [
                 stream,
                 item["phase"],
+                *([number(item["vapour_fraction"], 4)] if mixed else []),
                 number(celsius(item["temperature_K"]), 4),
                 number(None if item["pressure_Pa"] is None else item["pressure_Pa"] / 1e5, 4),
                 number(mass),
@@ -149,7 +156,7 @@ def _streams(result: Result, data: dict[str, Any]) -> Section:
                 *(number(hourly(flow)) for flow in flows),
             ]
         )
-    head = ["stream", "phase", "degC", "bar", "kg/h", "Nm3/h", "kmol/h", *names]
+    head = ["stream", "phase", *(["vapour fraction"] if mixed else []), "degC", "bar", "kg/h", "Nm3/h", "kmol/h", *names]
     return Section("Streams, components in kmol/h", [Table(head, rows)], place="streams")
 
 

@@ -21,6 +21,7 @@ from leanloop.pictures.base import (
     log_axis,
     look,
     settle,
+    short,
     style,
 )
 
@@ -33,6 +34,7 @@ if TYPE_CHECKING:
 LOG_FROM = 100.0  # highest over lowest fraction
 VARIES = 1e-3  # K
 ZERO_CELSIUS = 273.15
+ENDS = ("condenser", "reboiler")  # above the first stage and below the last
 MOST_DECADES = 1e12  # shown on a log axis below the highest fraction
 # without markers, which the components have
 LIQUID = {"color": NAVY, "linestyle": "-", "linewidth": 2.0}
@@ -64,18 +66,23 @@ def figure(result: Result, unit: str, case: int | None = None) -> Figure:
     InputError
         Where there is no such unit, or it is no column.
     """
-    profile, kind = _profile(result, unit, case)
+    profile, found, kind = _profile(result, unit, case)
+    words = result.sheet.plan.units[unit].values.words
     stages = np.atleast_1d(profile["stage"])
     names = list(profile["K"])
     warm = np.asarray(profile["temperature_K"], dtype=float) - ZERO_CELSIUS
     known = warm[np.isfinite(warm)]
     panels = 4 if len(known) and np.ptp(known) > VARIES else 3
-    note = f"{kind} of {len(stages)} equilibrium {'stage' if len(stages) == 1 else 'stages'}"
+    ends = [part for part in ENDS if part in words]
+    count = len(stages) - len(ends)
+    note = f"{kind} of {count} equilibrium {'stage' if count == 1 else 'stages'}"
+    if ends:
+        note += f", a {' and a '.join(ends)}"
     if not len(known):
         note += ", not solved"
     elif panels == 3:
         note += f" at {known[0]:.4g} degC"
-    note += "; flows are those leaving the stages"
+    note += "; flows are those leaving the stages" + _duties(found)
     with style():
         own = f", case {case or 0}" if result.axis else ""
         paper = canvas(PAGE_WIDTH, 112.0, f"Profiles of {unit}{own}", note)
@@ -90,14 +97,15 @@ def figure(result: Result, unit: str, case: int | None = None) -> Figure:
             handles += axes[3].plot(warm, stages, gid="temperature", label="temperature", **_fitting(TEMPERATURE, stages))
             linear_axis(axes[3].xaxis, known.min() - 0.06 * np.ptp(known), known.max() + 0.06 * np.ptp(known), 3)
             axes[3].set_xlabel("degC")
-        _stage_axis(axes[0], stages)
+        _stage_axis(axes[0], stages, ends)
         if handles:
             legend_below(paper, handles, columns=4)
         settle(paper)
     return paper
 
 
-def _profile(result: Result, unit: str, case: int | None) -> tuple[dict[str, Any], str]:
+def _profile(result: Result, unit: str, case: int | None) -> tuple[dict[str, Any], dict[str, Any], str]:
+    """Give the profile, the results and the kind of a column in one case."""
     units = result.to_dict(lists=False)["units"]
     columns = [name for name, item in units.items() if "profile" in item]
     if unit not in columns:
@@ -109,7 +117,18 @@ def _profile(result: Result, unit: str, case: int | None) -> tuple[dict[str, Any
         return item[case or 0] if result.axis else item
 
     kind = units[unit]["kind"]
-    return chosen(units[unit]["profile"]), kind if isinstance(kind, str) else kind[case or 0]
+    profile, found = chosen(units[unit]["profile"]), chosen(units[unit]["results"])
+    return profile, found, kind if isinstance(kind, str) else kind[case or 0]
+
+
+def _duties(found: dict[str, Any]) -> str:
+    """Write the duties of reboiler and condenser, where they are known."""
+    said = []
+    for part in ENDS:
+        duty = found.get(f"{part}_duty_W")
+        if duty is not None and np.isfinite(duty):
+            said.append(f"{part} {short(float(duty) / 1e3, 4)} kW")
+    return f"; into the process: {', '.join(said)}" if said else ""
 
 
 def _fitting(look: dict[str, Any], stages: np.ndarray) -> dict[str, Any]:
@@ -162,12 +181,14 @@ def _flows(axes: Axes, profile: dict[str, Any], stages: np.ndarray) -> list[Any]
     return lines
 
 
-def _stage_axis(axes: Axes, stages: np.ndarray) -> None:
+def _stage_axis(axes: Axes, stages: np.ndarray, ends: list[str]) -> None:
     low, high = float(stages[0]), float(stages[-1])
     axes.set_ylim(high + 0.5, low - 0.5)
     step = next(step for step in (1, 2, 5, 10, 20, 50, 100, len(stages)) if len(stages) <= 15 * step)
     # both ends, and round numbers that do not come too near to them
     between = [stage for stage in stages if stage % step == 0 and min(stage - low, high - stage) >= 0.6 * step]
-    axes.yaxis.set_major_locator(library().ticker.FixedLocator([low, *between, high]))
-    axes.yaxis.set_major_formatter(library().ticker.FormatStrFormatter("%d"))
+    named = dict(zip((low if part == "condenser" else high for part in ends), ends, strict=True))
+    ticker = library().ticker
+    axes.yaxis.set_major_locator(ticker.FixedLocator([low, *between, high]))
+    axes.yaxis.set_major_formatter(ticker.FuncFormatter(lambda stage, _: named.get(stage, f"{stage:.0f}")))
     axes.set_ylabel("stage, 1 at the top")

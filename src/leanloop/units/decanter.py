@@ -95,7 +95,8 @@ class Decanter(Unit):
     def connect(self, around: Surroundings, context: Context) -> Unit:
         """Find the models, which must not depend on the liquid, and what is known of the heat."""
         unit = super().connect(around, context)
-        table, address, components = around.conditions.get(self.values.words.get("equilibrium")), f"units.{self.name}", around.components
+        address, components = f"units.{self.name}", around.components
+        table = around.conditions.get(self.values.words.get("equilibrium"))
         if table is None:
             return unit
         present = present_in(unit)
@@ -108,12 +109,14 @@ class Decanter(Unit):
         for head, names in (("aqueous", self._aqueous_words or ()), ("solubility", self.values.group("solubility"))):
             for name in names:
                 if unit.stays_gas[components.index[name]]:
-                    context.fault(f"{address}.{head}", f"'{name}' stays in the gas", "leave it out, or give it a model in the table")
+                    remedy = "leave it out, or give it a model in the table"
+                    context.fault(f"{address}.{head}", f"'{name}' stays in the gas", remedy)
         unit.mix = mixture_of(unit, present, f"decanter '{self.name}'", context)
         for name, model in zip(unit.mix.names, unit.mix.models, strict=True) if unit.mix is not None else ():
             if not isinstance(model, Proportional) or model.coordinates != "fraction":
                 problem = f"'{name}' is given at decanter '{self.name}' by a ratio that depends on the liquid, or in mole ratios"
-                context.fault(f"equilibrium.{table.name}.{name}", problem, "give its vapour pressure by raoult, or K in mole fractions")
+                remedy = "give its vapour pressure by raoult, or K in mole fractions"
+                context.fault(f"equilibrium.{table.name}.{name}", problem, remedy)
         unit.knows = knows_heat(unit, phases_with_heat(unit, unit.stays_gas, unit.stays_liquid))
         return unit
 
@@ -196,7 +199,8 @@ class Decanter(Unit):
         if self.knows:
             duty = sum(heat_flow(outlets[label], self.around.heat, numbers) for label in OUTLETS) - heat_in(self, inlets, numbers)
         keys = ("vapour_fraction", "organic_fraction", "water_fraction")
-        return {"results": {"duty_W": duty, **{key: divide(totals[label], whole) for key, label in zip(keys, OUTLETS, strict=True)}}}
+        shares = {key: divide(totals[label], whole) for key, label in zip(keys, OUTLETS, strict=True)}
+        return {"results": {"duty_W": duty, **shares}}
 
     def cautions(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping) -> list[str]:
         """Say where a liquid is absent, a pressure too low, or where models or heat data are used outside their range."""
@@ -219,7 +223,10 @@ def _boils(a: float, b: float, c: float) -> dict[str, Any]:
     return {"model": "raoult", "vapour_pressure": form}
 
 
-SPECIES = {"air": {"stays_in": "gas"}, "tar": {"stays_in": "liquid"}, "salt": {"stays_in": "liquid"}, "light": {}, "heavy": {}, "water": {}}
+SPECIES = {
+    "air": {"stays_in": "gas"}, "tar": {"stays_in": "liquid"}, "salt": {"stays_in": "liquid"},
+    "light": {}, "heavy": {}, "water": {},
+}  # fmt: skip
 EQUILIBRIUM = {
     "two": {"water": _boils(5.19621, 1730.63, 233.426), "light": _boils(4.01, 1203.8, 219.9), "heavy": _boils(4.08, 1346.4, 219.7)}
 }

@@ -40,9 +40,8 @@ def three_phases(flows: np.ndarray, factors: np.ndarray) -> np.ndarray:
     shape = np.broadcast_shapes(flows.shape, factors.shape[:-1])
     flows, factors = np.broadcast_to(flows, shape), np.broadcast_to(factors, (*shape, 3))
     real, theta = np.real(flows), np.real(factors)
-    dropped = 0
-    while real.ndim > 2 and all(np.array_equal(item, np.broadcast_to(item[:1], item.shape), equal_nan=True) for item in (real, theta)):
-        real, theta, dropped = real[0], theta[0], dropped + 1  # the axis of derivatives: solved once
+    while real.ndim > 2 and all(_level(item) for item in (real, theta)):
+        real, theta = real[0], theta[0]  # the axis of derivatives: solved once
     cases = real.shape[:-1]
     real, theta = real.reshape(-1, shape[-1]), theta.reshape(-1, shape[-1], 3)
     with np.errstate(all="ignore"):
@@ -61,6 +60,11 @@ def three_phases(flows: np.ndarray, factors: np.ndarray) -> np.ndarray:
             lead = np.broadcast_to(amounts, (*shape[:-1], 3))
             amounts = lead + 1j * _moved(lead, flows, factors)
         return flows[..., None] * _shares(amounts, factors)
+
+
+def _level(item: np.ndarray) -> bool:
+    """Tell whether nothing changes along the first axis."""
+    return np.array_equal(item, np.broadcast_to(item[:1], item.shape), equal_nan=True)
 
 
 def _shares(amounts: np.ndarray, factors: np.ndarray) -> np.ndarray:
@@ -91,7 +95,7 @@ def _solve(f: np.ndarray, theta: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     there = must | (amounts > slope)
     for _ in range(FLIPS):
         amounts = _polish(np.where(there, np.maximum(amounts, 1e-9), 0.0), there, f, theta)
-        gone = there & ~must & ~(amounts > 0)
+        gone = there & ~must & ~(amounts > 1e-30)
         slope = _sums(np.where(gone, 0.0, amounts), f, theta)[0]
         come = ~there & (slope < -EXACT)
         if not (gone | come).any():
@@ -127,7 +131,7 @@ def _interior(f: np.ndarray, theta: np.ndarray) -> tuple[np.ndarray, np.ndarray]
         for _ in range(HALVINGS):
             new_v, new_z = v + length[:, None] * dv, z + length[:, None] * dz
             after = miss(new_v, new_z, _sums(new_v, f, theta)[0], aim)
-            late = open_ & ~(after <= (1.0 - 0.01 * length) * before)
+            late = open_ & ~((after <= (1.0 - 0.01 * length) * before) | (after <= NEAR))  # near the end there is rounding alone
             if not late.any():
                 break
             length = np.where(late, 0.5 * length, length)

@@ -83,7 +83,7 @@ class Exchanger(Unit):
             "hot_in": Inlet("gas", {"air": [0.3, 0.1], "water": [1.5, 1.0]}, [420.0, 410.0], [3e5, 2.5e5]),
             "cold_in": Inlet("liquid", {"oil": [0.5, 0.3], "solute": [1.2, 0.9]}, [310.0, 320.0], [1.1e5, 1e5]),
         }
-        both = {"hot_equilibrium": "here", "cold_equilibrium": "here"}
+        condensing = {**flashing, "cold_in": Inlet("liquid", {"oil": [0.5, 0.3]}, [310.0, 320.0], [1.1e5, 1e5])}
         drops = {"hot_pressure_drop": 1e4, "cold_pressure_drop": 5e3}
         return [
             Scene({**ports, "approach": {"hot_end": 45.0}}, liquids, stays, heat_data=data),
@@ -91,8 +91,8 @@ class Exchanger(Unit):
             Scene({**ports, "approach": {"least": 8.0}}, liquids, stays, heat_data=data),
             Scene({**ports, "UA": 900.0}, liquids, stays, heat_data=data),
             Scene({**ports, "duty": 2.5e4}, liquids, stays, heat_data=data),
-            Scene({**ports, "UA": 600.0, **both, **drops}, flashing, stays, here, heat_data=data),
-            Scene({**ports, "approach": {"least": 5.0}, "hot_equilibrium": "here"}, flashing, stays, here, heat_data=data),
+            Scene({**ports, "UA": 400.0, "hot_equilibrium": "here", **drops}, condensing, stays, here, heat_data=data),
+            Scene({**ports, "approach": {"least": 5.0}, "hot_equilibrium": "here"}, condensing, stays, here, heat_data=data),
             Scene({**ports, "approach": {"cold_end": 60.0}, "cold_equilibrium": "here"}, flashing, stays, here, heat_data=data),
         ]
 
@@ -227,24 +227,22 @@ class Exchanger(Unit):
     # --- reporting
 
     def results(self, inlets: Mapping, outlets: Mapping, numbers: Numbers, memory: Mapping) -> dict[str, Any]:
-        """Give duty, approaches, UA and effectiveness: the duty over the most that the inlets allow."""
+        """Give duty, approaches, UA and effectiveness: duty over what brings an outlet to the other inlet's temperature."""
         hot, cold = self._sides(inlets, numbers)
         found = heat_flow(outlets["cold_out"], self.around.heat, cold.numbers) - cold.energy
         zones = Zones(hot, cold)
         gaps = zones.differences(found)
-        real = None
-        if np.iscomplexobj(gaps):
-            streams, flat = levelled(inlets, numbers)
-            real = Zones(*self._sides(streams, flat))
-        where = np.argmin(np.real(gaps), axis=-2, keepdims=True)
+        area, least = zones.area(found, gaps)
+        hot_end, cold_end = zones.at_ends(0.0)
+        most = np.where(np.real(hot_end) < np.real(cold_end), hot_end, cold_end)
         return {
             "results": {
                 "duty_W": found,
                 "approach_hot_end_K": gaps[..., -1, :],
                 "approach_cold_end_K": gaps[..., 0, :],
-                "approach_least_K": np.take_along_axis(gaps, where, axis=-2)[..., 0, :],
-                "UA_W_K": zones.area(found),
-                "effectiveness": divide(found, zones.at_least(0.0, real)),
+                "approach_least_K": least,
+                "UA_W_K": area,
+                "effectiveness": divide(found, most),
             }
         }
 

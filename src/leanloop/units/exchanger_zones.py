@@ -57,16 +57,27 @@ class Zones:
 
     def least(self, duty: np.ndarray) -> np.ndarray:
         """Give the least temperature difference, (..., M) K."""
-        gaps = self.differences(duty)
-        where = np.argmin(np.real(gaps), axis=-2, keepdims=True)
-        return np.take_along_axis(gaps, where, axis=-2)[..., 0, :]
+        return smallest(self.differences(duty))
 
-    def area(self, duty: np.ndarray) -> np.ndarray:
-        """Give the UA that a duty takes, the sum over zones of heat over log-mean difference, (..., M) W/K."""
+    def area(self, duty: np.ndarray, gaps: np.ndarray | None = None) -> tuple[np.ndarray, np.ndarray]:
+        """Give the UA that a duty takes, the sum over zones of heat over log-mean difference, and the least difference.
+
+        Parameters
+        ----------
+        duty : (..., M) W
+        gaps : (..., K + 1, M) K, optional
+            The differences, where they are known.
+
+        Returns
+        -------
+        (..., M) W/K, (..., M) K
+        """
         q = self.places(duty)
-        gaps = self.differences(duty, q)
+        gaps = self.differences(duty, q) if gaps is None else gaps
+        least = smallest(gaps)
         gaps = np.where(np.real(gaps) < LEAST, LEAST, gaps)
-        return ((q[..., 1:, :] - q[..., :-1, :]) * inverse_log_mean(gaps[..., :-1, :], gaps[..., 1:, :])).sum(axis=-2)
+        found = (q[..., 1:, :] - q[..., :-1, :]) * inverse_log_mean(gaps[..., :-1, :], gaps[..., 1:, :])
+        return found.sum(axis=-2), least
 
     def at_ends(self, approach: np.ndarray | float) -> tuple[np.ndarray, np.ndarray]:
         """Give the duties at which the hot and the cold end have an approach in K, (..., M) W each."""
@@ -112,6 +123,12 @@ def _between(value: np.ndarray, low: np.ndarray, high: np.ndarray) -> np.ndarray
     return np.where(np.real(value) < np.real(low), low, np.where(np.real(value) > np.real(high), high, value))
 
 
+def smallest(gaps: np.ndarray) -> np.ndarray:
+    """Give the least of differences along the zones, (..., K + 1, M) to (..., M) K, real or complex."""
+    where = np.argmin(np.real(gaps), axis=-2, keepdims=True)
+    return np.take_along_axis(gaps, where, axis=-2)[..., 0, :]
+
+
 def inverse_log_mean(one: np.ndarray, other: np.ndarray) -> np.ndarray:
     """Give the inverse of the log-mean of two positive differences, regular where they are equal.
 
@@ -149,28 +166,30 @@ def of_area(zones: Zones, area: np.ndarray, real: Zones | None = None, real_area
     counter-current flow: W. M. Kays, A. L. London, Compact Heat Exchangers, chapter 2.
     """
     own, wanted = (zones, area) if real is None else (real, real_area)
-    most = own.at_least(0.0)
+    most = np.minimum(*own.at_ends(0.0))
     good = (most > 0) & np.isfinite(most) & ~own.hot.empty & ~own.cold.empty
     safe = np.where(good, most, 1.0)
     wanted = np.broadcast_to(wanted, most.shape)
 
     def over(x: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         duty = -safe * np.expm1(-x)
-        found = own.area(duty + 1j * COMPLEX_STEP)
-        return found.real - wanted, found.imag / COMPLEX_STEP * safe * np.exp(-x)
+        found, least = own.area(duty + 1j * COMPLEX_STEP)
+        crossed = np.real(least) <= 0  # inside, where a side flashes: too much by all means
+        return np.where(crossed, np.inf, found.real - wanted), found.imag / COMPLEX_STEP * safe * np.exp(-x)
 
     # the number of transfer units, nearly, is where the search starts
     spread = np.where(good, own.hot.warmth - own.cold.warmth, 1.0)
-    start = np.clip(wanted * spread / safe, 0.0, FARTHEST / 2)
+    start = np.log1p(np.clip(wanted * spread / safe, 0.0, 1e15))
     far = solve(over, np.zeros(most.shape), np.full(most.shape, FARTHEST), start, good)
     duty = np.where(good, -safe * np.expm1(-far), np.where(np.isfinite(most), 0.0, np.nan))
     if real is None:
         return duty
-    limit = zones.at_least(0.0, real)
-    at_limit = own.least(duty) < NEAR * spread
-    slope = own.area(duty + 1j * COMPLEX_STEP).imag / COMPLEX_STEP
-    way = -np.imag(zones.area(duty) - area) / slope
-    return duty + 1j * np.where(good, np.where(at_limit, limit.imag, way), 0.0)
+    found, least = own.area(duty + 1j * COMPLEX_STEP)
+    way = -np.imag(zones.area(duty + 0j)[0] - area) / (found.imag / COMPLEX_STEP)
+    at_limit = good & (least.real < NEAR * spread)
+    if at_limit.any():
+        way = np.where(at_limit, np.imag(zones.at_least(0.0, real)), way)
+    return duty + 1j * np.where(good, way, 0.0)
 
 
 def solve(
