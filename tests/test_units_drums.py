@@ -396,7 +396,7 @@ class TestValve:
         assert any("a valve cannot raise it" in item for item in solved({**VALVE, "pressure": "7 bar"}, fed).cautions())
         assert not any("Valve" in item for item in solved({**VALVE, "pressure": "5 bar"}, fed).cautions())
         result = solved({**VALVE, "pressure_drop": "1 bar"}, fed, cases={"units.unit.pressure_drop": np.array([1e5, 6e5])})
-        assert result.to_dict()["status"] == ["converged", "not_finite"]
+        assert result.to_dict()["status"] == ["converged", "unit_failed"]
 
     def test_faults(self):
         fed = {"fed": feed("liquid", {"water": 3.0})}

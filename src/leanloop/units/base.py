@@ -333,7 +333,14 @@ class Unit(ABC):
             outlets, found = self.calculate(inlets, numbers), {}
             if seeds and moved:
                 found = self._difference(inlets, numbers, outlets, tangents, number_tangents, seeds)
-        return Evaluation(outlets, found, outlet_status(outlets))
+        status = outlet_status(outlets)
+        if (status == code(Status.not_finite)).any():  # where what came in was sound, the unit found no answer
+            sound = np.all([np.isfinite(stream.state).all(axis=-1) for stream in inlets.values()], axis=0)
+            for value in numbers.values():
+                sound = sound & np.isfinite(value) if isinstance(value, np.ndarray) else sound
+            lost = [~np.isfinite(stream.state).all(axis=-1) for stream in outlets.values()]
+            status = np.where(sound & np.any(lost, axis=0), code(Status.unit_failed), status)
+        return Evaluation(outlets, found, status)
 
     def _complex_step(
         self, inlets: Mapping[str, Stream], numbers: Numbers, tangents: Mapping[str, Any], number_tangents: Mapping[str, Any]

@@ -9,7 +9,7 @@ import numpy as np
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.units.exchanger_side import Side
 
-ZONES = 24  # at least, over all parts between bends
+ZONES, ZONES_FLASHED = 64, 24  # at least, over all parts between bends
 NEAR = 1e-7  # of the difference between the inlets: an end closer than this is at its limit
 INSIDE = 1e-8  # K, less than this is rounding
 LEAST = 1e-12  # K, differences are not taken for less
@@ -34,7 +34,8 @@ class Zones:
         self.from_cold = [energy - cold.energy for energy in cold.bends()]
         self.from_hot = [hot.energy - energy for energy in hot.bends()]
         parts = 1 + len(self.from_cold) + len(self.from_hot)
-        self.count = max(8, -(-ZONES // parts))
+        flashed = hot.mixture is not None or cold.mixture is not None
+        self.count = max(8, -(-ZONES_FLASHED // parts)) if flashed else ZONES
 
     def places(self, duty: np.ndarray) -> np.ndarray:
         """Give the ends of the zones, (..., K + 1, M) W from the cold end, for a duty (..., M) W."""
@@ -223,7 +224,7 @@ def solve(
             # too far: halve; now and then anyway, so that no slow approach goes on for ever
             wild = ~((new >= low) & (new <= high)) | (turn % 8 == 7)
             new = np.where(wild, 0.5 * (low + high), new)
-            done = (value == 0) | (np.abs(new - x) <= 4e-15 * np.abs(new)) | ~np.isfinite(value)
+            done = (value == 0) | (np.abs(new - x) <= 4e-15 * np.abs(new)) | np.isnan(value)
             done |= high - low <= 4e-16 * high
             x = np.where(left & (value != 0), new, x)
             left = left & ~done
