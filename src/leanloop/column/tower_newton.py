@@ -88,6 +88,8 @@ def limited(tower: Tower, now: np.ndarray, step: np.ndarray) -> np.ndarray:
     gas = now[..., at]
     low = (gas < LITTLE * size) & (gas + step[..., at] <= 0.0)  # a gas may vanish, and come back
     new[..., at] = np.where(low, 0.0, np.minimum(new[..., at], GROWTH * np.maximum(gas, 0.01 * size)))
+    most = GROWTH * now[..., at + 2 :] + tower.fed[..., tower.form.falling].sum(axis=1)[:, None]
+    new[..., at + 2 :] = np.minimum(new[..., at + 2 :], most)
     warm = now[..., at + 1]
     new[..., at + 1] = np.clip(warm + np.clip(step[..., at + 1], -WARMEST, WARMEST), COLDEST, HOTTEST)
     return new
@@ -186,7 +188,7 @@ def _iterate(
             ended |= (path.way[own] == FILLING) & (lost | (path.tries[own] > MOST_FILLING))
             ended |= (path.way[own] == BLENDING) & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
             ended &= ~failed
-            size = np.where(path.underway(own), 1.0, size)
+            size = np.where(underway | path.underway(own), 1.0, size)  # a step of other equations proves nothing
             if ended.any():
                 gone = ways.begin(tower, own[ended], path, new, np.flatnonzero(ended))
                 status[gone] = code(Status.stages_unsolved)

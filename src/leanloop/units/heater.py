@@ -12,7 +12,7 @@ from leanloop.flash.mixture import Mixture
 from leanloop.flash.solve import at_temperature
 from leanloop.stream import TWO_PHASE, Stream
 from leanloop.units import heating
-from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Surroundings, Unit
 from leanloop.units.warmth import heat_addresses, heat_flow, mixture_of, need_heat, temperature_at, two_phase
 
 
@@ -138,10 +138,6 @@ class Heater(Unit):
         if "pressure_drop" not in numbers:
             return {"gives": stream.at(temperature)}
         return {"gives": Stream.of(stream.flows, temperature, pressure, stream.phase)}
-
-    def evaluate(self, inlets: Mapping[str, Stream], numbers: Numbers, *along: Any) -> Evaluation:
-        """Give the outlet and its derivatives; a duty or a pressure drop that is out of reach fails the case."""
-        return heating.own_failure(super().evaluate(inlets, numbers, *along), inlets, numbers)
 
     # --- reporting
 

@@ -1,4 +1,4 @@
-"""What heaters, mixers, make-ups and exchangers share: which streams have heat data, judgement of failures, cautions."""
+"""What heaters, mixers, make-ups and exchangers share: which streams have heat data, tables left, cautions."""
 
 from __future__ import annotations
 
@@ -9,9 +9,8 @@ import numpy as np
 from leanloop.entries import Context
 from leanloop.flash.mixture import Mixture
 from leanloop.flash.solve import at_enthalpy
-from leanloop.status import Status, code
 from leanloop.stream import TWO_PHASE, Stream
-from leanloop.units.base import Evaluation, Numbers, Surroundings, Unit
+from leanloop.units.base import Numbers, Surroundings, Unit
 from leanloop.units.warmth import lacking
 
 
@@ -65,32 +64,6 @@ def refuse_two_phases(unit: Unit, label: str, address: str, context: Context, re
     if unit.around.phases.get(label) == TWO_PHASE:
         stream = unit.inlets[label]
         context.fault(f"units.{unit.name}.{address}", f"stream '{stream}' may be of gas and liquid", remedy)
-
-
-def own_failure(found: Evaluation, inlets: Mapping[str, Stream], numbers: Numbers) -> Evaluation:
-    """Tell outlets that the unit cannot calculate from inputs that are no numbers.
-
-    Parameters
-    ----------
-    found : Evaluation
-        Its status is changed.
-    inlets, numbers
-        As for `Unit.calculate`, for M cases.
-
-    Returns
-    -------
-    Evaluation
-        The same, with ``unit_failed`` for ``not_finite`` where every input is finite.
-    """
-    lost = found.status == code(Status.not_finite)
-    if lost.any():
-        good = np.ones(found.status.shape, dtype=bool)
-        for stream in inlets.values():
-            good &= np.isfinite(stream.state).all(axis=-1) & (stream.flows >= 0).all(axis=-1)
-        for value in numbers.values():
-            good &= np.isfinite(value) if np.ndim(value) < 2 and not isinstance(value, list) else True
-        found.status = np.where(lost & good, code(Status.unit_failed), found.status)
-    return found
 
 
 def off_table(mixture: Mixture | None, stream: Stream, numbers: Numbers) -> np.ndarray:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Any
 
 import numpy as np
 
@@ -11,7 +10,7 @@ from leanloop.entries import Context, Entry
 from leanloop.flash.mixture import Mixture
 from leanloop.stream import TWO_PHASE, Stream
 from leanloop.units import heating
-from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Surroundings, Unit
 from leanloop.units.warmth import heat_addresses, heat_flow, mixture_of, need_heat, temperature_at, two_phase
 
 
@@ -124,10 +123,6 @@ class Mixer(Unit):
         if self.knows:
             temperature = temperature_at(self.around.heat, streams[0].phase, flows, energy, numbers, temperature)
         return {"gives": Stream.of(flows, temperature, pressure, streams[0].phase)}
-
-    def evaluate(self, inlets: Mapping[str, Stream], numbers: Numbers, *along: Any) -> Evaluation:
-        """Give the outlet and its derivatives; a balance that no temperature fulfils fails the case."""
-        return heating.own_failure(super().evaluate(inlets, numbers, *along), inlets, numbers)
 
     def off_table(self, inlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping[str, np.ndarray]) -> np.ndarray:
         """Tell in which cases the outlet leaves an equilibrium table, (M,) bool."""
