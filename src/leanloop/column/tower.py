@@ -125,9 +125,11 @@ class Tower:
     liquid_draw, gas_draw : (..., M, S) mol/s
     efficiency : (..., M, S, D)
     blend : (M,) or None
-        Part of the heat rows that is their own, and of what efficiencies lack; the rest of each heat row holds the gas flow
-        of its stage at `held`. One, or None, for the equations as they are: the path of a continuation.
+        Part of the first rows that is their own, and of what efficiencies lack; the rest of each first row holds the gas
+        flow of its stage at `held`. One, or None, for the equations as they are: the path of a continuation.
     held : (M, S) mol/s or None
+    wide : (M,) bool or None
+        Whether what reboiler and condenser are run by is blended as well.
     """
 
     form: Form
@@ -143,6 +145,11 @@ class Tower:
     efficiency: np.ndarray
     blend: np.ndarray | None = None
     held: np.ndarray | None = None
+    wide: np.ndarray | None = None
+
+    def parts(self) -> np.ndarray:
+        """Give the part of each first row that is its own, (M, S), while a blend is on."""
+        return np.where(self.form.rows(HEAT) | self.wide[..., None], self.blend[..., None], 1.0)
 
     def take(self, cases: np.ndarray) -> Tower:
         """Give the columns of some cases, (m,) int; only without further leading axes."""
@@ -157,7 +164,7 @@ class Tower:
             **{
                 name: own(getattr(self, name))
                 for name in (
-                    "fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency", "blend", "held",
+                    "fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency", "blend", "held", "wide",
                 )
             },  # fmt: skip
         )
@@ -362,9 +369,6 @@ def first_rows(tower: Tower, at: State) -> np.ndarray:
     """Evaluate the first row of each stage, by its role, (..., M, S)."""
     form = tower.form
     heats = (tower.spec - balances(tower, at)) / HEAT_SCALE if form.warms else 0.0 * at.total_gas
-    if tower.blend is not None:
-        part = tower.blend[..., None]
-        heats = part * heats + (1.0 - part) * (tower.held - at.total_gas)
     out = np.where(form.rows(HEAT), heats, 0.0)
     for role, row in (
         (TEMPERATURE, tower.spec - at.temperature),
@@ -375,4 +379,7 @@ def first_rows(tower: Tower, at: State) -> np.ndarray:
         mask = form.rows(role)
         if mask.any():
             out = np.where(mask, row, out)
+    if tower.blend is not None and form.warms:
+        part = tower.parts()
+        out = part * out + (1.0 - part) * (tower.held - at.total_gas)
     return out

@@ -194,8 +194,7 @@ def _first(tower: Tower, sloped: Sloped, changes: tuple, parts: tuple, ahead: in
         d_gh = np.einsum("msnc,msc->msn", d_gas, hot.real) + gas_capacity[..., None] * d_t
         mask = form.rows(HEAT)
         part = np.ones((1, 1, 1)) if tower.blend is None else tower.blend[:, None, None]
-        row = -part * (d_lh + d_gh) / HEAT_SCALE - (1.0 - part) * d_v
-        own[..., 0][:, mask] = row[:, mask]
+        own[..., 0][:, mask] = -(d_lh + d_gh)[:, mask] / HEAT_SCALE
         sinking = at.down[..., None] * d_lh if d_down is None else at.down[..., None] * d_lh + d_down * at.liquid_heat[..., None]
         rising = at.up[..., None] * d_gh if d_up is None else at.up[..., None] * d_gh + d_up * at.gas_heat[..., None]
         above, under = np.append(False, mask[:-1]), np.append(mask[1:], False)  # whose neighbour balances heat
@@ -217,6 +216,9 @@ def _first(tower: Tower, sloped: Sloped, changes: tuple, parts: tuple, ahead: in
         mask = form.rows(role)
         if mask.any():
             own[..., 0][:, mask] = row[:, mask]
+    if tower.blend is not None and form.warms:
+        part = tower.parts()[..., None]
+        own[..., 0] = part * own[..., 0] - (1.0 - part) * d_v
 
 
 class TowerJacobian:

@@ -9,7 +9,7 @@ import numpy as np
 
 from leanloop.column.tower import Form, State, Tower, beyond, residual
 from leanloop.column.tower_jacobian import Sloped, TowerJacobian, blocks
-from leanloop.column.tower_path import BLENDING, FILLING, PLAIN, Path
+from leanloop.column.tower_path import BLENDING, FILLING, PLAIN, WIDELY, Path
 from leanloop.column.tower_start import COLDEST, HOTTEST
 from leanloop.status import OK, Status, code
 
@@ -25,7 +25,7 @@ NEAR = 1e-4
 LEFT = 1e-13
 SHARP = 1e-10  # relative step above which the state before it is not near enough for derivatives
 PLAIN_ITERATIONS = 20  # then the safeguarded paths begin
-ITERATIONS = 700
+ITERATIONS = 900
 TINY = 1e-300
 SETTLED = 1e-6  # residual, in feeds, that is none
 ASTRAY = 10.0  # residual, in feeds, at which the plain method is given up
@@ -158,7 +158,7 @@ def _iterate(
         underway = path.underway(own)
         if underway.any():
             filled += 1
-            local.blend, local.held = path.blend[own], ways.held[own]
+            local.blend, local.held, local.wide = path.blend[own], ways.held[own], path.way[own] == WIDELY
         else:
             local.blend = None
         sloped = Sloped(local, now)
@@ -186,7 +186,7 @@ def _iterate(
             plain = path.way[own] == PLAIN
             ended |= plain & (lost | (merit > ASTRAY) & (iterations > 1) | (iterations > PLAIN_ITERATIONS)) & (size > NEAR)
             ended |= (path.way[own] == FILLING) & (lost | (path.tries[own] > MOST_FILLING))
-            ended |= (path.way[own] == BLENDING) & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
+            ended |= ((path.way[own] == BLENDING) | (path.way[own] == WIDELY)) & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
             ended &= ~failed
             size = np.where(underway | path.underway(own), 1.0, size)  # a step of other equations proves nothing
             if ended.any():
@@ -236,7 +236,7 @@ class Ways:
 
     def __init__(self, tower: Tower, begin: Begin, fill: Begin, boils: bool) -> None:
         self._begin, self._fill = begin, fill
-        self.order = (BLENDING, FILLING) if boils else (FILLING, BLENDING)
+        self.order = (BLENDING, WIDELY, FILLING) if boils else (FILLING, BLENDING, WIDELY)
         self.held = np.ones(tower.fed.shape[:2])
 
     def begin(self, tower: Tower, cases: np.ndarray, path: Path, new: np.ndarray, rows: np.ndarray) -> np.ndarray:
@@ -246,7 +246,7 @@ class Ways:
             mine = left & ((path.left[cases] & way) > 0)
             if mine.any():
                 own = cases[mine]
-                start = (self._begin if way == BLENDING else self._fill)(tower.take(own), own)
+                start = (self._fill if way == FILLING else self._begin)(tower.take(own), own)
                 new[rows[mine]] = start
                 gas = start[..., len(tower.form.implicit)]
                 self.held[own] = np.maximum(gas, 1e-3 * tower.fed[own].sum(axis=(1, 2))[:, None])

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-PLAIN, BLENDING, FILLING = 0, 1, 2
+PLAIN, BLENDING, FILLING, WIDELY = 0, 1, 2, 4
 FIRST, LONGEST, SHORTEST = 0.25, 0.5, 1e-3  # steps of the blend
 TRIES = 15  # Newton steps at one blend
 ON_PATH = 1e-2  # relative step at which the next blend is tried
@@ -30,7 +30,7 @@ class Path:
     Attributes
     ----------
     way : (M,) int
-        `PLAIN`, `BLENDING` or `FILLING`.
+        `PLAIN`, `BLENDING`, `FILLING`, or `WIDELY` where what reboiler and condenser are run by is blended as well.
     left : (M,) int
         Bits of the ways not tried yet.
     drag : (M,)
@@ -58,7 +58,7 @@ class Path:
         """Begin with plain steps; only columns with heat or efficiencies have something to blend."""
         cases = len(unknowns)
         ones, zeros = np.ones(cases), np.zeros(cases, dtype=int)
-        left = np.full(cases, BLENDING | FILLING if blends else FILLING)
+        left = np.full(cases, BLENDING | FILLING | WIDELY if blends else FILLING)
         return cls(zeros.copy(), left, 0 * ones, ones.copy(), 0 * ones + FIRST, unknowns.copy(), 0 * ones - 1.0, zeros.copy())
 
     def begin(self, cases: np.ndarray, way: int) -> None:
@@ -66,7 +66,7 @@ class Path:
         self.way[cases], self.tries[cases] = way, 0
         self.left[cases] &= ~way
         self.drag[cases] = 1.0 if way == FILLING else 0.0
-        self.blend[cases] = 0.0 if way == BLENDING else 1.0
+        self.blend[cases] = 0.0 if way in (BLENDING, WIDELY) else 1.0
         self.step[cases], self.reached[cases] = FIRST, -1.0
 
     def advance(self, cases: np.ndarray, new: np.ndarray, size: np.ndarray, lost: np.ndarray) -> np.ndarray:
@@ -88,7 +88,7 @@ class Path:
             Cases for which this way has ended without an answer.
         """
         self.tries[cases] += 1
-        on = self.way[cases] == BLENDING
+        on = (self.way[cases] == BLENDING) | (self.way[cases] == WIDELY)
         done = on & (self.blend[cases] < 1.0) & (size <= ON_PATH) & ~lost
         if done.any():
             own = cases[done]
