@@ -45,7 +45,7 @@ def heat(species):
 
 
 def tables(column, kind=None):
-    """The file of a column as nested tables; feeds[0] is the liquid at the top, a gas fed to the last stage first of its kind is gas_in."""
+    """The file of a column as nested tables; feeds[0] is liquid_in, the first gas fed to the last stage is gas_in."""
     names = [s.name for s in column.species]
     data = {"components": {s.name: component(s) for s in column.species},
             "equilibrium": {"e": {s.name: model(s) for s in column.species if s.stays is None}}}

@@ -118,6 +118,8 @@ class Loop:
         towers = [self.wash, self.strip] + [self.drum] * (self.drum is not None)
         self.shapes = [shape for t in towers for shape in ((t.n, self.C), (t.n, self.C), (t.n,))] + [(3,), (len(hold),), (self.C,)]
         self.ends = np.cumsum([int(np.prod(shape)) for shape in self.shapes])
+        self.is_temperature = np.concatenate([np.full(shape, len(shape) == 1).ravel() for shape in self.shapes[:-3]]
+                                             + [np.array([True, True, False]), np.zeros(len(hold) + self.C, bool)])
         self.flow = gas[0] + (steam[0] if steam else 0.0) + 0.0
         for place, value in hold.items():
             self.flow[place] += value
@@ -201,11 +203,16 @@ class Loop:
         rows.append((full - recycled) / self.flow)
         return np.concatenate(rows)
 
-    def find(self, start, options=None):
+    def find(self, start):
         """Solve from a start with scipy alone; give the unknowns and the greatest residual."""
         size = np.maximum(np.abs(start), 1e-4 * self.flow.sum())
-        found = root(lambda z: self.residual(z * size), start / size, method="hybr", options={"xtol": 1e-12, "maxfev": 40000} | (options or {}))
+        found = root(lambda z: self.residual(z * size), start / size, method="hybr", options={"xtol": 1e-12, "maxfev": 40000})
         return found.x * size, np.abs(found.fun).max()
+
+    def perturbed(self, z, seed, share=0.03):
+        """Unknowns moved at random by up to `share`, temperatures by a sixth of it, so that the exchanger does not cross."""
+        moved = np.random.default_rng(seed).uniform(-share, share, z.size)
+        return z * (1 + np.where(self.is_temperature, moved / 6, moved))
 
     def solve(self, start):
         """Solve and polish; raise ArithmeticError where the equations are not met to 1e-12."""
@@ -214,13 +221,13 @@ class Loop:
             raise ArithmeticError("the independent solution was not found")
         return z
 
-    def start(self, profiles, streams, results):
-        """Unknowns from profiles (l, v, T) of wash and stripper, streams by name and unit results."""
+    def start(self, profiles, streams, results, vapour=0.0):
+        """Unknowns from profiles (l, v, T) of wash and stripper, streams by name, unit results, and the vapour fraction flashed."""
         parts = [*profiles["wash"], *profiles["strip"]]
         if self.drum:
             flows, T = streams["warm_rich"]
-            K = self.drum.mixture.pressures(np.array(T)) / self.drum.P
-            gas = np.where(self.drum.mixture.in_liquid, 0.0, flows * K / (K + 20))
+            K = np.where(self.drum.mixture.in_liquid, 0.0, self.drum.mixture.pressures(np.array(T)) / self.drum.P)
+            gas = flows * K * vapour / (1 + (K - 1) * vapour)
             parts += [(flows - gas)[None], gas[None], np.array([T])]
         parts += [np.array([streams["warm_lean"][1], streams["warm_rich"][1], results["swap.duty_W"]])]
         parts += [np.array([results[f"top_up.added_mol_s.{self.names[place]}"] for place in self.hold]), streams["cool_lean"][0]]

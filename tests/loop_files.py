@@ -42,6 +42,12 @@ def wash_oil(stages=(5, 4), exchanger=("UA", 900.0), bleed=0.004):
                 steam=steam, bleed=bleed, preheat=420.0)
 
 
+def read(loop, folder, tears=()):
+    """Read the flowsheet of a loop, torn where it is told."""
+    tail = f"[loop]\ntears = {columns.value(tears)}\n" if tears else ""
+    return columns.read(columns.text(tables(loop)) + tail, folder, "loop.toml")
+
+
 def tables(loop):
     """The file of a loop as nested tables."""
     name_of = loop.names.__getitem__
@@ -70,6 +76,7 @@ def tables(loop):
     swap |= {"UA": q(value, "W/K")} if what == "UA" else {"approach": {what: q(value, "K")}}
     if loop.drum:
         swap["cold_equilibrium"] = "hot"
+        swap["cold_pressure_drop"] = q(loop.wash.P[-1] - loop.drum.P[0], "Pa")
     units = {
         "wash": {"kind": "absorber", "gas_in": "gas", "liquid_in": "cool_lean", "gas_out": "cleaned", "liquid_out": "rich",
                  "stages": loop.wash.n, "equilibrium": "cold", "heat": "adiabatic"},
@@ -90,27 +97,19 @@ def tables(loop):
             "heat_data": {s.name: columns.heat(s) for s in loop.species}, "feeds": feeds, "units": units}
 
 
-def answer(loop, result, stream_names=None):
-    """Streams (flows, temperature) and unit results of a leanloop result of one case, by the names of `Loop.states`."""
+def answer(result, names):
+    """Streams (flows, temperature) and unit results of a leanloop result of one case, named as in `Loop.states`."""
     told = result.to_dict()
-    streams = {name: (np.array([item["mol_s"][c] for c in loop.names]), item["temperature_K"])
-               for name, item in told["streams"].items()}
+    streams = {name: (np.array([item["mol_s"][c] for c in names]), item["temperature_K"]) for name, item in told["streams"].items()}
     results = {}
     for unit, item in told["units"].items():
         for key, value in item["results"].items():
-            if isinstance(value, dict):
-                results |= {f"{unit}.{key}.{inner}": own for inner, own in value.items()}
-            else:
-                results[f"{unit}.{key}"] = value
+            results |= {f"{unit}.{key}.{c}": own for c, own in value.items()} if isinstance(value, dict) else {f"{unit}.{key}": value}
     return streams, results
 
 
 def start(loop, result):
     """The unknowns of `Loop` at a leanloop result of one case."""
-    profiles = {unit: columns.profiles(result, loop_like(loop), unit) for unit in ("wash", "strip")}
-    return loop.start(profiles, *answer(loop, result))
-
-
-def loop_like(loop):
-    """What `columns.profiles` asks of a column: its species."""
-    return loop
+    profiles = {unit: columns.profiles(result, loop, unit) for unit in ("wash", "strip")}
+    vapour = result["streams.warm_rich.vapour_fraction"] if loop.drum else 0.0
+    return loop.start(profiles, *answer(result, loop.names), vapour)

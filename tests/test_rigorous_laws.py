@@ -1,4 +1,4 @@
-"""Laws that columns with heat obey, whatever their numbers: balances, symmetries, limits and exact sensitivities."""
+"""Laws that columns with heat obey, whatever their numbers: balances, symmetries, limits, an exact march, sensitivities."""
 
 import dataclasses
 
@@ -6,6 +6,7 @@ import columns
 import numpy as np
 import pytest
 from independent_rigorous import DATUM, Column, Species
+from scipy.optimize import brentq
 
 AIR = Species("air", "gas", cp_gas=29.1)
 WATER = Species("water", None, 23.477, 3984.92, -39.724, 75.3, 33.6, 44.0e3)
@@ -15,9 +16,11 @@ LIGHT = Species("light", None, 21.2, 2700.0, -45.0, 130.0, 85.0, 28.0e3)
 HEAVY = Species("heavy", None, 21.6, 3800.0, -55.0, 210.0, 150.0, 43.0e3, 273.15)
 
 WASH = Column([AIR, AMMONIA, WATER, OIL], 6,
-              [(1, "liquid", [0, 0.01, 9.0, 2.0], 300.0), (6, "gas", [10.0, 2.0, 0.1, 0], 312.0), (3, "liquid", [0, 0.3, 6.0, 1.0], 306.0)],
+              [(1, "liquid", [0, 0.01, 9.0, 2.0], 300.0), (6, "gas", [10.0, 2.0, 0.1, 0], 312.0),
+               (3, "liquid", [0, 0.3, 6.0, 1.0], 306.0)],
               1.5e5, 5e3, draws=[(4, "liquid", 2.0), (5, "gas", 0.8)], duties=[(2, -2.0e4)], efficiency=0.7)  # fmt: skip
-STRIP = Column([AMMONIA, LIGHT, WATER, HEAVY], 5, [(1, "liquid", [0.4, 1.5, 12.0, 2.0], 340.0), (3, "liquid", [0, 0.5, 3.0, 1.0], 350.0)],
+STRIP = Column([AMMONIA, LIGHT, WATER, HEAVY], 5,
+               [(1, "liquid", [0.4, 1.5, 12.0, 2.0], 340.0), (3, "liquid", [0, 0.5, 3.0, 1.0], 350.0)],
                1.4e5, reboiler=("boil_up", 0.5), condenser=("reflux_ratio", 0.8), draw=0.4)  # fmt: skip
 
 
@@ -60,7 +63,8 @@ class TestBalances:
         assert energy["in_W"] == pytest.approx(into, rel=1e-10)
         assert energy["out_W"] == pytest.approx(out, rel=1e-10)
         assert energy["duties_W"] == pytest.approx(duties, rel=1e-10)
-        assert results["duty_W"] == pytest.approx(duties, rel=1e-10)
+        parts = [results.get(f"{part}_duty_W") or 0.0 for part in ("reboiler", "condenser")]
+        assert results["duty_W"] + sum(parts) == pytest.approx(duties, rel=1e-10)
         assert abs(energy["closure"]) < 1e-10
 
     def test_scale(self, tmp_path, column):
@@ -131,12 +135,14 @@ class TestLimits:
 
     def two_phases(self, folder, how, efficiency):
         """A hot liquid above its bubble pressure, fed to stage 3: as it is, through a valve, or as the two phases of a drum."""
-        column = dataclasses.replace(STRIP, efficiency=efficiency, feeds=[STRIP.feeds[0], (3, "liquid", [0.4, 2.5, 3.0, 1.0], 390.0)])
+        hot = (3, "liquid", [0.4, 2.5, 3.0, 1.0], 390.0)
+        column = dataclasses.replace(STRIP, efficiency=efficiency, feeds=[STRIP.feeds[0], hot])
         data = columns.tables(column)
         feed = data["feeds"]["side1"]
         feed["pressure"] = "20 bar"
         if how == "valve":
-            data["units"]["let_down"] = {"kind": "valve", "takes": "side1", "gives": "mixed", "pressure": "140 kPa", "equilibrium": "e"}
+            data["units"]["let_down"] = {"kind": "valve", "takes": "side1", "gives": "mixed",
+                                         "pressure": "140 kPa", "equilibrium": "e"}
             data["units"]["col"]["side_feeds"] = [{"stream": "mixed", "stage": 3}]
         if how == "drum":
             data["units"]["drum"] = {"kind": "flash_drum", "takes": "side1", "gas_out": "steam", "liquid_out": "rest",
@@ -200,3 +206,51 @@ class TestSensitivities:
     ])  # fmt: skip
     def test_wash(self, tmp_path, address, value, step):
         self.agrees(tmp_path, columns.tables(WASH), address, value, step)
+
+
+class TestBinary:
+    """Two components of constant relative volatility and equal latent heat: flows are constant from stage to stage."""
+
+    alpha, latent, F, z, N, duty, reflux = 2.6, 32e3, 10.0, 0.42, 6, 240e3, 1.2
+
+    def column(self):
+        # heat capacities that are as good as none, so that only latent heat counts
+        a = Species("a", None, 21.0, 2900.0, -50.0, 1e-7, 1e-7, self.latent)
+        b = dataclasses.replace(a, name="b", a=a.a - np.log(self.alpha))
+        return Column([a, b], self.N, [(1, "liquid", [self.F * self.z, self.F * (1 - self.z)], 320.0)], 1.5e5,
+                      reboiler=("duty", self.duty), condenser=("reflux_ratio", self.reflux))
+
+    def march(self):
+        """Liquid fractions top to bottom, condenser and reboiler included."""
+        V = self.duty / self.latent
+        D = V / (1 + self.reflux)
+        B = self.F - D
+        L = B + V
+        y = lambda x: self.alpha * x / (1 + (self.alpha - 1) * x)  # noqa: E731
+
+        def up(bottom):
+            x = [bottom]
+            for _ in range(self.N):
+                x.append((V * y(x[-1]) + B * bottom) / L)
+            x.append((V * y(x[-1]) + B * bottom - self.F * self.z) / (self.reflux * D))
+            return x
+
+        gap = lambda bottom: V * y(up(bottom)[-2]) - D * y(up(bottom)[-1]) - self.reflux * D * up(bottom)[-1]  # noqa: E731
+        tries = np.linspace(1e-4, self.z, 2000)
+        good = [x for x in tries if 0 < up(x)[-1] < 1]
+        bottom = brentq(gap, good[0], good[-1], xtol=1e-16, rtol=1e-15)
+        return np.array(up(bottom)[::-1]), V, D, L
+
+    def test_march(self, tmp_path):
+        x, V, D, L = self.march()
+        result = solved(columns.tables(self.column()), tmp_path).to_dict()["units"]["col"]
+        profile = result["profile"]
+        np.testing.assert_allclose(profile["x"]["a"], x, rtol=1e-8)
+        np.testing.assert_allclose(profile["gas_mol_s"], [D] + [V] * (self.N + 1), rtol=1e-8)
+        np.testing.assert_allclose(profile["liquid_mol_s"], [self.reflux * D] + [L] * self.N + [self.F - D], rtol=1e-8)
+        column = self.column()
+        a, b = column.species
+        boils = [brentq(lambda T, x=x: x * a.k(T, 1.5e5) + (1 - x) * b.k(T, 1.5e5) - 1, 250, 500, xtol=1e-12) for x in x]
+        np.testing.assert_allclose(profile["temperature_K"], boils, rtol=1e-9)
+        assert result["results"]["condenser_duty_W"] == pytest.approx(-self.reflux * D * self.latent, rel=1e-7)
+        assert result["results"]["boil_up"] == pytest.approx(V / (self.F - D), rel=1e-8)

@@ -58,6 +58,29 @@ equilibrium = "hot"
 pressure = "1.8 bar"
 reboiler = { duty = "300 MW" }
 """  # noqa: E501 - as a file has it
+CROSSED = """
+[components]
+oil = { molar_mass = "250 g/mol", stays_in = "liquid" }
+[heat_data.oil]
+liquid_heat_capacity = "480 J/(mol K)"
+[feeds.hot]
+phase = "liquid"
+temperature = "120 degC"
+pressure = "3 bar"
+flows = { oil = "2 mol/s" }
+[feeds.cold]
+phase = "liquid"
+temperature = "30 degC"
+pressure = "2 bar"
+flows = { oil = "3 mol/s" }
+[units.swap]
+kind = "exchanger"
+hot_in = "hot"
+hot_out = "cooled"
+cold_in = "cold"
+cold_out = "warmed"
+duty = "100 kW"
+"""
 LIMITED = loop(method="substitution").replace("[loop]", "[loop]\npasses = 3")
 
 # name: (file, status, words of its sentence)
@@ -70,6 +93,7 @@ SCENES = {
     "too few passes": (LIMITED, "pass_limit", "more passes"),
     "no solvent": (loop(oil=0.0), "dry_stage", "Unit wash"),
     "absurd data": (loop(hot=antoine(208.5)), "unbalanced", "Unit strip"),
+    "more heat than can pass": (CROSSED, "temperature_cross", "Unit swap"),
     "more heat than there is to boil": (BOILED, "stages_unsolved", "Unit strip"),
     "numbers out of all proportion": (loop(hot=scenes.constant(1e16)), "unbalanced", "Unit strip"),
     "data beyond any number": (loop(hot=antoine(6950.0)), "not_finite", "Unit strip"),
@@ -260,5 +284,5 @@ def test_sentences_differ_and_say_what_to_do():
 def test_worse_is_higher():
     codes = np.array([code(status) for status in LIST])
     assert (np.diff(codes) > 0).all()
-    kept = {Status.converged, Status.out_of_reach, Status.off_table}
+    kept = {Status.converged, Status.out_of_reach, Status.temperature_cross, Status.off_table}
     assert {status for status, good in zip(LIST, solved(codes), strict=True) if good} == kept

@@ -32,7 +32,7 @@ def _parser() -> argparse.ArgumentParser:
     solve = _command(commands, "solve", "solve a flowsheet and report it")
     solve.add_argument("--json", metavar="PATH", help="write the result as JSON; - for standard output, and nothing else there")
     solve.add_argument("--tables", metavar="DIR", help="write streams, profiles, units and balance as CSV files into a directory")
-    solve.add_argument("--pictures", metavar="DIR", help="draw flowsheet, stages, profiles, window and convergence into a directory")
+    solve.add_argument("--pictures", metavar="DIR", help="draw flowsheet, stages, profiles, window, convergence into a directory")
     solve.add_argument("--report", metavar="FILE.html", help="write report, limits and pictures as one page that can be printed")
     check = _command(commands, "check", "read a flowsheet and show its order, loops and tears; solve nothing", changes=False)
     check.add_argument("--json", metavar="PATH", help="write what was found as JSON; - for standard output")

@@ -15,6 +15,10 @@ class Status(Enum):
         "A requirement cannot be met with its freed input inside the bounds; "
         "ask for what `requirements` reports as the nearest value, or change what stands in the way."
     )
+    temperature_cross = (
+        "An exchanger is asked for more heat than can pass, or its hot side is the colder one; "
+        "take a larger approach, a smaller duty or UA, or change over its sides."
+    )
     off_table = (
         "The answer lies outside an equilibrium table and is an extrapolation; "
         "extend the table or move the conditions back inside it."

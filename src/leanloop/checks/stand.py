@@ -76,7 +76,8 @@ class Stand:
         owners = {f"units.{NAME}": unit.values} | {
             f"equilibrium.{table.name}.{name}": model.values for table in tables.values() for name, model in table.models.items()
         }
-        owners.update({f"heat_data.{item.name}": item.values for item in (self.heat.items if self.heat else ()) if item is not None})
+        known_heat = [item for item in (self.heat.items if self.heat else ()) if item is not None]
+        owners.update({f"heat_data.{item.name}": item.values for item in known_heat})
         known_numbers = {f"{head}.{key}": (values, key) for head, values in owners.items() for key in values.numbers}
         self.numbers: dict[str, Any] = {}
         self.limits: dict[str, Entry] = {}

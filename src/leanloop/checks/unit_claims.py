@@ -83,7 +83,7 @@ def leans_on_truthful(stand: Stand) -> None:
                     for own, factor in tries if part not in listed else ():
                         now = stand.outlets(stand.moved(inlet, own, lambda value, factor=factor: factor * value))
                         gap = np.abs(now[outlet] - base[outlet])[:, PLACES[what]]
-                        follows = (gap > SAME * base[outlet][:, PLACES[what]]).any()
+                        follows = (gap > SAME * np.abs(base[outlet][:, PLACES[what]])).any()
                         require(not follows, f"the {what} of '{outlet}' follows the {part} of '{inlet}', which is not listed")
 
 

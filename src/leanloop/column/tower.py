@@ -164,7 +164,8 @@ class Tower:
             **{
                 name: own(getattr(self, name))
                 for name in (
-                    "fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency", "blend", "held", "wide",
+                    "fed", "blown", "fed_heat", "pressure", "spec", "liquid_draw", "gas_draw", "efficiency",
+                    "blend", "held", "wide",
                 )
             },  # fmt: skip
         )

@@ -14,7 +14,6 @@ from leanloop.column.tower import (
     TEMPERATURE,
     VAPOUR,
     Form,
-    State,
     Tower,
     assembled,
     below,
@@ -187,7 +186,8 @@ def _first(tower: Tower, sloped: Sloped, changes: tuple, parts: tuple, ahead: in
     own, up, down = parts
     if form.warms:
         temperature = at.temperature
-        cold, hot = (tower.heat(function, temperature + 1j * COMPLEX_STEP) for function in (form.liquid_enthalpy, form.gas_enthalpy))
+        enthalpies = form.liquid_enthalpy, form.gas_enthalpy
+        cold, hot = (tower.heat(function, temperature + 1j * COMPLEX_STEP) for function in enthalpies)
         liquid_capacity = (at.liquid * cold.imag).sum(axis=-1) / COMPLEX_STEP
         gas_capacity = (at.gas * hot.imag).sum(axis=-1) / COMPLEX_STEP
         d_lh = cold.real @ d_liquid.T + liquid_capacity[..., None] * d_t

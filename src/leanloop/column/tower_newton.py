@@ -177,16 +177,19 @@ def _iterate(
         still = (np.abs(new - now) <= 1e-10 * (np.abs(now) + scale[own][:, None, None])).all(axis=(1, 2)) & (merit > SETTLED)
         stuck[own] = np.where(still & (path.drag[own] == 0), stuck[own] + 1, 0)
         new[broken | failed] = now[broken | failed]
-        if (path.way[own] != PLAIN).any() or broken.any() or iterations > 1 and (merit > ASTRAY).any() or iterations > PLAIN_ITERATIONS:
+        tired = iterations > PLAIN_ITERATIONS
+        astray = (merit > ASTRAY) & (iterations > 1)
+        if tired or broken.any() or astray.any() or (path.way[own] != PLAIN).any():
             size = np.where(broken, 1.0, size)
             moved = _moved(form, now, step, scale[own])
             lost = broken | (stuck[own] > 2)
             ended = path.advance(own, new, size, lost)
             path.pace(own, np.where(np.isfinite(moved), moved, 1.0))
             plain = path.way[own] == PLAIN
-            ended |= plain & (lost | (merit > ASTRAY) & (iterations > 1) | (iterations > PLAIN_ITERATIONS)) & (size > NEAR)
+            ended |= plain & (lost | astray | tired) & (size > NEAR)
             ended |= (path.way[own] == FILLING) & (lost | (path.tries[own] > MOST_FILLING))
-            ended |= ((path.way[own] == BLENDING) | (path.way[own] == WIDELY)) & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
+            blends = (path.way[own] == BLENDING) | (path.way[own] == WIDELY)
+            ended |= blends & (path.blend[own] == 1.0) & (path.tries[own] > MOST_LAST)
             ended &= ~failed
             size = np.where(underway | path.underway(own), 1.0, size)  # a step of other equations proves nothing
             if ended.any():

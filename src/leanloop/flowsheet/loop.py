@@ -79,7 +79,9 @@ class LoopRun:
                 for label, name in outlets.items():
                     state = wide(found[label].state, len(self.cases))
                     if not (np.isfinite(state.sum()) and state.min() >= 0.0):
-                        state = np.where(np.isfinite(state) & (state >= 0), state, 0.0)
+                        cold = plan.phases[name] == TWO_PHASE  # an enthalpy may be below zero
+                        kept = np.arange(state.shape[-1]) == state.shape[-1] - 2 if cold else False
+                        state = np.where(np.isfinite(state) & ((state >= 0) | kept), state, 0.0)
                     local.states[name] = state
         x = np.empty((len(self.cases), self.count))
         for tear in self.step.tears:

@@ -20,7 +20,7 @@ from leanloop.stream import Stream
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
 
-SOLVED_OUTPUT = (Status.converged, Status.out_of_reach, Status.off_table, Status.pass_limit)
+SOLVED_OUTPUT = (Status.converged, Status.out_of_reach, Status.temperature_cross, Status.off_table, Status.pass_limit)
 
 
 @dataclass

@@ -334,6 +334,12 @@ class Flowsheet:
                 off = off & solved(run.status)
                 run.status[off] = np.maximum(run.status[off], code(Status.off_table))
                 run.culprit[off] = self.plan.unit_number[name]
+            if hasattr(unit, "crosses"):  # what crosses on the way may come apart again: it is judged at the end
+                with np.errstate(all="ignore"):
+                    crossed = unit.crosses(*view.sides(name), view.numbers(name)) & solved(run.status)
+                worse = crossed & (run.status < code(Status.temperature_cross))
+                run.status[worse] = code(Status.temperature_cross)
+                run.culprit[worse] = self.plan.unit_number[name]
 
     def _trapped(self, run: Run) -> list[Fault]:
         """Set the status of cases in which a number, such as a bleed of zero, shuts the only way out."""

@@ -74,7 +74,9 @@ def find(case: Case) -> Circuit | str:
         return f"requirement {requirement.name} asks for nothing in the gas that {absorbers[0]} cleans"
     stripper = plan.units[strippers[0]]
     kinds = [f"reboiler.{key}" for key in ("duty", "boil_up", "stripping_ratio")]
-    boil = () if "gas_in" in stripper.inlets else tuple(f"units.{stripper.name}.{key}" for key in kinds if key in stripper.values.numbers)
+    boil: tuple[str, ...] = ()
+    if "gas_in" not in stripper.inlets:
+        boil = tuple(f"units.{stripper.name}.{key}" for key in kinds if key in stripper.values.numbers)
     return Circuit(absorbers[0], stripper.name, makeup, hold, _gas_flow(case, stripper.name, set(units)), boil, requirement)
 
 

@@ -219,11 +219,9 @@ def _together(case: Case, items: list[ColumnLimits]) -> list[ColumnLimits]:
         return [replace(item, why="the reboiler is run by its temperature, which has no least rate") for item in items]
     boiled = column.scaled.startswith("reboiler.")
     clean = case.state(column.unit.outlets[column.clean]).flows
+    wanted = [item.ends.y_lean * item.ends.gas if lean_first else item.ends.x_lean * item.ends.liquid for item in items]
     limits = np.array(
-        [
-            clean[place] if not item.ends.stated else item.ends.y_lean * item.ends.gas if lean_first else item.ends.x_lean * item.ends.liquid
-            for item, place in zip(items, places, strict=True)
-        ]
+        [own if item.ends.stated else clean[place] for item, place, own in zip(items, places, wanted, strict=True)]
     )
     out = []
     for item, place, limit, found in zip(

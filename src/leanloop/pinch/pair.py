@@ -245,7 +245,8 @@ class Pair:
                 method="bounded",
                 options={"xatol": 1e-8},
             )
-            found += [(float(np.exp(closer.x)), float(closer.fun)), (float(circulations[at]), self.outlet(float(circulations[at]))[0])]
+            here = float(circulations[at])
+            found += [(float(np.exp(closer.x)), float(closer.fun)), (here, self.outlet(here)[0])]
         good = [item for item in found if item[1] <= required]
         return min(good) if good else min(found, key=lambda item: item[1])
 

@@ -60,8 +60,8 @@ class Trials:
         for address in (self.circuit.steam or self.circuit.boil) if steam is not None else ():
             changes[address] = self._at(address) * steam
         for name, count in self.stages.items():
-            for key, value in stretched(self.numbers[name], count, count * times).items():
-                changes[f"units.{name}.{key}"] = value
+            for key, own in stretched(self.numbers[name], count, count * times).items():
+                changes[f"units.{name}.{key}"] = own
         return self.sheet.solve(changes)
 
     def values(self, quantity: Any, hold: np.ndarray, steam: np.ndarray | None = None, times: int = 1) -> np.ndarray:

@@ -15,8 +15,8 @@ from leanloop.components import Components
 from leanloop.entries import Context
 from leanloop.status import OK
 from leanloop.stream import Stream
-from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit, outlet_status
 from leanloop.units import column_entries
+from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit, outlet_status
 from leanloop.units.column_entries import COLUMN
 from leanloop.units.column_report import ColumnReport
 from leanloop.units.column_response import Response, inert_flows

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.column import tower_newton, tower_start
+from leanloop.column.start import split_fractions
 from leanloop.column.tower import (
     BOIL_UP,
     HEAT,
@@ -22,15 +23,14 @@ from leanloop.column.tower import (
     evaluate,
     residual,
 )
-from leanloop.column.start import split_fractions
 from leanloop.equilibrium.base import COMPLEX_STEP
 from leanloop.equilibrium.water import is_water, vapour_pressure
 from leanloop.status import OK, Status, code
 from leanloop.stream import TWO_PHASE, Stream, divide
 from leanloop.units.base import Evaluation, Numbers, outlet_status
+from leanloop.units.column_entries import balances_heat, stage_count
 from leanloop.units.column_inside import Inside
 from leanloop.units.warmth import heat_flow
-from leanloop.units.column_entries import balances_heat, stage_count
 
 if TYPE_CHECKING:
     from leanloop.units.column import Column
@@ -119,8 +119,10 @@ class TowerPart:
         form = Form(roles=self.roles(count), **self.form_of)
         total = len(form.roles)
         liquid = inlets["liquid_in"]
-        kind = np.result_type(*(stream.state for stream in inlets.values()), *(np.asarray(value) for key, value in numbers.items() if not isinstance(value, list)))
-        lead = np.broadcast_shapes(*(stream.state.shape[:-1] for stream in inlets.values()), *(np.shape(value) for value in numbers.values() if isinstance(value, np.ndarray)))
+        plain = [np.asarray(value) for value in numbers.values() if not isinstance(value, list)]
+        states = [stream.state for stream in inlets.values()]
+        kind = np.result_type(*states, *plain)
+        lead = np.broadcast_shapes(*(state.shape[:-1] for state in states), *(value.shape for value in plain))
         width = liquid.flows.shape[-1]
         fed = np.zeros((*lead, total, width), dtype=kind)
         heat = np.zeros((*lead, total), dtype=kind)
@@ -309,10 +311,9 @@ class TowerPart:
     ) -> tuple[dict[str, np.ndarray | None], np.ndarray]:
         """Give the derivatives of the outlets and of the unknowns: the equations in complex numbers, one step off."""
         step = 1j * COMPLEX_STEP
-        moved = {
-            label: Stream(stream.state + step * (np.zeros((seeds, 1, 1)) if tangents.get(label) is None else tangents[label]), stream.phase)
-            for label, stream in inlets.items()
-        }
+        still = np.zeros((seeds, 1, 1))
+        ways = {label: still if tangents.get(label) is None else tangents[label] for label in inlets}
+        moved = {label: Stream(stream.state + step * ways[label], stream.phase) for label, stream in inlets.items()}
         shifted = {**numbers, **{key: numbers[key] + step * way for key, way in number_tangents.items()}}
         tower = self.tower(moved, shifted)
         change = residual(tower, evaluate(tower, answer.at.unknowns)).imag / COMPLEX_STEP

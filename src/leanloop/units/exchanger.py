@@ -10,10 +10,9 @@ import numpy as np
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
 from leanloop.flash.mixture import Mixture
-from leanloop.status import OK, Status, code
 from leanloop.stream import TWO_PHASE, Stream, divide
 from leanloop.units import heating
-from leanloop.units.base import Evaluation, Inlet, Numbers, Scene, Surroundings, Unit
+from leanloop.units.base import Inlet, Numbers, Scene, Surroundings, Unit
 from leanloop.units.exchanger_side import Side, levelled
 from leanloop.units.exchanger_zones import Zones, of_area
 from leanloop.units.warmth import heat_addresses, heat_flow, need_heat
@@ -207,13 +206,6 @@ class Exchanger(Unit):
         """Give both outlets."""
         found, hot, cold = self.duty(inlets, numbers)
         return {"hot_out": hot.leaving(hot.energy - found), "cold_out": cold.leaving(cold.energy + found)}
-
-    def evaluate(self, inlets: Mapping[str, Stream], numbers: Numbers, *along: Any) -> Evaluation:
-        """Give the outlets and their derivatives; what would need heat to pass from cold to hot fails the case."""
-        found = super().evaluate(inlets, numbers, *along)
-        crossed = self.crosses(inlets, found.outlets, numbers)
-        found.status = np.where((found.status == OK) & crossed, code(Status.unit_failed), found.status)
-        return found
 
     def crosses(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers) -> np.ndarray:
         """Tell in which cases the temperatures cross, or heat would pass from cold to hot, (M,) bool."""

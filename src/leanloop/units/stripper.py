@@ -19,14 +19,17 @@ class Stripper(Column):
         """Give the columns of both kinds, and regenerators with reboiler and condenser."""
         air, _, _ = cls.warm_examples()
         tables, data, carriers = air.equilibrium, air.heat_data, air.components
-        liquid = {"liquid_in": Inlet("liquid", {"water": [15.0, 12.0], "a": [0.4, 0.3], "salt": [0.3, 0.2]}, [340.0, 350.0], 2e5)}
-        ports = {"liquid_in": "down", "gas_out": "top", "liquid_out": "bottom", "equilibrium": "here", "stages": 4, "pressure": 1.5e5}
+        rich = Inlet("liquid", {"water": [15.0, 12.0], "a": [0.4, 0.3], "salt": [0.3, 0.2]}, [340.0, 350.0], 2e5)
+        gas = Inlet("gas", {"air": [0.8, 0.5], "water": [0.0, 0.02]}, 340.0, 1.6e5)
+        liquid = {"liquid_in": rich}
+        ports = {"liquid_in": "down", "gas_out": "top", "liquid_out": "bottom", "equilibrium": "here"}
+        ports |= {"stages": 4, "pressure": 1.5e5}
         draw = {"stream": "taken", "flow": 0.2}
         return [
             *super().examples(),
             Scene(
                 {**ports, "gas_in": "up", "reboiler": {"boil_up": 0.15}, "condenser": {"temperature": 330.0}},
-                {**liquid, "gas_in": Inlet("gas", {"air": [0.8, 0.5], "water": [0.0, 0.02]}, 340.0, 1.6e5)}, carriers, tables, heat_data=data,
+                {**liquid, "gas_in": gas}, carriers, tables, heat_data=data,
             ),
             Scene(
                 {**ports, "reboiler": {"duty": 3e5}, "condenser": {"reflux_ratio": 0.5, "draw": draw}},
