@@ -194,7 +194,7 @@ class Loop:
         what, value = self.exchanger
         if what == "UA":  # log-mean difference, exact where both capacities are constant
             one, other = ends["hot_end"], ends["cold_end"]
-            law = duty / value * np.log(one / other) - (one - other)
+            law = duty / value - (one - other) / np.log(one / other)
         else:
             law = ends[what] - value
         rows.append(np.array([(given - duty) / energy, taken, law / 100]))

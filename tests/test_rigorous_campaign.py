@@ -112,14 +112,15 @@ def reboiled(rng, family):
                                       efficiency, near, reflux, tapped)
         except DeadEnd:
             continue
-        if 150 < T.min() and T.max() < 600:  # where the heat data mean something
+        if 150 < min(T.min(), *(feed[3] for feed in column.feeds)) and T.max() < 600:  # where the heat data mean something
             break
     ways = {"boil_up": v[-1].sum() / l[-1].sum(), "temperature": T[-1], "stripping_ratio": v[-1].sum() / column.liquid_fed}
     if column.reboiler[1] > 0:
         ways["duty"] = column.reboiler[1]
     what = str(rng.choice(list(ways)))
     change = {"reboiler": (what, float(ways[what]))}
-    if reflux and rng.random() < 0.5:
+    mixed = v[0].max() < 0.98 * v[0].sum()  # of an overhead that is all but pure, a temperature does not tell the reflux
+    if reflux and mixed and rng.random() < 0.5:
         change["condenser"] = ("temperature", T[0])
     return dataclasses.replace(column, **change)
 

@@ -35,6 +35,7 @@ from leanloop.units.warmth import heat_flow
 if TYPE_CHECKING:
     from leanloop.units.column import Column
 
+OVERHEAD = 0.8  # of what is volatile, at most guessed to leave as gas
 BOILING_HEAT = 4.0e4  # J/mol, to guess a boil-up
 DRY = 1e-9  # of the flow: a draw that leaves less leaves nothing
 
@@ -234,9 +235,11 @@ class TowerPart:
                 VAPOUR: spec,
                 TEMPERATURE: 0.3 * flow,
             }[role]
-            up = np.minimum(np.maximum(up, 1e-3 * flow), 0.9 * flow)
+            # of what boils up a part leaves at the top, no more than is volatile
+            share = 1.0 / (1.0 + tower.spec[:, 0]) if form.roles[0] == REFLUX else 0.5 if self.condenser else 1.0
+            up = np.minimum(np.maximum(up, 1e-3 * flow), OVERHEAD * mix.sum(axis=1) / share)
             gas += up[:, None]
-            liquid[:, -1] = np.maximum(liquid[:, -1] - up, 0.1 * flow)
+            liquid[:, -1] = np.maximum(liquid[:, -1] - share * up, 0.1 * flow)
         fraction = mix / np.maximum(still, tower_start.TINY)[:, None]
         temperature = top[:, None] + (bottom - top)[:, None] * np.arange(total) / max(total - 1, 1)
         if boils.any():
@@ -244,12 +247,12 @@ class TowerPart:
             temperature = np.where(boils, warm, temperature)
         if self.condenser:
             spec = tower.spec[:, 0]
-            back = spec * gas[:, 0] if form.roles[0] == REFLUX else 0.5 * gas[:, 0]
             if form.roles[0] == TEMPERATURE:
                 temperature[:, 0] = spec
-            back = np.minimum(back, 5 * gas[:, 0])
-            liquid += back[:, None]
-            gas[:, 1:] += back[:, None]
+            share = 1.0 / (1.0 + spec) if form.roles[0] == REFLUX else 0.5
+            back = (1.0 - share) * gas[:, 0]
+            liquid[:, :-1] += back[:, None]
+            gas[:, 0] -= back
         return temperature, np.maximum(gas, 1e-6 * still[:, None]), np.maximum(liquid, 1e-6 * still[:, None]), boils
 
     # --- solving
