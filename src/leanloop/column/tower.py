@@ -13,7 +13,7 @@ v = Y*(X) G on mole ratios (`leanloop.column.law`). Rows:
 
     heat        duty + heat of feeds + h(above) + H(below) - h - H = 0, or what is given in its place
     material    l(above) + v(below) + feed - l - v = 0             for each l
-    summation   a + b - sqrt(a^2 + b^2 + 2 c) = 0,  a = V / scale, b = 1 - sum of explicit gas flows / V, c = others / scale
+    summation   a + b - sqrt(a^2 + b^2 + 2 c) = 0,  a = V / scale, b = 1 - sum of y wanted, c = what stays a gas / scale
     gas         v - V ((1 - E) y(below) + E y*) = 0                for each w with an efficiency E
                 v(below) + feed - v = 0                            for each w that stays in the gas
 
@@ -339,12 +339,13 @@ def summation(tower: Tower, at: State) -> tuple[np.ndarray, ...]:
     """Evaluate the summation rows, and what their derivatives need: a, b, the root and the scale, (..., M, S) each."""
     form = tower.form
     scale = (0.5 * np.real(tower.fed).sum(axis=(-1, -2)) + TINY)[..., None]
-    explicit = ~form.murphree
-    if form.law.plain:
-        b = 1.0 - (at.wanted * explicit).sum(axis=-1)
-    else:
-        b = 1.0 - (at.equilibrium * explicit).sum(axis=-1) / at.total_gas
-    others = at.gas[..., form.gas_only].sum(axis=-1) + at.gas[..., form.places[form.murphree]].sum(axis=-1)
+    fractions = at.wanted if form.law.plain else at.equilibrium / at.total_gas[..., None]
+    b = 1.0 - (fractions * ~form.murphree).sum(axis=-1)
+    if form.murphree.any():
+        e = tower.efficient()
+        under = below(tower, at)[..., form.murphree]
+        b = b - ((1.0 - e) * under + e * fractions[..., form.murphree]).sum(axis=-1)
+    others = at.gas[..., form.gas_only].sum(axis=-1)
     a = at.total_gas / scale
     root = np.sqrt(a * a + b * b + 2.0 * others / scale + TINY)
     return scale * (a + b - root), a, b, root, scale

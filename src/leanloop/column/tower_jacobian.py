@@ -139,13 +139,15 @@ def blocks(tower: Tower, sloped: Sloped) -> Blocks:
     up[..., 1:last] = rising[..., falling]
     _, a, b, root, scale = summation(tower, at)
     d_a = d_v / scale[..., None]
-    if law.plain:
-        d_b = -(d_y * explicit).sum(axis=-1)
-    else:
-        d_e = (d_eq * explicit).sum(axis=-1) - ((at.equilibrium * explicit).sum(axis=-1) / at.total_gas)[..., None] * d_v
-        d_b = -d_e / at.total_gas[..., None]
+    d_f = d_y
+    if not law.plain:
+        fractions = at.equilibrium / at.total_gas[..., None]
+        d_f = (d_eq - fractions[:, :, None, :] * d_v[:, None]) / at.total_gas[..., None, None]
+    weight = np.ones(at.wanted.shape)
+    weight[..., form.murphree] = tower.efficient()
+    d_b = -(d_f * weight[:, :, None, :]).sum(axis=-1)
     kept = np.zeros(d_liquid.shape[1])
-    kept[implicit] = 1.0
+    kept[form.gas_only] = 1.0
     d_c = (d_gas @ kept) / scale[..., None]
     pull = (a[..., None] * d_a + b[..., None] * d_b + d_c) / root[..., None]
     own[..., last] = scale[..., None] * (d_a + d_b - pull)
@@ -162,6 +164,8 @@ def blocks(tower: Tower, sloped: Sloped) -> Blocks:
             ..., None, None
         ]
         up[:, 1:, :, rows] = -(1.0 - e[:, :-1]) * at.total_gas[:, :-1, None, None] * d_under
+        d_above = -((1.0 - e[:, :-1]) * d_under).sum(axis=-1)
+        up[:, 1:, :, last] = (scale * (1.0 - b / root)[:, :-1])[..., None] * d_above
     if form.draws_gas:
         rows = slice(last + 1 + len(murphree), n)
         own[..., rows] = -d_gas[..., form.gas_only]

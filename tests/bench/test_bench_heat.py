@@ -1,0 +1,141 @@
+"""Counts and speed of a closed loop with heat: 20 + 20 stages, exchanger, reboiler and condenser.
+
+The counts are exact and asserted; of the ratios, medians of interleaved turns, the aims are asserted; seconds are only
+printed. Run with ``python -m pytest -m bench tests/bench -s``, alone on a quiet machine, with OPENBLAS_NUM_THREADS=1.
+The peer is every equation of the flowsheet at once in `scipy.optimize.root(method="hybr")`, vectorised numpy without a
+Python loop over stages or components.
+"""
+
+import sys
+import time
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+HERE = Path(__file__).resolve().parent
+sys.path[:0] = [str(HERE), str(HERE.parent)]
+
+import loop_files
+
+from leanloop.column import tower_newton
+
+TURNS = 5
+PASSES = 7
+STEPS = 40
+pytestmark = pytest.mark.bench
+
+
+@pytest.fixture
+def loop():
+    return loop_files.acid_gas(stages=(20, 20))
+
+
+@pytest.fixture
+def sheet(loop, tmp_path):
+    return loop_files.read(loop, tmp_path)
+
+
+class Counted:
+    """`tower_newton.solve` that writes down its Newton steps, plain and on a safeguarded path, by stages of the column."""
+
+    def __init__(self, monkeypatch):
+        self.plain, self.filled, self.calls = {}, {}, {}
+        real = tower_newton.solve
+
+        def solve(tower, *given, **named):
+            answer = real(tower, *given, **named)
+            key = answer.unknowns.shape[1]
+            self.plain[key] = self.plain.get(key, 0) + answer.iterations - answer.filled
+            self.filled[key] = self.filled.get(key, 0) + answer.filled
+            self.calls[key] = self.calls.get(key, 0) + 1
+            return answer
+
+        monkeypatch.setattr(tower_newton, "solve", solve)
+
+
+def duties(count):
+    return np.linspace(14.5e3, 17.5e3, count)
+
+
+def test_passes_and_newton_steps(loop, sheet, monkeypatch, capsys):
+    counted = Counted(monkeypatch)
+    result = sheet.solve()
+    assert result.status == "converged"
+    assert set(counted.plain) == {loop.wash.n, loop.strip.n}
+    with capsys.disabled():
+        print(f"\n20 + 20 stages with heat: {result['loop.passes']} passes; by equilibrium stages {counted.plain} Newton steps, "
+              f"{counted.filled} more on a safeguarded path, in {counted.calls} evaluations")
+    assert result["loop.passes"] <= PASSES
+    for stages, steps in counted.plain.items():
+        assert steps <= STEPS, stages
+
+
+def test_a_batch_takes_no_more_passes(sheet):
+    batch = sheet.solve({"units.strip.reboiler.duty": duties(200)})
+    assert set(batch.status) == {"converged"}
+    assert batch["loop.passes"].max() <= PASSES
+
+
+def timed(call):
+    begin = time.perf_counter()
+    call()
+    return time.perf_counter() - begin
+
+
+def test_batch_against_single(sheet, capsys):
+    cases = 200
+    many = lambda: sheet.solve({"units.strip.reboiler.duty": duties(cases)})  # noqa: E731
+    sheet.solve(), many()
+    turns = [(timed(sheet.solve), timed(many)) for _ in range(TURNS)]
+    one, batch = np.median(turns, axis=0)
+    with capsys.disabled():
+        print(f"\nsingle {one * 1e3:.1f} ms, batch of {cases} {batch / cases * 1e3:.2f} ms a case ({one * cases / batch:.1f} times faster)")
+    assert one * cases / batch >= 5.0
+
+
+def cold_start(loop):
+    """What a user would guess without any solution: temperatures in a straight line, all flows those fed, solutes spread."""
+    fed, small = loop.flow, 0.01 * loop.flow
+    lean = np.zeros(loop.C)
+    for place, value in loop.hold.items():
+        lean[place] = value
+    moves = ~loop.m.in_gas & ~loop.m.in_liquid
+    cool, hot = loop.cool, 380.0
+    liquid = lean + np.where(moves & (lean == 0), small, 0)
+    solutes = np.where(moves, 0.1 * loop.gas[0].sum() * np.where(loop.gas[0] > 0, 1, 0) / moves.sum(), 0)
+    profiles = {
+        "wash": (np.tile(liquid, (loop.wash.n, 1)), np.tile(loop.gas[0], (loop.wash.n, 1)), np.full(loop.wash.n, cool)),
+        "strip": (np.tile(liquid, (loop.strip.n, 1)), np.tile(solutes, (loop.strip.n, 1)), np.full(loop.strip.n, hot)),
+    }
+    profiles["strip"][2][0] = loop.strip.condenser
+    streams = {"warm_lean": (liquid, cool + 8), "warm_rich": (liquid, hot - 8), "cool_lean": (liquid, cool)}
+    capacity = liquid @ loop.m.cp_liquid
+    results = {"swap.duty_W": capacity * (hot - cool - 8)} | {f"top_up.added_mol_s.{loop.names[p]}": 0.01 * fed[p] for p in loop.hold}
+    return loop.start(profiles, streams, results)
+
+
+def test_against_root(loop, sheet, capsys):
+    """From a cold start, and from leanloop's answer moved by 3 % where that does not lead to the answer."""
+    result = sheet.solve()
+    answer = loop_files.start(loop, result)
+    told = []
+    with np.errstate(all="ignore"):
+        for name, start in (("a cold start", cold_start(loop)), ("the answer moved by 3 %", loop.perturbed(answer, 7)),
+                            ("the answer moved by 0.3 %", loop.perturbed(answer, 7, 0.003))):
+            begin = time.perf_counter()
+            found, residual = loop.find(start)
+            seconds = time.perf_counter() - begin
+            gap = np.abs(found - answer)[: -loop.C].max() / loop.flow.sum() if residual < 1e-8 else np.inf
+            told.append((name, seconds, residual, gap))
+    sheet.solve()
+    one = np.median([timed(sheet.solve) for _ in range(TURNS)])
+    with capsys.disabled():
+        for name, seconds, residual, _ in told:
+            state = "converged" if residual < 1e-8 else f"did not converge, residual {residual:.1e}"
+            print(f"\nroot on {answer.size} equations from {name}: {seconds:.2f} s, {state}; single {one * 1e3:.1f} ms "
+                  f"({seconds / one:.0f} times faster)")
+    ended = [item for item in told if item[2] < 1e-8]
+    assert ended, "root converged from no start, so that there is nothing to compare with"
+    assert ended[0][3] < 1e-5
+    assert ended[0][1] / one >= 10.0
