@@ -108,8 +108,8 @@ class Loop:
         self.names = [s.name for s in wash]
         self.m, self.C = Mixture(wash), len(wash)
         self.wash = Tower(self.m, levels(stages[0], pressure))
-        kettle = reboiler is not None
-        self.strip = Tower(Mixture(strip), levels(stages[1], strip_pressure, drop, condenser is not None, kettle), condenser, reboiler)
+        pressures = levels(stages[1], strip_pressure, drop, condenser is not None, reboiler is not None)
+        self.strip = Tower(Mixture(strip), pressures, condenser, reboiler)
         self.fed_at = int(condenser is not None)
         self.gas, self.steam = gas, steam
         self.exchanger, self.hold, self.cool = exchanger, hold, cool

@@ -104,7 +104,8 @@ def answer(result, names):
     results = {}
     for unit, item in told["units"].items():
         for key, value in item["results"].items():
-            results |= {f"{unit}.{key}.{c}": own for c, own in value.items()} if isinstance(value, dict) else {f"{unit}.{key}": value}
+            several = value if isinstance(value, dict) else {None: value}
+            results |= {f"{unit}.{key}" + (f".{c}" if c else ""): own for c, own in several.items()}
     return streams, results
 
 

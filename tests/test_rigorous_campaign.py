@@ -203,3 +203,21 @@ def test_campaign(tmp_path):
     print("dry", sorted(dry), "failed", failed)
     assert not wrong, wrong
     assert len(failed) <= 0.001 * (len(CAMPAIGN) - len(dry)), failed
+
+
+def test_huge_internal_flows_are_no_answer(tmp_path):
+    """Both ends at a temperature: the answer has 1 to 6 mol/s inside; a search that runs off to hundreds has not solved it."""
+    ten = np.log(10)
+    items = [
+        Species("s0", None, 17.75963006015751 * ten, 3703.2443946446997 * ten, 0.0, 337.65346260214216, 255.3514482608581,
+                61732.65824505),
+        Species("s1", None, 15.28630504656401 * ten, 2949.320343618957 * ten, 0.0, 130.0905794022538, 73.6327660757845,
+                56733.213554880036, 273.15),
+        Species("oil", "liquid", cp_liquid=348.94949239898955),
+    ]  # fmt: skip
+    fed = [1.2148919174209443, 0.047514158725756345, 0.8264936136410257]
+    column = Column(items, 2, [(1, "liquid", fed, 263.2715454298786)], 9.8e5,
+                    condenser=("temperature", 314.7465433771021), reboiler=("temperature", 336.88575547819653))  # fmt: skip
+    status, flaws, _ = tried(column, tmp_path)
+    assert not flaws, flaws
+    assert status == "converged"

@@ -39,6 +39,8 @@ def pair(request, tmp_path_factory):
 
 
 class TestIndependent:
+    """Streams, duties and profiles against the independent unknowns."""
+
     def test_streams(self, pair):
         loop, result, unknowns = pair
         theirs, _ = loop.states(unknowns)
@@ -74,8 +76,8 @@ def sheets(request, tmp_path_factory):
     """A loop whose exchanger boils the rich liquid, and its results by the streams torn."""
     folder = tmp_path_factory.mktemp("flash")
     loop = loop_files.acid_gas(exchanger=request.param, flash=0.9e5)
-    choices = (["warm_rich", "cool_lean"], ["warm_rich", "warm_lean"], ["rich", "warm_rich"], ["rich", "lean"], ["lean", "cool_lean"])
-    return loop, [(tears, loop_files.read(loop, folder, tears).solve()) for tears in choices]
+    choices = ("warm_rich cool_lean", "warm_rich warm_lean", "rich warm_rich", "rich lean", "lean cool_lean")
+    return loop, [(tears.split(), loop_files.read(loop, folder, tears.split()).solve()) for tears in choices]
 
 
 class TestTwoPhaseTear:
@@ -89,7 +91,8 @@ class TestTwoPhaseTear:
             assert set(result["loop.tears"]) == set(tears)
             streams, _ = loop_files.answer(result, loop.names)
             for name, (flows, temperature) in streams.items():
-                np.testing.assert_allclose(flows, first[name][0], rtol=1e-8, atol=1e-12 * loop.flow.sum(), err_msg=f"{tears} {name}")
+                floor = 1e-12 * loop.flow.sum()
+                np.testing.assert_allclose(flows, first[name][0], rtol=1e-8, atol=floor, err_msg=f"{tears} {name}")
                 assert temperature == pytest.approx(first[name][1], rel=1e-9), (tears, name)
 
     def test_it_is_of_two_phases(self, sheets):
@@ -115,22 +118,26 @@ def same(one, other, scale=1.0, tolerance=1e-8):
     for name in other.to_dict()["streams"]:
         mine, theirs = one.stream(name), other.stream(name)
         np.testing.assert_allclose(mine.flows / scale, theirs.flows, rtol=tolerance, atol=1e-13 * total, err_msg=name)
-        np.testing.assert_allclose([mine.temperature, mine.pressure], [theirs.temperature, theirs.pressure], rtol=tolerance, err_msg=name)
+        assert mine.temperature == pytest.approx(theirs.temperature, rel=tolerance), name
+        assert mine.pressure == pytest.approx(theirs.pressure, rel=tolerance), name
 
 
 @pytest.mark.parametrize("name", SHEETS)
 class TestLaws:
+    """What holds of every example with heat."""
+
     def test_energy_closes(self, name, solved):
         told = solved[name].to_dict()["balance"]["energy"]
         assert abs(told["closure"]) <= 1e-9
-        assert told["in_W"] + told["duties_W"] == pytest.approx(told["out_W"], abs=1e-7 * (abs(told["in_W"]) + abs(told["duties_W"])))
+        assert told["in_W"] + told["duties_W"] == pytest.approx(told["out_W"], abs=1e-9 * abs(told["duties_W"]))
 
     def test_duties_of_the_balance_are_those_of_the_units(self, name, solved):
         told = solved[name].to_dict()
         total = 0.0
-        for unit, item in told["units"].items():
+        keys = ("duty_W", "power_W", "reboiler_duty_W", "condenser_duty_W")
+        for item in told["units"].values():
             if item["kind"] != "exchanger":  # what its cold side gains, its hot side loses
-                total += sum(item["results"].get(key) or 0.0 for key in ("duty_W", "power_W", "reboiler_duty_W", "condenser_duty_W"))
+                total += sum(item["results"].get(key) or 0.0 for key in keys)
         assert told["balance"]["energy"]["duties_W"] == pytest.approx(total, rel=1e-9)
 
     def test_scaling_all_flows_and_duties(self, name, solved):
@@ -149,14 +156,15 @@ class TestLaws:
 
 @pytest.mark.parametrize("name", CLOSED)
 class TestClosed:
+    """What holds of the examples with a closed loop."""
+
     def test_passes(self, name, solved):
         assert solved[name]["loop.passes"] <= 7
 
-    @pytest.mark.parametrize("tears", ({"lean", "rich"}, {"warm_rich", "warm"}, {"rich", "hot_rich"}), ids=lambda item: "-".join(sorted(item)))
+    @pytest.mark.parametrize("tears", ("lean rich", "rich hot_rich", "exchanger"))
     def test_answer_does_not_depend_on_the_tears(self, name, tears, solved):
-        warm = {"sulfur_dioxide_loop": "warm_lean", "wash_oil_pair": "warm_oil"}[name]
-        cold = {"sulfur_dioxide_loop": "hot_rich", "wash_oil_pair": "warm_rich"}[name]
-        chosen = sorted({"warm": warm, "warm_rich": cold}.get(tear, tear) for tear in tears)
+        outlets = {"sulfur_dioxide_loop": "warm_lean hot_rich", "wash_oil_pair": "warm_oil warm_rich"}[name]
+        chosen = (outlets if tears == "exchanger" else tears).split()
         result = leanloop.read(FOLDER / f"{name}.toml", [f"loop.tears={chosen!r}"]).solve()
         assert set(result["loop.tears"]) == set(chosen)
         assert result["loop.passes"] <= 7
@@ -170,7 +178,7 @@ class TestClosed:
 
     @pytest.mark.parametrize("seed", range(3))
     def test_answer_does_not_depend_on_the_start(self, name, seed, solved, monkeypatch):
-        """The first guess of the torn streams is moved by up to 40 %, its temperatures by up to 8 %; freed inputs start elsewhere."""
+        """The first guess of the torn streams is moved by up to 40 %, its temperatures by 8 %; freed inputs start elsewhere."""
         rng = np.random.default_rng(seed)
         starts = []
         real = loop_module.LoopRun._start
@@ -182,7 +190,59 @@ class TestClosed:
             return x * (1 + share * rng.uniform(-1, 1, x.shape))
 
         monkeypatch.setattr(loop_module.LoopRun, "_start", moved)
-        freed = {"sulfur_dioxide_loop": ("units.strip.reboiler.duty", 4.1e6), "wash_oil_pair": ("units.top_up.hold.oil", 15.0)}[name]
-        result = leanloop.read(FOLDER / f"{name}.toml").solve(dict([freed]))
+        freed = {"sulfur_dioxide_loop": {"units.strip.reboiler.duty": 4.1e6}, "wash_oil_pair": {"units.top_up.hold.oil": 15.0}}
+        result = leanloop.read(FOLDER / f"{name}.toml").solve(freed[name])
         assert starts
         same(result, solved[name])
+
+
+class TestColdReboiled:
+    """A reboiled stripper fed cold: where the duty only warms the liquid, and a batch from there to where it boils."""
+
+    FLOWS = {"SO2": 0.009, "CO2": 1e-5, "water": 4.2, "salt": 0.19}
+
+    def sheet(self, folder, warm=340.0, duty=5e3, condenser=True):
+        loop = loop_files.acid_gas()
+        tables = loop_files.tables(loop)
+        flows = {name: f"{flow} mol/s" for name, flow in self.FLOWS.items()}
+        tables["feeds"] = {"rich": {"phase": "liquid", "temperature": f"{warm} K", "pressure": "2 bar", "flows": flows}}
+        tables["units"] = {"strip": tables["units"]["strip"] | {"liquid_in": "rich", "reboiler": {"duty": f"{duty} W"}}}
+        if not condenser:
+            del tables["units"]["strip"]["condenser"]
+        return loop, loop_files.columns.read(tables, folder)
+
+    @pytest.mark.parametrize("condenser", (True, False), ids=("condenser", "no condenser"))
+    @pytest.mark.parametrize("warm", (315.0, 340.0))
+    @pytest.mark.parametrize("duty", (2e3, 5e3))
+    def test_nothing_boils(self, condenser, warm, duty, tmp_path):
+        """No overhead, and a liquid warmer by duty over heat capacity."""
+        loop, sheet = self.sheet(tmp_path, warm, duty, condenser)
+        given = np.array([self.FLOWS.get(name, 0.0) for name in loop.names])
+        T = warm + duty / (given @ loop.m.cp_liquid)
+        volatile = ~loop.m.in_gas & ~loop.m.in_liquid
+        bubble = (given / given.sum() * loop.m.pressures(np.array(T)))[volatile].sum()
+        assert bubble < 0.97 * loop.strip.P[0]  # below the bubble point everywhere
+        result = sheet.solve()
+        assert result.status == "converged"
+        assert result["streams.overhead.total_mol_s"] == pytest.approx(0.0, abs=1e-12)
+        np.testing.assert_allclose(result.stream("lean").flows, given, rtol=1e-10)
+        assert result["streams.lean.temperature_K"] == pytest.approx(T, rel=1e-10)
+
+    def test_cases_do_not_disturb_each_other(self, tmp_path):
+        _, sheet = self.sheet(tmp_path)
+        warm, duty = (item.ravel() for item in np.meshgrid([315.0, 325.0], np.linspace(1e3, 30e3, 30), indexing="ij"))
+        batch = sheet.solve({"feeds.rich.temperature": warm, "units.strip.reboiler.duty": duty})
+        alone = [sheet.solve({"feeds.rich.temperature": T, "units.strip.reboiler.duty": Q}) for T, Q in zip(warm, duty)]
+        assert list(batch.status) == [result.status for result in alone]
+        totals = np.array([result["streams.overhead.total_mol_s"] for result in alone])
+        np.testing.assert_allclose(batch["streams.overhead.total_mol_s"], totals, rtol=1e-8, atol=1e-11)
+
+
+class TestRequirementBesideLostCases:
+    """The emission asked for lies between a duty that is solved and duties of which some may not be."""
+
+    def test_weak_exchanger(self):
+        file = leanloop.read(FOLDER / "sulfur_dioxide_loop.toml", ["units.swap.approach.least=60 K"])
+        result = file.solve()
+        assert result.status == "converged", result["requirements.emission.reason"]
+        assert result["streams.cleaned.mg_per_Nm3_dry.SO2"] == pytest.approx(400.0, rel=1e-8)

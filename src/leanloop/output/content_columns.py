@@ -67,11 +67,20 @@ def _circulation(result: Result, data: dict[str, Any], units: list[str]) -> list
         for solute in data["units"][name]["results"]["removal"]:
             if solute in names:
                 continue
-            low, high = (data["streams"][stream]["loading"][solute] for stream in (lean, rich))
+            low, high = (_loading(result, data["streams"][stream], solute) for stream in (lean, rich))
             change = None if low is None or high is None else high - low
             rows.append([solute, number(low), number(high), number(change)])
         parts.append(Table(["loading, mol/mol", "lean", "rich", "cyclic capacity"], rows, f"Loadings at {name}", level=2))
     return parts
+
+
+def _loading(result: Result, stream: dict[str, Any], solute: str) -> float | None:
+    """Give a loading, of gas and liquid together where a stream has both."""
+    if "loading" in stream:
+        return stream["loading"][solute]
+    names, solvents = result.sheet.components.names, np.flatnonzero(result.sheet.bases.loading)
+    basis = sum(stream["mol_s"][names[place]] or 0.0 for place in solvents)
+    return (stream["mol_s"][solute] or 0.0) / basis if basis else None
 
 
 def _exchange(result: Result, data: dict[str, Any], units: list[str]) -> list[Sentence]:
@@ -210,7 +219,7 @@ def _span(profile: dict[str, Any]) -> str | None:
 
 
 def _places(unit: Unit, profile: dict[str, Any]) -> list[tuple[int, str]]:
-    """Give the stages to show, with their labels: both ends, condenser, reboiler, and the hottest where it lies inside."""
+    """Give the stages to show, with their labels: condenser, both ends, reboiler; hottest and coldest where they lie inside."""
     count = len(profile["stage"])
     first, last = int("condenser" in unit.values.words), count - 1 - int("reboiler" in unit.values.words)
     labels = {last: f"stage {profile['stage'][last]} (bottom)", first: f"stage {profile['stage'][first]} (top)"}
@@ -220,7 +229,7 @@ def _places(unit: Unit, profile: dict[str, Any]) -> list[tuple[int, str]]:
         labels[count - 1] = "reboiler"
     if _span(profile) is not None:
         warm = profile["temperature_K"]
-        hottest = int(np.argmax(warm))
-        if warm[hottest] > max(warm[place] for place in labels) + SHOWN:
-            labels[hottest] = f"stage {profile['stage'][hottest]} (hottest)"
+        for place, word, sign in ((int(np.argmax(warm)), "hottest", 1), (int(np.argmin(warm)), "coldest", -1)):
+            if min(sign * (warm[place] - warm[end]) for end in labels) > SHOWN:
+                labels[place] = f"stage {profile['stage'][place]} ({word})"
     return sorted(labels.items())

@@ -24,6 +24,7 @@ from leanloop.pictures.base import (
     short,
     style,
 )
+from leanloop.units.column_entries import balances_heat
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -78,6 +79,8 @@ def figure(result: Result, unit: str, case: int | None = None) -> Figure:
     note = f"{kind} of {count} equilibrium {'stage' if count == 1 else 'stages'}"
     if ends:
         note += f", a {' and a '.join(ends)}"
+    if balances_heat(result.sheet.plan.units[unit].values):
+        note += ", adiabatic"
     if not len(known):
         note += ", not solved"
     elif panels == 3:
@@ -155,6 +158,8 @@ def _fractions(
         low = max(positive.min(), high / MOST_DECADES)
         stretch = (high / low) ** 0.06
         log_axis(axes.xaxis, low / stretch, high * stretch)
+        for line in lines:  # what falls below the axis runs into its edge and ends there
+            line.set_clip_on(bool(positive.min() < low))
     else:
         linear_axis(axes.xaxis, 0.0, 1.08 * positive.max() if len(positive) else 1.0, 4)
     axes.set_xlabel(label)
