@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from leanloop.column.tower import Form, State, Tower, beyond, residual
+from leanloop.column.tower import Form, State, Tower, beyond, evaluate, residual
 from leanloop.column.tower_jacobian import Sloped, TowerJacobian, blocks
 from leanloop.column.tower_path import BLENDING, FILLING, PLAIN, WIDELY, Path
 from leanloop.column.tower_start import COLDEST, HOTTEST
@@ -211,6 +211,9 @@ def _iterate(
             bend = np.maximum(size / np.maximum(before**2, TINY), 1e-2)
             if (size <= np.maximum(DONE, np.sqrt(LEFT / bend))).all():
                 tower.blend = None
+                if (merit > SETTLED).any():  # small steps of huge flows within the column are no answer
+                    left = np.abs(residual(tower, evaluate(tower, unknowns))).max(axis=(1, 2)) / scale
+                    status[(status == OK) & ~(left <= SETTLED)] = code(Status.stages_unsolved)
                 if (sharp and size.max(initial=0.0) > SHARP) or underway.any():  # derivatives are taken at the answer itself
                     sloped = Sloped(tower, unknowns)
                     content = blocks(tower, sloped)

@@ -8,7 +8,6 @@ import numpy as np
 
 from leanloop.output.content import PER_HOUR, Part, Section, Sentence, Table, celsius, hourly, number
 from leanloop.output.content_heat import degrees
-from leanloop.units.column_entries import balances_heat
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
@@ -159,7 +158,7 @@ def _kind(result: Result, unit: Unit, found: dict[str, Any], profile: dict[str, 
     stages = f"{count} equilibrium stages" if count > 1 or result.sheet.heat is None else "1 equilibrium stage"
     if "hetp" in numbers:
         stages += f" ({number(_one(numbers['height']), 3)} m of packing at {number(_one(numbers['hetp']), 3)} m a stage)"
-    if balances_heat(unit.values):
+    if unit.wants_heat:
         if ends:
             stages += f", a {' and a '.join(ends)}"
         stages += f", adiabatic, {_span(profile) or degrees(profile['temperature_K'][0])} degC"

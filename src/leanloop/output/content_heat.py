@@ -8,7 +8,6 @@ import numpy as np
 
 from leanloop.flowsheet.balance import energy_why
 from leanloop.output.content import PER_HOUR, Section, Sentence, Table, celsius, number
-from leanloop.units.column_entries import balances_heat
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
@@ -97,7 +96,7 @@ def _column(name: str, unit: Unit, data: dict[str, Any]) -> list[list[str]]:
     rows = []
     if found.get("condenser_duty_W") is not None:
         rows.append([name, "condenser", kilowatts(found["condenser_duty_W"]), degrees(warm[0])])
-    if not balances_heat(unit.values):
+    if not unit.wants_heat:
         if found["duty_W"] is not None:
             rows.append([name, "stages, to hold their temperature", kilowatts(found["duty_W"]), degrees(warm[0])])
     elif found["duty_W"] is not None:
@@ -216,7 +215,7 @@ def heat_cautions(result: Result) -> list[str]:
     out = []
     if not _known(data["balance"]["energy"]):
         own = [(data["units"][name], unit) for name, unit in sheet.plan.units.items()]
-        balanced = any("profile" in item and balances_heat(unit.values) for item, unit in own)
+        balanced = any("profile" in item and unit.wants_heat for item, unit in own)
         if not balanced and not any(_known(item["results"].get(key)) for item, unit in own for key in unit.draws_heat):
             return [NO_HEAT]
         out.append(f"Energy is not balanced over the whole flowsheet: {_why(result)}.")

@@ -24,7 +24,6 @@ from leanloop.pictures.base import (
     short,
     style,
 )
-from leanloop.units.column_entries import balances_heat
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -79,7 +78,7 @@ def figure(result: Result, unit: str, case: int | None = None) -> Figure:
     note = f"{kind} of {count} equilibrium {'stage' if count == 1 else 'stages'}"
     if ends:
         note += f", a {' and a '.join(ends)}"
-    if balances_heat(result.sheet.plan.units[unit].values):
+    if result.sheet.plan.units[unit].wants_heat:
         note += ", adiabatic"
     if not len(known):
         note += ", not solved"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -36,6 +37,7 @@ if TYPE_CHECKING:
     from leanloop.units.column import Column
 
 OVERHEAD = 0.8  # of what is volatile, at most guessed to leave as gas
+WARM = 350.0  # K, where nothing better is known
 BOILING_HEAT = 4.0e4  # J/mol, to guess a boil-up
 DRY = 1e-9  # of the flow: a draw that leaves less leaves nothing
 
@@ -230,7 +232,7 @@ class TowerPart:
             spec, role = tower.spec[:, -1], form.roles[-1]
             flow = liquid[:, -1]
             up = {
-                HEAT: np.maximum(spec, 0.0) / BOILING_HEAT,
+                HEAT: np.maximum(spec, 0.0) / self.boiling_heat(tower),
                 BOIL_UP: spec / (1 + spec) * flow,
                 VAPOUR: spec,
                 TEMPERATURE: 0.3 * flow,
@@ -239,6 +241,7 @@ class TowerPart:
             share = 1.0 / (1.0 + tower.spec[:, 0]) if form.roles[0] == REFLUX else 0.5 if self.condenser else 1.0
             up = np.minimum(np.maximum(up, 1e-3 * flow), OVERHEAD * mix.sum(axis=1) / share)
             gas += up[:, None]
+            gas[:, : ahead + 1] -= self.condensed(tower, inlets, numbers, up)[:, None]
             liquid[:, -1] = np.maximum(liquid[:, -1] - share * up, 0.1 * flow)
         fraction = mix / np.maximum(still, tower_start.TINY)[:, None]
         temperature = top[:, None] + (bottom - top)[:, None] * np.arange(total) / max(total - 1, 1)
@@ -254,6 +257,30 @@ class TowerPart:
             liquid[:, :-1] += back[:, None]
             gas[:, 0] -= back
         return temperature, np.maximum(gas, 1e-6 * still[:, None]), np.maximum(liquid, 1e-6 * still[:, None]), boils
+
+    def boiling_heat(self, tower: Tower, warm: np.ndarray | None = None) -> np.ndarray:
+        """Give a mean heat of boiling of what is fed, (M,) J/mol."""
+        if not self.known:
+            return np.full(len(tower.fed), BOILING_HEAT)
+        form = tower.form
+        warm = np.full(len(tower.fed), WARM) if warm is None else warm
+        mix = tower.fed[..., form.places].sum(axis=1)
+        gap = form.gas_enthalpy(warm, tower.heat_numbers) - form.liquid_enthalpy(warm, tower.heat_numbers)
+        mean = (mix * gap[..., form.places]).sum(axis=1) / np.maximum(mix.sum(axis=1), tower_start.TINY)
+        return np.clip(np.where(np.isfinite(mean), mean, BOILING_HEAT), 5e3, 2e5)
+
+    def condensed(self, tower: Tower, inlets: Mapping[str, Stream], numbers: Numbers, up: np.ndarray) -> np.ndarray:
+        """Give how much of a boil-up condenses to warm the liquid fed at the top, (M,) mol/s; negative where that flashes."""
+        stream, form = inlets["liquid_in"], tower.form
+        if not self.known:
+            return np.zeros(len(up))
+        fraction = divide(stream.flows, stream.total[..., None])[:, None, form.places]
+        place = slice(int(self.condenser), int(self.condenser) + 1)
+        few = replace(tower, pressure=tower.pressure[:, place])
+        warm = tower_start.boiling(few, _warmth(stream)[:, None], np.nan_to_num(fraction), np.zeros((len(up), 1)))[:, 0]
+        hot = (stream.flows * form.liquid_enthalpy(warm, tower.heat_numbers)).sum(axis=-1)
+        need = (hot - self.enthalpy_of(stream, numbers)) / self.boiling_heat(tower, warm)
+        return np.clip(np.nan_to_num(need), -0.5 * stream.total, 0.9 * up)
 
     # --- solving
 
