@@ -357,6 +357,17 @@ class TestHeat:
         assert row[:2] == ["CO2", "strip"]
         assert [float(cell) for cell in row[2:]] == pytest.approx([1.8, 600 / 0.5, 0.6 / 0.5 / 0.04401], rel=1e-4)
 
+    def test_vapour_of_the_solvent_is_no_solute(self, tmp_path):
+        path = tmp_path / "open.toml"
+        text = STRIPPER.replace('condenser = { temperature = "40 degC" }', "").replace('salt = "5 mol/s"', 'salt = "20 mol/s"')
+        path.write_text(text, encoding="utf-8")
+        result = leanloop.read(path).solve()
+        data = result.to_dict()
+        total = {name: data["streams"][name]["total_mol_s"] for name in ("rich", "lean")}
+        # with salt in it water goes by a larger part than the liquid as a whole
+        assert data["units"]["strip"]["results"]["removal"]["water"] > 1 - total["lean"] / total["rich"] > 0.04
+        assert [row[0] for row in rows(block(result, "Heat"), "reboiler duty per")] == ["CO2"]
+
     def test_no_duty_per_mass_without_a_molar_mass(self, tmp_path):
         path = tmp_path / "bare.toml"
         path.write_text(STRIPPER.replace('CO2 = { molar_mass = "44.01 g/mol" }', "CO2 = {}"), encoding="utf-8")
@@ -412,6 +423,28 @@ class TestEnergyBalance:
         result = leanloop.read(paths["half"], ['units.wash.heat="isothermal"']).solve()
         assert result.to_dict()["balance"]["energy"] is None
         assert rows(block(result, "Heat"), "unit")[0][:2] == ["wash", "stages, to hold their temperature"]
+        assert NO_HEAT not in cautions(result)
+
+    def test_a_valve_that_flashes_balances_heat(self, paths):
+        valve = """
+[feeds.hot]
+phase = "liquid"
+temperature = "150 degC"
+pressure = "8 bar"
+flows = { water = "10 mol/s" }
+[units.let_down]
+kind = "valve"
+takes = "hot"
+gives = "flashed"
+pressure = "1.1 bar"
+equilibrium = "aqueous"
+"""
+        path = paths["half"].with_name("valve.toml")
+        text = re.sub(r"\[heat_data\.(air|ammonia)\]\n(.+ = .+\n)+", "", HALF.replace('heat = "adiabatic"', ""))
+        path.write_text(re.sub(r"\bammonia\b", "solute", text) + valve, encoding="utf-8")
+        result = leanloop.read(path).solve()
+        assert result.to_dict()["balance"]["energy"] is None
+        assert not [part for part in report_sections(result) if part.title == "Heat"]
         assert NO_HEAT not in cautions(result)
 
     def test_no_heat_where_data_serve_no_unit(self, tmp_path):

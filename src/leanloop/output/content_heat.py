@@ -214,9 +214,9 @@ def heat_cautions(result: Result) -> list[str]:
     data = result.to_dict()
     out = []
     if not _known(data["balance"]["energy"]):
-        own = [(data["units"][name], unit) for name, unit in sheet.plan.units.items()]
-        balanced = any("profile" in item and unit.wants_heat for item, unit in own)
-        if not balanced and not any(_known(item["results"].get(key)) for item, unit in own for key in unit.draws_heat):
+        units = sheet.plan.units
+        duties = [data["units"][name]["results"].get(key) for name, unit in units.items() for key in unit.draws_heat]
+        if not any(unit.wants_heat for unit in units.values()) and not any(map(_known, duties)):
             return [NO_HEAT]
         out.append(f"Energy is not balanced over the whole flowsheet: {_why(result)}.")
     used = [
