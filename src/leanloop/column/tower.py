@@ -38,6 +38,7 @@ from leanloop.column.law import BoundLaw, Law
 
 HEAT, TEMPERATURE, REFLUX, BOIL_UP, VAPOUR = "heat", "temperature", "reflux", "boil_up", "vapour"
 TINY = 1e-300
+EMPTY = 1e-14  # of all that is fed: added to each liquid's total, so that a stage without liquid is regular
 HEAT_SCALE = 2500.0  # J/mol, about R times 300 K: the heat row in the size of the others
 Enthalpy = Callable[[np.ndarray, Mapping[str, Any]], np.ndarray]
 
@@ -263,6 +264,7 @@ def assembled(tower: Tower, unknowns: np.ndarray, law: Callable[[np.ndarray], np
         gas[..., form.gas_only] = np.cumsum(tower.fed[..., ::-1, form.gas_only], axis=-2)[..., ::-1, :]
     gas[..., form.implicit] = w
     total_liquid = liquid.sum(axis=-1)
+    total_liquid = total_liquid + (EMPTY * np.real(tower.fed).sum(axis=(-1, -2)) + TINY)[..., None]
     ratio = form.law.ratio
     fraction = liquid[..., form.places] / total_liquid[..., None]
     basis_liquid = liquid @ form.liquid_basis if not form.law.plain else total_liquid

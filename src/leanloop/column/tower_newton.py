@@ -90,6 +90,9 @@ def limited(tower: Tower, now: np.ndarray, step: np.ndarray) -> np.ndarray:
     new[..., at] = np.where(low, 0.0, np.minimum(new[..., at], GROWTH * np.maximum(gas, 0.01 * size)))
     most = GROWTH * now[..., at + 2 :] + tower.fed[..., tower.form.falling].sum(axis=1)[:, None]
     new[..., at + 2 :] = np.minimum(new[..., at + 2 :], most)
+    falling = now[..., at + 2 :]
+    dry = (falling.sum(axis=-1) < LITTLE * size)[..., None] & (falling + step[..., at + 2 :] <= 0.0)
+    new[..., at + 2 :] = np.where(dry, 0.0, new[..., at + 2 :])  # so may the liquid of a stage
     warm = now[..., at + 1]
     new[..., at + 1] = np.clip(warm + np.clip(step[..., at + 1], -WARMEST, WARMEST), COLDEST, HOTTEST)
     return new
