@@ -155,8 +155,8 @@ class TestBoiling:
         boils = np.ones(3, dtype=bool)
         return given, tower_newton.solve(
             given,
-            lambda own, rows: tower_start.start(own, *(item[rows] for item in start), boils),
-            lambda own, rows: tower_start.filling(own, *(item[rows] for item in start)),
+            lambda own, rows, _: tower_start.start(own, *(item[rows] for item in start), boils),
+            lambda own, rows, _: tower_start.filling(own, *(item[rows] for item in start)),
             boils=True,
         )
 

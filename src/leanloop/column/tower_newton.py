@@ -25,12 +25,17 @@ NEAR = 1e-4
 LEFT = 1e-13
 SHARP = 1e-10  # relative step above which the state before it is not near enough for derivatives
 PLAIN_ITERATIONS = 20  # then the safeguarded paths begin
-ITERATIONS = 900
+ITERATIONS = 2000
 TINY = 1e-300
 SETTLED = 1e-6  # residual, in feeds, that is none
 ASTRAY = 10.0  # residual, in feeds, at which the plain method is given up
 MOST_FILLING, MOST_LAST = 400, 40  # Newton steps of a filling, and after the last blend
-Begin = Callable[[Tower, np.ndarray], np.ndarray]
+Begin = Callable[[Tower, np.ndarray, float], np.ndarray]
+# ways and factors on the guessed boil-up, in the order in which they are tried
+BLOWN = ((FILLING, 1.0), (BLENDING, 1.0), (WIDELY, 1.0))
+BOILING = (
+    (BLENDING, 1.0), (WIDELY, 1.0), (FILLING, 1.0), (BLENDING, 0.4), (WIDELY, 0.4), (BLENDING, 3.0), (WIDELY, 3.0),
+)  # fmt: skip
 
 
 @dataclass
@@ -107,7 +112,8 @@ def solve(
     ----------
     tower : Tower
     begin, fill : callable
-        Of a tower and the numbers of its cases: unknowns to start from, and to fill from, (m, S, n).
+        Of a tower, the numbers of its cases and a factor on the guessed boil-up: unknowns to start from, and to fill
+        from, (m, S, n).
     guess : (M, S, n), optional
         Unknowns to start from instead; rows that are not finite are started afresh.
     sharp : bool
@@ -129,12 +135,12 @@ def solve(
     every = np.arange(cases)
     with np.errstate(all="ignore"):
         if guess is None:
-            unknowns = begin(tower, every)
+            unknowns = begin(tower, every, 1.0)
         else:
             unknowns = guess.copy()
             lost = np.flatnonzero(~np.isfinite(guess).all(axis=(1, 2)) & (status == OK))
             if len(lost):
-                unknowns[lost] = begin(tower.take(lost), lost)
+                unknowns[lost] = begin(tower.take(lost), lost, 1.0)
         unknowns[status != OK] = 1.0
         return _iterate(tower, unknowns, floors_of(tower), status, Ways(tower, begin, fill, boils), sharp)
 
@@ -150,7 +156,7 @@ def _iterate(
     absent = absent if absent.any() else None
     unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
     scale = tower.fed.sum(axis=(1, 2)) + TINY
-    path, before, stuck = Path.of(unknowns, form.warms or bool(form.murphree.any())), np.ones(cases), np.zeros(cases, dtype=int)
+    path, before, stuck = Path.of(unknowns), np.ones(cases), np.zeros(cases, dtype=int)
     every = np.arange(cases)
     part: np.ndarray | None = None
     local, iterations, filled, first_step = tower, 0, 0, None
@@ -245,23 +251,25 @@ class Ways:
 
     def __init__(self, tower: Tower, begin: Begin, fill: Begin, boils: bool) -> None:
         self._begin, self._fill = begin, fill
-        self.order = (BLENDING, WIDELY, FILLING) if boils else (FILLING, BLENDING, WIDELY)
+        form = tower.form
+        self.attempts = BOILING if boils else BLOWN
+        if not (form.warms or form.murphree.any()):  # nothing to blend
+            self.attempts = ((FILLING, 1.0),)
         self.held = np.ones(tower.fed.shape[:2])
 
     def begin(self, tower: Tower, cases: np.ndarray, path: Path, new: np.ndarray, rows: np.ndarray) -> np.ndarray:
         """Send cases on the next way that they have not tried, from its start; give those that have none left."""
-        left = np.full(len(cases), True)
-        for way in self.order:
-            mine = left & ((path.left[cases] & way) > 0)
+        next_up = path.tried[cases]
+        for number, (way, boil_up) in enumerate(self.attempts):
+            mine = next_up == number
             if mine.any():
                 own = cases[mine]
-                start = (self._fill if way == FILLING else self._begin)(tower.take(own), own)
+                start = (self._fill if way == FILLING else self._begin)(tower.take(own), own, boil_up)
                 new[rows[mine]] = start
                 gas = start[..., len(tower.form.implicit)]
                 self.held[own] = np.maximum(gas, 1e-3 * tower.fed[own].sum(axis=(1, 2))[:, None])
                 path.begin(own, way)
-                left &= ~mine
-        return cases[left]
+        return cases[next_up >= len(self.attempts)]
 
 
 def _moved(form: Form, now: np.ndarray, step: np.ndarray, scale: np.ndarray) -> np.ndarray:

@@ -31,8 +31,8 @@ class Path:
     ----------
     way : (M,) int
         `PLAIN`, `BLENDING`, `FILLING`, or `WIDELY` where what reboiler and condenser are run by is blended as well.
-    left : (M,) int
-        Bits of the ways not tried yet.
+    tried : (M,) int
+        How many attempts have been made.
     drag : (M,)
     blend, step : (M,)
         Part of the heat balances that is theirs, and by how much it is to grow.
@@ -45,7 +45,7 @@ class Path:
     """
 
     way: np.ndarray
-    left: np.ndarray
+    tried: np.ndarray
     drag: np.ndarray
     blend: np.ndarray
     step: np.ndarray
@@ -54,17 +54,16 @@ class Path:
     tries: np.ndarray
 
     @classmethod
-    def of(cls, unknowns: np.ndarray, blends: bool) -> Path:
-        """Begin with plain steps; only columns with heat or efficiencies have something to blend."""
+    def of(cls, unknowns: np.ndarray) -> Path:
+        """Begin with plain steps."""
         cases = len(unknowns)
         ones, zeros = np.ones(cases), np.zeros(cases, dtype=int)
-        left = np.full(cases, BLENDING | FILLING | WIDELY if blends else FILLING)
-        return cls(zeros.copy(), left, 0 * ones, ones.copy(), 0 * ones + FIRST, unknowns.copy(), 0 * ones - 1.0, zeros.copy())
+        return cls(zeros.copy(), zeros.copy(), 0 * ones, ones.copy(), 0 * ones + FIRST, unknowns.copy(), 0 * ones - 1.0, zeros.copy())
 
     def begin(self, cases: np.ndarray, way: int) -> None:
         """Send some cases on a way from its start."""
         self.way[cases], self.tries[cases] = way, 0
-        self.left[cases] &= ~way
+        self.tried[cases] += 1
         self.drag[cases] = 1.0 if way == FILLING else 0.0
         self.blend[cases] = 0.0 if way in (BLENDING, WIDELY) else 1.0
         self.step[cases], self.reached[cases] = FIRST, -1.0

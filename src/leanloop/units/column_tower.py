@@ -204,8 +204,18 @@ class TowerPart:
 
     # --- starts
 
-    def guess(self, tower: Tower, inlets: Mapping[str, Stream], numbers: Numbers) -> tuple[np.ndarray, ...]:
-        """Give rough temperatures and flows, (M, S) each, and which stages boil, (S,)."""
+    def guess(
+        self, tower: Tower, inlets: Mapping[str, Stream], numbers: Numbers, factor: float = 1.0
+    ) -> tuple[np.ndarray, ...]:
+        """Give rough temperatures and flows, (M, S) each, and which stages boil, (S,).
+
+        Parameters
+        ----------
+        tower, inlets, numbers
+            Of M cases.
+        factor : float
+            On the boil-up.
+        """
         form = tower.form
         total, ahead = len(form.roles), int(self.condenser)
         cases = len(tower.fed)
@@ -224,10 +234,7 @@ class TowerPart:
         bottom = _warmth(inlets["gas_in"]) if "gas_in" in inlets else top + 20.0
         mix = tower.fed[..., form.places].sum(axis=1)
         still = tower.fed.sum(axis=(1, 2))
-        boils = np.zeros(total, dtype=bool)
-        inert = tower.fed[..., form.gas_only].sum(axis=(1, 2))
-        if self.reboiler or not (inert > 1e-3 * gas.max(axis=1)).any():
-            boils[:] = True
+        boils = self.boils(tower)
         if self.reboiler:
             spec, role = tower.spec[:, -1], form.roles[-1]
             flow = liquid[:, -1]
@@ -237,6 +244,7 @@ class TowerPart:
                 VAPOUR: spec,
                 TEMPERATURE: 0.3 * flow,
             }[role]
+            up = factor * up
             # of what boils up a part leaves at the top, no more than is volatile
             share = 1.0 / (1.0 + tower.spec[:, 0]) if form.roles[0] == REFLUX else 0.5 if self.condenser else 1.0
             up = np.minimum(np.maximum(up, 1e-3 * flow), OVERHEAD * mix.sum(axis=1) / share)
@@ -257,6 +265,12 @@ class TowerPart:
             liquid[:, :-1] += back[:, None]
             gas[:, 0] -= back
         return temperature, np.maximum(gas, 1e-6 * still[:, None]), np.maximum(liquid, 1e-6 * still[:, None]), boils
+
+    def boils(self, tower: Tower) -> np.ndarray:
+        """Tell which stages boil, (S,) bool: all where there is a reboiler, or hardly a gas that stays one."""
+        inert = tower.fed[..., tower.form.gas_only].sum(axis=(1, 2))
+        none = not (inert > 1e-3 * tower.fed.sum(axis=(1, 2))).any()
+        return np.full(len(tower.form.roles), self.reboiler or none)
 
     def boiling_heat(self, tower: Tower, warm: np.ndarray | None = None) -> np.ndarray:
         """Give a mean heat of boiling of what is fed, (M,) J/mol."""
@@ -304,14 +318,21 @@ class TowerPart:
             positive[..., at + 1] = guess[..., at + 1]
             guess = positive
         with np.errstate(all="ignore"):
-            rough = self.guess(tower, inlets, numbers)
+            rough: dict[float, tuple[np.ndarray, ...]] = {}
+
+            def roughly(rows: np.ndarray, factor: float) -> list[np.ndarray]:
+                if factor not in rough:
+                    rough[factor] = self.guess(tower, inlets, numbers, factor)
+                return [item[rows] for item in rough[factor][:3]]
+
+            boils = self.boils(tower)
             answer = tower_newton.solve(
                 tower,
-                lambda own, rows: tower_start.start(own, *(item[rows] for item in rough[:3]), rough[3]),
-                lambda own, rows: tower_start.filling(own, *(item[rows] for item in rough[:3])),
+                lambda own, rows, factor: tower_start.start(own, *roughly(rows, factor), boils),
+                lambda own, rows, factor: tower_start.filling(own, *roughly(rows, factor)),
                 guess,
                 bool(seeds),
-                bool(rough[3].any()),
+                bool(boils.any()),
             )
             state = evaluate(tower, answer.unknowns)
             outlets = self.outlets(tower, state, numbers)
