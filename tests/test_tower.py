@@ -161,11 +161,11 @@ class TestBoiling:
         )
 
     def test_subcooled_stages_have_no_vapour(self):
-        # cold liquid takes up all the steam of the reboiler on its way down
+        # in the first case the duty only warms the liquid, and nothing boils anywhere
         given, answer = self.solve(np.array([3e4, 4e5]), 300.0)
         assert (answer.status == OK).all()
         gas, warmth = answer.unknowns[..., 0], answer.unknowns[..., 1]
-        assert gas[0, 0] == 0.0 and gas[0, -1] > 0.0
+        assert not gas[0].any() and (gas[1] > 0.0).all()
         state = evaluate(given, answer.unknowns)
         excess = state.wanted.sum(axis=-1)
         assert (excess <= 1 + 1e-9).all()

@@ -9,6 +9,7 @@ from leanloop.flowsheet.requirement import Prober, Requirement
 GRID = 17
 ZOOM = 9  # points inside an interval in which a turning point hides
 ZOOMS = 4
+BESIDE, NEARER = 5, 2  # points beside one that was not solved, and how often
 REFINEMENTS = 60
 FLAT = 1e-3  # elasticity below which a quantity no longer follows its freed input
 
@@ -35,6 +36,8 @@ class Single:
         f, slope = self._f(rows, np.tile(self.grid, count))
         f, slope = f.reshape(count, GRID), slope.reshape(count, GRID)
         p = np.broadcast_to(self.grid, (count, GRID))
+        for _ in range(NEARER):
+            p, f, slope = self._beside_lost(p, f, slope)
         brackets, best = self._search(p, f, slope)
         roots: list[list[float]] = [[] for _ in range(count)]
         for row, root in self._refine(brackets):
@@ -47,12 +50,33 @@ class Single:
             elif best[row] is not None:
                 found.free_value[case], found.reason[case] = best[row]
 
+    def _beside_lost(self, p: np.ndarray, f: np.ndarray, slope: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Add points between one that was solved and a neighbour that was not, where no change of sign is seen yet."""
+        good = np.isfinite(f)
+        seen = np.where(good, np.sign(f), 0.0)
+        open_end = good[:, 1:] != good[:, :-1]
+        want = open_end.any(axis=1) & ~((seen > 0).any(axis=1) & (seen < 0).any(axis=1))
+        if not want.any():
+            return p, f, slope
+        own, place = np.nonzero(open_end & want[:, None])
+        inner = np.linspace(p[own, place], p[own, place + 1], BESIDE + 2)[1:-1].T  # (count, BESIDE)
+        f_in, s_in = self._f(np.repeat(own, BESIDE), inner.ravel())
+        most = int(np.bincount(own).max()) * BESIDE
+        more = [np.full((len(p), most), np.nan) for _ in range(3)]
+        more[0][:] = p[:, -1:]  # what is not filled stands at the end, lost
+        used = np.zeros(len(p), dtype=int)
+        for number, row in enumerate(own):
+            part = slice(number * BESIDE, (number + 1) * BESIDE)
+            at = slice(used[row], used[row] + BESIDE)
+            more[0][row, at], more[1][row, at], more[2][row, at] = inner[number], f_in[part], s_in[part]
+            used[row] += BESIDE
+        p, f, slope = (np.concatenate([old, new], axis=1) for old, new in zip((p, f, slope), more, strict=True))
+        order = np.argsort(p, axis=1, kind="stable")
+        return tuple(np.take_along_axis(item, order, axis=1) for item in (p, f, slope))
+
     def _search(self, p: np.ndarray, f: np.ndarray, slope: np.ndarray) -> tuple[list[tuple], list]:
         """Find intervals with a sign change, looking closer where slopes betray a turning point."""
-        rows = np.broadcast_to(np.arange(len(p))[:, None], (len(p), p.shape[1] - 1)).ravel()
-        left = [item[:, :-1].ravel() for item in (p, f, slope)]
-        right = [item[:, 1:].ravel() for item in (p, f, slope)]
-        spans = np.array([rows, *left, *right])  # row, p0, f0, s0, p1, f1, s1
+        spans = self._spans(p, f, slope)
         brackets, turns = self._split(spans)
         # keep for each case the least |f| seen, with its place
         low: dict[int, tuple[float, float, str]] = {}
@@ -88,8 +112,19 @@ class Single:
         return brackets, [low[row][1:] if row in low else None for row in range(len(p))]
 
     @staticmethod
-    def _reason(place: int, p: np.ndarray, f: np.ndarray, slope: np.ndarray, target: float) -> str:
-        """Say why the least gap is where it is: inside, at a bound, or past a pinch where nothing helps."""
+    def _spans(p: np.ndarray, f: np.ndarray, slope: np.ndarray) -> np.ndarray:
+        """Give the intervals between neighbours that were solved: row, p0, f0, s0, p1, f1, s1 by interval."""
+        rows = np.broadcast_to(np.arange(len(p))[:, None], p.shape)
+        good = np.isfinite(f)
+        points = np.array([rows[good], p[good], f[good], slope[good]])
+        same = points[0, 1:] == points[0, :-1]
+        return np.concatenate([points[:, :-1], points[1:, 1:]])[:, same]
+
+    @staticmethod
+    def _reason(place: int, p: np.ndarray, f: np.ndarray, slope: np.ndarray, target: float) -> str | None:
+        """Say why the least gap is where it is: inside, at a bound, or past a pinch; nothing beside points not solved."""
+        if not np.isfinite(f[max(place - 1, 0) : place + 2]).all():
+            return None
         if 0 < place < len(p) - 1:
             return "turning_point"
         quantity = f[place] + target

@@ -40,7 +40,7 @@ def limits_sections(found: Limits, alone: bool = True) -> list[Section]:
     out.append(_loop(found.loop))
     notes = found.cautions()
     if alone:
-        out.append(Section("Cautions", [Listing([*notes, *CAUTIONS])], place="cautions"))
+        out.append(Section("Cautions", [Listing([*notes, *(CAUTIONS if found.case.sheet.heat is None else CAUTIONS[:-1])])], place="cautions"))
     elif notes:
         out.append(Section("Cautions on the limits", [Listing(notes)], place="limits.cautions"))
     return out

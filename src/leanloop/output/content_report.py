@@ -129,6 +129,10 @@ def _shown(result: Result, address: str, value: float | None) -> str:
         return f"{number(celsius(value))} degC"
     if sort == "pressure":
         return f"{number(value / 1e5)} bar"
+    if sort == "power":
+        return f"{number(value / 1e3)} kW"
+    if sort == "mass flow":
+        return f"{number(value * 3600)} kg/h"
     return number(value)
 
 

@@ -34,6 +34,8 @@ def stage_diagram(found: Limits, name: str) -> StageDiagram | None:
     key, at = column.key, column.ends
     steps = _steps(column, case)
     stages_x, stages_y = (np.array(values) for values in steps)
+    if not (len(stages_x) and np.isfinite(stages_x).all() and np.isfinite(stages_y).all()):
+        return None  # no solute-free flow, no ratios
     least_x, least_y = _least_line(column, case)
     if column.method == CURVE:
         operating_x, operating_y = np.array([at.x_lean, at.x_rich]), np.array([at.y_lean, at.y_rich])
