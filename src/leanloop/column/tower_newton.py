@@ -35,6 +35,7 @@ Begin = Callable[[Tower, np.ndarray, float], np.ndarray]
 BLOWN = ((FILLING, 1.0), (BLENDING, 1.0), (WIDELY, 1.0))
 BOILING = (
     (BLENDING, 1.0), (WIDELY, 1.0), (FILLING, 1.0), (BLENDING, 0.4), (WIDELY, 0.4), (BLENDING, 3.0), (WIDELY, 3.0),
+    (BLENDING, 0.65), (WIDELY, 0.65), (BLENDING, 1.6), (WIDELY, 1.6), (BLENDING, 0.15), (BLENDING, 7.0),
 )  # fmt: skip
 
 
@@ -222,7 +223,16 @@ def _iterate(
                 tower.blend = None
                 if (merit > SETTLED).any():  # small steps of huge flows within the column are no answer
                     left = np.abs(residual(tower, evaluate(tower, unknowns))).max(axis=(1, 2)) / scale
-                    status[(status == OK) & ~(left <= SETTLED)] = code(Status.stages_unsolved)
+                    wrong = np.flatnonzero((status == OK) & ~(left <= SETTLED))
+                    gone = ways.begin(tower, wrong, path, unknowns, wrong)
+                    status[gone] = code(Status.stages_unsolved)
+                    again = np.setdiff1d(wrong, gone)
+                    if len(again) and iterations < ITERATIONS:
+                        unknowns = np.where(absent, 0.0, unknowns) if absent is not None else unknowns
+                        before[again], stuck[again] = 1.0, 0
+                        part, local = again, tower.take(again)
+                        continue
+                    status[again] = code(Status.stages_unsolved)
                 if (sharp and size.max(initial=0.0) > SHARP) or underway.any():  # derivatives are taken at the answer itself
                     sloped = Sloped(tower, unknowns)
                     content = blocks(tower, sloped)

@@ -248,6 +248,7 @@ class TowerPart:
             # of what boils up a part leaves at the top, no more than is volatile
             share = 1.0 / (1.0 + tower.spec[:, 0]) if form.roles[0] == REFLUX else 0.5 if self.condenser else 1.0
             up = np.minimum(np.maximum(up, 1e-3 * flow), OVERHEAD * mix.sum(axis=1) / share)
+            up = np.maximum(up, 1.2 * np.real(tower.liquid_draw[:, 0]))
             gas += up[:, None]
             gas[:, : ahead + 1] -= self.condensed(tower, inlets, numbers, up)[:, None]
             liquid[:, -1] = np.maximum(liquid[:, -1] - share * up, 0.1 * flow)
@@ -261,9 +262,11 @@ class TowerPart:
             if form.roles[0] == TEMPERATURE:
                 temperature[:, 0] = spec
             share = 1.0 / (1.0 + spec) if form.roles[0] == REFLUX else 0.5
-            back = (1.0 - share) * gas[:, 0]
+            taken = np.minimum(np.real(tower.liquid_draw[:, 0]), 0.9 * gas[:, 0])
+            back = (1.0 - share) * (gas[:, 0] - taken)
             liquid[:, :-1] += back[:, None]
-            gas[:, 0] -= back
+            liquid[:, 0] += taken
+            gas[:, 0] -= back + taken
         return temperature, np.maximum(gas, 1e-6 * still[:, None]), np.maximum(liquid, 1e-6 * still[:, None]), boils
 
     def boils(self, tower: Tower) -> np.ndarray:
