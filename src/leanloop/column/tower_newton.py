@@ -24,6 +24,7 @@ DONE = 1e-8
 NEAR = 1e-4
 LEFT = 1e-13
 SHARP = 1e-10  # relative step above which the state before it is not near enough for derivatives
+CIRCLES = 5  # steps after which half steps are taken, lest two states alternate
 PLAIN_ITERATIONS = 20  # then the safeguarded paths begin
 ITERATIONS = 2000
 TINY = 1e-300
@@ -180,7 +181,8 @@ def _iterate(
         step = jacobian.solve(-lead)
         if absent is not None:
             step = np.where(absent[own], 0.0, step)
-        new = limited(local, now, step)
+        circling = (path.tries[own] > CIRCLES) & (path.way[own] != FILLING) & (before[own] > NEAR)
+        new = limited(local, now, np.where(circling[:, None, None], 0.5 * step, step) if circling.any() else step)
         size = (np.abs(step) / (np.where(np.isfinite(floor), floor, 1.0)[:, None, :] + _judged(form, new))).max(axis=(1, 2))
         merit = np.abs(lead).max(axis=(1, 2)) / scale[own]
         broken = (jacobian.bad | ~np.isfinite(size)) & ~failed
