@@ -58,7 +58,8 @@ class Path:
         """Begin with plain steps."""
         cases = len(unknowns)
         ones, zeros = np.ones(cases), np.zeros(cases, dtype=int)
-        return cls(zeros.copy(), zeros.copy(), 0 * ones, ones.copy(), 0 * ones + FIRST, unknowns.copy(), 0 * ones - 1.0, zeros.copy())
+        first, none = 0 * ones + FIRST, 0 * ones - 1.0
+        return cls(zeros.copy(), zeros.copy(), 0 * ones, ones.copy(), first, unknowns.copy(), none, zeros.copy())
 
     def begin(self, cases: np.ndarray, way: int) -> None:
         """Send some cases on a way from its start."""

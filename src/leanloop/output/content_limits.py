@@ -40,7 +40,8 @@ def limits_sections(found: Limits, alone: bool = True) -> list[Section]:
     out.append(_loop(found.loop))
     notes = found.cautions()
     if alone:
-        out.append(Section("Cautions", [Listing([*notes, *(CAUTIONS if found.case.sheet.heat is None else CAUTIONS[:-1])])], place="cautions"))
+        always = CAUTIONS if found.case.sheet.heat is None else CAUTIONS[:-1]
+        out.append(Section("Cautions", [Listing([*notes, *always])], place="cautions"))
     elif notes:
         out.append(Section("Cautions on the limits", [Listing(notes)], place="limits.cautions"))
     return out
