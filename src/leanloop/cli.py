@@ -15,6 +15,7 @@ from leanloop.output import catalogue, content_limits, html, json, tables, text
 from leanloop.pictures import gather
 from leanloop.textfile.reader import read
 
+LONG = "looking for the limits; where there is no plain curve this solves with more and more stages"
 REACHED, NOT_REACHED, WRONG_INPUT = 0, 1, 2
 
 
@@ -61,6 +62,8 @@ def _solve(arguments: argparse.Namespace) -> int:
     files = tables.texts(result.to_dict(), arguments.tables) if arguments.tables else {}
     if arguments.json and arguments.json != "-":
         files[Path(arguments.json)] = json.text(result.to_dict())
+    if arguments.pictures or arguments.report:
+        _tell(LONG)
     found = limits(result) if arguments.pictures or arguments.report else None
     shown = []
     if arguments.pictures:
@@ -80,8 +83,15 @@ def _solve(arguments: argparse.Namespace) -> int:
     return REACHED if result.converged else NOT_REACHED
 
 
+def _tell(words: str) -> None:
+    """Say on a terminal, and nowhere else, what takes long."""
+    if sys.stderr.isatty():
+        sys.stderr.write(f"{words}\n")
+
+
 def _limits(arguments: argparse.Namespace) -> int:
     result = read(arguments.file, arguments.settings).solve()
+    _tell(LONG)
     found = limits(result)
     written = text.limits(found)
     if arguments.json and arguments.json != "-":
@@ -92,6 +102,7 @@ def _limits(arguments: argparse.Namespace) -> int:
 
 def _draw(arguments: argparse.Namespace) -> int:
     result = read(arguments.file, arguments.settings).solve()
+    _tell(LONG)
     files = gather.files(gather.pictures(result), arguments.out)
     tables.put(files, arguments.out)
     sys.stdout.write(f"{result.sheet.title or 'Flowsheet'}: {result.status}. {result.status_text}\n")

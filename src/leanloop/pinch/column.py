@@ -14,6 +14,7 @@ from leanloop.pinch.ends import Ends, curve_of, ends, inlets_at, stated
 from leanloop.pinch.shapes import Pinch
 
 CURVE, DOUBLING = "curve", "doubling"
+TRACES = 1e-9  # of what enters: a component of which less is left sets no limit
 
 
 @dataclass(frozen=True)
@@ -140,7 +141,10 @@ def _keys(case: Case, name: str, chosen: str | None) -> list[str]:
     clean = unit.outlets["gas_out" if unit.cleans == "gas" else "liquid_out"]
     dirty = case.state(unit.inlets["gas_in" if unit.cleans == "gas" else "liquid_in"]).flows
     index = case.sheet.components.index
+    left = case.state(clean).flows
     there = [key for key in unit.model_names if dirty[index[key]] > 0]
+    # what is taken out to the last trace asks for no rate
+    there = [key for key in there if left[index[key]] > TRACES * dirty[index[key]]] or there
     asked = [
         item.address.rpartition(".")[2]
         for item in case.sheet.requirements.values()

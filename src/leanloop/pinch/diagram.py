@@ -13,8 +13,8 @@ from leanloop.pinch.limits import Limits
 from leanloop.pinch.shapes import StageDiagram, Window
 from leanloop.pinch.trials import Trials
 
-POINTS = 161
-MANY = 512  # stages that stand for stages without limit where there are no curves
+POINTS, FEWER = 161, 31  # the second where each solve takes long
+MANY, MANY_RIGOROUS = 512, 56  # stages that stand for stages without limit where there are no curves
 FINE = 300  # stages of the least-rate line there
 HIGHER = 1.5  # times the highest point of interest: the equilibrium line is not drawn above
 
@@ -160,12 +160,13 @@ def window(found: Limits) -> Window | None:
     now = trials.circulation
     low = 0.75 * min([now] + [value for value in (loop.least, loop.best and loop.best[0]) if value])
     high = 1.3 * max([now] + [value for value in (loop.most, loop.best and loop.best[0]) if value])
-    circulation = np.unique(np.append(np.geomspace(low, high, POINTS), now))
+    plain = all(plan.units[name].inner is None for name in trials.stages)
+    circulation = np.unique(np.append(np.geomspace(low, high, POINTS if plain else FEWER), now))
     outlet = trials.values(quantity, circulation / now)
     if loop.pair is not None:
         unlimited = np.array([loop.pair.outlet(float(own / loop.per_liquid))[0] for own in circulation])
     else:
-        times = max(1, MANY // max(trials.stages.values()))
+        times = max(1, (MANY if plain else MANY_RIGOROUS) // max(trials.stages.values()))
         unlimited = trials.values(quantity, circulation / now, times=times)
     at = int(np.argmin(np.abs(circulation - now)))
     held = plan.units[loop.circuit.makeup].values.group("hold")

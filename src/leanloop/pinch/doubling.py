@@ -18,7 +18,7 @@ from leanloop.pinch.shapes import Pinch
 PARTS, ROUNDS = 9, 6  # a factor of 2 is divided to 1.3e-6
 FARTHEST = 2.0**40  # factor on a rate
 MET = 1e-9  # relative: an outlet within rounding of its limit meets it
-MOST_STAGES = 4096
+MOST_STAGES, MOST_RIGOROUS = 4096, 448  # the second with heat, efficiencies or side streams
 END = 0.02  # of the span of X: nearer to an end, the flattest place belongs to that end
 
 
@@ -102,8 +102,9 @@ def least_by_doubling(column: Alone, places: np.ndarray, limits: np.ndarray) -> 
     stages = max(2 * column.stages, 16)
     history = [rates(column, places, limits, stages, np.ones(len(places)))]
     done = np.zeros(len(places), dtype=bool)
-    while not done.all() and stages < MOST_STAGES:
-        stages = min(2 * stages, MOST_STAGES)
+    most = max(MOST_STAGES if column.unit.inner is None else MOST_RIGOROUS, 4 * column.stages)
+    while not done.all() and stages < most:
+        stages = min(2 * stages, most)
         last = history[-1]
         history.append(rates(column, places, limits, stages, np.where(np.isfinite(last) & (last > 0), last, 1.0)))
         done = np.array([settled(float(old), float(new)) for old, new in zip(last, history[-1], strict=True)])

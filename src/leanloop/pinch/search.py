@@ -16,6 +16,7 @@ from leanloop.pinch.trials import Trials
 
 WIDE = np.geomspace(1 / 40, 40, 49)
 PARTS, ROUNDS = 9, 4
+DOUBLINGS = 3  # with heat, efficiencies or side streams, where each solve takes long
 MOST_STAGES = 4096  # of the taller column
 MET = 1e-9
 
@@ -42,7 +43,10 @@ class Search:
     def __init__(self, trials: Trials, asked: Asked) -> None:
         self.trials, self.asked = trials, asked
         tallest = max(trials.stages.values())
-        self.times = [2**power for power in range(1, 12) if tallest * 2**power <= MOST_STAGES or power == 1]
+        plain = all(trials.case.plan.units[name].inner is None for name in trials.stages)
+        powers = range(1, 12) if plain else range(1, DOUBLINGS + 1)
+        self.times = [2**power for power in powers if not plain or tallest * 2**power <= MOST_STAGES or power == 1]
+        self.rounds = ROUNDS if plain else ROUNDS - 1
 
     def _misses(self, hold: np.ndarray, steam: np.ndarray | None, times: int) -> np.ndarray:
         """Give by how much the outlet is dirtier than asked, (R,); above zero misses, not solved misses most."""
@@ -52,7 +56,7 @@ class Search:
 
     def _divide(self, inside: float, outside: float, steam: bool, times: int) -> float:
         """Bring together a factor that meets and one that misses; the one that meets is given."""
-        for _ in range(ROUNDS):
+        for _ in range(self.rounds):
             trials = inside * (outside / inside) ** (np.arange(1, PARTS) / PARTS)
             over = self._misses(*self._factors(trials, steam), times)
             missed = np.flatnonzero(over > 0)
