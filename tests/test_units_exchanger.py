@@ -343,3 +343,13 @@ def test_a_two_phase_inlet_needs_a_table(tmp_path):
     result = sheet(tmp_path, 'UA = "1 kW/K"\ncold_equilibrium = "here"', text).solve()
     assert result["status"] == "converged"
     assert abs(result["balance.energy.closure"]) < 1e-10
+
+
+class TestCautions:
+    @pytest.mark.parametrize(("least", "told"), [(0.5, True), (2.9, True), (3.1, False), (20.0, False)])
+    def test_sides_that_come_very_close_are_told(self, least, told):
+        inlets = {"hot_in": Inlet("liquid", {"oil": 1.0}, 400.0), "cold_in": Inlet("liquid", {"oil": 1.2}, 300.0)}
+        stand = Stand(KINDS.load("exchanger"), Scene({**PORTS, "approach": {"least": least}}, inlets, STAYS, HERE, heat_data=DATA))
+        found = stand.evaluate()
+        said = stand.unit.cautions(stand.inlets, found.outlets, stand.numbers, found.memory)
+        assert [f"as close as {least:g} K" in sentence for sentence in said] == [True] * told

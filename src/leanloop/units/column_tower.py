@@ -504,7 +504,7 @@ class TowerPart:
                 if item is not None and column.present[place]:
                     own = ["gas"] * (not column.stays_liquid[place]) + ["liquid"] * (not column.stays_gas[place])
                     for phase in own:
-                        found += [f"{head}, {names[place]}: {sentence}" for sentence in item.cautions(at.temperature, phase)]
+                        found += [f"{head}, {names[place]}: {sentence}." for sentence in item.cautions(at.temperature, phase)]
         found += self._bulge(at)
         if "height" in numbers:
             real = numbers["height"] / numbers["hetp"]

@@ -21,6 +21,7 @@ WAYS = ("hot_end", "cold_end", "least")
 SIDES = ("hot", "cold")
 CROSSED = 1e-6  # K, less than this below zero is rounding
 CAPACITY = 1e-8  # W for each mol/s, less duty than this is rounding
+CLOSE = 3.0  # K, closer than this is rarely built: common practice, no source
 
 
 class Exchanger(Unit):
@@ -248,5 +249,15 @@ class Exchanger(Unit):
         return off
 
     def cautions(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers, memory: Mapping) -> list[str]:
-        """Say where heat data leave their range."""
-        return heating.range_cautions(self, [*inlets.values(), *outlets.values()])
+        """Say where heat data leave their range, and where the sides come closer than exchangers are usually built for."""
+        found = heating.range_cautions(self, [*inlets.values(), *outlets.values()])
+        hot, cold = self._sides(inlets, numbers)
+        gained = heat_flow(outlets["cold_out"], self.around.heat, cold.numbers) - cold.energy
+        least = np.real(Zones(hot, cold).least(gained))
+        least = least[np.isfinite(least) & (np.real(gained) > 0)]
+        if least.size and least.min() < CLOSE:
+            found.append(
+                f"Exchanger {self.name}: its sides come as close as {least.min():.2g} K; below {CLOSE:g} K the area grows steeply "
+                "and small errors of the heat data decide (common practice, no source)."
+            )
+        return found
