@@ -10,21 +10,16 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.colors import to_rgb
 
 import leanloop
 from leanloop.entries import Entry
-from leanloop.pictures import layout_boxes, layout_labels, layout_ranks
+from leanloop.pictures import base, drawing, layout_boxes, layout_labels, layout_ranks
 from leanloop.pictures.layout import lay_out
 from leanloop.pictures.layout_route import Port, Router, Wire
 from leanloop.units import KINDS
 from leanloop.units.base import Unit
-
-pytest.importorskip("matplotlib")
-
-from matplotlib.backends.backend_agg import FigureCanvasAgg
-from matplotlib.colors import to_rgb
-
-from leanloop.pictures import base, drawing
 
 ROOT = Path(__file__).parent.parent
 A4, A3 = (297.0, 210.0), (420.0, 297.0)

@@ -187,7 +187,7 @@ LIQUID = {
     "ethyl acetate": (1.3, MEAN_QUASI),
     "water": (0.5, None),
 }
-SAME_AUTHORS = {  # the other of their two forms: a check of the transcription
+SAME_AUTHORS = {  # against the other of two correlations by the same authors
     "monoethanolamine": (0.5, QUASI),
     "triethylene glycol": (2.0, QUASI),
     "propylene carbonate": (0.5, MEAN_QUASI),
