@@ -26,6 +26,7 @@ TEXT = ("errors", "quantities", "entries")
 LAYERS = {
     "errors": (),
     "status": (),
+    "version": (),
     "quantities": (),
     "registry": ("errors",),
     "entries": ("errors", "quantities"),
@@ -43,19 +44,23 @@ LAYERS = {
         "recycle",
     ),
     "pinch": (*TEXT, "status", "components", "stream", "equilibrium", "units", "flowsheet"),
-    "pictures": ("errors", "units", "flowsheet", "pinch"),
-    "output": (*TEXT, "status", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch"),
-    "textfile": (*TEXT, "components", "feed", "flowsheet"),
+    "studies": (*TEXT, "status", "version", "components", "stream", "feed", "units", "flowsheet"),
+    "pictures": ("errors", "units", "flowsheet", "pinch", "studies"),
+    "output": (
+        *TEXT, "status", "version", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch",
+        "studies",
+    ),
+    "textfile": (*TEXT, "components", "feed", "flowsheet", "studies"),
     "checks": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "enthalpy", "units", "recycle",
     ),
-    "cli": (*TEXT, "output", "pictures", "flowsheet", "textfile", "package"),
+    "cli": (*TEXT, "output", "pictures", "flowsheet", "studies", "textfile", "package"),
     "__main__": ("cli",),
-    "package": (*TEXT, "components", "stream", "feed", "flowsheet", "pinch", "textfile"),  # leanloop/__init__.py
+    "package": (*TEXT, "version", "components", "stream", "feed", "flowsheet", "pinch", "studies", "textfile"),  # leanloop/__init__.py
 }
 ORDER = (
-    "errors", "status", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "column", "flash",
-    "feed", "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package", "cli", "__main__",
+    "errors", "status", "version", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "column", "flash",
+    "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures", "textfile", "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
@@ -64,8 +69,9 @@ OUTSIDE = {
     "scipy": ("",),
     "networkx": ("flowsheet/graph.py", "flowsheet/tearing.py"),
     "matplotlib": ("pictures/",),
+    "distributed": ("studies/executors.py",),
 }
-STANDARD_ONLY_IN = {"argparse": ("cli.py",), "tomllib": ("textfile/",)}
+STANDARD_ONLY_IN = {"argparse": ("cli.py",), "tomllib": ("textfile/",), "sqlite3": ("studies/store.py",), "pickle": ("studies/tasks.py",)}
 NOT_IN = {("scipy", "recycle/"), ("scipy", "textfile/"), ("scipy", "cli.py"), ("numpy", "cli.py"), ("numpy", "quantities.py")}
 
 # Plug-in files are loaded by name alone. What a layer shares is in the files listed here.

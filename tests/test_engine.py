@@ -789,7 +789,7 @@ class TestCases:
         cases = {"units.wash.stages": np.array([6, 2, 6, 6, 1, 6, 2]),
                  "units.divide.shares.bleed": np.array([1e-3, 1e-2, 0.0, 0.1, 1e-3, 1e-4, 0.0])}
         whole = from_text(text).solve(cases)
-        monkeypatch.setattr(Flowsheet, "_chunk", lambda self, numbers: chunk)
+        monkeypatch.setattr(Flowsheet, "chunk", lambda self, numbers: chunk)
         parts = from_text(text).solve(cases)
         assert len(parts.parts) > len(whole.parts)
         assert whole.status == parts.status

@@ -15,6 +15,10 @@ class MissingExtra(LeanloopError):
     """An optional library is not installed; the message names the extra that brings it."""
 
 
+class StudyError(LeanloopError):
+    """A study cannot be kept, gone on with or calculated; the message says why and what to do."""
+
+
 class NotReached(LeanloopError):
     """A result was asked to be converged and is not; carries the whole result.
 

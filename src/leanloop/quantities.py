@@ -30,6 +30,7 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "heat transfer": ((1, 2, -3, -1, 0), "12 kW/K"),
     "length": ((0, 1, 0, 0, 0), "6 m"),
     "amount": ((0, 0, 0, 0, 1), "40 kmol"),
+    "mass": ((1, 0, 0, 0, 0), "9 t"),
     "density": ((1, -3, 0, 0, 0), "1020 kg/m3"),
     "molar volume": ((0, 3, 0, 0, -1), "18.1 cm3/mol"),
 }

@@ -70,14 +70,14 @@ def read_changes(
             else:
                 arrays[address] = np.asarray(values, dtype=float)
         elif listed and not isinstance(raw, (str, int, float)) and array.ndim == 1:
-            values = _read_list(sheet, address, array, context)
+            values = read_list(sheet, address, array, context)
             if values is not None:
                 base[address] = values
         elif listed and np.ndim(array) == 0:
             context.fault(address, "is a list in the flowsheet", f"give a list of {len(sheet.numbers[address])} numbers")
         elif np.ndim(array) == 0:
             item = array.item() if isinstance(array, np.ndarray) else array
-            number = _read_item(sheet, address, item, address, context)
+            number = read_item(sheet, address, item, address, context)
             if number is not None:
                 base[address] = number
         else:
@@ -97,7 +97,7 @@ def read_changes(
     return cases, axis, base, arrays, _groups(apart, cases)
 
 
-def _read_item(sheet: Flowsheet, address: str, raw: Any, where: str, context: Context) -> float | None:
+def read_item(sheet: Flowsheet, address: str, raw: Any, where: str, context: Context) -> float | None:
     """Read one new value; a plain number is SI, of the dimension that the flowsheet gives the input in."""
     entry, sort = sheet.entry(address), sheet.sorts[address]
     plain = isinstance(raw, (int, float)) and sort != "integer"
@@ -120,9 +120,9 @@ def _read_item(sheet: Flowsheet, address: str, raw: Any, where: str, context: Co
     return value
 
 
-def _read_list(sheet: Flowsheet, address: str, row: np.ndarray, context: Context) -> list[float] | None:
+def read_list(sheet: Flowsheet, address: str, row: np.ndarray, context: Context) -> list[float] | None:
     """Read a new list for an input that is one."""
-    values = [_read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in enumerate(row.tolist())]
+    values = [read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in enumerate(row.tolist())]
     if None in values:
         return None
     faults = len(context.faults)
@@ -161,12 +161,12 @@ def _read_array(sheet: Flowsheet, array: np.ndarray, address: str, context: Cont
         values = array.astype(float)
     else:
         items = enumerate(array.ravel().tolist())
-        read = [_read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in items]
+        read = [read_item(sheet, address, item, f"{address}[{place}]", context) for place, item in items]
         if None in read:
             return None
         values = np.array(read, dtype=float).reshape(array.shape)
     if listed:
-        rows = [_read_list(sheet, address, row, context) for row in values]
+        rows = [read_list(sheet, address, row, context) for row in values]
         return None if None in rows else rows
     if entry.sort == "integer":
         least = -np.inf if entry.least is None else entry.least

@@ -69,9 +69,9 @@ def _requirement(
     found = None
     if quantity is not None:
         try:
-            _check_address(quantity)
-            found = formula(quantity, sheet.plan.phases, sheet.units, sheet.bases)[0]
-            _check_quantity(sheet, quantity, found)
+            check_address(quantity)
+            found = formula_of(sheet, quantity)
+            check_quantity(sheet, quantity, found)
         except AddressError as error:
             found = None
             context.fault(f"{address}.quantity", error.problem, error.remedy)
@@ -123,7 +123,18 @@ def _quantity_entry(address: str) -> Entry:
     return Entry("target", "number")
 
 
-def _check_address(address: str) -> None:
+def formula_of(sheet: Flowsheet, address: str) -> Formula:
+    """Give a quantity of a stream or unit of a flowsheet as a formula.
+
+    Raises
+    ------
+    AddressError
+        Where the address leads nowhere.
+    """
+    return formula(address, sheet.plan.phases, sheet.units, sheet.bases)[0]
+
+
+def check_address(address: str) -> None:
     """Stop at an address that is too short, or too long for a stream.
 
     Raises
@@ -138,7 +149,7 @@ def _check_address(address: str) -> None:
         raise AddressError(f"{shown_name(address)} goes too deep", f"stop at '{'.'.join(parts[:most])}'")
 
 
-def _check_quantity(sheet: Flowsheet, address: str, found: Formula) -> None:
+def check_quantity(sheet: Flowsheet, address: str, found: Formula) -> None:
     """Look the quantity up once, at streams of 1 mol/s of whatever each can hold.
 
     Raises

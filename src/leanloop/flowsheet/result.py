@@ -62,8 +62,20 @@ class Result:
 
     # --- gathering over parts
 
-    def _gather(self, call: Callable[[Part], Any], blank: bool = True) -> Any:
-        """Put rows of all parts together; lists of arrays where their lengths differ."""
+    def gathered(self, call: Callable[[Part], Any], blank: bool = True) -> Any:
+        """Put rows of all parts together; lists of arrays where their lengths differ.
+
+        Parameters
+        ----------
+        call : callable
+            Gives (m, ...) rows of a part of m cases, or None or text for all of them.
+        blank : bool
+            Whether numbers of cases that have no answer become NaN.
+
+        Returns
+        -------
+        (M, ...) array, list, or one row without a case axis
+        """
         pieces = []
         for part in self.parts:
             found = call(part)
@@ -98,20 +110,20 @@ class Result:
             return {
                 key: self._branch(item, lambda part, key=key: get(part)[key]) for key, item in branch.items()
             }
-        return self._gather(get)
+        return self.gathered(get)
 
     # --- status
 
     @property
     def status(self) -> Any:
         """Status word, or a list of them by case."""
-        words = [status_of(item).name for item in self._codes()]
+        words = [status_of(item).name for item in self.codes()]
         return words if self.axis else words[0]
 
     @property
     def converged(self) -> Any:
         """Whether everything asked for was reached: bool, or (M,) bool."""
-        good = self._codes() == OK
+        good = self.codes() == OK
         return good if self.axis else bool(good[0])
 
     @property
@@ -144,7 +156,8 @@ class Result:
                 text = f"{text} ({part.run.messages[name]})"
         return text
 
-    def _codes(self) -> np.ndarray:
+    def codes(self) -> np.ndarray:
+        """Give the numbers that stand for the statuses, (M,) int8; see `leanloop.status.LIST`."""
         codes = np.empty(self.cases, dtype=np.int8)
         for part in self.parts:
             codes[part.cases] = part.run.status
@@ -158,7 +171,7 @@ class Result:
         NotReached
             With the sentence of the worst case; it carries the result.
         """
-        codes = self._codes()
+        codes = self.codes()
         if (codes != OK).any():
             worst = int(np.argmax(codes))
             texts = self.status_text
@@ -187,7 +200,7 @@ class Result:
         phases = self.sheet.plan.phases
         if name not in phases:
             raise KeyError(f"there is no stream '{name}'; {nearest(name, phases)}")
-        return Stream(self._gather(lambda part: part.run.states[name]), phases[name])
+        return Stream(self.gathered(lambda part: part.run.states[name]), phases[name])
 
     def __getitem__(self, address: str) -> Any:
         """Give what stands at an address: a number, text or nested dict; arrays by case.
@@ -205,6 +218,15 @@ class Result:
                     return self._gather_quantity(quantity)
                 except AddressError:
                     return walk(self.to_dict(lists=False), address.split("."), address)
+            parts = address.split(".")
+            if head == "requirements" and len(parts) > 2 and parts[1] in self.sheet.requirements:
+                return walk(self._requirement(parts[1]), parts[2:], address)
+            if head == "loop" and len(parts) > 1:
+                return walk(self._loop(), parts[1:], address)
+            if head == "balance" and len(parts) > 1:
+                from leanloop.flowsheet.balance import balance
+
+                return walk(self._tree(lambda part: balance(part.run)), parts[1:], address)
             return walk(self.to_dict(lists=False), address.split("."), address)
         except AddressError as error:
             raise KeyError(str(error)) from None
@@ -291,7 +313,7 @@ class Result:
         out = {}
         for key, pieces in found.items():
             pieces = iter(pieces)
-            out[key] = self._gather(lambda part, pieces=pieces: next(pieces), blank=False)
+            out[key] = self.gathered(lambda part, pieces=pieces: next(pieces), blank=False)
             if not self.axis and np.ndim(out[key]) == 0:
                 out[key] = float(out[key])
         return out
@@ -370,8 +392,8 @@ class Result:
                 {
                     "units": step.units,
                     "tears": list(step.tears),
-                    "passes": self._gather(lambda part: wide(part, "passes"), blank=False),
-                    "residual": self._gather(lambda part: wide(part, "error"), blank=False),
+                    "passes": self.gathered(lambda part: wide(part, "passes"), blank=False),
+                    "residual": self.gathered(lambda part: wide(part, "error"), blank=False),
                     "history": history if self.axis else history[0],
                 }
             )
@@ -398,11 +420,11 @@ class Result:
             for place, row in zip(part.cases, part.found[name].others, strict=True):
                 others[place] = row
         return {
-            "reached": self._gather(lambda part: part.found[name].reached),
-            "active": self._gather(lambda part: part.found[name].active),
-            "value": self._gather(lambda part: part.found[name].value),
-            "free_value": self._gather(lambda part: part.found[name].free_value),
-            "reason": self._gather(lambda part: part.found[name].reason),
+            "reached": self.gathered(lambda part: part.found[name].reached),
+            "active": self.gathered(lambda part: part.found[name].active),
+            "value": self.gathered(lambda part: part.found[name].value),
+            "free_value": self.gathered(lambda part: part.found[name].free_value),
+            "reason": self.gathered(lambda part: part.found[name].reason),
             "other_solutions": others if self.axis else others[0],
         }
 

@@ -34,7 +34,7 @@ CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open b
 NOTHING = 1e-25  # of all that enters: less of a component is not told from none
 SECTIONS = (
     "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups", "limits",
-    "heat_data",
+    "heat_data", "studies",
 )  # fmt: skip
 
 
@@ -57,6 +57,8 @@ class Flowsheet:
         Ends of columns for `leanloop.limits`: ``key``, ``gas_in``, ``gas_out``, ``liquid_in``, ``liquid_out``, ``removal``.
     heat_data : mapping of str to mapping, optional
         Enthalpies by component; where it is given, or a unit balances heat, common species have built-in data.
+    studies : mapping of str to mapping, optional
+        Kept as they are for `leanloop.study`, which reads them.
     plain_si : bool
         Whether plain numbers may stand for quantities with a dimension, in SI units.
     source : str
@@ -83,11 +85,17 @@ class Flowsheet:
         groups: Any = None,
         limits: Any = None,
         heat_data: Any = None,
+        studies: Any = None,
         *,
         plain_si: bool = True,
         source: str = "",
         directory: str = ".",
     ) -> None:
+        self.given = {
+            "components": components, "equilibrium": equilibrium, "feeds": feeds, "units": units, "requirements": requirements,
+            "title": title, "loop": loop, "basis": basis, "groups": groups, "limits": limits, "heat_data": heat_data,
+            "studies": studies, "plain_si": plain_si, "source": source, "directory": directory,
+        }  # fmt: skip
         self.source = source
         context = Context(plain_si=plain_si, names={"directory": [directory]})
         self.title = title if isinstance(title, str) else ""
@@ -223,10 +231,30 @@ class Flowsheet:
         """Give the same flowsheet without its requirements: what they free is an input like any other."""
         sheet = copy.copy(self)
         sheet.requirements = {}
+        sheet.given = {**self.given, "requirements": None}
         sheet.plan = copy.copy(self.plan)
         sheet.plan.forget()
         sheet.plan.arrange({}, self.tears)
         return sheet
+
+    def rebuilt(self, **changes: Any) -> Flowsheet:
+        """Give a flowsheet made anew from what this one was made of, with some parts replaced.
+
+        Parameters
+        ----------
+        **changes
+            Parameters of `Flowsheet` by name.
+
+        Raises
+        ------
+        InputError
+            With every fault found.
+        """
+        return Flowsheet(**{**self.given, **changes})
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        """Travel to other processes as what the flowsheet was made of."""
+        return _remade, (self.given,)
 
     # --- checking and solving
 
@@ -267,25 +295,55 @@ class Flowsheet:
         InputError
             Where an address or a value is wrong for all cases.
         """
+        result = self.solve_cases(changes)
+        if result.cases and all((part.run.status == code(Status.no_steady_state)).all() for part in result.parts):
+            raise InputError([fault for part in result.parts for fault in part.run.trapped], self.source)
+        return result
+
+    def solve_cases(self, changes: Mapping[str, Any] | None = None) -> Result:
+        """Solve like `solve`, where that no case has a steady state is no wrong input but each case's status.
+
+        Parameters
+        ----------
+        changes : mapping of str to number, text or (M,) array, optional
+
+        Returns
+        -------
+        Result
+
+        Raises
+        ------
+        InputError
+            Where an address or a value is wrong for all cases.
+        """
         from leanloop.flowsheet.cases import read_changes
 
         cases, axis, base, arrays, groups = read_changes(self, changes or {})
         touched = frozenset(changes or {})
         parts = []
         for rows, own in groups:
-            size = self._chunk({**base, **own})
+            size = self.chunk({**base, **own})
             for begin in range(0, len(rows), size):
                 chunk = rows[begin : begin + size]
                 inputs = Inputs(
                     {**self.numbers, **base, **own}, {key: value[chunk] for key, value in arrays.items()}, len(chunk), touched
                 )
                 parts.append(self._solve_part(chunk, inputs))
-        if cases and all((part.run.status == code(Status.no_steady_state)).all() for part in parts):
-            raise InputError([fault for part in parts for fault in part.run.trapped], self.source)
         return Result(self, parts, cases, axis)
 
-    def _chunk(self, numbers: Mapping[str, Any]) -> int:
-        """Give how many cases fit into a chunk of memory."""
+    def chunk(self, numbers: Mapping[str, Any] | None = None) -> int:
+        """Give how many cases fit into a chunk of memory.
+
+        Parameters
+        ----------
+        numbers : mapping of str to number, optional
+            Where they differ from the flowsheet's own.
+
+        Returns
+        -------
+        int
+        """
+        numbers = self.numbers if numbers is None else numbers
         per_case = 8.0 * self.plan.width * len(self.plan.phases) * (6 + 2 * self.plan.width)
         for name, unit in self.units.items():
             count = numbers.get(f"units.{name}.stages", unit.values.numbers.get("stages", 0))
@@ -456,6 +514,11 @@ class Flowsheet:
             node: {key: value[rows] for key, value in memory.items()} for node, memory in run.memory.items()
         }
         return few
+
+
+def _remade(given: Mapping[str, Any]) -> Flowsheet:
+    """Make a flowsheet of what it was made of."""
+    return Flowsheet(**given)
 
 
 def cut_in_two(message: str) -> tuple[str, str]:

@@ -9,7 +9,7 @@ import numpy as np
 from leanloop.output.content import Listing, Section, Sentence, Table, celsius, hourly, number, printable
 from leanloop.output.content_columns import columns, loops
 from leanloop.output.content_heat import NO_HEAT, energy, heat, heat_cautions
-from leanloop.output.influence import influences
+from leanloop.studies.influence import influences
 from leanloop.quantities import NORMAL_MOLES
 
 if TYPE_CHECKING:

@@ -57,13 +57,16 @@ def quantities(result: Result) -> list[str]:
     return out
 
 
-def influences(result: Result) -> list[Influence]:
+def influences(result: Result, asked: list[str] | None = None) -> list[Influence]:
     """Give the effects of all inputs on the quantities of a single case, the largest first.
 
     Parameters
     ----------
     result : Result
         Of one case, solved.
+    asked : list of str, optional
+        Addresses of quantities; those of `quantities` by default. Others than those of streams and units and what
+        requirements free are passed over.
 
     Returns
     -------
@@ -71,16 +74,16 @@ def influences(result: Result) -> list[Influence]:
         Empty where the case is not solved.
     """
     sheet = result.sheet
-    asked = quantities(result)
-    freed = {item.free for name, item in sheet.requirements.items() if f"requirements.{name}.free_value" in asked}
+    asked = quantities(result) if asked is None else [item for item in asked if _has_slope(result, item)]
+    held = {name for name, found in result.parts[0].found.items() if found.active[0] and found.reached[0]}
+    freed = {item.free for name, item in sheet.requirements.items() if name in held}
     numbers = [address for address in sheet.numbers if sheet.varies(address) and address not in freed]
     if result.axis or not asked or not numbers or not solved(result.parts[0].run.status).all():
         return []
     slopes = result.sensitivities(asked, numbers)
     found = []
     for quantity in asked:
-        name = quantity.removeprefix("requirements.").removesuffix(".free_value")
-        base = result.parts[0].found[name].free_value[0] if quantity.startswith("requirements.") else result[quantity]
+        base = result[quantity]
         inputs = result.parts[0].run.inputs
         for number in numbers:
             warm = sheet.sorts[number] == "temperature"
@@ -89,3 +92,15 @@ def influences(result: Result) -> list[Influence]:
                 found.append(Influence(quantity, number, float(100.0 * change / base), "K" if warm else "%"))
     least = ROUNDING * max((abs(item.per_cent) for item in found), default=0.0)
     return sorted((item for item in found if abs(item.per_cent) > max(least, ROUNDING)), key=lambda item: -abs(item.per_cent))
+
+
+def _has_slope(result: Result, address: str) -> bool:
+    """Tell whether a quantity has derivatives and a value here."""
+    parts = address.split(".")
+    if parts[0] == "requirements":
+        if parts[-1] not in ("free_value", "value"):
+            return False
+    elif parts[0] not in ("streams", "units"):
+        return False
+    value = result[address]
+    return isinstance(value, float) and bool(np.isfinite(value))

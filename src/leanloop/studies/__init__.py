@@ -1,0 +1,1 @@
+"""Studies: many cases of one flowsheet, kept as they are solved, and what they tell."""

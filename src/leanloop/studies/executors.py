@@ -1,0 +1,121 @@
+"""Where batches are calculated: in this process, in a pool of processes, on a cluster, on whatever an executor stands for."""
+
+from __future__ import annotations
+
+import os
+import signal
+from collections.abc import Callable
+from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from typing import Any
+
+from leanloop.errors import MissingExtra, StudyError
+
+NO_CLUSTER = 'a cluster needs dask.distributed; install the extra: pip install "leanloop[cluster]"'
+RETRIES = 5  # of a batch whose worker is lost, by the cluster itself
+
+
+class Here(Executor):
+    """Calculates in this process, at once."""
+
+    def submit(self, fn: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future:
+        """Call a function now and give its outcome as a future."""
+        future: Future = Future()
+        try:
+            future.set_result(fn(*args, **kwargs))
+        except Exception as error:  # noqa: BLE001 - as any executor, it hands on what it cannot judge
+            future.set_exception(error)
+        return future
+
+
+class Engine:
+    """An executor, how many batches to hand it at a time, and how to get another when it breaks.
+
+    Parameters
+    ----------
+    make : callable
+        Gives an executor.
+    ahead : int
+        Batches handed on and not yet back.
+    own : bool
+        Whether the executor is shut down at the end, and made anew where it breaks.
+    """
+
+    def __init__(self, make: Callable[[], Executor], ahead: int, own: bool = True) -> None:
+        self.make, self.ahead, self.own = make, ahead, own
+        self.executor = make()
+
+    def again(self) -> bool:
+        """Make a new executor in the place of a broken one; False where it is not ours to make."""
+        if not self.own:
+            return False
+        self.executor.shutdown(wait=False, cancel_futures=True)
+        self.executor = self.make()
+        return True
+
+    def close(self, wait: bool = True) -> None:
+        """Let go of the executor."""
+        if self.own:
+            self.executor.shutdown(wait=wait, cancel_futures=True)
+
+
+def engine(executor: Executor | None = None, workers: int = 1, cluster: str | None = None) -> Engine:
+    """Choose where batches are calculated.
+
+    Parameters
+    ----------
+    executor : Executor, optional
+        One of the caller's.
+    workers : int
+        Processes of a pool; 1 for none.
+    cluster : str, optional
+        Address of the scheduler of a cluster.
+
+    Returns
+    -------
+    Engine
+
+    Raises
+    ------
+    MissingExtra
+        Where a cluster is asked for and its library is not installed.
+    StudyError
+        Where the cluster does not answer.
+    """
+    if executor is not None:
+        return Engine(lambda: executor, 4 * (os.cpu_count() or 1), own=False)
+    if cluster is not None:
+        return _cluster(cluster)
+    if workers > 1:
+        return Engine(lambda: ProcessPoolExecutor(workers, initializer=_deaf), 2 * workers)
+    return Engine(Here, 1)
+
+
+def _deaf() -> None:
+    """Leave an interrupt from the keyboard to the process that leads."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
+class _Cluster(Engine):
+    """A cluster that is there already: only the connection is ours."""
+
+    def __init__(self, client: Any) -> None:
+        self.client = client
+        threads = sum(client.nthreads().values())
+        super().__init__(lambda: client.get_executor(retries=RETRIES, pure=False), max(4, 4 * threads), own=False)
+
+    def close(self, wait: bool = True) -> None:
+        """Close the connection; the cluster goes on."""
+        self.client.close()
+
+
+def _cluster(address: str) -> Engine:
+    try:
+        import distributed
+    except ImportError as error:
+        raise MissingExtra(NO_CLUSTER) from error
+    try:
+        client = distributed.Client(address, timeout="10s", set_as_default=False)
+    except (OSError, ValueError, TypeError) as error:
+        reason = " ".join(str(error).split()) or type(error).__name__
+        raise StudyError(f"cluster {address}: does not answer: {reason}; write the scheduler's address, tcp://HOST:PORT") from None
+    return _Cluster(client)
