@@ -6,11 +6,12 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from leanloop.flowsheet.scales import Scale, of_input, of_quantity
 from leanloop.output.content import Listing, Section, Sentence, Table, celsius, hourly, number, printable
 from leanloop.output.content_columns import columns, loops
 from leanloop.output.content_heat import NO_HEAT, energy, heat, heat_cautions
-from leanloop.studies.influence import influences
 from leanloop.quantities import NORMAL_MOLES
+from leanloop.studies.influence import influences
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
@@ -92,9 +93,9 @@ def _requirements(result: Result, data: dict[str, Any]) -> list[Section]:
         verb = {"equals": "=", "at_most": "<=", "at_least": ">="}[item.kind]
         target = result.sheet.numbers[item.target]
         outcome = "met" if found["reached"] else f"not met ({found['reason'] or 'not solved'})"
-        wanted, have = _figure(item.address, target), _figure(item.address, found["value"])
-        free = _shown(result, item.free, found["free_value"]) + ("" if found["active"] else ", as given")
-        others = ", ".join(_shown(result, item.free, other) for other in found["other_solutions"])
+        wanted, have = written(of_quantity(item.address), target), written(of_quantity(item.address), found["value"])
+        free = written(of_input(result.sheet, item.free), found["free_value"]) + ("" if found["active"] else ", as given")
+        others = ", ".join(written(of_input(result.sheet, item.free), other) for other in found["other_solutions"])
         rows.append([name, item.address, f"{verb} {wanted}", outcome, have, item.free, free, others or "-"])
         lines.append(Sentence(f"{name}: {item.address} {verb} {wanted}: {outcome}, at {have} with {item.free} = {free}"))
         if others:
@@ -103,37 +104,22 @@ def _requirements(result: Result, data: dict[str, Any]) -> list[Section]:
     return [Section("Asked for", [Table(head, rows, instead=lines)], place="requirements")] if rows else []
 
 
-def _figure(address: str, value: float | None) -> str:
-    """Write a quantity in the unit of a report, which the end of its address tells."""
-    parts = address.split(".")
-    if any(part.startswith("mg_per_Nm3") for part in parts):
-        return f"{number(value)} mg/Nm3"
-    for ending, write in (
-        ("mol_s", lambda own: f"{number(hourly(own))} kmol/h"),
-        ("_K", lambda own: f"{number(celsius(own))} degC"),
-        ("_Pa", lambda own: f"{number(own / 1e5)} bar"),
-    ):
-        if value is not None and any(part.endswith(ending) for part in parts):
-            return write(value)
-    return number(value)
+def written(scale: Scale, value: float | None) -> str:
+    """Write an SI number in the unit in which people read it.
 
+    Parameters
+    ----------
+    scale : Scale
+    value : float or None
 
-def _shown(result: Result, address: str, value: float | None) -> str:
-    """Write an input in the unit of a report, which its sort tells."""
-    sort = result.sheet.sorts[address]
+    Returns
+    -------
+    str
+        With the unit; a dash for what is not defined.
+    """
     if value is None:
         return "-"
-    if sort == "molar flow":
-        return f"{number(hourly(value))} kmol/h"
-    if sort == "temperature":
-        return f"{number(celsius(value))} degC"
-    if sort == "pressure":
-        return f"{number(value / 1e5)} bar"
-    if sort == "power":
-        return f"{number(value / 1e3)} kW"
-    if sort == "mass flow":
-        return f"{number(value * 3600)} kg/h"
-    return number(value)
+    return f"{number(scale.shown(value))} {scale.unit}".rstrip()
 
 
 def _streams(result: Result, data: dict[str, Any]) -> Section:
