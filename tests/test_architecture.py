@@ -56,11 +56,13 @@ LAYERS = {
     ),
     "cli": (*TEXT, "output", "pictures", "flowsheet", "studies", "textfile", "package"),
     "__main__": ("cli",),
-    "package": (*TEXT, "version", "components", "stream", "feed", "flowsheet", "pinch", "studies", "textfile"),  # leanloop/__init__.py
+    # leanloop/__init__.py
+    "package": (*TEXT, "version", "components", "stream", "feed", "flowsheet", "pinch", "studies", "textfile"),
 }
 ORDER = (
-    "errors", "status", "version", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "column", "flash",
-    "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures", "textfile", "package", "cli", "__main__",
+    "errors", "status", "version", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium",
+    "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures", "textfile",
+    "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
@@ -71,7 +73,12 @@ OUTSIDE = {
     "matplotlib": ("pictures/",),
     "distributed": ("studies/executors.py",),
 }
-STANDARD_ONLY_IN = {"argparse": ("cli.py",), "tomllib": ("textfile/",), "sqlite3": ("studies/store.py",), "pickle": ("studies/tasks.py",)}
+STANDARD_ONLY_IN = {
+    "argparse": ("cli.py",),
+    "tomllib": ("textfile/",),
+    "sqlite3": ("studies/store.py",),
+    "pickle": ("studies/tasks.py",),
+}
 NOT_IN = {("scipy", "recycle/"), ("scipy", "textfile/"), ("scipy", "cli.py"), ("numpy", "cli.py"), ("numpy", "quantities.py")}
 
 # Plug-in files are loaded by name alone. What a layer shares is in the files listed here.

@@ -12,7 +12,9 @@ from typing import NoReturn
 from leanloop import __version__, limits
 from leanloop.errors import Fault, InputError, LeanloopError, MissingExtra
 from leanloop.output import catalogue, content_limits, html, json, tables, text
+from leanloop.output.progress import Progress
 from leanloop.pictures import gather
+from leanloop.studies.read import study as declared
 from leanloop.textfile.reader import read
 
 LONG = "looking for the limits; where there is no plain curve this solves with more and more stages"
@@ -39,6 +41,11 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument("--json", metavar="PATH", help="write what was found as JSON; - for standard output")
     limited = _command(commands, "limits", "least and most solvent, least stripping gas, where each column pinches and how")
     limited.add_argument("--json", metavar="PATH", help="write the limits as JSON; - for standard output, and nothing else there")
+    study = _command(commands, "study", "carry out a study that the file declares; run again, it goes on where it stopped")
+    study.add_argument("name", metavar="NAME", nargs="?", help="the study; all of them by default")
+    study.add_argument("--out", metavar="DIR", required=True, help="directory that keeps every batch, for tables and pictures too")
+    study.add_argument("--workers", metavar="N", type=int, default=1, help="processes that calculate")
+    study.add_argument("--cluster", metavar="ADDRESS", help="scheduler of a dask.distributed cluster that calculates")
     draw = _command(commands, "draw", "solve a flowsheet and draw its pictures")
     draw.add_argument("--out", metavar="DIR", required=True, help="directory for the pictures, SVG and PNG")
     commands.add_parser("catalogue", help="list installed unit kinds, equilibrium models and recycle methods")
@@ -110,6 +117,40 @@ def _draw(arguments: argparse.Namespace) -> int:
     return REACHED if result.converged else NOT_REACHED
 
 
+def _study(arguments: argparse.Namespace) -> int:
+    if arguments.workers < 1:
+        raise InputError([Fault("--workers", f"{arguments.workers} is no number of processes", "write 1 or more")])
+    if arguments.cluster and arguments.workers > 1:
+        raise InputError([Fault("--workers", "stands beside --cluster", "keep one of the two")])
+    sheet = read(arguments.file, arguments.settings)
+    names = [arguments.name] if arguments.name else list(sheet.given["studies"] or {})
+    if not names:
+        raise InputError([Fault("studies", "the file declares no study", "add [studies.NAME] with change = { ... }")])
+    studies = [declared(sheet, name) for name in names]  # all are read before any is begun
+    reached = True
+    for place, item in enumerate(studies):
+        progress = Progress(item.name, sys.stderr)
+        try:
+            found = item.run(arguments.out, workers=arguments.workers, cluster=arguments.cluster, progress=progress)
+        except KeyboardInterrupt:
+            progress.end()
+            sys.stderr.write(f"{arguments.file}: interrupted; finished batches are kept, the same command goes on from there\n")
+            return NOT_REACHED
+        finally:
+            progress.end()
+        written = text.findings(found)
+        files: dict[Path, str | bytes] = dict(tables.of_study(found, arguments.out))
+        files[Path(arguments.out) / f"{item.name}.txt"] = written
+        try:
+            files.update(gather.files(gather.of_study(found), arguments.out))
+        except MissingExtra as error:
+            sys.stderr.write(f"{arguments.file}: without pictures: {error}\n")
+        tables.put(files, arguments.out)
+        sys.stdout.write(("\n" if place else "") + written)
+        reached = reached and found.reached
+    return REACHED if reached else NOT_REACHED
+
+
 def _check(arguments: argparse.Namespace) -> int:
     sheet = read(arguments.file)
     found = sheet.check()
@@ -123,6 +164,9 @@ def _check(arguments: argparse.Namespace) -> int:
 def _catalogue(arguments: argparse.Namespace) -> int:
     sys.stdout.write(catalogue.catalogue())
     return REACHED
+
+
+COMMANDS = {"solve": _solve, "check": _check, "limits": _limits, "draw": _draw, "study": _study, "catalogue": _catalogue}
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -148,7 +192,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         parsed = _parser().parse_args(arguments)
         source = getattr(parsed, "file", source)
-        code = {"solve": _solve, "check": _check, "limits": _limits, "draw": _draw, "catalogue": _catalogue}[parsed.command](parsed)
+        code = COMMANDS[parsed.command](parsed)
         sys.stdout.flush()
         return code
     except InputError as error:

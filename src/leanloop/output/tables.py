@@ -9,7 +9,10 @@ import os
 import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from leanloop.studies.findings import Findings
 
 
 def rows_by_file(data: Mapping[str, Any]) -> dict[str, list[list[Any]]]:
@@ -74,6 +77,38 @@ def _cell(cell: Any) -> Any:
     if cell is None:
         return ""
     return "; ".join(str(item) for item in cell) if isinstance(cell, Sequence) and not isinstance(cell, str) else cell
+
+
+def of_study(found: Findings, directory: str) -> dict[Path, str]:
+    """Give a study's cases, and its curves where it has any, as CSV by path, in SI units.
+
+    Parameters
+    ----------
+    found : Findings
+    directory : str
+    """
+    name = found.study.name
+    out = {Path(directory) / f"{name}.csv": _columns(found.cases)} if found.cases else {}
+    if len(found.curves.get("case", ())):
+        out[Path(directory) / f"{name}_curves.csv"] = _columns(found.curves)
+    return out
+
+
+def _columns(table: Mapping[str, Any]) -> str:
+    """Write columns as CSV; what is not defined is empty."""
+    columns = [_cells(values) for values in table.values()]
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(table)
+    writer.writerows(zip(*columns, strict=True))
+    return text.getvalue()
+
+
+def _cells(values: Any) -> list[Any]:
+    if isinstance(values, list):
+        return values
+    cells = values.tolist()
+    return ["" if item != item else item for item in cells] if values.dtype.kind == "f" else cells
 
 
 def put(files: Mapping[Path, str | bytes], *directories: str | None) -> None:

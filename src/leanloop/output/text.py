@@ -8,12 +8,14 @@ from typing import TYPE_CHECKING, Any
 from leanloop.output.content import Listing, Part, Section, Sentence, number, printable
 from leanloop.output.content_limits import limits_sections
 from leanloop.output.content_report import report_sections, report_title
+from leanloop.output.content_studies import study_sections, study_title
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
     from leanloop.pinch.limits import Limits
+    from leanloop.studies.findings import Findings
 
-__all__ = ["limits", "number", "printable", "render", "report", "structure", "table"]
+__all__ = ["findings", "limits", "number", "printable", "render", "report", "structure", "table"]
 
 STEP = "  "  # of indentation
 
@@ -101,6 +103,20 @@ def limits(found: Limits) -> str:
     str
     """
     return render(limits_sections(found), report_title(found.case.sheet))
+
+
+def findings(found: Findings) -> str:
+    """Write the report of a study.
+
+    Parameters
+    ----------
+    found : Findings
+
+    Returns
+    -------
+    str
+    """
+    return render(study_sections(found), study_title(found))
 
 
 def structure(sheet: Any, found: dict[str, Any]) -> str:

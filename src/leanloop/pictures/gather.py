@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
     from leanloop.flowsheet.result import Result
+    from leanloop.studies.findings import Findings
 
 
 @dataclass(frozen=True)
@@ -102,3 +103,8 @@ def inline(shown: list[Picture]) -> dict[tuple[str, str], str]:
     shown : list of Picture
     """
     return {(item.place, item.caption): base.svg(item.figure, item.name) for item in shown}
+
+
+def of_study(found: Findings) -> list[Picture]:
+    """Draw what there is to draw of a study."""
+    return []

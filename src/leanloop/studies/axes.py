@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
 
 RANGE = ("from", "to", "count", "step", "spacing")
-FORMS = 'write a list of values, { from = ..., to = ..., count = ... } or { times = [...] }'
+FORMS = "write a list of values, { from = ..., to = ..., count = ... } or { times = [...] }"
 MOST_CASES = 5_000_000
 
 
@@ -189,8 +189,10 @@ def _times(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) -
     if isinstance(base, list) or sheet.entry(key).sort == "integer" or sheet.sorts[key] == "temperature":
         context.fault(where, "has no multiples", "give the values themselves")
         return None
-    good = isinstance(raw, (list, tuple)) and raw and all(
-        isinstance(item, Real) and not isinstance(item, bool) and np.isfinite(item) for item in raw
+    good = (
+        isinstance(raw, (list, tuple))
+        and raw
+        and all(isinstance(item, Real) and not isinstance(item, bool) and np.isfinite(item) for item in raw)
     )
     if not good:
         context.fault(f"{where}.times", "is no list of factors", "write { times = [0.5, 1.0, 2.0] }")
@@ -267,7 +269,9 @@ def _step(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) ->
 
 def _drawn(sheet: Flowsheet, tables: Sequence[tuple[Mapping[str, Any], str]], sample: Sample, context: Context) -> Cases | None:
     laws = {
-        key: read_law(sheet, key, item, f"{where}.{shown_key(key)}", context) for table, where in tables for key, item in table.items()
+        key: read_law(sheet, key, item, f"{where}.{shown_key(key)}", context)
+        for table, where in tables
+        for key, item in table.items()
     }
     if None in laws.values():
         return None

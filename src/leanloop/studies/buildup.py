@@ -97,7 +97,9 @@ def rewired(unit: Unit, old: str, new: str) -> dict[str, Any]:
         for entry in entries:
             item = out.get(entry.name)
             if entry.sort == "inlet" and item is not None:
-                out[entry.name] = (new if item == old else item) if isinstance(item, str) else [new if x == old else x for x in item]
+                out[entry.name] = (
+                    (new if item == old else item) if isinstance(item, str) else [new if x == old else x for x in item]
+                )
             elif entry.sort == "table" and isinstance(item, Mapping):
                 out[entry.name] = swapped(entry.nested, item)
             elif entry.sort == "tables" and isinstance(item, (list, tuple)):

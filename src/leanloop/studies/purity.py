@@ -133,7 +133,17 @@ def read_purity(sheet: Flowsheet, raw: Any, address: str, context: Context) -> P
     if len(context.faults) > faults or (raw is None and not purity.contaminants):
         return None
     return Purity(
-        name, purity.stream, purity.held, purity.contaminants, purity.others, purity.circuit, limits, bleed, between, inventory, start
+        name,
+        purity.stream,
+        purity.held,
+        purity.contaminants,
+        purity.others,
+        purity.circuit,
+        limits,
+        bleed,
+        between,
+        inventory,
+        start,
     )
 
 
@@ -145,9 +155,7 @@ def _look(sheet: Flowsheet, makeup: str, loop: list[str], named: tuple[str, ...]
     taken = {name: user for user in loop for name in sheet.units[user].inlets.values()}
     made = {name: maker for maker in loop for name in sheet.units[maker].outlets.values()}
     circuit = tuple(name for name in made if name in taken and plan.phases[name] != "gas")
-    carried = [
-        name for name in sheet.components.names if plan.present[stream][sheet.components.index[name]] and name not in held
-    ]
+    carried = [name for name in sheet.components.names if plan.present[stream][sheet.components.index[name]] and name not in held]
     stays = named if named is not None else [item.name for item in sheet.components if item.stays_in == "liquid"]
     shares = [
         f"units.{name}.shares.{label}"
@@ -177,7 +185,9 @@ def _limits(sheet: Flowsheet, purity: Purity, raw: Any, address: str, context: C
     for name, item in raw.items():
         where = f"{address}.{shown_key(name)}"
         if name not in (*purity.contaminants, *purity.others):
-            context.fault(where, f"{shown_name(name)} does not build up in '{purity.stream}'", nearest(str(name), purity.contaminants))
+            context.fault(
+                where, f"{shown_name(name)} does not build up in '{purity.stream}'", nearest(str(name), purity.contaminants)
+            )
             continue
         if not isinstance(item, Mapping):
             found = read_number(item, Entry("limit", "number", above=0.0), where, context)
@@ -239,7 +249,9 @@ def _start(purity: Purity, raw: Any, inventory: float | None, address: str, cont
     found = read_values([entry], {"start": raw}, address.rpartition(".")[0], context).group("start")
     for name in found:
         if name not in (*purity.contaminants, *purity.others):
-            context.fault(f"{address}.{name}", f"'{name}' does not build up in '{purity.stream}'", nearest(name, purity.contaminants))
+            context.fault(
+                f"{address}.{name}", f"'{name}' does not build up in '{purity.stream}'", nearest(name, purity.contaminants)
+            )
     return found
 
 

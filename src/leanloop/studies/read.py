@@ -163,9 +163,7 @@ def _held(sheet: Flowsheet, raw: Any, address: str, context: Context) -> Flowshe
     return sheet.rebuilt(requirements=kept)
 
 
-def _spread(
-    sheet: Flowsheet, raw: Mapping[str, Any], address: str, context: Context
-) -> tuple[Cases | None, dict[str, Law] | None]:
+def _spread(sheet: Flowsheet, raw: Mapping[str, Any], address: str, context: Context) -> tuple[Cases | None, dict[str, Law] | None]:
     where, spread = f"{address}.spread", raw["spread"]
     sample = read_sample(raw.get("sample"), f"{address}.sample", context, DRAWN)
     if not isinstance(spread, Mapping) or not spread:

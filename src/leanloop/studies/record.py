@@ -68,7 +68,9 @@ def _check(sheet: Flowsheet, address: str) -> None:
     head, *path = address.split(".")
     if head == "requirements":
         if not path or path[0] not in sheet.requirements:
-            raise AddressError(f"there is no requirement {shown_name('.'.join(path))}", nearest(".".join(path[:1]), sheet.requirements))
+            raise AddressError(
+                f"there is no requirement {shown_name('.'.join(path))}", nearest(".".join(path[:1]), sheet.requirements)
+            )
         _known(address, path[1:], (OF_REQUIREMENT,))
     elif head == "loop":
         _known(address, path, (OF_LOOP,))
@@ -89,7 +91,9 @@ def _known(address: str, path: list[str], levels: tuple[Any, ...]) -> None:
         if key not in names:
             raise AddressError(f"there is no '{key}' in {shown_name(address)}", nearest(key, names))
     if len(path) != len(levels):
-        raise AddressError(f"{shown_name(address)} is no number", f"go on to one of {', '.join(levels[min(len(path), len(levels) - 1)])}")
+        raise AddressError(
+            f"{shown_name(address)} is no number", f"go on to one of {', '.join(levels[min(len(path), len(levels) - 1)])}"
+        )
 
 
 def usual(sheet: Flowsheet) -> tuple[str, ...]:

@@ -72,7 +72,8 @@ class Store:
         with self._transaction():
             self.base.execute("CREATE TABLE IF NOT EXISTS about (key TEXT PRIMARY KEY, value TEXT)")
             self.base.execute(
-                "CREATE TABLE IF NOT EXISTS batches (part TEXT, batch INTEGER, first INTEGER, rows INTEGER, PRIMARY KEY (part, batch))"
+                "CREATE TABLE IF NOT EXISTS batches"
+                " (part TEXT, batch INTEGER, first INTEGER, rows INTEGER, PRIMARY KEY (part, batch))"
             )
             there = dict(self.base.execute("SELECT key, value FROM about"))
             wanted = {"format": FORMAT, **about}

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
 from concurrent.futures import Executor
 from dataclasses import dataclass, field, fields, is_dataclass
 from pathlib import Path
@@ -154,12 +153,18 @@ class Study:
 
     def about(self) -> dict[str, str]:
         """Give what the study is made of, as texts that differ where it does."""
-        given = {key: item for key, item in self.sheet.given.items() if key not in ("title", "studies", "plain_si", "source", "directory")}
+        given = {
+            key: item
+            for key, item in self.sheet.given.items()
+            if key not in ("title", "studies", "plain_si", "source", "directory")
+        }
         numbers = dict(self.sheet.numbers)  # points that stand in a file of their own among them
         return {
             "version": VERSION,
             "flowsheet": _canonical({"sections": given, "numbers": numbers}),
-            "study": _canonical({"name": self.name, "entries": {k: v for k, v in self.entries.items() if k != "title"}, "batch": self.batch}),
+            "study": _canonical(
+                {"name": self.name, "entries": {k: v for k, v in self.entries.items() if k != "title"}, "batch": self.batch}
+            ),
             "_title": self.title,
             "_state": "running",
         }

@@ -10,8 +10,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.studies import buildup, purity, record
 from leanloop.status import CODE, LIST, OK, Status
+from leanloop.studies import buildup, purity, record
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
@@ -91,7 +91,13 @@ def calculate(order: Order, changes: Mapping[str, Any], first: int, count: int) 
         return {"trials": {"part": [order.part] * count, "case": np.arange(first, first + count), "value": value}}
     cases: dict[str, Any] = {"case": np.arange(first, first + count)}
     cases.update({key: values for key, values in changes.items() if not isinstance(values, list)})
-    cases.update({key: [" ".join(f"{item:.17g}" for item in row) for row in values] for key, values in changes.items() if isinstance(values, list)})
+    cases.update(
+        {
+            key: [" ".join(f"{item:.17g}" for item in row) for row in values]
+            for key, values in changes.items()
+            if isinstance(values, list)
+        }
+    )
     cases["status"], cases["status_text"] = statuses(result)
     cases.update(record.columns(result, order.record))
     tables = {"cases": cases}

@@ -13,9 +13,10 @@ from leanloop.errors import Fault, InputError, nearest
 from leanloop.feed import SUM_TOLERANCE
 from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 from leanloop.quantities import parse
+from leanloop.studies.read import read_studies
 
 SCALED = ("fractions", "mass_fractions")  # changing one of them scales the others
-ELSEWHERE = ("studies", "sizing")  # for other questions than a solve
+ELSEWHERE = ("sizing",)  # for other questions than a solve
 
 DEEPEST = 50  # tables in one another
 TOO_DEEP = Fault("file", "is nested too deep", "write plain tables and lists")
@@ -231,12 +232,15 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
             data.get("groups"),
             data.get("limits"),
             data.get("heat_data"),
+            data.get("studies"),
             plain_si=False,
             source=name,
             directory=str(Path(path).parent),
         )
     except InputError as error:
         raise InputError([*faults, *error.faults], name) from None
+    context = Context(faults)
+    read_studies(sheet, context)
     if faults:
         raise InputError(faults, name)
     return sheet
