@@ -12,7 +12,8 @@ from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet.read import table
 from leanloop.studies import purity
 from leanloop.studies.axes import Cases, read_cases
-from leanloop.studies.purity import Purity, read_purity
+from leanloop.studies.purity import Purity
+from leanloop.studies.read_purity import read_purity
 from leanloop.studies.record import read_record
 from leanloop.studies.sample import read_sample
 from leanloop.studies.spread import Law, read_law

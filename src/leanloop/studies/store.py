@@ -137,7 +137,7 @@ class Store:
                 names = list(columns)
                 values = [_plain(columns[key]) for key in names]
                 rows = rows or len(values[0])
-                kinds = ", ".join(f"{_quoted(key)} {_affinity(item)}" for key, item in zip(names, values, strict=True))
+                kinds = ", ".join(f"{_quoted(key)} {_affinity(columns[key])}" for key in names)
                 self.base.execute(f"CREATE TABLE IF NOT EXISTS {_quoted(name)} ({kinds})")
                 marks = ", ".join("?" * len(names))
                 self.base.executemany(
@@ -199,21 +199,23 @@ def _quoted(name: str) -> str:
 
 
 def _plain(column: Any) -> list[Any]:
-    """Give a column as the database takes it: NaN is NULL there."""
-    values = column.tolist() if isinstance(column, np.ndarray) else list(column)
-    return [bool(item) if isinstance(item, np.bool_) else item for item in values]
+    """Give a column as the database takes it, which makes NULL of NaN."""
+    return column.tolist() if isinstance(column, np.ndarray) else list(column)
 
 
-def _affinity(values: list[Any]) -> str:
-    if any(isinstance(item, str) for item in values):
+def _affinity(column: Any) -> str:
+    if not isinstance(column, np.ndarray):
         return "TEXT"
-    return "INTEGER" if values and all(isinstance(item, int) for item in values) else "REAL"
+    return "INTEGER" if column.dtype.kind in "iub" else "REAL"
 
 
 def _array(column: tuple[Any, ...]) -> Any:
     """Give a column as an array where it holds numbers, NULL as NaN."""
-    if any(isinstance(item, str) for item in column):
+    if column and type(column[0]) is int:
+        whole = np.array(column)
+        if whole.dtype.kind == "i":
+            return whole
+    try:
+        return np.array(column, dtype=float)
+    except ValueError:
         return list(column)
-    if all(isinstance(item, int) for item in column):
-        return np.array(column, dtype=int)
-    return np.array([np.nan if item is None else item for item in column], dtype=float)
