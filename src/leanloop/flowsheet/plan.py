@@ -32,6 +32,7 @@ class Plan:
     """
 
     adds_nothing = Unit.added
+    makes_nothing = Unit.made
 
     def __init__(
         self,
