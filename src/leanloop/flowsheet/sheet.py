@@ -113,6 +113,8 @@ class Flowsheet:
         loose = read.unsettled(units, units_read, known)
         structure.check(known, loose)
         present, phases = structure.present(), structure.phases()
+        if not known.faults:  # then only a loop that no feed enters has no phase yet: solvent
+            phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         asked = heat_data is not None or any(unit.wants_heat for unit in units_read.values())
         asked = asked or any(feed.phase == TWO_PHASE for feed in self.feeds.values())
         self.heat = enthalpy.read(heat_data, self.components, known) if asked else None

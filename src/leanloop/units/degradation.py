@@ -246,7 +246,7 @@ class Degradation(Unit):
         found = [""] * len(flows)
         for case, place in np.argwhere(asked > (1 + SLACK) * flows):
             name, wanted, there = components.names[place], asked[case, place], flows[case, place]
-            said = f"{wanted:.4g} mol/s of '{name}' are to degrade and {there:.4g} mol/s flow: lower its rate or raise its flow"
+            said = f"{wanted:.6g} mol/s of '{name}' are to degrade and {there:.6g} mol/s flow: lower its rate or raise its flow"
             if np.broadcast_to(shares, flows.shape)[case, place] > 1:
                 said = f"the shares of '{name}' sum to more than 1: lower them"
             found[case] = f"{found[case]}; {said}" if found[case] else said
