@@ -1,5 +1,7 @@
 """Degradation: closed forms, balances of what is made and lost, ways in and out of loops, faults and cautions."""
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 
@@ -10,6 +12,7 @@ from leanloop.units.degradation import Degradation
 from leanloop.units.makeup import Makeup
 from leanloop.units.splitter import Splitter
 
+VENT = Path(__file__).parents[1] / "flowsheets" / "coating_vent.toml"
 SPECIES = {
     "amine": {"molar_mass": "61 g/mol", "stays_in": "liquid"},
     "water": {"molar_mass": "18 g/mol", "stays_in": "liquid"},
@@ -279,6 +282,38 @@ class TestLoop:
         for address in asked:
             slope = (ends[0][address] - ends[1][address]) / (2 * step)
             assert found[address, number] == pytest.approx(slope, rel=1e-6, abs=1e-8 * abs(result[address] / value)), address
+
+    def test_a_fed_component_that_degrades_at_a_rate(self):
+        """Salt f comes and r degrades: what is left, f - r, is bled; with r above f there is no such state."""
+        sheet = loop({"component": "salt", "rate": "0.01 mol/s"}, fed={"salt": 0.03})
+        result = sheet.solve({"units.age.reactions.0.rate": np.array([0.0, 0.01, 0.0299, 0.05])})
+        assert result.status == ["converged"] * 3 + ["unit_failed"]
+        np.testing.assert_allclose(result["streams.bleed.mol_s.salt"][:3], [0.03, 0.02, 1e-4], rtol=1e-8)
+        assert "0.05 mol/s of 'salt' are to degrade and 0.03 mol/s flow" in result.status_text[3]
+
+    def test_a_pair_of_columns(self, tmp_path):
+        """The oil of the example degrades on its way to the stripper: bleed and balance by hand, the window still found."""
+        text = VENT.read_text(encoding="utf-8").replace('liquid_in = "hot_rich"', 'liquid_in = "aged"')
+        text = text.replace("[components]", '[components]\ntar = { molar_mass = "400 g/mol", stays_in = "liquid" }')
+        text += """
+[units.age]
+kind = "degradation"
+takes = "hot_rich"
+gives = "aged"
+reactions = [{ component = "oil", share = 2e-4, makes = { tar = 0.6 } }]
+"""
+        (tmp_path / "vent.toml").write_text(text, encoding="utf-8")
+        result = leanloop.read(tmp_path / "vent.toml").solve()
+        assert result.converged
+        oil = result["requirements.emission.free_value"]
+        assert result["streams.bleed.mol_s.tar"] == pytest.approx(0.6 * 2e-4 * oil, rel=1e-10)
+        added = result["units.top_up.results.added_mol_s.oil"]
+        assert added == pytest.approx(oil * (2e-4 + 2e-3 - 4e-7), rel=1e-10)
+        assert closures(result) < 1e-12
+        # tar carries solute as oil does: less oil is asked for than without it
+        assert oil < leanloop.read(VENT).solve()["requirements.emission.free_value"]
+        window = leanloop.limits(result).to_dict()["loop"]
+        assert window["least_circulation_mol_s"] < oil < window["most_circulation_mol_s"]
 
     def test_requirement_on_a_made_contaminant(self):
         wanted = {"clean": {"quantity": "streams.held.fraction.salt", "equals": 0.01, "free": "units.divide.shares.bleed",

@@ -137,7 +137,6 @@ class Flowsheet:
             known.faults.extend(aside.faults)
         self._stop_on(known)
         self.settings, self.tears = settings, tears
-        phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         self.plan = Plan(self.components, self.feeds, self.units, structure, present, phases)
         self.plan.heat = self.heat
         for place, tear in enumerate(tears):
