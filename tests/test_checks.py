@@ -213,7 +213,8 @@ class Damped(RecycleMethod):
 
 
 GOOD = [
-    (check_unit, Sieve), (check_unit, Rust), (check_unit, Pair), (check_equilibrium, Binding), (check_equilibrium, Straight), (check_recycle, Damped),
+    (check_unit, Sieve), (check_unit, Rust), (check_unit, Pair),
+    (check_equilibrium, Binding), (check_equilibrium, Straight), (check_recycle, Damped),
 ]  # fmt: skip
 
 

@@ -375,7 +375,8 @@ class TestWays:
         units = {
             "wash": {"kind": "absorber", "gas_in": "sour", "liquid_in": "old", "gas_out": "clean", "liquid_out": "rich",
                      "stages": 3, "equilibrium": "here"},
-            "age": {**UNIT, "takes": "rich", "gives": "old", "reactions": [{"component": "solute", "share": 0.5, "makes": {"tar": 1.0}}]},
+            "age": {**UNIT, "takes": "rich", "gives": "old",
+                    "reactions": [{"component": "solute", "share": 0.5, "makes": {"tar": 1.0}}]},
         }  # fmt: skip
         sour = feed({"air": 1.0, "solute": 0.1}, "gas")
         found = faults(leanloop.Flowsheet, text, {"here": constants}, {"sour": sour}, units, plain_si=False)
@@ -475,8 +476,7 @@ class TestFaults:
         ([{**A, "share": 0.6}, A, {**A, "share": 0.4}, A],
          ["units.age.reactions[2].share: the shares of 'amine' sum to 1.1; let them sum to 1 at most"]),
         ([{"component": "tar", "share": 0.1}], ["units.age.reactions[0].component: 'tar' never flows in stream 'fed'"]),
-        ([{"component": "air", "share": 0.1}], ["units.age.reactions[0].component: 'air' stays in the gas and stream 'fed' is liquid",
-                                                "units.age.reactions[0].component: 'air' never flows in stream 'fed'"]),
+        ([{"component": "air", "share": 0.1}], ["units.age.reactions[0].component: 'air' stays in the gas and stream 'fed' is liquid"]),
         ([{**A, "makes": {"air": 0.1}}], ["units.age.reactions[0].makes.air: 'air' stays in the gas and stream 'fed' is liquid"]),
         ([{"component": "amine", "rate": "1 kg/h"}, {**A, "makes": {"water": "2 bar"}}],
          ["units.age.reactions[0].rate: '1 kg/h' is", "units.age.reactions[1].makes.water: '2 bar' is",
@@ -489,7 +489,8 @@ class TestFaults:
             assert fault.startswith(part), fault
 
     def test_entries_that_lack(self):
-        found = faults(leanloop.Flowsheet, SPECIES, feeds={"fed": feed(FED)}, units={"age": {"kind": "degradation"}}, plain_si=False)
+        bare = {"age": {"kind": "degradation"}}
+        found = faults(leanloop.Flowsheet, SPECIES, feeds={"fed": feed(FED)}, units=bare, plain_si=False)
         assert {item.partition(":")[0] for item in found} == {"units.age.takes", "units.age.gives", "units.age.reactions"}
 
     def test_two_phases_are_refused(self):

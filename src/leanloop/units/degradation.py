@@ -108,19 +108,20 @@ class Degradation(Unit):
         """What is named can be in the stream, which is of one phase; settle whether there are heat data of all in it."""
         unit = super().connect(around, context)
         sound = not context.faults  # else what flows where may not be known
+        come = around.present["takes"] | self.makes(around.components)
         refuse_two_phases(unit, "takes", "takes", context, "separate it in a flash drum before")
-        phase, present, stream = around.phases["takes"], around.present["takes"], self.inlets["takes"]
+        phase, stream = around.phases["takes"], self.inlets["takes"]
         for place, own, made in self._reactions():
             where = f"units.{self.name}.reactions[{place}]"
             for name, spot in ((own, f"{where}.component"), *((name, f"{where}.makes.{name}") for name in made)):
                 if phase == "liquid" and around.components[name].stays_in == "gas":
                     problem = f"'{name}' stays in the gas and stream '{stream}' is liquid"
                     context.fault(spot, problem, "name a component that can be in the liquid")
-            if sound and not (present | self.makes(around.components))[around.components.index[own]]:
+            stays = phase == "liquid" and around.components[own].stays_in == "gas"
+            if sound and not stays and not come[around.components.index[own]]:
                 problem = f"'{own}' never flows in stream '{stream}'"
                 context.fault(f"{where}.component", problem, "name a component that does, or leave the reaction out")
-        wanted = needs([(phase, present | self.makes(around.components))])
-        unit.knows = phase in ("gas", "liquid") and knows_heat(around, wanted)
+        unit.knows = phase in ("gas", "liquid") and knows_heat(around, needs([(phase, come)]))
         return unit
 
     def addresses(self) -> dict[str, str]:
