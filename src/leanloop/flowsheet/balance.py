@@ -40,7 +40,7 @@ def crossing(run: Run) -> tuple[np.ndarray, np.ndarray]:
 
 
 def made(run: Run) -> tuple[np.ndarray, np.ndarray]:
-    """Give what units make of other components, less what vanishes in them, and both without regard to sign.
+    """Give what units make of other components, less what vanishes in them, and what flows through those units.
 
     Parameters
     ----------
@@ -48,17 +48,18 @@ def made(run: Run) -> tuple[np.ndarray, np.ndarray]:
 
     Returns
     -------
-    net, turned_over : (M, C) mol/s
+    net, through : (M, C) mol/s
     """
     plan, view = run.plan, View(run)
     net = np.zeros((run.inputs.cases, len(plan.components)))
-    turned_over = np.zeros(net.shape)
+    through = np.zeros(net.shape)
     for name, unit in plan.units.items():
         if type(unit).made is not plan.makes_nothing:
-            own = unit.made(*view.sides(name), view.numbers(name))
-            if own is not None:
-                net, turned_over = net + own, turned_over + np.abs(own)
-    return net, turned_over
+            sides = view.sides(name)
+            own = unit.made(*sides, view.numbers(name))
+            net = net + (0.0 if own is None else own)
+            through = through + sum(stream.flows for side in sides for stream in side.values())
+    return net, through
 
 
 def balance(run: Run) -> dict[str, Any]:
@@ -76,9 +77,9 @@ def balance(run: Run) -> dict[str, Any]:
     """
     plan = run.plan
     entering, leaving = crossing(run)
-    gained, turned_over = made(run)
+    gained, through = made(run)
     larger = np.maximum(entering, leaving)
-    larger = np.where(larger == 0, turned_over, larger)  # of what is made inside and vanishes there
+    larger = np.where(larger == 0, through, larger)  # of what is made inside and vanishes there
     closure = np.where(larger == 0, 0.0, divide(entering + gained - leaving, larger))
     return {
         "components": {

@@ -43,7 +43,7 @@ class Degradation(Unit):
 
     @classmethod
     def examples(cls) -> list[Scene]:
-        """Give an amine that degrades in two ways, also with heat, a rate, all of one component, and a gas."""
+        """Give an amine in two ways, also with heat, by rate, all of a salt, a gas, and rates above what flows."""
         amine = Inlet("liquid", {"amine": [1.0, 0.9], "water": [2.0, 3.0], "salt": [0.01, 0.0], "heavy": 0.0}, [320.0, 390.0])
         ports = {"takes": "hot", "gives": "aged"}
         two = [
@@ -65,6 +65,8 @@ class Degradation(Unit):
             Scene({**ports, "reactions": fixed}, {"takes": amine}),
             Scene({**ports, "reactions": two + fixed[2:]}, {"takes": amine}, heat_data=data),
             Scene({**ports, "reactions": [{"component": "ozone", "share": 0.3}]}, {"takes": gas}),
+            Scene({**ports, "reactions": [{"component": "amine", "rate": rate, "makes": {"salt": 0.5}} for rate in (2.0, 1.0)]},
+                  {"takes": amine}),
         ]
 
     # --- reading and connecting
