@@ -67,6 +67,41 @@ class Sieve(Unit):
         return {"results": {"recovery": {name: part[..., place] for place, name in enumerate(self.around.components.names)}}}
 
 
+class Rust(Unit):
+    """Turns a part of one component into another, of whose molecules it takes half as many."""
+
+    kind = "rust"
+    entries = (
+        Entry("takes", "inlet", required=True, doc="the stream before"),
+        Entry("gives", "outlet", required=True, doc="the stream behind"),
+        Entry("part", "number", required=True, least=0.0, most=0.9, doc="part of the iron that rusts"),
+    )
+    shuts = True
+
+    @classmethod
+    def examples(cls):
+        fed = Inlet("liquid", {"iron": [1.0, 2.0], "rust": [0.0, 0.2], "oil": [0.3, 0.1]}, [300.0, 330.0], [1e5, 2e5])
+        raw = {"takes": "new", "gives": "old"}
+        return [Scene({**raw, "part": 0.3}, {"takes": fed}), Scene({**raw, "part": 0.0}, {"takes": fed})]
+
+    def makes(self, components, numbers=None):
+        return components.mask(["rust"] if numbers is None or np.all(np.asarray(numbers["part"]) > 0) else [])
+
+    def destroys(self, components, numbers=None):
+        return components.mask(["iron"] if numbers is None or np.all(np.asarray(numbers["part"]) > 0) else [])
+
+    def leans_on(self, outlet, what):
+        return [("takes", what)]
+
+    def made(self, inlets, outlets, numbers):
+        flows, components = inlets["takes"].flows, self.around.components
+        gone = np.asarray(numbers["part"] * flows[..., components.index["iron"]])[..., None]
+        return gone * (0.5 * components.mask(["rust"]) - components.mask(["iron"]))
+
+    def calculate(self, inlets, numbers):
+        return {"gives": inlets["takes"].carrying(inlets["takes"].flows + Rust.made(self, inlets, {}, numbers))}
+
+
 class Pair(Unit):
     """Two streams side by side, each brought half way to a temperature by an iteration that remembers its end."""
 
@@ -178,7 +213,8 @@ class Damped(RecycleMethod):
 
 
 GOOD = [
-    (check_unit, Sieve), (check_unit, Pair), (check_equilibrium, Binding), (check_equilibrium, Straight), (check_recycle, Damped),
+    (check_unit, Sieve), (check_unit, Rust), (check_unit, Pair),
+    (check_equilibrium, Binding), (check_equilibrium, Straight), (check_recycle, Damped),
 ]  # fmt: skip
 
 
@@ -359,6 +395,18 @@ def fixed():
     return after(Sieve, change)
 
 
+def half_as_much(self, inlets, outlets, numbers):
+    return Rust.made(self, inlets, outlets, numbers) / 2
+
+
+def only_with_numbers(self, components, numbers=None):
+    return np.full(len(components), numbers is not None)
+
+
+def oil_as_well(self, components, numbers=None):
+    return components.mask(["oil"])
+
+
 def lonely(found, arguments):
     if len(found.status) == 1:
         found.status = np.full_like(found.status, code(Status.unit_failed))
@@ -442,6 +490,16 @@ UNITS = [
     ("inlets_unchanged", variant(Pair, evaluate=overwriting), "memory 'gas_out' is changed"),
     ("balance", after(Sieve, leaky), "vanish"),
     ("balance", fountain(Sieve), "adds() does not say so"),
+    ("balance", variant(Rust, made=lambda *_: None), "of 'iron' vanish"),
+    ("balance", variant(Rust, made=half_as_much), "of 'iron' vanish"),
+    ("balance", variant(Rust, makes=Unit.makes), "'rust' is made, and makes() does not say so"),
+    ("makes_and_destroys_truthful", variant(Rust, makes=lambda *_: np.ones(2)), "makes() gives float64 (2,)"),
+    ("makes_and_destroys_truthful", variant(Rust, destroys=lambda *_: np.ones(2)), "destroys() gives float64 (2,)"),
+    ("makes_and_destroys_truthful", variant(Rust, makes=only_with_numbers), "makes() says more with numbers"),
+    ("makes_and_destroys_truthful", variant(Rust, destroys=only_with_numbers), "destroys() says more with numbers"),
+    ("makes_and_destroys_truthful", variant(Rust, shuts=False), "destroys() depends on numbers, and shuts is False"),
+    ("makes_and_destroys_truthful", variant(Rust, destroys=oil_as_well), "'oil' is said to vanish"),
+    ("makes_and_destroys_truthful", variant(Sieve, destroys=oil_as_well), "'oil' is said to vanish"),
     ("holds_truthful", variant(Sieve, holds=lambda self, components: components.mask(["oil"])), "'oil' is said to be held"),
     ("cases_alone", after(Sieve, mixing), "case 0 alone gives another 'up'"),
     ("nan_stays", after(Sieve, infecting), "changes 'up' of others"),

@@ -35,7 +35,7 @@ def phase_truthful(stand: Stand) -> None:
 def passes_truthful(stand: Stand) -> None:
     """A component that does not pass leaves no trace in the outlet."""
     unit, width = stand.unit, len(stand.components)
-    base, adds = stand.outlets(), unit.adds(stand.components)
+    base, adds = stand.outlets(), unit.adds(stand.components) | unit.makes(stand.components)
     reached = {label: np.zeros((stand.cases, width), dtype=bool) for label in base}
     for inlet in stand.inlets:
         for outlet in base:
@@ -64,6 +64,27 @@ def holds_truthful(stand: Stand) -> None:
         for place in np.flatnonzero(stand.unit.holds(stand.components)):
             gap, name = np.abs(now - base)[:, place].max(), stand.components.names[place]
             require(gap <= SAME * base[:, place].max(), f"'{name}' is said to be held and follows '{label}'")
+
+
+@check("what vanishes or is made decides what may build up", "let makes() and destroys() say what made() gives")
+def makes_and_destroys_truthful(stand: Stand) -> None:
+    """Numbers take away from what can be made or vanish; of what vanishes, more does where more comes."""
+    unit, components = stand.unit, stand.components
+    for title, tell in (("makes", unit.makes), ("destroys", unit.destroys)):
+        always = tell(components)
+        require(always.shape == (len(components),) and always.dtype == bool, f"{title}() gives {always.dtype} {always.shape}")
+        now = np.broadcast_to(tell(components, stand.numbers), (stand.cases, len(components)))
+        require(not (now & ~always).any(), f"{title}() says more with numbers than without")
+        require(title == "makes" or unit.shuts or (now == always).all(), "destroys() depends on numbers, and shuts is False")
+    for label in stand.inlets:
+        for place in np.flatnonzero(now.any(axis=0)):
+            gone = []
+            for inlets in (stand.inlets, stand.moved(label, place, lambda flow: MORE * flow)):
+                made = unit.made(inlets, stand.evaluate(inlets).outlets, stand.numbers)
+                gone.append(np.zeros(stand.cases) if made is None else -made[:, place])
+            flows = now[:, place] & (stand.inlets[label].flows[:, place] > 0)
+            more = gone[1] - gone[0] > SAME * stand.inlets[label].flows[:, place]
+            require(more[flows].all(), f"'{components.names[place]}' is said to vanish, and no more does where more comes")
 
 
 @check("a loop leaves out what it cannot change", "let leans_on() list every part of an inlet that moves the outlet")

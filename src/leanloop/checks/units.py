@@ -97,22 +97,22 @@ def inlets_unchanged(stand: Stand) -> None:
             require(np.array_equal(one[key], value, equal_nan=True), f"{title} '{key}' is changed")
 
 
-@check("nothing may arise or vanish", "count what comes from outside in added()")
+@check("nothing may arise or vanish", "count what comes from outside in added(), what reacts in made()")
 def balance(stand: Stand) -> None:
-    """Of every component as much leaves as comes in and is added."""
+    """Of every component as much leaves as comes in, is added and is made."""
     stand.outlets()
     found = stand.evaluate()
     fed = sum(stream.flows for stream in stand.inlets.values())
     left = sum(stream.flows for stream in found.outlets.values())
-    added = stand.unit.added(stand.inlets, found.outlets, stand.numbers)
-    added = np.zeros_like(fed) if added is None else added
-    allowed = BALANCE * (fed + left + np.abs(added))
-    for case, place in np.argwhere(~(np.abs(fed + added - left) <= allowed))[:1]:
-        name, open_by = stand.components.names[place], (fed + added - left)[case, place]
+    sides = stand.inlets, found.outlets, stand.numbers
+    added, made = (np.zeros_like(fed) if item is None else item for item in (stand.unit.added(*sides), stand.unit.made(*sides)))
+    gap, allowed = fed + added + made - left, BALANCE * (fed + left + np.abs(added) + np.abs(made))
+    for case, place in np.argwhere(~(np.abs(gap) <= allowed))[:1]:
+        name, open_by = stand.components.names[place], gap[case, place]
         require(False, f"case {case}: {open_by:.3g} mol/s of '{name}' vanish, of {fed[case, place]:.3g} mol/s fed")
-    told = stand.unit.adds(stand.components)
-    for place in np.flatnonzero(~told & (np.abs(added) > allowed).any(axis=0)):
-        require(False, f"'{stand.components.names[place]}' is added, and adds() does not say so")
+    for told, flows, words in (("adds", np.abs(added), "is added"), ("makes", made, "is made")):
+        for place in np.flatnonzero(~getattr(stand.unit, told)(stand.components) & (flows > allowed).any(axis=0)):
+            require(False, f"'{stand.components.names[place]}' {words}, and {told}() does not say so")
 
 
 @check("a batch is nothing but its cases", "let no case act on another: no sum or norm over the case axis")

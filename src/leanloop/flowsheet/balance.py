@@ -39,6 +39,29 @@ def crossing(run: Run) -> tuple[np.ndarray, np.ndarray]:
     return entering, leaving
 
 
+def made(run: Run) -> tuple[np.ndarray, np.ndarray]:
+    """Give what units make of other components, less what vanishes in them, and what flows through those units.
+
+    Parameters
+    ----------
+    run : Run
+
+    Returns
+    -------
+    net, through : (M, C) mol/s
+    """
+    plan, view = run.plan, View(run)
+    net = np.zeros((run.inputs.cases, len(plan.components)))
+    through = np.zeros(net.shape)
+    for name, unit in plan.units.items():
+        if type(unit).made is not plan.makes_nothing:
+            sides = view.sides(name)
+            own = unit.made(*sides, view.numbers(name))
+            net = net + (0.0 if own is None else own)
+            through = through + sum(stream.flows for side in sides for stream in side.values())
+    return net, through
+
+
 def balance(run: Run) -> dict[str, Any]:
     """Give what enters and leaves, by component, and the energy.
 
@@ -54,16 +77,16 @@ def balance(run: Run) -> dict[str, Any]:
     """
     plan = run.plan
     entering, leaving = crossing(run)
-    shape = entering.shape
-    made = np.zeros(shape)
+    gained, through = made(run)
     larger = np.maximum(entering, leaving)
-    closure = np.where(larger == 0, 0.0, divide(entering + made - leaving, larger))
+    larger = np.where(larger == 0, through, larger)  # of what is made inside and vanishes there
+    closure = np.where(larger == 0, 0.0, divide(entering + gained - leaving, larger))
     return {
         "components": {
             name: {
                 "in_mol_s": entering[:, place],
                 "out_mol_s": leaving[:, place],
-                "made_mol_s": made[:, place],
+                "made_mol_s": gained[:, place],
                 "closure": closure[:, place],
             }
             for place, name in enumerate(plan.components.names)

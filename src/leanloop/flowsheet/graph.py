@@ -14,7 +14,7 @@ from leanloop.entries import Context
 from leanloop.errors import nearest
 from leanloop.feed import Feed
 from leanloop.flowsheet.tearing import calculation_order, least_tears, partition
-from leanloop.units.base import Unit, ports
+from leanloop.units.base import Numbers, Unit, ports
 
 
 class Node(NamedTuple):
@@ -173,7 +173,7 @@ class Structure:
             changed = False
             for unit in self.units.values():
                 for label, stream in unit.outlets.items():
-                    now = unit.adds(self.components)
+                    now = unit.adds(self.components) | unit.makes(self.components)
                     for inlet, source in unit.inlets.items():
                         now = now | (found.get(source, none) & unit.passes(inlet, label, self.components))
                     if self.makers[stream][0] == unit.name and (now & ~found[stream]).any():
@@ -190,7 +190,7 @@ class Structure:
         present : mapping of str to (C,) bool
             By stream.
         open_paths : mapping of (unit, inlet label, outlet label) to (C,) bool
-            Which components pass.
+            Which components pass; with an empty outlet label, which vanish in the unit.
 
         Returns
         -------
@@ -208,7 +208,8 @@ class Structure:
                     for inlet, source in unit.inlets.items():
                         if source in leaving:
                             continue
-                        way = holders[unit.name][place] or any(
+                        gone = holders[unit.name][place] or open_paths[unit.name, inlet, ""][place]
+                        way = gone or any(
                             open_paths[unit.name, inlet, label][place] and stream in leaving
                             for label, stream in unit.outlets.items()
                         )
@@ -221,12 +222,15 @@ class Structure:
         return out
 
     def paths(self) -> dict[tuple[str, str, str], np.ndarray]:
-        """Give which components can pass through each unit, by (unit, inlet label, outlet label)."""
+        """Give which components can pass through each unit, by (unit, inlet label, outlet label).
+
+        With an empty outlet label, which vanish in it.
+        """
         return {
-            (unit.name, inlet, outlet): unit.passes(inlet, outlet, self.components)
+            (unit.name, inlet, outlet): passes(unit, inlet, outlet, self.components)
             for unit in self.units.values()
             for inlet in unit.inlets
-            for outlet in unit.outlets
+            for outlet in (*unit.outlets, "")
         }
 
     def graph(self) -> nx.MultiDiGraph:
@@ -249,6 +253,11 @@ class Structure:
             for target in taker.get(stream, ()):
                 graph.add_edge(source, target, key=stream)
         return graph
+
+
+def passes(unit: Unit, inlet: str, outlet: str, components: Components, numbers: Numbers | None = None) -> np.ndarray:
+    """Tell which components pass, or, with an empty outlet label, which vanish in the unit; (C,) or (M, C) bool."""
+    return unit.passes(inlet, outlet, components, numbers) if outlet else unit.destroys(components, numbers)
 
 
 def _port(unit: Unit, label: str) -> str:

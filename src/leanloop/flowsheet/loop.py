@@ -15,7 +15,7 @@ TEMPERATURE_TOLERANCE = 1e-6  # K
 ENTHALPY_TOLERANCE = 1e-4  # J/mol of a stream that may be of two phases, about as much
 PRESSURE_TOLERANCE = 1e-9  # relative
 NEGLIGIBLE = 4 * np.finfo(float).eps  # a last correction smaller than this changes nothing
-LEAST_SCALE = 1e-12  # of the loop flow, where a component has no external input
+LEAST_SCALE = 1e-12  # of the loop flow, where nothing of a component is brought or made
 
 
 def solve_step(run: Run, step: Step) -> None:
@@ -49,7 +49,13 @@ class LoopRun:
         self.count = int(sum(counts))
         # a component that nothing brings into the loop is not in it, whatever rounding says
         fed = sum((run.states[name][cases, :-2] for name in plan.outer(step)), np.zeros((len(cases), plan.width - 2)))
-        self.nothing = (fed == 0.0) & ~np.any([plan.units[name].adds(plan.components) for name in step.units], axis=0)
+        brought = fed != 0.0
+        for name in step.units:
+            unit = plan.units[name]
+            brought = brought | unit.adds(plan.components)
+            if type(unit).made is not plan.makes_nothing:
+                brought = brought | unit.makes(plan.components, run.inputs.of(plan.addresses[name], cases))
+        self.nothing = ~brought
         self.base: dict[str, np.ndarray] = {}
         self.last: tuple[np.ndarray, np.ndarray, Local] | None = None
         self.derive = run.settings.method.needs_jacobian
@@ -133,20 +139,22 @@ class LoopRun:
             given += local.states[name][:, :-2]
         for node in self.step.nodes:
             run.evaluate(node, cases, seeds, local, guesses.get(node))
-            given += self._added(node, cases, local)
+            given += self._brought(node, cases, local)
         return local, given
 
-    def _added(self, node: Node, cases: np.ndarray, local: Local) -> np.ndarray | float:
+    def _brought(self, node: Node, cases: np.ndarray, local: Local) -> np.ndarray | float:
+        """Give what a unit adds or makes, (m, C) mol/s; what it takes away counts as nothing."""
         plan = self.run.plan
         unit = plan.units[node[1]]
-        if type(unit).added is plan.adds_nothing:
+        if type(unit).added is plan.adds_nothing and type(unit).made is plan.makes_nothing:
             return 0.0
         inlets, outlets = plan.ports[node]
         streams = [
             {label: Stream(local.states[name], plan.phases[name]) for label, name in side.items()} for side in (inlets, outlets)
         ]
-        added = unit.added(*streams, self.run.inputs.of(plan.addresses[node[1]], cases))
-        return 0.0 if added is None else np.maximum(added, 0.0)
+        numbers = self.run.inputs.of(plan.addresses[node[1]], cases)
+        found = unit.added(*streams, numbers), unit.made(*streams, numbers)
+        return sum((np.maximum(item, 0.0) for item in found if item is not None), 0.0)
 
     def _scale(self, x: np.ndarray, given: np.ndarray, local: Local) -> np.ndarray:
         tolerance = self.run.settings.tolerance

@@ -152,8 +152,9 @@ class Result:
         elif culprit >= 0:
             name = part.run.plan.unit_names[culprit]
             text = f"Unit {name}: {text}"
-            if status is Status.unit_failed and name in part.run.messages:
-                text = f"{text} ({part.run.messages[name]})"
+            said = part.run.reasons.get(row) or part.run.messages.get(name)
+            if status is Status.unit_failed and said:
+                text = f"{text} ({said})"
         return text
 
     def codes(self) -> np.ndarray:

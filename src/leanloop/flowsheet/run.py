@@ -96,6 +96,7 @@ class Run:
         self.culprit = np.full(cases, -1)
         self.loops: list[ClosedLoop] = []
         self.messages: dict[str, str] = {}  # by unit, what its last exception said
+        self.reasons: dict[int, str] = {}  # by case, why its unit failed, once judged
         self.follow: dict[str, np.ndarray] = {}  # (M, E) by freed input, once linearised
         self.evaluations = 0
 

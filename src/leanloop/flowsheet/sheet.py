@@ -14,7 +14,7 @@ from leanloop.entries import Context, Entry
 from leanloop.equilibrium.conditions import Conditions
 from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet import read, read_limits, read_requirements
-from leanloop.flowsheet.graph import Structure, Tie
+from leanloop.flowsheet.graph import Structure, Tie, passes
 from leanloop.flowsheet.inputs import Inputs
 from leanloop.flowsheet.loop import solve_step
 from leanloop.flowsheet.plan import Plan, connect
@@ -121,6 +121,8 @@ class Flowsheet:
         loose = read.unsettled(units, units_read, known)
         structure.check(known, loose)
         present, phases = structure.present(), structure.phases()
+        if not known.faults:  # then only a loop that no feed enters has no phase yet: solvent
+            phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         asked = heat_data is not None or any(unit.wants_heat for unit in units_read.values())
         asked = asked or any(feed.phase == TWO_PHASE for feed in self.feeds.values())
         self.heat = enthalpy.read(heat_data, self.components, known) if asked else None
@@ -143,7 +145,6 @@ class Flowsheet:
             known.faults.extend(aside.faults)
         self._stop_on(known)
         self.settings, self.tears = settings, tears
-        phases = {stream: phase or "liquid" for stream, phase in phases.items()}
         self.plan = Plan(self.components, self.feeds, self.units, structure, present, phases)
         self.plan.heat = self.heat
         for place, tear in enumerate(tears):
@@ -398,6 +399,13 @@ class Flowsheet:
                 worse = crossed & (run.status < code(Status.temperature_cross))
                 run.status[worse] = code(Status.temperature_cross)
                 run.culprit[worse] = self.plan.unit_number[name]
+            if hasattr(unit, "shortfalls"):  # likewise
+                with np.errstate(all="ignore"):
+                    said = unit.shortfalls(view.sides(name)[0], view.numbers(name))
+                for case in np.flatnonzero(solved(run.status)):
+                    if said[case]:
+                        run.status[case], run.reasons[int(case)] = code(Status.unit_failed), said[case]
+                        run.culprit[case] = self.plan.unit_number[name]
 
     def _trapped(self, run: Run) -> list[Fault]:
         """Set the status of cases in which a number, such as a bleed of zero, shuts the only way out."""
@@ -407,8 +415,8 @@ class Flowsheet:
             if unit.shuts:
                 numbers = run.inputs.of(self.plan.addresses[unit.name])
                 for inlet in unit.inlets:
-                    for outlet in unit.outlets:
-                        way = unit.passes(inlet, outlet, self.components, numbers)
+                    for outlet in (*unit.outlets, ""):
+                        way = passes(unit, inlet, outlet, self.components, numbers)
                         if not way.all():
                             partial[unit.name, inlet, outlet] = way
         if not partial:
@@ -441,7 +449,11 @@ class Flowsheet:
         for feed in self.feeds.values():
             numbers = run.inputs.of(feed.addresses())
             total = total + np.nan_to_num(feed.stream(numbers).flows[..., place])
-        return total > 0
+        fed = total > 0
+        for unit in self.units.values():
+            if type(unit).made is not self.plan.makes_nothing:
+                fed = fed | unit.makes(self.components, run.inputs.of(self.plan.addresses[unit.name]))[..., place]
+        return fed
 
     def linearised(self, part: Part, numbers: list[str], released: str = "") -> Run:
         """Give a run at a solved part's states that carries total derivatives along some inputs.

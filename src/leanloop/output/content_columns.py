@@ -83,11 +83,12 @@ def _loading(result: Result, stream: dict[str, Any], solute: str) -> float | Non
 
 
 def _exchange(result: Result, data: dict[str, Any], units: list[str]) -> list[Sentence]:
-    """Tell what make-ups add to a loop and what leaves it as a liquid."""
+    """Tell what make-ups add to a loop, what degrades and is made in it, and what leaves it as a liquid."""
     parts, plan = [], result.sheet.plan
     for name in units:
-        for component, added in (data["units"][name]["results"].get("added_mol_s") or {}).items():
-            parts.append(Sentence(f"{name} adds {number(hourly(added))} kmol/h of {component}"))
+        for key, verb in (("added_mol_s", "adds"), ("degraded_mol_s", "degrades"), ("made_mol_s", "makes")):
+            for component, flow in (data["units"][name]["results"].get(key) or {}).items():
+                parts.append(Sentence(f"{name} {verb} {number(hourly(flow))} kmol/h of {component}"))
     for stream in plan.structure.products:
         if plan.structure.makers[stream][0] in units and plan.phases[stream] == "liquid":
             item = data["streams"][stream]

@@ -166,11 +166,12 @@ def _gases(result: Result, data: dict[str, Any]) -> list[Section]:
 
 
 def _balance(data: dict[str, Any]) -> Section:
-    rows = [
-        [component, number(hourly(item["in_mol_s"]), 7), number(hourly(item["out_mol_s"]), 7), number(item["closure"], 2)]
-        for component, item in data["balance"]["components"].items()
-    ]
-    head = ["component", "in, make-up included", "out", "closure"]
+    found = data["balance"]["components"]
+    keys = {"in_mol_s": "in, make-up included", "made_mol_s": "made", "out_mol_s": "out"}
+    if not any(item["made_mol_s"] for item in found.values()):
+        del keys["made_mol_s"]
+    rows = [[name, *(number(hourly(item[key]), 7) for key in keys), number(item["closure"], 2)] for name, item in found.items()]
+    head = ["component", *keys.values(), "closure"]
     both = {unit["kind"] for unit in data["units"].values() if "profile" in unit}
     name = "Combined balance of absorber and regenerator" if len(both) > 1 else "Balance"
     return Section(f"{name}, kmol/h", [Table(head, rows)], place="balance")

@@ -20,6 +20,7 @@ KINDS = Registry(
         "pump": "leanloop.units.pump:Pump",
         "blower": "leanloop.units.blower:Blower",
         "cleanup": "leanloop.units.cleanup:Cleanup",
+        "degradation": "leanloop.units.degradation:Degradation",
     },
     "leanloop.units.base:Unit",
 )

@@ -148,7 +148,7 @@ class Unit(ABC):
     scales : bool
         Whether scaling all inlet flows (and flow inputs) scales all outlet flows.
     shuts : bool
-        Whether `passes` depends on numbers.
+        Whether `passes` or `destroys` depends on numbers.
     conserves : bool
         Whether outlets must hold what inlets bring, so that a case in which they do not is no answer.
     inlets, outlets : dict of str to str
@@ -247,6 +247,24 @@ class Unit(ABC):
         Returns
         -------
         (C,) bool
+        """
+        return np.zeros(len(components), dtype=bool)
+
+    def makes(self, components: Components, numbers: Numbers | None = None) -> np.ndarray:
+        """Tell which components the unit can make of others.
+
+        Returns
+        -------
+        (C,) or (M, C) bool
+        """
+        return np.zeros(len(components), dtype=bool)
+
+    def destroys(self, components: Components, numbers: Numbers | None = None) -> np.ndarray:
+        """Tell of which components a part of what comes in vanishes, which is a way out of a loop.
+
+        Returns
+        -------
+        (C,) or (M, C) bool
         """
         return np.zeros(len(components), dtype=bool)
 
@@ -410,8 +428,14 @@ class Unit(ABC):
         """Give what the unit adds from outside, (..., C) mol/s; None for nothing."""
         return None
 
+    def made(
+        self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers
+    ) -> np.ndarray | None:
+        """Give what the unit makes of other components, (..., C) mol/s, negative for what vanishes; None for nothing."""
+        return None
+
     def added_heat(self, inlets: Mapping[str, Stream], outlets: Mapping[str, Stream], numbers: Numbers) -> np.ndarray | None:
-        """Give the enthalpy flow of what the unit adds from outside, (...,) W; None for nothing, or where it is not known."""
+        """Give the enthalpy flow of what the unit adds or makes, (...,) W; None for nothing, or where it is not known."""
         return None
 
     def results(
