@@ -66,7 +66,10 @@ def test_readme_snippets_run(number):
 @pytest.mark.parametrize("number", range(len(blocks(README, "toml"))))
 def test_readme_flowsheets_solve(number, tmp_path):
     path = tmp_path / "sheet.toml"
-    path.write_text(blocks(README, "toml")[number], encoding="utf-8")
+    block = blocks(README, "toml")[number]
+    if "[units." not in block:  # sections to go with the example
+        block = (ROOT / "flowsheets" / "coating_vent.toml").read_text(encoding="utf-8").split("[studies.")[0] + block
+    path.write_text(block, encoding="utf-8")
     code, now = printed(["solve", str(path)])
     assert code == 0
     assert "converged" in now

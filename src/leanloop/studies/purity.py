@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.flowsheet.balance import balance, crossing
+from leanloop.flowsheet.balance import crossing, made
 from leanloop.flowsheet.view import View
 from leanloop.stream import divide
 
@@ -91,14 +91,14 @@ def _of_part(part: Part, purity: Purity) -> dict[str, np.ndarray]:
     index = plan.components.index
     with np.errstate(all="ignore"):
         entering, _ = crossing(run)
-        made = balance(run)["components"]
+        gained, _ = made(run)
         lean = view.stream(purity.stream).flows
         solvent = lean[:, [index[name] for name in purity.held]].sum(axis=1)
         out: dict[str, np.ndarray] = {}
         for name in (*purity.contaminants, *purity.others):
             place = index[name]
             most = np.max([view.stream(stream).flows[:, place] for stream in purity.circuit], axis=0)
-            ingress = entering[:, place] + np.maximum(made[name]["made_mol_s"], 0.0)
+            ingress = entering[:, place] + np.maximum(gained[:, place], 0.0)
             out[f"purity.build_up.{name}"] = divide(most, ingress)
             out[f"purity.level.{name}"] = divide(lean[:, place], solvent)
             out[f"purity.ingress_mol_s.{name}"] = ingress
@@ -112,7 +112,7 @@ def _of_part(part: Part, purity: Purity) -> dict[str, np.ndarray]:
             out[f"purity.added_mol_s.{name}"] = np.asarray(added[name], dtype=float)
             out[f"purity.out_with_liquid_mol_s.{name}"] = leaving["liquid"]
             out[f"purity.out_with_gas_mol_s.{name}"] = leaving["gas"]
-            out[f"purity.degraded_mol_s.{name}"] = np.maximum(-made[name]["made_mol_s"], 0.0)
+            out[f"purity.degraded_mol_s.{name}"] = np.maximum(-gained[:, place], 0.0)
     return out
 
 
