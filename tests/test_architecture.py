@@ -33,6 +33,7 @@ LAYERS = {
     "enthalpy": (*TEXT, "components"),
     "stream": ("quantities", "components"),
     "equilibrium": (*TEXT, "registry", "components"),
+    "hydraulics": ("errors",),
     "column": ("errors", "status", "entries", "equilibrium"),
     "flash": ("errors", "status", "entries", "components", "stream", "equilibrium", "enthalpy", "column"),
     "feed": (*TEXT, "components", "stream", "equilibrium", "flash"),
@@ -54,8 +55,9 @@ LAYERS = {
     "package": (*TEXT, "components", "stream", "feed", "flowsheet", "pinch", "textfile"),  # leanloop/__init__.py
 }
 ORDER = (
-    "errors", "status", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "column", "flash",
-    "feed", "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package", "cli", "__main__",
+    "errors", "status", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium", "hydraulics",
+    "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "output", "pictures", "textfile", "package",
+    "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
