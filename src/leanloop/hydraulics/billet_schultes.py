@@ -1,8 +1,8 @@
 """Pressure drop, hold-up, loading and flooding of packings by the method of Billet and Schultes.
 
-R. Billet, M. Schultes, Trans. IChemE 77A (1999) 498. Equations from memory; those of hold-up and pressure drop also read in J. Benitez, Principles and Modern Applications of Mass
-Transfer Operations, chapter 4. Every function takes the constants as `leanloop.hydraulics.packings.BilletSchultes`; velocities
-are superficial.
+R. Billet, M. Schultes, Trans. IChemE 77A (1999) 498. Equations from memory; those of hold-up and pressure
+drop also read in J. Benitez, Principles and Modern Applications of Mass Transfer Operations, chapter 4. Every function takes the
+constants as `leanloop.hydraulics.packings.BilletSchultes`; velocities are superficial.
 """
 
 from __future__ import annotations

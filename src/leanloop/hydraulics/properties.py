@@ -59,7 +59,8 @@ def gas_density(pressure: Any, temperature: Any, molar_mass: Any) -> Any:
 def gas_viscosity(fractions: Any, viscosities: Any, molar_masses: Any) -> Any:
     """Give the viscosity of a gas mixture at low pressure by Wilke's rule.
 
-    C. R. Wilke, J. Chem. Phys. 18 (1950) 517: sum_i y_i mu_i / sum_j y_j phi_ij, phi_ij = (1 + (mu_i/mu_j)^0.5 (M_j/M_i)^0.25)^2 / (8 (1 + M_i/M_j))^0.5; from memory.
+    C. R. Wilke, J. Chem. Phys. 18 (1950) 517, from memory: sum_i y_i mu_i / sum_j y_j phi_ij,
+    phi_ij = (1 + (mu_i/mu_j)^0.5 (M_j/M_i)^0.25)^2 / (8 (1 + M_i/M_j))^0.5.
 
     Parameters
     ----------
@@ -166,7 +167,8 @@ def liquid_diffusivity(
 ) -> Any:
     """Give the diffusivity of a dilute solute in a liquid by the equation of Wilke and Chang.
 
-    C. R. Wilke, P. Chang, AIChE J. 1 (1955) 264: 7.4e-8 (phi M)^0.5 T / (mu V^0.6) in cm2/s, g/mol, mPa s and cm3/mol; scatter 10 to 15 percent; from memory.
+    C. R. Wilke, P. Chang, AIChE J. 1 (1955) 264: 7.4e-8 (phi M)^0.5 T / (mu V^0.6) in cm2/s, g/mol,
+    mPa s and cm3/mol; scatter 10 to 15 percent; from memory.
 
     Parameters
     ----------

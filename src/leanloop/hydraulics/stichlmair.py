@@ -1,7 +1,7 @@
 """Pressure drop, hold-up and flooding of packings by the method of Stichlmair, Bravo and Fair.
 
-J. Stichlmair, J. L. Bravo, J. R. Fair, Gas Sep. Purif. 3 (1989) 19. Equations and constants from memory, the constants doubtful. Every function takes the constants as
-`leanloop.hydraulics.packings.Stichlmair`; velocities are superficial.
+J. Stichlmair, J. L. Bravo, J. R. Fair, Gas Sep. Purif. 3 (1989) 19. Equations and constants from memory,
+the constants doubtful. Every function takes the constants as `leanloop.hydraulics.packings.Stichlmair`; velocities are superficial.
 """
 
 from __future__ import annotations

@@ -26,7 +26,7 @@ KISTER_HAAS = (
     Range("spacing", 0.4, 0.9, "m"), Range("hole_diameter", 3e-3, 15e-3, "m"), Range("hole_area_ratio", 0.06, 0.20),
     Range("gas_density", 0.5, 30.0, "kg/m3"),
 )  # fmt: skip
-ENTRAINMENT = (Range("flow_parameter", 0.01, 1.0), Range("fraction_of_flood", 0.3, 0.95))
+ENTRAINMENT = (Range("flow_parameter", 0.01, 0.5), Range("fraction_of_flood", 0.3, 0.95))
 ENTRAINMENT_80 = (Range("flow_parameter", 0.01, 1.0), Range("fraction_of_flood", 0.75, 0.85))
 
 # Common practice, no source; from memory.
@@ -196,8 +196,8 @@ def entrainment(flow_parameter: Any, fraction_of_flood: Any) -> Any:
     """Give the entrained liquid, over the sum of entrained and downflowing liquid, from Fair's chart.
 
     psi = exp(-(6.692 + 1.956 f) F^(-0.132 + 0.654 f)), f the fraction of flood. Ranges in `ENTRAINMENT`. A. P.
-    Economopoulos, Chem. Eng. 85(27) 109 (1978); constants and source from memory; within a factor of 1.6 of
-    `entrainment_80` up to a flow parameter of 0.3.
+    Economopoulos, Chem. Eng. 85(27) 109 (1978); constants and source from memory; within 30 percent of
+    `entrainment_80` up to a flow parameter of 0.3, from where on it falls off faster.
 
     Parameters
     ----------
