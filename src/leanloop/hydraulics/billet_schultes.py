@@ -24,9 +24,11 @@ RANGES = (
 )  # fmt: skip
 
 
+@quiet
 def reynolds(packing: BilletSchultes, liquid_velocity: Any, liquid_density: Any, liquid_viscosity: Any) -> Any:
     """Give the Reynolds number of the liquid, uL rhoL / (a muL); arguments as in `holdup`, result (...,)."""
-    return liquid_velocity * liquid_density / (packing.specific_area * liquid_viscosity)
+    velocity, density, viscosity = positive(liquid_velocity, liquid_density, liquid_viscosity)
+    return velocity * density / (packing.specific_area * viscosity)
 
 
 @quiet

@@ -196,11 +196,11 @@ def billet_schultes_gas(
     (...,) mol/(m2 s Pa)
     """
     velocity, held, density, viscosity = positive(gas_velocity, holdup, gas_density, gas_viscosity)
-    diffusivity, temperature = positive(gas_diffusivity, temperature)
+    diffusivity, temperature, power = positive(gas_diffusivity, temperature, schmidt_power)
     area, free = np.asarray(packing.specific_area), positive(np.asarray(packing.void_fraction) - held)
     number, schmidt = velocity * density / (area * viscosity), viscosity / (density * diffusivity)
-    spread = area**1.5 / np.sqrt(_channel(packing) * free)  # 0.1304 is 6^(-3/4) / 2
-    return np.asarray(packing.gas) * spread * diffusivity / (R * temperature) * number**0.75 * schmidt**schmidt_power
+    spread = np.sqrt(area / (_channel(packing) * free))  # 0.1304 is 6^(-3/4) / 2
+    return np.asarray(packing.gas) * spread * diffusivity / (R * temperature) * number**0.75 * schmidt**power
 
 
 def _channel(packing: BilletSchultes) -> Any:

@@ -123,5 +123,5 @@ def transfer_units(gas_in: Any, gas_out: Any, gas_at_liquid_in: Any, lam: Any) -
     lack = 1 - lam
     enters, leaves, rest = (np.asarray(item, dtype=float) for item in (gas_in, gas_out, gas_at_liquid_in))
     excess = (enters - leaves) / (leaves - rest)
-    excess = np.where((excess >= 0) & np.isfinite(excess), excess, np.nan)
+    excess = np.where((excess >= 0) & np.isfinite(excess) & np.isfinite(rest), excess, np.nan)
     return np.where(lack == 0, excess, np.log1p(lack * excess) / lack)[()]
