@@ -157,6 +157,8 @@ class TestBilletSchultes:
         wet = dry * billet_schultes.wet_factor(constants, down, given["rhoL"], given["muL"])
         found = [billet_schultes.wall_factor(constants, size), dry, wet]
         assert found == pytest.approx([exact["Kw"], exact["dP0"], exact["dP"]], rel=1e-3)
+        assert wet == billet_schultes.pressure_drop(
+            constants, velocity, down, density, given["rhoL"], given["muG"], given["muL"], size)
         other = robbins.pressure_drop(179 / FOOT, velocity * density, down * given["rhoL"], density, given["rhoL"], given["muL"])
         assert other == pytest.approx(exact["robbins_Fpd_179"], rel=2e-3)
         assert other / wet == pytest.approx(1, abs=0.25)

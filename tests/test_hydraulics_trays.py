@@ -191,10 +191,11 @@ class TestPressureDrop:
         found = tray_pressure.dry_head(20.0, 1.2, 1000.0, 1e-4, 0.84)
         assert found == pytest.approx(51e-3 * (20 / 0.84) ** 2 * 1.2e-3, rel=1e-3)
 
-    def test_constants_are_those_of_the_other_units(self):
+    @pytest.mark.parametrize("weir", [0.005, 0.02, 0.05])
+    def test_constants_are_those_of_the_other_units(self, weir):
         # Seader and Henley, section 6.6: exp(-4.257 K^0.91) with ft/s; 0.362 + 0.317 exp(-3.5 h) with in, gpm and in; from memory
         foot, inch, gpm = 0.3048, 0.0254, 3.785411784e-3 / 60
-        velocity, light, heavy, weir, length, flow = 1.5, 2.0, 900.0, 0.05, 1.2, 0.008
+        velocity, light, heavy, length, flow = 1.5, 2.0, 900.0, 1.2, 0.008
         capacity = velocity * np.sqrt(light / (heavy - light))
         share = np.exp(-4.257 * (capacity / foot) ** 0.91)
         assert tray_pressure.froth_density(velocity, light, heavy) == pytest.approx(share, rel=2e-3)

@@ -17,10 +17,10 @@ from leanloop.hydraulics.packings import BilletSchultes
 from leanloop.hydraulics.ranges import Range
 from leanloop.hydraulics.roots import bracketed
 
-# From memory; of the data of absorption and desorption behind the method.
+# Of the data behind the method; from memory, rounded.
 RANGES = (
     Range("gas_density", 0.07, 97.0, "kg/m3"), Range("liquid_density", 361.0, 1237.0, "kg/m3"),
-    Range("liquid_viscosity", 0.1e-3, 2e-3, "Pa s"), Range("liquid_velocity", 0.03e-3, 40e-3, "m/s"),
+    Range("liquid_viscosity", 0.1e-3, 2e-3, "Pa s"), Range("liquid_velocity", 0.07e-3, 33e-3, "m/s"),
 )  # fmt: skip
 
 
@@ -141,6 +141,26 @@ def wet_factor(
     area = np.asarray(packing.specific_area)
     swollen = np.exp(13300 * area**-1.5 * velocity * np.sqrt(area / g))
     return narrowed * (held / positive(loading_holdup)) ** 0.3 * swollen
+
+
+@quiet
+def pressure_drop(
+    packing: BilletSchultes,
+    gas_velocity: Any,
+    liquid_velocity: Any,
+    gas_density: Any,
+    liquid_density: Any,
+    gas_viscosity: Any,
+    liquid_viscosity: Any,
+    diameter: Any = np.inf,
+    loading_holdup: Any = None,
+) -> Any:
+    """Give the pressure drop of the irrigated packing below the loading point, (...,) Pa/m.
+
+    The product of `dry_pressure_drop` and `wet_factor`, whose arguments it takes. It has no end at flooding: see `flooding`.
+    """
+    dry = dry_pressure_drop(packing, gas_velocity, gas_density, gas_viscosity, diameter)
+    return dry * wet_factor(packing, liquid_velocity, liquid_density, liquid_viscosity, loading_holdup)
 
 
 @quiet
