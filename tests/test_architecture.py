@@ -34,6 +34,7 @@ LAYERS = {
     "enthalpy": (*TEXT, "components"),
     "stream": ("quantities", "components"),
     "equilibrium": (*TEXT, "registry", "components"),
+    "hydraulics": ("errors",),
     "column": ("errors", "status", "entries", "equilibrium"),
     "flash": ("errors", "status", "entries", "components", "stream", "equilibrium", "enthalpy", "column"),
     "feed": (*TEXT, "components", "stream", "equilibrium", "flash"),
@@ -61,8 +62,8 @@ LAYERS = {
 }
 ORDER = (
     "errors", "status", "version", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium",
-    "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures", "textfile",
-    "package", "cli", "__main__",
+    "hydraulics", "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures",
+    "textfile", "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
