@@ -31,6 +31,8 @@ class Stages:
     gas_basis, liquid_basis : (M, N) mol/s
         Part of those flows that belongs to the basis of the mole ratios.
     law : BoundLaw
+    depth : (M,) int or None
+        Stages of each case, where they differ: below them no gas rises, and the liquid runs through as it is.
     """
 
     feeds: np.ndarray
@@ -39,6 +41,12 @@ class Stages:
     gas_basis: np.ndarray
     liquid_basis: np.ndarray
     law: BoundLaw
+    depth: np.ndarray | None = None
+
+    @property
+    def below(self) -> np.ndarray | None:
+        """Places under a case's own bottom stage, (M, N) bool; None where there are none."""
+        return None if self.depth is None else np.arange(self.feeds.shape[1]) >= self.depth[:, None]
 
     @property
     def shape(self) -> tuple[int, int, int]:
@@ -65,6 +73,7 @@ class Stages:
             self.gas_basis[cases],
             self.liquid_basis[cases],
             bound,
+            None if self.depth is None else self.depth[cases],
         )
 
 
@@ -189,10 +198,17 @@ def gas_derivatives(stages: Stages, at: Phases) -> np.ndarray:
         out[:, :, 1:] = (-steep * at.liquid)[:, :, None, :]
         diagonal = np.arange(parts)
         out[:, :, 1 + diagonal, diagonal] += steep
-        return out
+        return _without_gas(stages, out)
     unit = np.eye(parts + 1)[:, None, None, :]
     out = gas_change(stages, at, unit[..., 0], unit[..., 1:], 0.0, 0.0, 0.0, 0.0)
-    return np.moveaxis(np.broadcast_to(out, (parts + 1, cases, count, parts)), 0, 2).copy()
+    return _without_gas(stages, np.moveaxis(np.broadcast_to(out, (parts + 1, cases, count, parts)), 0, 2).copy())
+
+
+def _without_gas(stages: Stages, derivatives: np.ndarray) -> np.ndarray:
+    """Take away what gas would do where none can be."""
+    if stages.depth is not None:
+        derivatives[stages.below] = 0.0
+    return derivatives
 
 
 def rows(inert: np.ndarray | float, feeds: np.ndarray | float, gas_flow: np.ndarray) -> np.ndarray:

@@ -16,7 +16,7 @@ TINY = 1e-300
 MOST_FACTOR = 1e15  # beyond it the liquid keeps nothing that the arithmetic can tell from nothing
 
 
-def split_fractions(factor: np.ndarray, stages: int) -> tuple[np.ndarray, np.ndarray]:
+def split_fractions(factor: np.ndarray, stages: int | np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Give the fractions stripped from the liquid, and absorbed from the gas, at one stripping factor.
 
     Kremser (1930), Souders and Brown (1932): (S^(N+1) - S)/(S^(N+1) - 1) is stripped, the same with
@@ -26,7 +26,7 @@ def split_fractions(factor: np.ndarray, stages: int) -> tuple[np.ndarray, np.nda
     ----------
     factor : (...,) dimensionless
         Stripping factor K V / L, positive.
-    stages : int
+    stages : int or (...,) int
 
     Returns
     -------
@@ -147,18 +147,24 @@ def start(stages: Stages, sweeps: int = 2) -> np.ndarray:
     """
     cases, count, parts = stages.shape
     total = stages.feeds.sum(axis=1)
-    top, bottom = stages.feeds[:, 0], stages.feeds[:, -1]
+    last = count - 1 if stages.depth is None else stages.depth - 1
+    every = np.arange(cases)
+    top, bottom = stages.feeds[:, 0], stages.feeds[every, last]
     ratio = np.broadcast_to(stages.law.k_dilute, (cases, count, parts))
     # gas and liquid with every component in the phase that it prefers
     liquid_in = stages.liquid_inert[:, 0] + top.sum(axis=-1)
-    gas_in = stages.gas_inert[:, -1] + bottom.sum(axis=-1)
+    gas_in = stages.gas_inert[every, last] + bottom.sum(axis=-1)
     factor = ratio[:, 0] * ((gas_in + 1e-9 * liquid_in) / np.maximum(liquid_in + 1e-9 * gas_in, TINY))[:, None]
-    stripped, absorbed = split_fractions(np.clip(factor, 1e-15, 1e15), count)
+    stripped, absorbed = split_fractions(np.clip(factor, 1e-15, 1e15), count if stages.depth is None else stages.depth[:, None])
     gas_out = stages.gas_inert[:, 0] + (stripped * top + (1.0 - absorbed) * (total - top)).sum(axis=-1)
     liquid_out = stages.liquid_inert[:, -1] + ((1.0 - stripped) * top + absorbed * (total - top)).sum(axis=-1)
-    place = np.arange(count) / max(count - 1, 1)
+    place = np.arange(count) / np.maximum(np.reshape(last, (-1, 1)), 1)
+    if stages.depth is not None:
+        place = np.minimum(place, 1.0)
     liquid = liquid_in[:, None] + place * (liquid_out - liquid_in)[:, None]
     gas = gas_out[:, None] + place * (gas_in - gas_out)[:, None]
+    if stages.depth is not None:
+        gas[stages.below] = 0.0
     unknowns = sweep(stages, gas, liquid, ratio)
     for _ in range(sweeps - 1):
         total_liquid = stages.liquid_inert + unknowns[..., 1:].sum(axis=-1)
@@ -187,4 +193,6 @@ def filling_start(stages: Stages) -> np.ndarray:
     liquid = stages.liquid_inert + stages.feeds[:, 0].sum(axis=-1)[:, None]
     factor = stages.law.k_dilute * (gas / np.maximum(liquid, TINY))[..., None]
     flows = total[:, None, :] / (1.0 + factor)
+    if stages.depth is not None:
+        gas[stages.below] = 0.0
     return np.concatenate([gas[..., None], flows], axis=-1)

@@ -19,7 +19,7 @@ Groups = list[tuple[np.ndarray, dict[str, Any]]]
 
 
 def read_changes(
-    sheet: Flowsheet, changes: Mapping[str, Any]
+    sheet: Flowsheet, changes: Mapping[str, Any], mixed: frozenset[str] = frozenset()
 ) -> tuple[int, bool, dict[str, Any], dict[str, np.ndarray], Groups]:
     """Read changes of inputs.
 
@@ -27,6 +27,8 @@ def read_changes(
     ----------
     sheet : Flowsheet
     changes : mapping of str to number, text, list or array
+    mixed : frozenset of str
+        Whole numbers that may differ inside a batch.
 
     Returns
     -------
@@ -65,7 +67,7 @@ def read_changes(
             values = _read_array(sheet, array, address, context, listed)
             if values is None:
                 continue
-            if listed or not entry.cases:
+            if listed or not (entry.cases or address in mixed):
                 apart[address] = values
             else:
                 arrays[address] = np.asarray(values, dtype=float)
@@ -196,3 +198,30 @@ def _groups(apart: dict[str, list[Any]], cases: int) -> Groups:
     return [
         (np.array(rows), {address: values[rows[0]] for address, values in apart.items()}) for rows in keys.values()
     ]
+
+
+def shares(groups: Groups, arrays: Mapping[str, np.ndarray], mixed: frozenset[str]) -> Groups:
+    """Part groups of cases by how deep they are, so that none carries much more than it needs.
+
+    Parameters
+    ----------
+    groups : list of (rows, dict)
+    arrays : mapping of str to (M,) array
+    mixed : frozenset of str
+        Whole numbers that may differ inside a batch; the largest of a group is added to its inputs.
+
+    Returns
+    -------
+    list of (rows, dict)
+    """
+    deep = [address for address in arrays if address in mixed]
+    if not deep:
+        return groups
+    out = []
+    for rows, own in groups:
+        powers = np.stack([np.floor(np.log2(arrays[address][rows])) for address in deep], axis=1)
+        _, which = np.unique(powers, axis=0, return_inverse=True)
+        for number in range(which.max() + 1):
+            part = rows[which.ravel() == number]
+            out.append((part, {**own, **{f"{address}:deepest": int(arrays[address][part].max()) for address in deep}}))
+    return out

@@ -47,7 +47,7 @@ class Inputs:
             if address in self.arrays:
                 values = self.arrays[address]
                 out[local] = values if cases is None else values[cases]
-            else:
+            elif address in self.base or ":" not in address:  # what has a colon is there only when it is needed
                 out[local] = self.base[address]
         return out
 

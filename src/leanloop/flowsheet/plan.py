@@ -48,7 +48,10 @@ class Plan:
         self.width = len(components) + 2
         self.unit_names = list(units)
         self.unit_number = {name: number for number, name in enumerate(units)}
-        self.addresses = {name: unit.addresses() for name, unit in units.items()}
+        self.addresses = {
+            name: {**unit.addresses(), **{"deepest": f"units.{name}.{key}:deepest" for key in unit.deepens}}
+            for name, unit in units.items()
+        }
         self.graph = structure.graph()
         self.ports: dict[Node, tuple[dict[str, str], dict[str, str]]] = {}
         for unit in units.values():

@@ -301,12 +301,15 @@ class Flowsheet:
             raise InputError([fault for part in result.parts for fault in part.run.trapped], self.source)
         return result
 
-    def solve_cases(self, changes: Mapping[str, Any] | None = None) -> Result:
+    def solve_cases(self, changes: Mapping[str, Any] | None = None, mixed: bool = False) -> Result:
         """Solve like `solve`, where that no case has a steady state is no wrong input but each case's status.
 
         Parameters
         ----------
         changes : mapping of str to number, text or (M,) array, optional
+        mixed : bool
+            Whether columns of different height may share a batch. Then a profile is as long as that of the highest, NaN
+            below a case's own stages.
 
         Returns
         -------
@@ -317,12 +320,13 @@ class Flowsheet:
         InputError
             Where an address or a value is wrong for all cases.
         """
-        from leanloop.flowsheet.cases import read_changes
+        from leanloop.flowsheet.cases import read_changes, shares
 
-        cases, axis, base, arrays, groups = read_changes(self, changes or {})
+        deep = self.deepening() if mixed else frozenset()
+        cases, axis, base, arrays, groups = read_changes(self, changes or {}, deep)
         touched = frozenset(changes or {})
         parts = []
-        for rows, own in groups:
+        for rows, own in shares(groups, arrays, deep):
             size = self.chunk({**base, **own})
             for begin in range(0, len(rows), size):
                 chunk = rows[begin : begin + size]
@@ -331,6 +335,10 @@ class Flowsheet:
                 )
                 parts.append(self._solve_part(chunk, inputs))
         return Result(self, parts, cases, axis)
+
+    def deepening(self) -> frozenset[str]:
+        """Give the addresses of whole numbers that may differ inside a batch."""
+        return frozenset(f"units.{name}.{key}" for name, unit in self.units.items() for key in unit.deepens)
 
     def chunk(self, numbers: Mapping[str, Any] | None = None) -> int:
         """Give how many cases fit into a chunk of memory.
@@ -347,7 +355,8 @@ class Flowsheet:
         numbers = self.numbers if numbers is None else numbers
         per_case = 8.0 * self.plan.width * len(self.plan.phases) * (6 + 2 * self.plan.width)
         for name, unit in self.units.items():
-            count = numbers.get(f"units.{name}.stages", unit.values.numbers.get("stages", 0))
+            own = f"units.{name}.stages"
+            count = numbers.get(f"{own}:deepest") or numbers.get(own, unit.values.numbers.get("stages", 0))
             unknowns = len(getattr(unit, "places", ())) + 1
             per_case += 8.0 * count * unknowns * (10 * unknowns + 4 * self.plan.width)
         return int(max(1, min(4096, 2 * BYTES_A_CHUNK / per_case)))

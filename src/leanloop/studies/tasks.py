@@ -122,7 +122,7 @@ def calculate(order: Order, changes: Mapping[str, Any], first: int, count: int) 
 def solved(sheet: Flowsheet, changes: Mapping[str, Any], count: int) -> Result:
     """Solve some cases, with a case axis even where nothing changes."""
     if any(np.ndim(values) for values in changes.values()):
-        return sheet.solve_cases(dict(changes))
+        return sheet.solve_cases(dict(changes), mixed=True)
     for address, value in sheet.numbers.items():
         if sheet.varies(address) and address not in changes:
             return sheet.solve_cases({**changes, address: np.full(count, float(value))})

@@ -218,6 +218,14 @@ class Unit(ABC):
         """Whether the unit, as it was read, balances heat and so needs enthalpies; no by default."""
         return False
 
+    @property
+    def deepens(self) -> tuple[str, ...]:
+        """Whole numbers, by entry, that may all the same differ inside a batch; none by default.
+
+        `calculate` is then given the largest under the name ``deepest``, the same for every call of a batch.
+        """
+        return ()
+
     # --- what the engine may know without calculating
 
     def sections(self) -> list[tuple[tuple[str, ...], tuple[str, ...]]]:

@@ -194,6 +194,11 @@ class Column(ColumnReport):
         """Give the equilibrium stages, reboiler and condenser apart; whole ones where a height is given."""
         return column_entries.stage_count(numbers)
 
+    @property
+    def deepens(self) -> tuple[str, ...]:
+        """Whole numbers that may differ inside a batch: the stages, where nothing hangs on a single one."""
+        return ("stages",) if self.inner is None and "stages" in self.values.numbers else ()
+
     def addresses(self) -> dict[str, str]:
         """Own numbers, those of the models by ``component.number``, and of the heat data where heat is balanced."""
         own = super().addresses()
@@ -249,14 +254,15 @@ class Column(ColumnReport):
         cases, count = gas.shape[0], column_entries.stage_count(numbers)
         feeds = np.zeros((cases, count, len(self.places)))
         feeds[:, 0] += liquid[:, self.places]
-        feeds[:, -1] += gas[:, self.places]
+        depth = column_entries.own_counts(numbers)
+        feeds[np.arange(cases), -1 if depth is None else depth - 1] += gas[:, self.places]
         temperature, pressure = self.conditions_of(inlets, numbers)
         law = self.law.at(temperature[:, None], pressure[:, None], self.model_numbers(numbers))
-        inert = inert_flows(gas, liquid, count, *self.weights)
+        inert = inert_flows(gas, liquid, count, *self.weights, depth)
         if law.plain:
-            return Stages(feeds, *inert, *inert, law)
-        basis = inert_flows(gas, liquid, count, *self.basis_weights)
-        return Stages(feeds, *inert, *basis, law)
+            return Stages(feeds, *inert, *inert, law, depth)
+        basis = inert_flows(gas, liquid, count, *self.basis_weights, depth)
+        return Stages(feeds, *inert, *basis, law, depth)
 
     def _leaving(
         self, inlets: Mapping[str, Stream], numbers: Numbers, top: np.ndarray, bottom: np.ndarray
@@ -287,7 +293,9 @@ class Column(ColumnReport):
             law = self.law.at(temperature[:, None], pressure[:, None], self.model_numbers(numbers))
             g, l = gas.total[:, None] + 1e-300, liquid.total[:, None]
             factor = law.k_dilute[:, 0] * g / np.maximum(l, 1e-9 * g)
-            stripped, absorbed = split_fractions(np.clip(np.nan_to_num(factor), 1e-15, 1e15), column_entries.stage_count(numbers))
+            depth = column_entries.own_counts(numbers)
+            count = column_entries.stage_count(numbers) if depth is None else depth[:, None]
+            stripped, absorbed = split_fractions(np.clip(np.nan_to_num(factor), 1e-15, 1e15), count)
         up, down = gas.flows[:, self.places], liquid.flows[:, self.places]
         absorbed = np.where(l > 0, absorbed, 0.0)
         return self._leaving(

@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+import numpy as np
+
 from leanloop.entries import Context, Entry, Values, near
 
 MOST_STAGES = 5000
@@ -89,11 +91,21 @@ def balances_heat(values: Values) -> bool:
     return values.words.get("heat", "adiabatic" if "reboiler" in values.words or "condenser" in values.words else "") == "adiabatic"
 
 
+DEEPEST = "deepest"  # local name of the largest number of stages in a batch of which the cases differ
+
+
 def stage_count(numbers: Mapping[str, Any]) -> int:
-    """Give the equilibrium stages, whole ones where a height is given."""
+    """Give the equilibrium stages, whole ones where a height is given; the most of them where cases differ."""
+    if DEEPEST in numbers:
+        return int(numbers[DEEPEST])
     if "stages" in numbers:
         return int(numbers["stages"])
     return max(1, int(numbers["height"] / numbers["hetp"] + 1e-9))
+
+
+def own_counts(numbers: Mapping[str, Any]) -> np.ndarray | None:
+    """Give the equilibrium stages of each case, (M,) int, where they differ; None where they do not."""
+    return np.asarray(numbers["stages"]).astype(int) if DEEPEST in numbers else None
 
 
 def check(values: Values, raw: Mapping[str, Any], address: str, context: Context, absorbs: bool) -> None:

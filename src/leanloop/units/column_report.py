@@ -12,7 +12,7 @@ from leanloop.equilibrium.base import EquilibriumModel
 from leanloop.equilibrium.water import is_water, vapour_pressure
 from leanloop.stream import Stream, divide
 from leanloop.units.base import Numbers, Unit
-from leanloop.units.column_entries import stage_count
+from leanloop.units.column_entries import own_counts, stage_count
 from leanloop.units.column_inside import Inside
 
 _NEVER = EquilibriumModel.outside
@@ -46,7 +46,15 @@ class ColumnReport(Unit):
         trays = slice(inside.first, inside.last)
         inlet, outlet = (gas_in, gas_out) if self.cleans == "gas" else (liquid_in, liquid_out)
         removal = 1.0 - divide(outlet.flows, inlet.flows)
-        ends = np.sqrt(factor[..., trays, :][..., 0, :] * factor[..., trays, :][..., -1, :])
+        own = own_counts(numbers)
+        if own is None:
+            lowest = factor[..., trays, :][..., -1, :]
+        else:
+            lowest = factor[..., np.arange(len(own)), own - 1, :]
+            under = np.arange(l_total.shape[-1]) >= own[:, None]
+            l_total, g_total = np.where(under, np.nan, l_total), np.where(under, np.nan, g_total)
+            x, ratio_x = (np.where(under[..., None], np.nan, item) for item in (x, ratio_x))
+        ends = np.sqrt(factor[..., trays, :][..., 0, :] * lowest)
         if self.cleans == "gas":
             rich, lean = (gas_in, liquid_out, -1), (gas_out, liquid_in, 0)
         else:
@@ -104,10 +112,17 @@ class ColumnReport(Unit):
         temperature, pressure = self.conditions_of(inlets, numbers)
         law = self.law.at(temperature[..., None], pressure[..., None], self.model_numbers(numbers))
         fed = gas_in.flows + liquid_in.flows
+        depth = own_counts(numbers)
         liquid = np.repeat(np.where(self.stays_liquid, liquid_in.flows, 0.0)[..., None, :], count, axis=-2)
-        liquid[..., -1, :] = np.where(self.stays_liquid, fed, 0.0)
+        if depth is None:
+            liquid[..., -1, :] = np.where(self.stays_liquid, fed, 0.0)
+        else:
+            ends = np.arange(count) >= depth[:, None] - 1
+            liquid = np.where(ends[..., None], np.where(self.stays_liquid, fed, 0.0)[..., None, :], liquid)
         gas = np.repeat(np.where(self.stays_gas, gas_in.flows, 0.0)[..., None, :], count, axis=-2)
         gas[..., 0, :] = np.where(self.stays_gas, fed, 0.0)
+        if depth is not None:
+            gas = np.where((np.arange(count) >= depth[:, None])[..., None], 0.0, gas)
         kind = np.result_type(liquid, unknowns)
         liquid, gas = liquid.astype(kind), gas.astype(kind)
         liquid[..., self.places] = unknowns[..., 1:]
@@ -247,7 +262,7 @@ class ColumnReport(Unit):
             if is_water(names[place]):
                 with np.errstate(all="ignore"):
                     partial = (inlets["gas_in"].flows[:, place] * pressure)[:, None] / gas_flow
-                    wet = partial.max(axis=1) > vapour_pressure(temperature)
+                    wet = np.where(gas_flow > 0, partial, 0.0).max(axis=1) > vapour_pressure(temperature)
                 if wet.any():
                     found.append(
                         f"Column {self.name}: {names[place]} is declared to stay in the gas but is above its "

@@ -18,7 +18,12 @@ if TYPE_CHECKING:
 
 
 def inert_flows(
-    gas: np.ndarray, liquid: np.ndarray, count: int, in_gas: np.ndarray, in_liquid: np.ndarray
+    gas: np.ndarray,
+    liquid: np.ndarray,
+    count: int,
+    in_gas: np.ndarray,
+    in_liquid: np.ndarray,
+    depth: np.ndarray | None = None,
 ) -> tuple[np.ndarray, np.ndarray]:
     """Spread flows that stay in a phase over the stages; what comes in with the other phase leaves at once."""
     up = np.empty((*gas.shape[:-1], count))
@@ -26,8 +31,12 @@ def inert_flows(
     up[..., 0] += liquid @ in_gas
     down = np.empty((*gas.shape[:-1], count))
     down[...] = (liquid @ in_liquid)[..., None]
-    down[..., -1] += gas @ in_liquid
-    return up, down
+    if depth is None:
+        down[..., -1] += gas @ in_liquid
+        return up, down
+    ends = np.arange(count) >= depth[:, None] - 1  # from each case's own bottom stage on
+    down += np.where(ends, (gas @ in_liquid)[..., None], 0.0)
+    return np.where(np.arange(count) >= depth[:, None], 0.0, up), down
 
 
 class Response:
@@ -60,11 +69,11 @@ class Response:
         self.fed = gas_flows + liquid_flows
         self.feeds = np.zeros((seeds, cases, count, parts))
         self.feeds[:, :, 0] = liquid[..., column.places]
-        self.feeds[:, :, -1] += gas[..., column.places]
-        self.up, self.down = inert_flows(gas_flows, liquid_flows, count, *column.weights)
+        self.feeds[:, np.arange(cases), -1 if stages.depth is None else stages.depth - 1] += gas[..., column.places]
+        self.up, self.down = inert_flows(gas_flows, liquid_flows, count, *column.weights, stages.depth)
         self.up_basis, self.down_basis = self.up, self.down
         if not stages.law.plain:
-            self.up_basis, self.down_basis = inert_flows(gas_flows, liquid_flows, count, *column.basis_weights)
+            self.up_basis, self.down_basis = inert_flows(gas_flows, liquid_flows, count, *column.basis_weights, stages.depth)
         own = still[..., -2] if "temperature" in numbers else liquid[..., -2]
         self.temperature = number_tangents.get("temperature", own)
         own = still[..., -1] if "pressure" in numbers else gas[..., -1]
