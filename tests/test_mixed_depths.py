@@ -24,7 +24,9 @@ SCENES = {
         feed_ratio={"a": 0.05, "b": 0.03, "c": 0.01},
     ),
     "hot liquid that would boil without gas": dict(
-        cold=scenes.constants(["a", "b"], [0.05, 0.07]), hot=scenes.constants(["a", "b"], [9.0, 14.0]), feed_ratio={"a": 0.3, "b": 0.2}
+        cold=scenes.constants(["a", "b"], [0.05, 0.07]),
+        hot=scenes.constants(["a", "b"], [9.0, 14.0]),
+        feed_ratio={"a": 0.3, "b": 0.2},
     ),
     "mole ratios": dict(
         cold={"a": scenes.constant(0.2, "ratio"), "b": scenes.constant(0.6)},

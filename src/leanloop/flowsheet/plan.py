@@ -49,7 +49,7 @@ class Plan:
         self.unit_names = list(units)
         self.unit_number = {name: number for number, name in enumerate(units)}
         self.addresses = {
-            name: {**unit.addresses(), **{"deepest": f"units.{name}.{key}:deepest" for key in unit.deepens}}
+            name: {**unit.addresses(), **({"deepest": f"units.{name}.{unit.deepens}:deepest"} if unit.deepens else {})}
             for name, unit in units.items()
         }
         self.graph = structure.graph()

@@ -338,7 +338,7 @@ class Flowsheet:
 
     def deepening(self) -> frozenset[str]:
         """Give the addresses of whole numbers that may differ inside a batch."""
-        return frozenset(f"units.{name}.{key}" for name, unit in self.units.items() for key in unit.deepens)
+        return frozenset(f"units.{name}.{unit.deepens}" for name, unit in self.units.items() if unit.deepens)
 
     def chunk(self, numbers: Mapping[str, Any] | None = None) -> int:
         """Give how many cases fit into a chunk of memory.

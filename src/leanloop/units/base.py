@@ -219,12 +219,12 @@ class Unit(ABC):
         return False
 
     @property
-    def deepens(self) -> tuple[str, ...]:
-        """Whole numbers, by entry, that may all the same differ inside a batch; none by default.
+    def deepens(self) -> str:
+        """The entry, a whole number, that may all the same differ inside a batch; none by default.
 
-        `calculate` is then given the largest under the name ``deepest``, the same for every call of a batch.
+        `calculate` is then given its largest value under the name ``deepest``, the same for every call of a batch.
         """
-        return ()
+        return ""
 
     # --- what the engine may know without calculating
 

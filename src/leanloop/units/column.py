@@ -195,9 +195,9 @@ class Column(ColumnReport):
         return column_entries.stage_count(numbers)
 
     @property
-    def deepens(self) -> tuple[str, ...]:
-        """Whole numbers that may differ inside a batch: the stages, where nothing hangs on a single one."""
-        return ("stages",) if self.inner is None and "stages" in self.values.numbers else ()
+    def deepens(self) -> str:
+        """The stages may differ inside a batch where nothing hangs on a single one."""
+        return "stages" if self.inner is None and "stages" in self.values.numbers else ""
 
     def addresses(self) -> dict[str, str]:
         """Own numbers, those of the models by ``component.number``, and of the heat data where heat is balanced."""
