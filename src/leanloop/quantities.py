@@ -33,6 +33,17 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "mass": ((1, 0, 0, 0, 0), "9 t"),
     "density": ((1, -3, 0, 0, 0), "1020 kg/m3"),
     "molar volume": ((0, 3, 0, 0, -1), "18.1 cm3/mol"),
+    "viscosity": ((1, -1, -1, 0, 0), "0.9 mPa s"),
+    "surface tension": ((1, 0, -2, 0, 0), "28 mN/m"),
+    "diffusivity": ((0, 2, -1, 0, 0), "1.2e-9 m2/s"),
+    "pressure gradient": ((1, -2, -2, 0, 0), "300 Pa/m"),
+    "area": ((0, 2, 0, 0, 0), "25 m2"),
+    "specific area": ((0, -1, 0, 0, 0), "110 m2/m3"),
+    "heat transfer coefficient": ((1, 0, -3, -1, 0), "600 W/(m2 K)"),
+    "price of mass": ((-1, 0, 0, 0, 0), "25 /t"),
+    "price of energy": ((-1, -2, 2, 0, 0), "9 /GJ"),
+    "price of volume": ((0, -3, 0, 0, 0), "12000 /m3"),
+    "price of area": ((0, -2, 0, 0, 0), "400 /m2"),
 }
 
 LONGEST = 200  # letters of a unit
@@ -51,6 +62,7 @@ _PREFIXABLE: dict[str, tuple[float, Dimension]] = {
     "bar": (c.bar, _PA),
     "J": (1.0, _J),
     "W": (1.0, _W),
+    "Wh": (c.hour, _J),
     "L": (c.liter, (0, 3, 0, 0, 0)),
     "N": (1.0, (1, 1, -2, 0, 0)),
 }
@@ -81,6 +93,7 @@ _NAMED: dict[str, tuple[float, Dimension]] = {
     "Btu": (c.Btu_IT, _J),
     "cal": (c.calorie_th, _J),  # thermochemical, 4.184 J
     "kcal": (c.kilo * c.calorie_th, _J),
+    "cP": (1e-3, (1, -1, -1, 0, 0)),
     "degC": (1.0, _K),
     "degF": (c.degree_Fahrenheit, _K),
     "degR": (c.degree_Fahrenheit, _K),
