@@ -1,0 +1,312 @@
+"""Pages of small panels: paper that fits them, scales with ticks that can be read, crosses for cases without an answer."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator, Sequence
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import numpy as np
+
+from leanloop.pictures.base import INK, MM, PAGE_WIDTH, RUST, canvas, library, literal, log_axis, quiet, settle, short, wrapped
+from leanloop.pictures.words import address_lines, shortened
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.axis import Axis
+    from matplotlib.figure import Figure
+    from matplotlib.text import Text
+
+T = TypeVar("T")
+
+MOST_PANELS = 6  # of a page
+ONE_WIDTH = 125.0  # mm, paper of a single panel
+LETTER = 1.72  # mm, of a panel's title and labels on the average
+LARGEST = 1e200  # what is beyond is no number to draw
+MOST_DECADES = 12
+LEAST_SPAN = 1e-5  # of the values: a narrower range of an axis would only show rounding
+LOG_FROM = 50.0  # highest over lowest value
+FAILED = {"color": RUST, "linestyle": "none", "marker": "x", "markersize": 5.0, "markeredgewidth": 1.1}
+
+
+def pages(items: Sequence[T], most: int = MOST_PANELS) -> Iterator[list[T]]:
+    """Share items out over pages.
+
+    Parameters
+    ----------
+    items : sequence
+    most : int
+        Items of a page.
+
+    Yields
+    ------
+    list
+    """
+    for start in range(0, len(items), most):
+        yield list(items[start : start + most])
+
+
+def page(title: str, note: str, count: int, row_mm: float = 56.0, below_mm: float = 8.0) -> tuple[Figure, list[Axes], float]:
+    """Give paper with panels in two columns, one where there is one panel.
+
+    Parameters
+    ----------
+    title, note : str
+        See `canvas`.
+    count : int
+        Panels.
+    row_mm, below_mm : float
+        Height of a row of panels, and of what stands below all, mm.
+
+    Returns
+    -------
+    (figure, axes, width)
+        Width of a panel's texts, mm.
+    """
+    columns = min(2, count)
+    width = PAGE_WIDTH if columns == 2 else ONE_WIDTH
+    rows = -(-count // columns)
+    paper = canvas(width, head_mm(title, note, width) + rows * row_mm + below_mm, title, note)
+    grid = paper.subplots(rows, columns, squeeze=False).ravel()
+    for spare in grid[count:]:
+        spare.remove()
+    return paper, list(grid[:count]), width / columns - 18.0
+
+
+def head_mm(title: str, note: str, width_mm: float) -> float:
+    """Give the height of title and note on paper of a width, mm.
+
+    Parameters
+    ----------
+    title, note : str
+    width_mm : float
+    """
+    lines = [len(wrapped(title, width_mm - 6, 2.45).splitlines()), len(wrapped(note, width_mm - 6, 1.68).splitlines())]
+    return 4.0 + 4.4 * lines[0] + 3.9 * lines[1]
+
+
+def title_panel(axes: Axes, label: str, width_mm: float, more: str = "") -> None:
+    """Write over a panel what it shows, in two lines at most, and a line of its own below.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    label : str
+        An address and its unit.
+    width_mm : float
+    more : str
+    """
+    lines = address_lines(label, int(width_mm / LETTER))
+    if more:
+        lines += "\n" + address_lines(more, int(width_mm / LETTER))
+    axes.set_title(literal(lines), loc="left", size=8.0)
+
+
+def label_abscissa(axes: Axes, label: str, width_mm: float) -> None:
+    """Name the abscissa in two lines at most.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    label : str
+    width_mm : float
+    """
+    axes.set_xlabel(literal(address_lines(label, int(width_mm / LETTER))), size=8.0)
+
+
+def finish(figure: Figure, width_mm: float) -> None:
+    """Lay a page out, and make titles and labels smaller whose letters are wider than most.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    width_mm : float
+        Room of a panel's texts.
+    """
+    for axes in figure.axes:
+        for text in (axes._left_title, axes.xaxis.label):  # the library gives no other way to a title on the left
+            squeeze(text, width_mm)
+    settle(figure)
+
+
+def squeeze(text: Text, width_mm: float) -> None:
+    """Make a text smaller where it is wider than its room.
+
+    Parameters
+    ----------
+    text : matplotlib.text.Text
+        On a figure.
+    width_mm : float
+    """
+    if text.get_text():
+        room = width_mm * MM * text.figure.dpi
+        wide = _extent(text)
+        if wide > room:
+            text.set_size(text.get_size() * room / wide)
+
+
+def _extent(text: Text) -> float:
+    """Give the width of a text in dots."""
+    with quiet():
+        return float(text.get_window_extent().width)
+
+
+def tame(values: Any) -> np.ndarray:
+    """Give values as floats, NaN for what is no number to draw.
+
+    Parameters
+    ----------
+    values : (n,) array_like
+
+    Returns
+    -------
+    (n,) array
+    """
+    own = np.array(values, dtype=float)
+    own[~(np.abs(own) < LARGEST)] = np.nan
+    own[np.abs(own) < 1 / LARGEST] = 0.0
+    return own
+
+
+def known(*groups: Any) -> np.ndarray:
+    """Give all numbers of some arrays that can be drawn.
+
+    Parameters
+    ----------
+    *groups : array_like
+
+    Returns
+    -------
+    (n,) array
+    """
+    values = np.concatenate([np.atleast_1d(tame(item)) for item in groups]) if groups else np.zeros(0)
+    return values[np.isfinite(values)]
+
+
+def wants_log(values: np.ndarray) -> bool:
+    """Tell whether values span so much that a log scale shows them better.
+
+    Parameters
+    ----------
+    values : (n,) array
+        Finite.
+    """
+    return bool(len(values)) and bool(values.min() > 0) and bool(values.max() / LOG_FROM > values.min())
+
+
+def fit_axis(axis: Axis, values: np.ndarray, log: bool = False, *, zero: bool = True, tight: bool = False, count: int = 5) -> None:
+    """Set a scale that holds all values.
+
+    Parameters
+    ----------
+    axis : matplotlib.axis.Axis
+    values : (n,) array
+        Finite; any number of them.
+    log : bool
+        Taken where all values are above zero and not one.
+    zero : bool
+        Whether an axis whose values come near zero starts there.
+    tight : bool
+        Whether it ends at the first and the last value.
+    count : int
+        Most intervals between ticks.
+    """
+    low, high = (float(values.min()), float(values.max())) if len(values) else (0.0, 1.0)
+    if log and low > 0 and high > low * (1 + LEAST_SPAN):
+        low = max(low, high / 10.0**MOST_DECADES)
+        stretch = 1.0 if tight else (high / low) ** 0.05
+        log_axis(axis, low / stretch, high * stretch)
+        if high / low < 8:
+            _ticks(axis, low, high, count)
+        return
+    most = max(abs(low), abs(high))
+    if high - low < LEAST_SPAN * most or low == high:
+        room = max(0.5 * LEAST_SPAN * most, 0.05 * most if low == high else 0.0) or 1.0
+        low, high = (low + high) / 2 - room, (low + high) / 2 + room
+    elif not tight:
+        room = 0.07 * (high - low)
+        low, high = (0.0 if zero and 0 <= low < 0.35 * high else low - room), high + room
+    (axis.axes.set_xlim if axis.axis_name == "x" else axis.axes.set_ylim)(low, high)
+    _ticks(axis, low, high, count)
+
+
+def _ticks(axis: Axis, low: float, high: float, count: int) -> None:
+    """Set round ticks written with as many digits as tell them apart, and nothing aside."""
+    ticker = library().ticker
+    locator = ticker.MaxNLocator(nbins=count, min_n_ticks=2, steps=[1, 2, 2.5, 5, 10])
+    places = locator.tick_values(low, high)
+    step = float(places[1] - places[0]) if len(places) > 1 else 1.0
+    most = max(abs(low), abs(high), step)
+    digits = max(3, math.ceil(math.log10(most / step)) + 2)
+    axis.set_major_locator(locator)
+    axis.set_minor_locator(ticker.NullLocator())
+    written = "{:." + str(max(0, min(12, -math.floor(math.log10(step) - 0.4) + (1 if _quarter(step) else 0)))) + "f}"
+
+    def text(value: float, _: Any = None) -> str:
+        if abs(value) < 1e-6 * step:
+            return "0"
+        return written.format(value) if 1e-3 <= most < 1e5 else short(value, digits)
+
+    axis.set_major_formatter(ticker.FuncFormatter(text))
+
+
+def _quarter(step: float) -> bool:
+    """Tell whether a step is 2.5 of a decade."""
+    return abs(step / 10.0 ** math.floor(math.log10(step)) - 2.5) < 0.1
+
+
+def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
+    """Mark cases without an answer by crosses on the abscissa.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    places : (n,) array
+        Finite.
+    gid : str
+
+    Returns
+    -------
+    list of matplotlib.lines.Line2D
+        Empty where there are none.
+    """
+    if not len(places):
+        return []
+    options = {"transform": axes.get_xaxis_transform(), "clip_on": False, "zorder": 5, "label": "case not converged"}
+    return axes.plot(places, np.zeros(len(places)), gid=gid, **options, **FAILED)
+
+
+def listed(names: Iterable[str], most: int = 3, letters: int = 60) -> str:
+    """Write some addresses in a row, the first few of them where they are many.
+
+    Parameters
+    ----------
+    names : iterable of str
+    most, letters : int
+        Addresses, and letters of each.
+
+    Returns
+    -------
+    str
+    """
+    names = list(names)
+    shown = [shortened(name, letters) for name in names[:most]]
+    return ", ".join(shown) + (f" and {len(names) - most} more" if len(names) > most else "")
+
+
+def upright(axes: Axes, place: float, gid: str, label: str, **look: Any) -> Any:
+    """Draw a line from the bottom of a panel to its top.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    place : float
+    gid, label : str
+    **look
+        Of the line.
+
+    Returns
+    -------
+    matplotlib.lines.Line2D
+    """
+    return axes.axvline(place, gid=gid, label=label, **{"color": INK, "linewidth": 1.3, "zorder": 4, **look})

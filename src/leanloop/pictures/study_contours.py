@@ -1,0 +1,191 @@
+"""A sweep of several axes: contours of every quantity over the two longest, crosses where a case did not converge."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from leanloop.pictures.base import INK, MM, legend_below, library, short, style
+from leanloop.pictures.panels import FAILED, finish, fit_axis, known, label_abscissa, page, pages, title_panel, wants_log
+from leanloop.pictures.study_axes import Scaled, held, scaled
+from leanloop.pictures.study_columns import Column, constant, heading, joined, recorded, tally
+from leanloop.pictures.words import address_lines
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+    from leanloop.studies.findings import Findings
+
+LEVELS = 8  # about
+PALEST, DARKEST = (0.965, 0.972, 0.98), (0.60, 0.65, 0.71)  # of one hue; a black line and its number can be read on both
+LABEL = 7.0  # points
+ROOM = 1.5  # mm between numbers, and between a number and the frame
+
+
+def figures(findings: Findings) -> list[Figure]:
+    """Draw the quantities of a sweep with two axes or more of more than one value.
+
+    Parameters
+    ----------
+    findings : Findings
+
+    Returns
+    -------
+    list of matplotlib.figure.Figure
+        Of six panels each, none where the study is no such sweep or nothing varies. A panel has the gid ``panel-ADDRESS``,
+        its fields ``fields-ADDRESS``, its lines ``lines-ADDRESS``, the crosses of what did not converge ``failed-ADDRESS``.
+        Further axes stay at their middle value, which the note tells.
+
+    Raises
+    ------
+    MissingExtra
+        Where matplotlib is not installed.
+    """
+    axes = findings.study.cases.axes
+    moving = [place for place, axis in enumerate(axes) if len(axis) > 1]
+    if len(moving) < 2 or len(findings) != findings.study.cases.count:
+        return []
+    chosen = sorted(sorted(moving, key=lambda place: -len(axes[place]))[:2])
+    fixed = {place: len(axis) // 2 for place, axis in enumerate(axes) if place not in chosen}
+    across, up = (scaled(findings, axes[place]) for place in chosen)
+    table = np.arange(findings.study.cases.count).reshape([len(axis) for axis in axes])
+    table = table[tuple(fixed.get(place, slice(None)) for place in range(len(axes)))]  # (across, up): cases of the plane
+    columns, left_out = recorded(findings)
+    places = _places(across.values), _places(up.values)
+    rows = table[np.ix_(*places)].T
+    stay = [held(findings, axes[place], at) for place, at in fixed.items()]
+    failed = tally(findings)
+    if not findings.converged[rows].all():
+        failed += ": crosses"
+    note = joined(failed, across.note, up.note, "at " + ", ".join(stay) if stay else "", left_out)
+    # what varies in other planes alone has no lines here
+    columns = [item for item in columns if not constant(known(item.values[rows]))]
+    shared = list(pages(columns))
+    out = []
+    for place, group in enumerate(shared):
+        title = heading(findings, f"by {across.address} and {up.address}", place, len(shared))
+        out.append(_page(findings, group, (across, up), places, rows, title, note))
+    return out
+
+
+def _places(values: np.ndarray) -> np.ndarray:
+    """Give where the values of an axis stand from the lowest to the highest, each value once."""
+    found, places = np.unique(values, return_index=True)
+    return places[np.isfinite(found)]
+
+
+def _page(
+    findings: Findings, group: list[Column], ends: tuple[Scaled, Scaled], places: tuple[np.ndarray, np.ndarray],
+    rows: np.ndarray, title: str, note: str,
+) -> Figure:  # fmt: skip
+    x, y = (end.values[place] for end, place in zip(ends, places, strict=True))
+    with style():
+        paper, panels, width = page(title, note, len(group), row_mm=64.0, below_mm=10.0)
+        drawn, handles = [], {}
+        bad = ~findings.converged[rows]
+        for number, (axes, column) in enumerate(zip(panels, group, strict=True)):
+            axes.set_gid(f"panel-{column.address}")
+            axes.grid(False)
+            fit_axis(axes.xaxis, x, ends[0].log, tight=True)
+            fit_axis(axes.yaxis, y, ends[1].log, tight=True)
+            lines = _contours(axes, x, y, column.values[rows], column.address)
+            drawn.append((axes, lines))
+            if bad.any():
+                size = FAILED["markersize"] * min(1.0, 12 / max(bad.shape))
+                look = {**FAILED, "markersize": max(1.5, size), "clip_on": False, "zorder": 5, "label": "case not converged"}
+                (handles["failed"],) = axes.plot(*_points(x, y, bad), gid=f"failed-{column.address}", **look)
+            title_panel(axes, column.label, width)
+            if number >= len(group) - 2:
+                label_abscissa(axes, ends[0].label, width)
+            if number % 2 == 0:
+                axes.set_ylabel(address_lines(ends[1].label, 26).replace("$", r"\$"), size=8.0)
+        if handles:
+            legend_below(paper, list(handles.values()))
+        finish(paper, width)
+        for axes, lines in drawn:
+            if lines is not None:
+                _numbers(axes, lines)
+    return paper
+
+
+def _points(x: np.ndarray, y: np.ndarray, where: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    up, across = np.nonzero(where)
+    return x[across], y[up]
+
+
+def levels(values: np.ndarray) -> tuple[np.ndarray, bool]:
+    """Give where contours are drawn.
+
+    Parameters
+    ----------
+    values : (n,) array
+        Finite.
+
+    Returns
+    -------
+    (levels, log)
+        Round values between the lowest and the highest; log where they are spaced by factors.
+    """
+    low, high = values.min(), values.max()
+    if wants_log(values):
+        low = max(low, high / 1e12)
+        decades = np.arange(np.floor(np.log10(low)), np.ceil(np.log10(high)) + 1)
+        for steps in ((1.0, 2.0, 5.0), (1.0, 3.0), (1.0,)):
+            found = np.array([10.0**decade * step for decade in decades for step in steps])
+            found = found[(found > low) & (found < high)]
+            if len(found) <= LEVELS + 1:
+                return found, True
+        return found[:: -(-len(found) // LEVELS)], True
+    found = library().ticker.MaxNLocator(nbins=LEVELS, steps=[1, 2, 2.5, 5, 10]).tick_values(low, high)
+    return found[(found > low) & (found < high)], False
+
+
+def _contours(axes: Axes, x: np.ndarray, y: np.ndarray, values: np.ndarray, name: str) -> Any:
+    """Draw fields and lines; None where no square of four cases has an answer."""
+    good = np.isfinite(values)
+    whole = good[1:, 1:] & good[:-1, 1:] & good[1:, :-1] & good[:-1, :-1]
+    # contours see what has a corner in such a square alone
+    seen = np.zeros_like(good)
+    for up in (slice(1, None), slice(None, -1)):
+        for across in (slice(1, None), slice(None, -1)):
+            seen[up, across] |= whole
+    if not seen.any() or constant(values[seen]):
+        return None
+    found, log = levels(values[seen])
+    if not len(found):
+        return None
+    field = np.ma.masked_invalid(values)
+    low, high = values[seen].min(), values[seen].max()
+    edges = np.concatenate([[low - 1e-9 * abs(low)], found, [high + 1e-9 * abs(high)]])
+    shades = np.linspace(0, 1, len(edges) - 1)[:, None]
+    colors = (1 - shades) * np.array(PALEST) + shades * np.array(DARKEST)
+    axes.contourf(x, y, field, levels=edges, colors=colors.tolist(), zorder=0.5).set_gid(f"fields-{name}")
+    lines = axes.contour(x, y, field, levels=found, colors=INK, linewidths=0.8, linestyles="-", zorder=2)
+    lines.set_gid(f"lines-{name}")
+    return lines
+
+
+def _numbers(axes: Axes, lines: Any) -> None:
+    """Write the level at each line, where it keeps off the frame, the crosses and other numbers."""
+    steps = np.diff(lines.levels)
+    finest = steps.min() / np.abs(lines.levels).max() if len(steps) else 1.0
+    digits = max(3, int(np.ceil(-np.log10(max(finest, 1e-12)))) + 1)
+    texts = axes.clabel(lines, inline=False, fontsize=LABEL, colors=INK, fmt=lambda value: short(value, digits))
+    halo = [library().patheffects.withStroke(linewidth=2.2, foreground="white")]
+    room = ROOM * MM * axes.figure.dpi
+    frame, kept = axes.get_window_extent(), []
+    for text in texts:
+        text.set_path_effects(halo)
+        text.set_zorder(4)
+        box = text.get_window_extent()
+        inside = box.x0 > frame.x0 + room and box.x1 < frame.x1 - room and box.y0 > frame.y0 + room and box.y1 < frame.y1 - room
+        if inside and all(_apart(box, other, room) for other in kept):
+            kept.append(box)
+        else:
+            text.set_visible(False)
+
+
+def _apart(one: Any, other: Any, room: float) -> bool:
+    return max(one.x0 - other.x1, other.x0 - one.x1, one.y0 - other.y1, other.y0 - one.y1) > room
