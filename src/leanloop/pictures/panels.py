@@ -8,7 +8,21 @@ from typing import TYPE_CHECKING, Any, TypeVar
 
 import numpy as np
 
-from leanloop.pictures.base import INK, MM, PAGE_WIDTH, RUST, canvas, library, literal, log_axis, quiet, settle, short, wrapped
+from leanloop.pictures.base import (
+    INK,
+    MM,
+    PAGE_WIDTH,
+    PNG_DPI,
+    RUST,
+    canvas,
+    library,
+    literal,
+    log_axis,
+    quiet,
+    settle,
+    short,
+    wrapped,
+)
 from leanloop.pictures.words import address_lines, shortened
 
 if TYPE_CHECKING:
@@ -21,7 +35,7 @@ T = TypeVar("T")
 
 MOST_PANELS = 6  # of a page
 ONE_WIDTH = 125.0  # mm, paper of a single panel
-LETTER = 1.72  # mm, of a panel's title and labels on the average
+LETTER = 1.62  # mm, of a panel's title and labels on the average
 LARGEST = 1e200  # what is beyond is no number to draw
 MOST_DECADES = 12
 LEAST_SPAN = 1e-5  # of the values: a narrower range of an axis would only show rounding
@@ -66,23 +80,30 @@ def page(title: str, note: str, count: int, row_mm: float = 56.0, below_mm: floa
     columns = min(2, count)
     width = PAGE_WIDTH if columns == 2 else ONE_WIDTH
     rows = -(-count // columns)
-    paper = canvas(width, head_mm(title, note, width) + rows * row_mm + below_mm, title, note)
+    paper = sheet_of(width, rows * row_mm + below_mm, title, note)
     grid = paper.subplots(rows, columns, squeeze=False).ravel()
     for spare in grid[count:]:
         spare.remove()
     return paper, list(grid[:count]), width / columns - 18.0
 
 
-def head_mm(title: str, note: str, width_mm: float) -> float:
-    """Give the height of title and note on paper of a width, mm.
+def sheet_of(width_mm: float, height_mm: float, title: str, note: str) -> Figure:
+    """Give paper with a height left below title and note, however long they are.
 
     Parameters
     ----------
+    width_mm, height_mm : float
     title, note : str
-    width_mm : float
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        Measured as fine as a PNG is, since letters are of whole dots there.
     """
     lines = [len(wrapped(title, width_mm - 6, 2.45).splitlines()), len(wrapped(note, width_mm - 6, 1.68).splitlines())]
-    return 4.0 + 4.4 * lines[0] + 3.9 * lines[1]
+    paper = canvas(width_mm, 4.0 + 4.4 * lines[0] + 3.9 * lines[1] + height_mm, title, note)
+    paper.set_dpi(PNG_DPI)
+    return paper
 
 
 def title_panel(axes: Axes, label: str, width_mm: float, more: str = "") -> None:
@@ -98,7 +119,7 @@ def title_panel(axes: Axes, label: str, width_mm: float, more: str = "") -> None
     """
     lines = address_lines(label, int(width_mm / LETTER))
     if more:
-        lines += "\n" + address_lines(more, int(width_mm / LETTER))
+        lines += "\n" + wrapped(more, width_mm, LETTER)
     axes.set_title(literal(lines), loc="left", size=8.0)
 
 
@@ -238,21 +259,16 @@ def _ticks(axis: Axis, low: float, high: float, count: int) -> None:
     step = float(places[1] - places[0]) if len(places) > 1 else 1.0
     most = max(abs(low), abs(high), step)
     digits = max(3, math.ceil(math.log10(most / step)) + 2)
-    axis.set_major_locator(locator)
-    axis.set_minor_locator(ticker.NullLocator())
-    written = "{:." + str(max(0, min(12, -math.floor(math.log10(step) - 0.4) + (1 if _quarter(step) else 0)))) + "f}"
+    decimals = next((number for number in range(12) if np.allclose(places, np.round(places, number), rtol=0, atol=1e-6 * step)), 12)
 
     def text(value: float, _: Any = None) -> str:
         if abs(value) < 1e-6 * step:
             return "0"
-        return written.format(value) if 1e-3 <= most < 1e5 else short(value, digits)
+        return f"{value:.{decimals}f}" if 1e-3 <= most < 1e5 else short(value, digits)
 
+    axis.set_major_locator(locator)
+    axis.set_minor_locator(ticker.NullLocator())
     axis.set_major_formatter(ticker.FuncFormatter(text))
-
-
-def _quarter(step: float) -> bool:
-    """Tell whether a step is 2.5 of a decade."""
-    return abs(step / 10.0 ** math.floor(math.log10(step)) - 2.5) < 0.1
 
 
 def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:

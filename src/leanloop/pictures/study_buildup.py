@@ -121,7 +121,7 @@ def _page(
         "the solvent as one stirred tank" + ("; the steady level is dashed" if single else ""),
     )
     with style():
-        rows = 1 if single else -(-len(cases) // 2)
+        rows = 2 if single else -(-len(cases) // 2)
         paper, panels, width = page(title, note, len(curves), row_mm=78.0, below_mm=8.0 + 4.4 * rows)
         handles: dict[str, Any] = {}
         for number, (axes, (component, own)) in enumerate(zip(panels, curves.items(), strict=True)):
@@ -143,7 +143,7 @@ def _page(
             title_panel(axes, f"{component}, mol per mol of lean solvent", width, more)
             if number >= len(curves) - 2:
                 label_abscissa(axes, f"time, {name}", width)
-        legend_below(paper, list(handles.values()), columns=5 if single else 2)
+        legend_below(paper, list(handles.values()), columns=3 if single else 2)
         finish(paper, width)
     return paper
 
@@ -176,7 +176,10 @@ def _scales(axes: Axes, own: dict[int, tuple[np.ndarray, np.ndarray]], levels: n
         fit_axis(axes.xaxis, np.array([0.0, ends.max()]), tight=True)
     tops = np.array([values.max() for _, values in own.values()])
     if wants_log(tops):
-        fit_axis(axes.yaxis, np.array([tops.min() / 10**DECADES, levels.max()]), log=True)
+        start = axes.get_xlim()[0] * unit
+        seen = np.concatenate([values[times >= start] for times, values in own.values()])
+        low = max(seen[seen > 0].min(), tops.min() / 10**DECADES)
+        fit_axis(axes.yaxis, np.array([low, levels.max()]), log=True)
     else:
         fit_axis(axes.yaxis, np.concatenate([levels, [0.0]]))
         if levels.min() >= 0:

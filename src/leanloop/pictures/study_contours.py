@@ -21,7 +21,8 @@ if TYPE_CHECKING:
 LEVELS = 8  # about
 PALEST, DARKEST = (0.965, 0.972, 0.98), (0.60, 0.65, 0.71)  # of one hue; a black line and its number can be read on both
 LABEL = 7.0  # points
-ROOM = 1.5  # mm between numbers, and between a number and the frame
+SHARES = (0.5, 0.35, 0.65, 0.2, 0.8, 0.425, 0.575, 0.275, 0.725, 0.12, 0.88)  # of a line, where its number may stand
+ROOM = 0.7  # mm around a number
 
 
 def figures(findings: Findings) -> list[Figure]:
@@ -65,7 +66,7 @@ def figures(findings: Findings) -> list[Figure]:
     shared = list(pages(columns))
     out = []
     for place, group in enumerate(shared):
-        title = heading(findings, f"by {across.address} and {up.address}", place, len(shared))
+        title = heading(findings, f"results by {across.address} and {up.address}", place, len(shared))
         out.append(_page(findings, group, (across, up), places, rows, title, note))
     return out
 
@@ -106,7 +107,7 @@ def _page(
         finish(paper, width)
         for axes, lines in drawn:
             if lines is not None:
-                _numbers(axes, lines)
+                _numbers(axes, lines, axes.get_gid().removeprefix("panel-"))
     return paper
 
 
@@ -167,25 +168,45 @@ def _contours(axes: Axes, x: np.ndarray, y: np.ndarray, values: np.ndarray, name
     return lines
 
 
-def _numbers(axes: Axes, lines: Any) -> None:
-    """Write the level at each line, where it keeps off the frame, the crosses and other numbers."""
+def _numbers(axes: Axes, lines: Any, name: str) -> None:
+    """Write the level on each line, at a place off the frame and off other numbers; none where there is no such place."""
     steps = np.diff(lines.levels)
     finest = steps.min() / np.abs(lines.levels).max() if len(steps) else 1.0
     digits = max(3, int(np.ceil(-np.log10(max(finest, 1e-12)))) + 1)
-    texts = axes.clabel(lines, inline=False, fontsize=LABEL, colors=INK, fmt=lambda value: short(value, digits))
     halo = [library().patheffects.withStroke(linewidth=2.2, foreground="white")]
     room = ROOM * MM * axes.figure.dpi
     frame, kept = axes.get_window_extent(), []
-    for text in texts:
-        text.set_path_effects(halo)
-        text.set_zorder(4)
-        box = text.get_window_extent()
-        inside = box.x0 > frame.x0 + room and box.x1 < frame.x1 - room and box.y0 > frame.y0 + room and box.y1 < frame.y1 - room
-        if inside and all(_apart(box, other, room) for other in kept):
-            kept.append(box)
+    for place, (level, path) in enumerate(zip(lines.levels, lines.get_paths(), strict=True)):
+        options = {"size": LABEL, "color": INK, "ha": "center", "va": "center", "zorder": 6, "path_effects": halo}
+        text = axes.text(0.0, 0.0, short(float(level), digits), gid=f"level-{place}-{name}", transform=None, **options)
+        size = text.get_window_extent()
+        wide, high = size.width / 2 + room, size.height / 2 + room
+        for spot in _spots(axes.transData.transform_path(path)):
+            box = (spot[0] - wide, spot[1] - high, spot[0] + wide, spot[1] + high)
+            inside = box[0] > frame.x0 and box[1] > frame.y0 and box[2] < frame.x1 and box[3] < frame.y1
+            if inside and all(_apart(box, other) for other in kept):
+                kept.append(box)
+                # in shares of the frame, since the figure may be saved at any resolution
+                text.set_transform(axes.transAxes)
+                text.set_position(axes.transAxes.inverted().transform(spot))
+                break
         else:
-            text.set_visible(False)
+            text.remove()
 
 
-def _apart(one: Any, other: Any, room: float) -> bool:
-    return max(one.x0 - other.x1, other.x0 - one.x1, one.y0 - other.y1, other.y0 - one.y1) > room
+def _spots(path: Any) -> list[Any]:
+    """Give points of a line on which its number may stand, the middle of its longest piece first."""
+    pieces = []
+    for points in path.to_polygons(closed_only=False):
+        along = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(points, axis=0).T))])
+        if np.isfinite(along[-1]) and along[-1] > 0:
+            pieces.append((along[-1], points, along))
+    out: list[Any] = []
+    for _, points, along in sorted(pieces, key=lambda piece: -piece[0]):
+        where = np.array(SHARES) * along[-1]
+        out += list(np.stack([np.interp(where, along, points[:, 0]), np.interp(where, along, points[:, 1])], axis=1))
+    return out
+
+
+def _apart(one: tuple[float, ...], other: tuple[float, ...]) -> bool:
+    return one[0] > other[2] or other[0] > one[2] or one[1] > other[3] or other[1] > one[3]

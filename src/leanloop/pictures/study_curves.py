@@ -57,7 +57,7 @@ def figures(findings: Findings) -> list[Figure]:
 
 def _page(findings: Findings, group: list[Column], axis: Scaled, note: str, place: int, of: int) -> Figure:
     with style():
-        paper, panels, width = page(heading(findings, f"by {axis.address}", place, of), note, len(group), below_mm=14.0)
+        paper, panels, width = page(heading(findings, f"results by {axis.address}", place, of), note, len(group), below_mm=14.0)
         handles: dict[str, Any] = {}
         order = np.argsort(axis.values, kind="stable")
         bad = ~findings.converged[order] & np.isfinite(axis.values[order])

@@ -7,10 +7,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.pictures.base import INK, NAVY, PAGE_WIDTH, PALE, canvas, legend_below, library, literal, settle, short, style
-from leanloop.pictures.panels import LARGEST, fit_axis, head_mm, listed, pages, squeeze
+from leanloop.pictures.base import INK, NAVY, PAGE_WIDTH, PALE, legend_below, library, literal, settle, short, style
+from leanloop.pictures.panels import LARGEST, fit_axis, listed, pages, sheet_of, squeeze
 from leanloop.pictures.study_columns import heading, joined
-from leanloop.pictures.words import address_lines, told_apart
+from leanloop.pictures.words import shortened, told_apart
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -143,7 +143,7 @@ def _shares(item: Mapping[str, Any]) -> dict[str, tuple[float, float]]:
 def _paper(title: str, note: str, bars: list[int]) -> tuple[Figure, list[Axes]]:
     """Give paper with a panel for each number of bars, one below the other."""
     heights = [12.0 + BAR_MM * max(2, count) for count in bars]
-    paper = canvas(PAGE_WIDTH, head_mm(title, note, PAGE_WIDTH) + sum(heights) + 17.0, title, note)
+    paper = sheet_of(PAGE_WIDTH, sum(heights) + 17.0, title, note)
     ratios = [max(2, count) for count in bars]
     return paper, list(paper.subplots(len(bars), 1, squeeze=False, height_ratios=ratios).ravel())
 
@@ -151,9 +151,9 @@ def _paper(title: str, note: str, bars: list[int]) -> tuple[Figure, list[Axes]]:
 def _name_panel(axes: Axes, name: str, more: str) -> None:
     axes.set_gid(f"panel-{name}")
     axes.grid(visible=False, axis="y")
-    text = literal(address_lines(name, 75, 1) + (f"  ({more})" if more else ""))
+    text = literal(shortened(name, 60) + (f"  ({more})" if more else ""))
     axes.set_title(text, loc="left", x=0.0, size=8.0, weight="bold")
-    squeeze(axes._left_title, 80.0)
+    squeeze(axes._left_title, 84.0)
 
 
 def _name_bars(axes: Axes, labels: list[str]) -> None:
