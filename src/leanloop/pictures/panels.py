@@ -36,6 +36,7 @@ T = TypeVar("T")
 MOST_PANELS = 6  # of a page
 ONE_WIDTH = 125.0  # mm, paper of a single panel
 LETTER = 1.62  # mm, of a panel's title and labels on the average
+SQUEEZED = 0.96  # letters are of whole dots, so that they shrink less than they are told to
 LARGEST = 1e200  # what is beyond is no number to draw
 MOST_DECADES = 12
 LEAST_SPAN = 1e-5  # of the values: a narrower range of an axis would only show rounding
@@ -163,7 +164,7 @@ def squeeze(text: Text, width_mm: float) -> None:
         room = width_mm * MM * text.figure.dpi
         wide = _extent(text)
         if wide > room:
-            text.set_size(text.get_size() * room / wide)
+            text.set_size(text.get_size() * SQUEEZED * room / wide)
 
 
 def _extent(text: Text) -> float:

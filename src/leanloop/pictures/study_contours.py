@@ -84,11 +84,13 @@ def _page(
     x, y = (end.values[place] for end, place in zip(ends, places, strict=True))
     with style():
         paper, panels, width = page(title, note, len(group), row_mm=64.0, below_mm=10.0)
+        width -= 4.0  # for what stands left of each panel
         drawn, handles = [], {}
         bad = ~findings.converged[rows]
         for number, (axes, column) in enumerate(zip(panels, group, strict=True)):
             axes.set_gid(f"panel-{column.address}")
             axes.grid(False)
+            axes.tick_params(pad=8.0)  # crosses stand on the frame
             fit_axis(axes.xaxis, x, ends[0].log, tight=True)
             fit_axis(axes.yaxis, y, ends[1].log, tight=True)
             lines = _contours(axes, x, y, column.values[rows], column.address)

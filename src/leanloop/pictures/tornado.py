@@ -152,7 +152,7 @@ def _name_panel(axes: Axes, name: str, more: str) -> None:
     axes.set_gid(f"panel-{name}")
     axes.grid(visible=False, axis="y")
     text = literal(shortened(name, 60) + (f"  ({more})" if more else ""))
-    axes.set_title(text, loc="left", x=0.0, size=8.0, weight="bold")
+    axes.set_title(text, loc="left", x=0.0, size=7.5, weight="bold")
     squeeze(axes._left_title, 84.0)
 
 
