@@ -16,7 +16,8 @@ from scipy.stats import norm, spearmanr
 import leanloop
 from leanloop.errors import MissingExtra
 from leanloop.flowsheet.scales import of_column
-from leanloop.pictures import base, gather, panels, study_contours, study_histograms, study_samples, words
+from leanloop.pictures import base, gather, panel_scales, study_contours, study_histograms, study_samples, words
+from leanloop.studies.axes import Axis
 from leanloop.studies.findings import Findings
 from leanloop.studies.influence import Influence
 
@@ -315,6 +316,16 @@ class TestCurves:
         np.testing.assert_allclose(y, own[LEAN][[1, 2, 0]])
 
 
+    def test_lists_stand_by_their_place(self, sheet):
+        own = leanloop.study(sheet, "lists", change={BLEED: [1e-3, 2e-3, 4e-3]}, record=[LEAN], purity=False).run()
+        study = SimpleNamespace(**vars(own.study))
+        axis = Axis({"units.wash.efficiencies": [[1.0, 0.9], [1.0, 0.8], [1.0, 0.7]]})
+        study.cases = SimpleNamespace(changes=axis.values, axes=(axis,), sampled=(), count=3)
+        figure = gather.of_study(changed(own, study=study))[0].figure
+        np.testing.assert_array_equal(parts(figure)[LEAN].get_xdata(), [1, 2, 3])
+        assert label_of(panel(figure, LEAN).get_xlabel()) == "placeinthelistofunits.wash.efficiencies"
+
+
 class TestContours:
     def test_lines_run_where_the_quantity_has_their_level(self, found):
         own = found["plane"]
@@ -470,6 +481,8 @@ class TestHistograms:
         figure = drawn["few solved"]["spread_histograms"].figure
         assert sum(bar.get_height() for bar in bars(figure, LEAN)) == 2
         assert "2 of 256 cases converged, 254 did not" in note(figure)
+        for axes in figure.axes:
+            assert all(float(tick).is_integer() for tick in axes.get_yticks())
 
 
 class TestBars:
@@ -563,6 +576,7 @@ class TestWords:
                     out = words.address_lines(text, letters, lines).splitlines()
                     assert len(out) <= lines and max(map(len, out)) <= letters
                     assert out[0][0] == text[0] and out[-1][-1] == text[-1]
+                    assert "".join(out) == text or sum("..." in line for line in out) == 1
 
     def test_what_differs_still_does(self):
         alike = [f"units.{'x' * 30}{place}{'y' * 30}.flow" for place in range(5)]
@@ -577,7 +591,7 @@ class TestScales:
         with base.style():
             figure = base.canvas(80, 60)
             axes = figure.subplots()
-            panels.fit_axis(axes.yaxis, np.array(ends, dtype=float))
+            panel_scales.fit_axis(axes.yaxis, np.array(ends, dtype=float))
             figure.draw_without_rendering()
             low, high = axes.get_ylim()
             assert low <= ends[0] <= ends[1] <= high and low < high
@@ -592,8 +606,8 @@ class TestScales:
     def test_log_where_all_is_above_zero(self):
         with base.style():
             axes = base.canvas(80, 60).subplots()
-            panels.fit_axis(axes.xaxis, np.array([1e-3, 1e2]), log=True)
+            panel_scales.fit_axis(axes.xaxis, np.array([1e-3, 1e2]), log=True)
             assert axes.get_xscale() == "log" and axes.get_xlim()[0] < 1e-3 and axes.get_xlim()[1] > 1e2
             axes = base.canvas(80, 60).subplots()
-            panels.fit_axis(axes.xaxis, np.array([0.0, 1e2]), log=True)
+            panel_scales.fit_axis(axes.xaxis, np.array([0.0, 1e2]), log=True)
             assert axes.get_xscale() == "linear"

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.pictures.base import GREY, INK, NAVY, legend_below, literal, look, short, style
-from leanloop.pictures.panels import finish, fit_axis, known, label_abscissa, listed, page, pages, tame, title_panel, wants_log
+from leanloop.pictures.panel_scales import fit_axis, known, tame, wants_log
+from leanloop.pictures.panels import finish, label_abscissa, listed, page, pages, title_panel
 from leanloop.pictures.study_columns import constant, heading, joined, label, shown
 from leanloop.pictures.words import shortened
 

@@ -9,7 +9,8 @@ import numpy as np
 
 from leanloop.flowsheet.scales import of_column
 from leanloop.pictures.base import short
-from leanloop.pictures.panels import known, listed, tame
+from leanloop.pictures.panel_scales import known, tame
+from leanloop.pictures.panels import listed
 from leanloop.pictures.words import shortened
 
 if TYPE_CHECKING:

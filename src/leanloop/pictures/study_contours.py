@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.pictures.base import INK, MM, legend_below, library, short, style
-from leanloop.pictures.panels import FAILED, finish, fit_axis, known, label_abscissa, page, pages, title_panel, wants_log
+from leanloop.pictures.panel_scales import fit_axis, known, wants_log
+from leanloop.pictures.panels import FAILED, finish, label_abscissa, page, pages, title_panel
 from leanloop.pictures.study_axes import Scaled, held, scaled
 from leanloop.pictures.study_columns import Column, constant, heading, joined, recorded, tally
 from leanloop.pictures.words import address_lines

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.pictures.base import NAVY, RUST, legend_below, style
-from leanloop.pictures.panels import finish, fit_axis, known, label_abscissa, page, pages, rug, title_panel, wants_log
+from leanloop.pictures.panel_scales import fit_axis, known, wants_log
+from leanloop.pictures.panels import finish, label_abscissa, page, pages, rug, title_panel
 from leanloop.pictures.study_axes import Scaled, held, scaled
 from leanloop.pictures.study_columns import Column, heading, joined, recorded, tally
 

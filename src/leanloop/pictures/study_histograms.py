@@ -8,8 +8,9 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.flowsheet.scales import of_column
-from leanloop.pictures.base import GREEN, GREY, INK, NAVY, PALE, RUST, legend_below, short, style
-from leanloop.pictures.panels import LARGEST, finish, fit_axis, known, page, pages, title_panel, upright, wants_log
+from leanloop.pictures.base import GREEN, GREY, INK, NAVY, PALE, RUST, legend_below, library, short, style
+from leanloop.pictures.panel_scales import LARGEST, fit_axis, known, wants_log
+from leanloop.pictures.panels import finish, page, pages, title_panel, upright
 from leanloop.pictures.study_columns import Column, heading, joined, recorded, tally
 
 if TYPE_CHECKING:
@@ -144,6 +145,9 @@ def _panel(axes: Axes, findings: Findings, column: Column) -> tuple[list[Any], s
     tallest = max([float(counts.max()), *(float(np.max(line.get_ydata())) for line in lines if "density" in line.get_gid())])
     fit_axis(axes.yaxis, np.array([0.0, min(tallest, 3.0 * counts.max())]))
     axes.set_ylim(0, None)
+    ticker = library().ticker
+    axes.yaxis.set_major_locator(ticker.MaxNLocator(nbins=5, integer=True))
+    axes.yaxis.set_major_formatter(ticker.FuncFormatter(lambda value, _: f"{value:.0f}"))
     return lines, words
 
 

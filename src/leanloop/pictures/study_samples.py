@@ -8,7 +8,8 @@ import numpy as np
 from scipy.stats import rankdata
 
 from leanloop.pictures.base import NAVY, legend_below, style
-from leanloop.pictures.panels import finish, fit_axis, known, label_abscissa, page, pages, rug, title_panel, wants_log
+from leanloop.pictures.panel_scales import fit_axis, known, wants_log
+from leanloop.pictures.panels import finish, label_abscissa, page, pages, rug, title_panel
 from leanloop.pictures.study_columns import Column, constant, heading, joined, label, recorded, shown, tally
 
 if TYPE_CHECKING:

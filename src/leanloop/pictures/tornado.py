@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.pictures.base import INK, NAVY, PAGE_WIDTH, PALE, legend_below, library, literal, settle, short, style
-from leanloop.pictures.panels import LARGEST, fit_axis, listed, pages, sheet_of, squeeze
+from leanloop.pictures.panel_scales import LARGEST, fit_axis
+from leanloop.pictures.panels import listed, pages, sheet_of, squeeze
 from leanloop.pictures.study_columns import heading, joined
 from leanloop.pictures.words import shortened, told_apart
 

@@ -133,6 +133,8 @@ def _broken(text: str, letters: int) -> list[str]:
     out = []
     while len(text) > letters:
         place = max(text.rfind(mark, letters // 2, letters) for mark in "._, ") + 1 or letters
+        while text[place - 1 : place + 1] == GAP[:2] and place > 1:  # what stands for the middle stays whole
+            place -= 1
         out.append(text[:place].rstrip())
         text = text[place:].lstrip()
     return [*out, text]
