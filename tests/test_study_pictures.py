@@ -393,6 +393,13 @@ class TestContours:
             assert values.min() < found[0] and found[-1] < values.max()
             assert log == (values.min() > 0 and values.max() > 50 * values.min())
 
+    def test_crosses_of_many_cases_stand_for_blocks(self):
+        bad = np.zeros((90, 50), dtype=bool)
+        bad[:40], bad[77, 33] = True, True
+        x, y = study_contours._points(np.arange(50.0), np.arange(90.0), bad)
+        assert len(x) == 10 * 17 + 1 and bad[y.astype(int), x.astype(int)].all()
+        assert (33.0, 77.0) in set(zip(x, y, strict=True))
+
     def test_no_field_without_four_neighbours(self, drawn):
         assert not any("lines-" in gid for gid in parts(drawn["scattered"]["plane_contours"].figure))
         assert f"lines-{LEAN}" in parts(drawn["one square"]["plane_contours"].figure)
@@ -501,7 +508,8 @@ class TestBars:
                 assert bool(bar.get_hatch()) == (item.per_cent < 0)
                 label = panel(figure, address).get_yticklabels()[place].get_text()
                 assert label == f"{item.number}, 1 {item.unit}"
-        assert "as its limit alone moves it: " + CLEANED in note(figure)
+        assert "as its limit alone moves it: " + CLEANED in note(figure) and "the 12 largest of each" in note(figure)
+        assert "largest" not in note(drawn["long influences"]["one_tornado"].figure)
 
     def test_shares_of_the_variance_stand_side_by_side(self, found, drawn):
         told, figure = found["spread"].uncertainty["quantities"], drawn["spread"]["spread_variance"].figure

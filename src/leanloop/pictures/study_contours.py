@@ -23,6 +23,7 @@ LEVELS = 8  # about
 PALEST, DARKEST = (0.965, 0.972, 0.98), (0.60, 0.65, 0.71)  # of one hue; a black line and its number can be read on both
 LABEL = 7.0  # points
 SHARES = (0.5, 0.35, 0.65, 0.2, 0.8, 0.425, 0.575, 0.275, 0.725, 0.12, 0.88)  # of a line, where its number may stand
+MOST_CROSSES = 24  # along an axis
 ROOM = 0.7  # mm around a number
 
 
@@ -97,8 +98,7 @@ def _page(
             lines = _contours(axes, x, y, column.values[rows], column.address)
             drawn.append((axes, lines))
             if bad.any():
-                size = FAILED["markersize"] * min(1.0, 12 / max(bad.shape))
-                look = {**FAILED, "markersize": max(1.5, size), "clip_on": False, "zorder": 5, "label": "case not converged"}
+                look = {**FAILED, "markersize": 4.0, "clip_on": False, "zorder": 5, "label": "case not converged"}
                 (handles["failed"],) = axes.plot(*_points(x, y, bad), gid=f"failed-{column.address}", **look)
             title_panel(axes, column.label, width)
             if number >= len(group) - 2:
@@ -115,8 +115,11 @@ def _page(
 
 
 def _points(x: np.ndarray, y: np.ndarray, where: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Give where crosses stand: one for each block of cases where cases are too many."""
     up, across = np.nonzero(where)
-    return x[across], y[up]
+    blocks = [part // -(-size // MOST_CROSSES) for part, size in zip((up, across), where.shape, strict=True)]
+    _, first = np.unique(np.stack(blocks), axis=1, return_index=True)
+    return x[across[first]], y[up[first]]
 
 
 def levels(values: np.ndarray) -> tuple[np.ndarray, bool]:

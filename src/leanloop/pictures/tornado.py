@@ -58,6 +58,7 @@ def figures(findings: Findings) -> list[Figure]:
     order = [name for name in findings.study.record if name in groups and name not in held]
     note = joined(
         "change of a quantity in % for 1 % of an input, or 1 K of a temperature, at the flowsheet as it is",
+        f"the {MOST_BARS} largest of each" if any(len(groups[name]) > MOST_BARS for name in order) else "",
         f"not drawn, as its limit alone moves it: {listed(held)}" if held else "",
     )
     shared = list(pages(order, MOST_PANELS))
@@ -68,8 +69,7 @@ def figures(findings: Findings) -> list[Figure]:
         with style():
             paper, panels = _paper(title, note, [len(items) for items in rows])
             for axes, name, items in zip(panels, names, rows, strict=True):
-                more = f"the {len(items)} largest of {len(groups[name])}" if len(items) < len(groups[name]) else ""
-                _name_panel(axes, name, more)
+                _name_panel(axes, name)
                 labels = told_apart([item.number for item in items], LETTERS - 5)
                 _name_bars(axes, [f"{text}, 1 {item.unit}" for text, item in zip(labels, items, strict=True)])
                 _elasticities(axes, name, items)
@@ -103,7 +103,10 @@ def variance(findings: Findings) -> list[Figure]:
     """
     told = findings.uncertainty.get("quantities", {})
     parts = {name: found for name, item in told.items() if (found := _shares(item))}
-    note = "share of each input in the variance of a quantity; of the sample, what a curve in that input alone explains"
+    note = joined(
+        "share of each input in the variance of a quantity; of the sample, what a curve in that input alone explains",
+        f"the {MOST_BARS} largest of each" if any(len(own) - (REST in own) > MOST_BARS for own in parts.values()) else "",
+    )
     shared = list(pages(list(parts), MOST_PANELS))
     out = []
     for place, names in enumerate(shared):
@@ -114,9 +117,7 @@ def variance(findings: Findings) -> list[Figure]:
                 own |= {REST: parts[name][REST]} if REST in parts[name] else {}
             paper, panels = _paper(title, note, [2 * len(own) for own in rows])
             for axes, name, own in zip(panels, names, rows, strict=True):
-                inputs = len([key for key in parts[name] if key != REST])
-                more = f"the {MOST_BARS} largest of {inputs}" if inputs > MOST_BARS else ""
-                _name_panel(axes, name, more)
+                _name_panel(axes, name)
                 _name_bars(axes, told_apart(list(own), LETTERS))
                 _pairs(axes, name, own)
             panels[-1].set_xlabel("share of the variance, %")
@@ -149,11 +150,10 @@ def _paper(title: str, note: str, bars: list[int]) -> tuple[Figure, list[Axes]]:
     return paper, list(paper.subplots(len(bars), 1, squeeze=False, height_ratios=ratios).ravel())
 
 
-def _name_panel(axes: Axes, name: str, more: str) -> None:
+def _name_panel(axes: Axes, name: str) -> None:
     axes.set_gid(f"panel-{name}")
     axes.grid(visible=False, axis="y")
-    text = literal(shortened(name, 60) + (f"  ({more})" if more else ""))
-    axes.set_title(text, loc="left", x=0.0, size=7.5, weight="bold")
+    axes.set_title(literal(shortened(name, LETTERS)), loc="left", x=0.0, size=7.5, weight="bold")
     squeeze(axes._left_title, 84.0)
 
 
