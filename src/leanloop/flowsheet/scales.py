@@ -73,10 +73,12 @@ def of_quantity(address: str) -> Scale:
     Scale
     """
     parts = address.split(".")
-    if any(part.startswith("mg_per_Nm3") for part in parts):
+    place = {"streams": 2, "units": 3, "purity": 1}.get(parts[0], len(parts) - 1)  # names of components tell no unit
+    key = parts[min(place, len(parts) - 1)]
+    if key.startswith("mg_per_Nm3"):
         return OF_INPUTS["mass in gas"]
     for ending, scale in OF_QUANTITIES:
-        if any(part.endswith(ending) for part in parts[2 if parts[0] in ("streams", "units") else 0 :]):
+        if key.endswith(ending):
             return scale
     return PLAIN
 

@@ -20,7 +20,8 @@ if TYPE_CHECKING:
 
 __all__ = [  # looks and words are given on
     "GREEN", "GREY", "INK", "LINES", "MM", "NAVY", "PAGE_WIDTH", "PALE", "PER_HOUR", "PNG_DPI", "RUST", "STYLE", "canvas",
-    "legend_below", "library", "linear_axis", "literal", "log_axis", "look", "png", "settle", "short", "style", "svg", "wrapped",
+    "legend_below", "library", "linear_axis", "literal", "log_axis", "look", "png", "quiet", "settle", "short", "style", "svg",
+    "wrapped",
 ]
 
 MISSING = 'pictures need matplotlib; install the extra: pip install "leanloop[pictures]"'
@@ -196,7 +197,7 @@ def settle(figure: Figure) -> None:
     engine = figure.get_layout_engine()
     if engine is None or isinstance(engine, library().layout_engine.PlaceHolderLayoutEngine):
         return
-    with _quiet():
+    with quiet():
         # ticks follow the size of the axes and the reverse: the second time nothing moves
         figure.draw_without_rendering()
         figure.draw_without_rendering()
@@ -251,7 +252,7 @@ def svg(figure: Figure, prefix: str = "picture") -> str:
 
 
 @contextmanager
-def _quiet() -> Iterator[None]:
+def quiet() -> Iterator[None]:
     """Hold the style; a name in a script that the font does not have is drawn as boxes, which is no reason to stop."""
     with style(), warnings.catch_warnings():
         warnings.filterwarnings("ignore", message="Glyph .* missing from font", category=UserWarning)
@@ -261,6 +262,6 @@ def _quiet() -> Iterator[None]:
 def _saved(figure: Figure, **options: Any) -> bytes:
     settle(figure)
     held = io.BytesIO()
-    with _quiet():
+    with quiet():
         figure.savefig(held, facecolor="white", **options)
     return held.getvalue()

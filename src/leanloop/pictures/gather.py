@@ -6,7 +6,20 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from leanloop.pictures import base, convergence, drawing, profiles, stage_diagram, window
+from leanloop.pictures import (
+    base,
+    convergence,
+    drawing,
+    profiles,
+    stage_diagram,
+    study_buildup,
+    study_contours,
+    study_curves,
+    study_histograms,
+    study_samples,
+    tornado,
+    window,
+)
 from leanloop.pinch import diagram
 from leanloop.pinch.limits import Limits, limits
 
@@ -15,6 +28,16 @@ if TYPE_CHECKING:
 
     from leanloop.flowsheet.result import Result
     from leanloop.studies.findings import Findings
+
+OF_STUDY = (
+    ("curves", "Quantities against the input", study_curves.figures),
+    ("contours", "Quantities over two inputs", study_contours.figures),
+    ("samples", "Cases of the sample", study_samples.figures),
+    ("histograms", "Spread of the answer", study_histograms.figures),
+    ("variance", "Where the spread comes from", tornado.variance),
+    ("tornado", "What matters most", tornado.figures),
+    ("buildup", "Build-up in the lean solvent", study_buildup.figures),
+)
 
 
 @dataclass(frozen=True)
@@ -76,6 +99,34 @@ def pictures(result: Result, found: Limits | None = None) -> list[Picture]:
     return out
 
 
+def of_study(findings: Findings) -> list[Picture]:
+    """Draw everything there is to draw of a study.
+
+    Parameters
+    ----------
+    findings : Findings
+
+    Returns
+    -------
+    list of Picture
+        Named by the study and what they show, from the second page of a sort on with its number.
+
+    Raises
+    ------
+    MissingExtra
+        Where matplotlib is not installed.
+    """
+    base.library()
+    name, out = findings.study.name, []
+    for sort, caption, figures in OF_STUDY:
+        found = figures(findings)
+        for number, figure in enumerate(found, 1):
+            of = f", {number} of {len(found)}" if len(found) > 1 else ""
+            own = f"{name}_{sort}" + (f"_{number}" if number > 1 else "")
+            out.append(Picture(own, f"studies.{name}", f"{caption}{of}", figure))
+    return out
+
+
 def files(shown: list[Picture], directory: str) -> dict[Path, str | bytes]:
     """Give the pictures as files, each as SVG and as PNG.
 
@@ -103,8 +154,3 @@ def inline(shown: list[Picture]) -> dict[tuple[str, str], str]:
     shown : list of Picture
     """
     return {(item.place, item.caption): base.svg(item.figure, item.name) for item in shown}
-
-
-def of_study(found: Findings) -> list[Picture]:
-    """Draw what there is to draw of a study."""
-    return []
