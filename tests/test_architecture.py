@@ -46,24 +46,25 @@ LAYERS = {
     ),
     "pinch": (*TEXT, "status", "components", "stream", "equilibrium", "units", "flowsheet"),
     "studies": (*TEXT, "status", "version", "components", "stream", "feed", "units", "flowsheet"),
-    "pictures": ("errors", "units", "flowsheet", "pinch", "studies"),
+    "sizing": (*TEXT, "status", "components", "stream", "hydraulics", "flowsheet", "pinch", "studies"),
+    "pictures": ("errors", "units", "flowsheet", "pinch", "studies", "sizing"),
     "output": (
         *TEXT, "status", "version", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch",
-        "studies",
+        "studies", "sizing",
     ),
-    "textfile": (*TEXT, "components", "feed", "flowsheet", "studies"),
+    "textfile": (*TEXT, "components", "feed", "flowsheet", "studies", "sizing"),
     "checks": (
         *TEXT, "status", "registry", "components", "stream", "equilibrium", "enthalpy", "units", "recycle",
     ),
-    "cli": (*TEXT, "output", "pictures", "flowsheet", "studies", "textfile", "package"),
+    "cli": (*TEXT, "output", "pictures", "flowsheet", "studies", "sizing", "textfile", "package"),
     "__main__": ("cli",),
     # leanloop/__init__.py
-    "package": (*TEXT, "version", "components", "stream", "feed", "flowsheet", "pinch", "studies", "textfile"),
+    "package": (*TEXT, "version", "components", "stream", "feed", "flowsheet", "pinch", "studies", "sizing", "textfile"),
 }
 ORDER = (
     "errors", "status", "version", "registry", "quantities", "entries", "components", "enthalpy", "stream", "equilibrium",
-    "hydraulics", "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "output", "pictures",
-    "textfile", "package", "cli", "__main__",
+    "hydraulics", "column", "flash", "feed", "units", "recycle", "checks", "flowsheet", "pinch", "studies", "sizing", "output",
+    "pictures", "textfile", "package", "cli", "__main__",
 )
 
 # Third-party packages, and the files or folders that may import them; "" is the whole package.
@@ -92,6 +93,7 @@ SHARED = {
 EXCEPTIONS = {
     ("flowsheet/result.py", "leanloop.output.text", "report"): "print(result), imported only when it is called",
     ("studies/findings.py", "leanloop.output.text", "findings"): "print(findings), imported only when it is called",
+    ("sizing/designs.py", "leanloop.output.text", "designs"): "print(designs), imported only when it is called",
 }
 
 

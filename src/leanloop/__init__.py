@@ -6,6 +6,8 @@ from leanloop.feed import Feed
 from leanloop.flowsheet.result import Result
 from leanloop.flowsheet.sheet import Flowsheet
 from leanloop.pinch.limits import Limits, limits
+from leanloop.sizing.designs import Designs
+from leanloop.sizing.scan import size
 from leanloop.stream import Stream
 from leanloop.studies.findings import Findings
 from leanloop.studies.read import study
@@ -15,6 +17,7 @@ from leanloop.version import VERSION as __version__
 
 __all__ = [
     "Component",
+    "Designs",
     "Feed",
     "Findings",
     "Flowsheet",
@@ -29,5 +32,6 @@ __all__ = [
     "__version__",
     "limits",
     "read",
+    "size",
     "study",
 ]

@@ -14,8 +14,10 @@ from leanloop.errors import Fault, InputError, LeanloopError, MissingExtra
 from leanloop.output import catalogue, content_limits, html, json, tables, text
 from leanloop.output.progress import Progress
 from leanloop.pictures import gather
+from leanloop.sizing.scan import size
 from leanloop.studies.read import study as declared
 from leanloop.textfile.reader import read
+from leanloop.textfile.writer import with_inputs
 
 LONG = "looking for the limits; where there is no plain curve this solves with more and more stages"
 REACHED, NOT_REACHED, WRONG_INPUT = 0, 1, 2
@@ -46,6 +48,11 @@ def _parser() -> argparse.ArgumentParser:
     study.add_argument("--out", metavar="DIR", required=True, help="directory that keeps every batch, for tables and pictures too")
     study.add_argument("--workers", metavar="N", type=int, default=1, help="processes that calculate")
     study.add_argument("--cluster", metavar="ADDRESS", help="scheduler of a dask.distributed cluster that calculates")
+    sized = _command(commands, "size", "size absorber and stripper together over a scan of designs")
+    sized.add_argument("--json", metavar="PATH", help="write all designs as JSON; - for standard output, and nothing else there")
+    sized.add_argument("--tables", metavar="DIR", help="write all designs as a CSV file into a directory")
+    sized.add_argument("--pictures", metavar="DIR", help="draw contours over the stages and the Pareto set into a directory")
+    sized.add_argument("--write", metavar="FILE", help="write the design chosen as a flowsheet file")
     draw = _command(commands, "draw", "solve a flowsheet and draw its pictures")
     draw.add_argument("--out", metavar="DIR", required=True, help="directory for the pictures, SVG and PNG")
     commands.add_parser("catalogue", help="list installed unit kinds, equilibrium models and recycle methods")
@@ -117,6 +124,26 @@ def _draw(arguments: argparse.Namespace) -> int:
     return REACHED if result.converged else NOT_REACHED
 
 
+def _size(arguments: argparse.Namespace) -> int:
+    sheet = read(arguments.file, arguments.settings)
+    _tell("solving all designs")
+    found = size(sheet)
+    written = text.designs(found)
+    files: dict[Path, str | bytes] = dict(tables.of_designs(found, arguments.tables)) if arguments.tables else {}
+    if arguments.json and arguments.json != "-":
+        files[Path(arguments.json)] = json.text(found.to_dict())
+    if arguments.pictures:
+        files.update(gather.files(gather.of_designs(found), arguments.pictures))
+    if arguments.write and found.chosen is None:
+        sys.stderr.write(f"{arguments.file}: no design could be chosen: {arguments.write} is not written\n")
+    elif arguments.write:
+        inputs = {key: (value, sheet.sorts[key]) for key, value in found.settings(found.chosen).items()}
+        files[Path(arguments.write)] = with_inputs(arguments.file, arguments.settings, inputs, f"design {found.chosen}")
+    tables.put(files, arguments.tables, arguments.pictures)
+    sys.stdout.write(json.text(found.to_dict()) if arguments.json == "-" else written)
+    return REACHED if found.good.any() and found.chosen is not None else NOT_REACHED
+
+
 def _study(arguments: argparse.Namespace) -> int:
     if arguments.workers < 1:
         raise InputError([Fault("--workers", f"{arguments.workers} is no number of processes", "write 1 or more")])
@@ -166,7 +193,15 @@ def _catalogue(arguments: argparse.Namespace) -> int:
     return REACHED
 
 
-COMMANDS = {"solve": _solve, "check": _check, "limits": _limits, "draw": _draw, "study": _study, "catalogue": _catalogue}
+COMMANDS = {
+    "solve": _solve,
+    "check": _check,
+    "limits": _limits,
+    "size": _size,
+    "study": _study,
+    "draw": _draw,
+    "catalogue": _catalogue,
+}
 
 
 def main(arguments: Sequence[str] | None = None) -> int:

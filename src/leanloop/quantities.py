@@ -46,6 +46,14 @@ DIMENSIONS: dict[str, tuple[Dimension, str]] = {
     "price of area": ((0, -2, 0, 0, 0), "400 /m2"),
 }
 
+SI_UNITS = {
+    "temperature": "K", "temperature difference": "K", "pressure": "Pa", "molar flow": "mol/s", "mass flow": "kg/s",
+    "volume flow": "m3/s", "molar mass": "kg/mol", "mass in gas": "mg/Nm3", "solubility": "mol/(m3 Pa)",
+    "molar concentration": "mol/m3", "power": "W", "molar energy": "J/mol", "molar heat capacity": "J/(mol K)",
+    "specific energy": "J/kg", "specific heat capacity": "J/(kg K)", "heat transfer": "W/K", "length": "m", "amount": "mol",
+    "mass": "kg", "density": "kg/m3", "molar volume": "m3/mol",
+}  # fmt: skip
+
 LONGEST = 200  # letters of a unit
 NORMAL_MOLES = c.atm / (c.R * c.zero_Celsius)  # mol in 1 Nm3: 0 degC, 101.325 kPa
 
@@ -283,3 +291,21 @@ def dimension_name(dimension: Dimension) -> str:
 def example(name: str) -> str:
     """Give an example text of a named dimension, for messages."""
     return f'"{DIMENSIONS[name][1]}"' if name != "number" else DIMENSIONS[name][1]
+
+
+def si_text(value: float, sort: str) -> float | int | str:
+    """Write an SI number as a file would hold it, so that it is read back as the same double.
+
+    Parameters
+    ----------
+    value : float or int
+        Of a mass in gas, mg/Nm3, as inputs of that sort are kept.
+    sort : str
+        A name of `DIMENSIONS`, or ``"integer"``.
+
+    Returns
+    -------
+    float, int or str
+        Text with a unit where the sort has a dimension.
+    """
+    return f"{value!r} {SI_UNITS[sort]}" if sort in SI_UNITS else value

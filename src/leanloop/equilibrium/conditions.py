@@ -9,6 +9,7 @@ from leanloop.components import PHASES, Components
 from leanloop.entries import Context, Entry, near, read_values, shown_key, shown_name
 from leanloop.equilibrium import MODELS
 from leanloop.equilibrium.base import EquilibriumModel
+from leanloop.equilibrium.multiplied import Multiplied
 from leanloop.errors import nearest
 from leanloop.registry import BrokenPlugin, UnknownPlugin
 
@@ -107,4 +108,5 @@ def _read_model(entry: Mapping[str, Any], where: str, context: Context) -> Equil
     if isinstance(file, str) and not file.isprintable():  # no system can hold some of those
         context.fault(f"{where}.file", f"{shown_name(file)} is no name of a file", "name a CSV file beside the flowsheet")
         return None
-    return kind.read({key: value for key, value in entry.items() if key != "model"}, where, context)
+    table = {key: value for key, value in entry.items() if key != "model"}
+    return Multiplied.around(kind, table, where, context) if "multiplier" in table else kind.read(table, where, context)

@@ -34,7 +34,7 @@ CLOSURE = 1e-7  # of what enters or leaves: a component's balance that is open b
 NOTHING = 1e-25  # of all that enters: less of a component is not told from none
 SECTIONS = (
     "title", "feeds", "units", "requirements", "components", "equilibrium", "loop", "basis", "groups", "limits",
-    "heat_data", "studies",
+    "heat_data", "studies", "sizing", "properties",
 )  # fmt: skip
 
 
@@ -57,8 +57,8 @@ class Flowsheet:
         Ends of columns for `leanloop.limits`: ``key``, ``gas_in``, ``gas_out``, ``liquid_in``, ``liquid_out``, ``removal``.
     heat_data : mapping of str to mapping, optional
         Enthalpies by component; where it is given, or a unit balances heat, common species have built-in data.
-    studies : mapping of str to mapping, optional
-        Kept as they are for `leanloop.study`, which reads them.
+    studies, sizing, properties : mapping, optional
+        Kept as they are for `leanloop.study` and `leanloop.size`, which read them.
     plain_si : bool
         Whether plain numbers may stand for quantities with a dimension, in SI units.
     source : str
@@ -86,6 +86,8 @@ class Flowsheet:
         limits: Any = None,
         heat_data: Any = None,
         studies: Any = None,
+        sizing: Any = None,
+        properties: Any = None,
         *,
         plain_si: bool = True,
         source: str = "",
@@ -94,7 +96,8 @@ class Flowsheet:
         self.given = {
             "components": components, "equilibrium": equilibrium, "feeds": feeds, "units": units, "requirements": requirements,
             "title": title, "loop": loop, "basis": basis, "groups": groups, "limits": limits, "heat_data": heat_data,
-            "studies": studies, "plain_si": plain_si, "source": source, "directory": directory,
+            "studies": studies, "sizing": sizing, "properties": properties, "plain_si": plain_si, "source": source,
+            "directory": directory,
         }  # fmt: skip
         self.source = source
         context = Context(plain_si=plain_si, names={"directory": [directory]})

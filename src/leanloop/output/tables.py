@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from leanloop.sizing.designs import Designs
     from leanloop.studies.findings import Findings
 
 
@@ -92,6 +93,17 @@ def of_study(found: Findings, directory: str) -> dict[Path, str]:
     if len(found.curves.get("case", ())):
         out[Path(directory) / f"{name}_curves.csv"] = _columns(found.curves)
     return out
+
+
+def of_designs(found: Designs, directory: str) -> dict[Path, str]:
+    """Give all designs as CSV by path, in SI units.
+
+    Parameters
+    ----------
+    found : Designs
+    directory : str
+    """
+    return {Path(directory) / "designs.csv": _columns(found.table())}
 
 
 def _columns(table: Mapping[str, Any]) -> str:

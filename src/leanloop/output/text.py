@@ -8,14 +8,16 @@ from typing import TYPE_CHECKING, Any
 from leanloop.output.content import Listing, Part, Section, Sentence, number, printable
 from leanloop.output.content_limits import limits_sections
 from leanloop.output.content_report import report_sections, report_title
+from leanloop.output.content_sizing import sizing_sections, sizing_title
 from leanloop.output.content_studies import study_sections, study_title
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
     from leanloop.pinch.limits import Limits
+    from leanloop.sizing.designs import Designs
     from leanloop.studies.findings import Findings
 
-__all__ = ["findings", "limits", "number", "printable", "render", "report", "structure", "table"]
+__all__ = ["designs", "findings", "limits", "number", "printable", "render", "report", "structure", "table"]
 
 STEP = "  "  # of indentation
 
@@ -117,6 +119,20 @@ def findings(found: Findings) -> str:
     str
     """
     return render(study_sections(found), study_title(found))
+
+
+def designs(found: Designs) -> str:
+    """Write the report of a scan of designs.
+
+    Parameters
+    ----------
+    found : Designs
+
+    Returns
+    -------
+    str
+    """
+    return render(sizing_sections(found), sizing_title(found))
 
 
 def structure(sheet: Any, found: dict[str, Any]) -> str:

@@ -27,6 +27,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
     from leanloop.flowsheet.result import Result
+    from leanloop.sizing.designs import Designs
     from leanloop.studies.findings import Findings
 
 OF_STUDY = (
@@ -154,3 +155,9 @@ def inline(shown: list[Picture]) -> dict[tuple[str, str], str]:
     shown : list of Picture
     """
     return {(item.place, item.caption): base.svg(item.figure, item.name) for item in shown}
+
+
+def of_designs(found: Designs) -> list[Picture]:
+    """Draw what there is to draw of a scan of designs."""
+    base.library()
+    return []

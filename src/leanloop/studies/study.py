@@ -156,7 +156,7 @@ class Study:
         given = {
             key: item
             for key, item in self.sheet.given.items()
-            if key not in ("title", "studies", "plain_si", "source", "directory")
+            if key not in ("title", "studies", "sizing", "properties", "plain_si", "source", "directory")
         }
         numbers = dict(self.sheet.numbers)  # points that stand in a file of their own among them
         return {

@@ -13,10 +13,10 @@ from leanloop.errors import Fault, InputError, nearest
 from leanloop.feed import SUM_TOLERANCE
 from leanloop.flowsheet.sheet import SECTIONS, Flowsheet
 from leanloop.quantities import parse
+from leanloop.sizing.read import read_properties, read_sizing
 from leanloop.studies.read import read_studies
 
 SCALED = ("fractions", "mass_fractions")  # changing one of them scales the others
-ELSEWHERE = ("sizing",)  # for other questions than a solve
 
 DEEPEST = 50  # tables in one another
 TOO_DEEP = Fault("file", "is nested too deep", "write plain tables and lists")
@@ -95,10 +95,10 @@ def _change(data: dict[str, Any], settings: Iterable[str]) -> list[Fault]:
         where = ".".join(shown_key(part) for part in address.split("."))
         table: Any = data
         *heads, last = address.split(".")
-        if address in (*SECTIONS[1:], *ELSEWHERE):
+        if address in SECTIONS[1:]:
             context.fault(where, "is a whole section", f"go on to one of its entries, {address}.NAME")
             continue
-        if heads[:1] in ([], ["title"]) and address != "title" or (heads and heads[0] not in (*SECTIONS, *ELSEWHERE)):
+        if heads[:1] in ([], ["title"]) and address != "title" or (heads and heads[0] not in SECTIONS):
             context.fault(where, "leads nowhere", nearest(address.split(".")[0], SECTIONS))
             continue
         for number, head in enumerate(heads):
@@ -215,8 +215,8 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
     data = load(path)
     context = Context()
     for key in data:
-        if key not in (*SECTIONS, *ELSEWHERE):
-            context.fault(shown_key(key), f"unknown section {shown_name(key)}", nearest(key, (*SECTIONS, *ELSEWHERE)))
+        if key not in SECTIONS:
+            context.fault(shown_key(key), f"unknown section {shown_name(key)}", nearest(key, SECTIONS))
     faults = [*context.faults, *_change(data, settings)]
     _tidy(data, name)
     try:
@@ -233,6 +233,8 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
             data.get("limits"),
             data.get("heat_data"),
             data.get("studies"),
+            data.get("sizing"),
+            data.get("properties"),
             plain_si=False,
             source=name,
             directory=str(Path(path).parent),
@@ -241,6 +243,10 @@ def read(path: str | Path, settings: Iterable[str] = ()) -> Flowsheet:
         raise InputError([*faults, *error.faults], name) from None
     context = Context(faults)
     read_studies(sheet, context)
+    if "sizing" in data:
+        read_sizing(sheet, data["sizing"], data.get("properties"), context)
+    elif "properties" in data:
+        read_properties(sheet, data["properties"], context)
     if faults:
         raise InputError(faults, name)
     return sheet

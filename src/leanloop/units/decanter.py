@@ -9,7 +9,6 @@ import numpy as np
 
 from leanloop.components import Components
 from leanloop.entries import Context, Entry
-from leanloop.equilibrium.base import Proportional
 from leanloop.equilibrium.water import is_water
 from leanloop.flash.mixture import Mixture
 from leanloop.stream import Stream, divide
@@ -113,7 +112,7 @@ class Decanter(Unit):
                     context.fault(f"{address}.{head}", f"'{name}' stays in the gas", remedy)
         unit.mix = mixture_of(unit, present, f"decanter '{self.name}'", context)
         for name, model in zip(unit.mix.names, unit.mix.models, strict=True) if unit.mix is not None else ():
-            if not isinstance(model, Proportional) or model.coordinates != "fraction":
+            if not hasattr(model, "k") or model.coordinates != "fraction":
                 problem = f"'{name}' is given at decanter '{self.name}' by a ratio that depends on the liquid, or in mole ratios"
                 remedy = "give its vapour pressure by raoult, or K in mole fractions"
                 context.fault(f"equilibrium.{table.name}.{name}", problem, remedy)
