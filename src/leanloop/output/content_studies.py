@@ -238,7 +238,7 @@ def _times(found: Findings, rows: np.ndarray) -> Section:
         for name in asked.contaminants
         for row in rows
     ]
-    held = f"{number(asked.inventory / 1e3)} kmol of {', '.join(asked.held)}"
+    held = f"{number(asked.inventory / 1e3)} {'t' if asked.masses else 'kmol'} of {', '.join(asked.held)}"
     lines = [
         Sentence(f"{held} in circulation, stirred at the make-up; columns follow at once"),
         Sentence("inputs that requirements free stay where the steady state has them"),

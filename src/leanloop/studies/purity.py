@@ -41,9 +41,12 @@ class Purity:
     between : (float, float)
         Where to look for it, SI.
     inventory : float or None
-        Held components in circulation, mol.
+        Held components in circulation, mol; kg where `masses` are given.
     start : dict of str to float
-        Loadings at the start of the build-up, mol per mol of held components; zero where not named.
+        Loadings at the start of the build-up, mol per mol of held components; zero for contaminants
+        that are not named, and as in the steady state for `others`.
+    masses : tuple of float
+        Molar masses of several held components, kg/mol, where the inventory is a mass of them as they are mixed.
     """
 
     makeup: str
@@ -57,6 +60,7 @@ class Purity:
     between: tuple[float, float] = BETWEEN
     inventory: float | None = None
     start: dict[str, float] = field(default_factory=dict)
+    masses: tuple[float, ...] = ()
 
     def limit_address(self, name: str) -> str:
         """Give the address of the level that is limited."""
