@@ -445,7 +445,7 @@ class TestCleanSolvent:
         dirty += '[heat_data.salt]\nliquid_heat_capacity = "250 J/(mol K)"\n'
         clean = text.replace("MAKES", "").replace(', sulfate = "2 ppm"', "")
         clean = clean[: clean.index("[units.bed]")] + clean[clean.index("[units.divide]") :]  # nothing to polish away
-        clean = clean.replace('takes = "polished"', 'takes = "warm_lean"').replace("sulfate = { molar_mass", "unused = { molar_mass")
+        clean = clean.replace('takes = "polished"', 'takes = "warm_lean"').replace("sulfate = { molar", "unused = { molar")
         clean = clean.replace("[heat_data.sulfate]", "[heat_data.unused]")
         for name, content in (("dirty", dirty), ("clean", clean)):
             (tmp_path / f"{name}.toml").write_text(content, encoding="utf-8")

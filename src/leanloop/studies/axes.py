@@ -105,10 +105,10 @@ def read_cases(sheet: Flowsheet, raw: Any, sample: Sample | None, address: str, 
             elif key not in sheet.numbers:
                 context.fault(own, "is no numeric input", nearest(str(key), sheet.numbers))
             seen[key] = own
-    if len(context.faults) > faults:
-        return None
+    tables = [({key: item for key, item in table.items() if key in sheet.numbers}, where) for table, where in tables]
     if sample is not None:
-        return _drawn(sheet, tables, sample, context)
+        found = _drawn(sheet, tables, sample, context)
+        return found if len(context.faults) == faults else None
     axes = [_axis(sheet, table, where, context) for table, where in tables]
     if len(context.faults) > faults:
         return None
@@ -264,6 +264,9 @@ def _step(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) ->
     sort = sheet.sorts[key]
     sort = {"temperature": "temperature difference", "integer": "number"}.get(sort, sort)
     found = read_number(raw, Entry("step", sort, above=0.0), f"{where}.step", context)
+    if found is not None and sheet.entry(key).sort == "integer" and found[0] % 1:
+        context.fault(f"{where}.step", "is no whole number", "write step = 1, or more")
+        return None
     return None if found is None else found[0]
 
 
