@@ -5,7 +5,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 from scipy.integrate import solve_ivp
-from study_scenes import GAS, OIL, STEAM, linear, pair
+from study_scenes import GAS, OIL, STEAM, linear, pair, taken
 
 import leanloop
 
@@ -244,6 +244,19 @@ class TestTime:
         linear_time = np.log(10) * H / OIL / p
         assert abs(found["purity.time_to_90_s.heavy"][0] / linear_time - 1) > 0.02
 
+    def test_of_a_co_absorbed_component(self):
+        """In the linear pair a pass leaves (1-E_S)(1-E_A/A)(1-p) of it: the rest, times S/H, is the rate."""
+        ratio = lambda K: {"model": "constant", "K": K, "basis": "ratio"}  # noqa: E731
+        tables = {"cold": {"solute": ratio(0.05), "sulfide": ratio(0.02)}, "hot": {"solute": ratio(1.9), "sulfide": ratio(0.15)}}
+        sheet = pair(gas={"sulfide": 0.1}, components=["sulfide"], equilibrium=tables)
+        bleeds = np.array([1e-4, 0.1])
+        found = solved(sheet, change={BLEED: bleeds}, purity={"inventory": "8 kmol", "contaminants": ["sulfide"]})
+        A, S = OIL / (0.02 * GAS), 0.15 * STEAM / OIL
+        left = (1 - taken(S, 4)) * (1 - taken(A, 5) / A) * (1 - bleeds)
+        assert left[0] > 0.5
+        assert found["purity.level.sulfide"] == close(linear(0.1, bleed=bleeds, K=(0.02, 0.15))[0], rel=1e-9)
+        assert self.times(found, "sulfide") == close(-np.log1p(-self.parts)[:, None] * self.H / OIL / (1 - left), rel=1e-5)
+
     def test_ends_at_the_steady_state(self):
         sheet = pair(gas={"tar": 0.02}, components=["tar"])
         found = solved(sheet, change={BLEED: [1e-3, 0.03, 0.4]}, purity={"inventory": "8 kmol"})
@@ -304,6 +317,24 @@ class TestBleedNeeded:
         assert found["purity.bleed_needed.tar"] == close(needed, rel=1e-8)
         assert found["purity.bleed_status.tar"] == ["converged"] * 3
         assert found["purity.added_at_limit_mol_s.tar.oil"] == close(needed * OIL, rel=1e-8)
+
+    def test_whatever_the_bleed_is_now(self):
+        """It is what is asked for; without one there is no steady state, and the bleed needed is the same."""
+        sheet = pair(solute=0.0, gas={"tar": INGRESS}, components=["tar"], bleed=0.0)
+        found = study(sheet, change={BLEED: [0.0, 0.01, 1.0]}, purity={"limits": {"tar": {"loading": 0.01}}})
+        assert found.status == ["no_steady_state", "converged", "converged"]
+        assert found["purity.bleed_status.tar"] == ["converged"] * 3
+        assert found["purity.bleed_needed.tar"] == close(INGRESS / (INGRESS + 0.01 * OIL), rel=1e-8)
+
+    def test_kept_without_a_bleed(self):
+        """A bed that keeps the limit by itself, and a gas without salt: the least bleed that is looked for will do."""
+        sheet = pair(solute=0.0, gas={"salt": 1e-4}, removal={"salt": 0.2}, components=["salt"])
+        purity = {"limits": {"salt": {"loading": 0.01}}, "bleed": BLEED, "between": [1e-6, 0.9]}
+        found = study(sheet, change={"feeds.vent.flows.salt": [0.0, 1e-3, 0.1, 1.0]}, purity=purity)
+        q = 0.01 * OIL / (0.01 * OIL + 0.1)
+        assert found["purity.bleed_status.salt"] == ["converged"] * 3 + ["out_of_reach"]
+        assert found["purity.bleed_needed.salt"] == close([1e-6, 1e-6, 1 - q / 0.8, np.nan], rel=1e-8, nan_ok=True)
+        assert found["purity.added_at_limit_mol_s.salt.oil"][:3] == close(found["purity.bleed_needed.salt"][:3] * OIL, rel=1e-8)
 
     def test_solving_again_gives_the_limit(self):
         limit = 0.02
