@@ -382,7 +382,7 @@ purity = { limits = { resin = { mass_fraction = 0.02 } }, inventory = "2 t" }
         base = sqlite3.connect(tmp_path / "out" / "proof.sqlite")
         names = [row[0] for row in base.execute("select name from sqlite_master where type = 'table' or type = 'view'")]
         assert names
-        texts = ("status", "status_text", "purity.bleed_status.resin")
+        texts = ("status", "status_text", "purity.bleed_status.resin", "clean.status")
         columns = found.to_dict()["cases"]
         assert set(told) == set(columns) and len(told["case"]) == 6
         for name, values in columns.items():

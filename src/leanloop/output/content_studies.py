@@ -210,7 +210,7 @@ def _effect(found: Findings) -> Section | None:
         for row in thinned(len(found), 3):
             base, value = float(clean[row]), float(own[row])
             more = 100.0 * (value - base) / abs(base) if base else np.nan
-            if np.isfinite(more) and abs(more) > 1e-6:
+            if np.isfinite(more) and abs(more) > 1e-6 and found.cases["clean.status"][row] == "converged":
                 body.append(
                     [
                         key,

@@ -88,6 +88,7 @@ def read_purity(sheet: Flowsheet, raw: Any, address: str, context: Context) -> P
         purity.contaminants,
         purity.others,
         purity.circuit,
+        purity.loop,
         limits,
         bleed,
         between,
@@ -121,6 +122,7 @@ def _look(sheet: Flowsheet, makeup: str, loop: list[str], named: tuple[str, ...]
         tuple(name for name in carried if name in stays),
         tuple(name for name in carried if name not in stays),
         circuit,
+        tuple(loop),
         bleed=shares[0] if len(shares) == 1 else "",
     )
 

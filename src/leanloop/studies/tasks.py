@@ -78,7 +78,7 @@ def work(payload: bytes, changes: Mapping[str, Any], first: int, count: int) -> 
     -------
     dict of str to columns
         ``cases``: ``case``, the inputs, ``status``, ``status_text`` (empty where converged), what is recorded, and of a purity
-        study its columns and ``clean.ADDRESS``. ``curves`` where an inventory is given.
+        study its columns, ``clean.status`` and ``clean.ADDRESS``. ``curves`` where an inventory is given.
     """
     return calculate(_unpacked(payload), changes, first, count)
 
@@ -110,6 +110,7 @@ def calculate(order: Order, changes: Mapping[str, Any], first: int, count: int) 
         kept = [clean[f"streams.{asked.stream}.mol_s.{name}"] for name in asked.contaminants]
         # a contaminant that is the rest of a feed cannot be left out: then nothing is told of a clean solvent
         dirty = np.any([np.asarray(item, dtype=float) > 0 for item in kept], axis=0)
+        cases["clean.status"] = statuses(clean)[0]
         for address, values in record.columns(clean, order.record).items():
             cases[f"clean.{address}"] = np.where(dirty, np.nan, values)
     for name, sheet in order.limited.items():
