@@ -116,6 +116,16 @@ class TestLinearGaussian:
             met = np.mean(sheet.rebuilt(requirements={}).solve({SOLUTE: found[SOLUTE], BROUGHT: moved})[GRADE] <= limit)
             assert (met >= confidence) == enough, (factor, met)
 
+    def test_margin_beyond_what_an_input_can_be(self):
+        """A stripping gas cleaner than clean is no answer, not to first order either."""
+        deviation = slopes()[SOLUTE] * 0.1
+        assert slopes()[BROUGHT] * MEANS[BROUGHT] < Z95 * deviation
+        found = told(self.sheet(value=grade()), spread={SOLUTE: 0.1}, margin=[BROUGHT])
+        margin = found.uncertainty["requirements"]["outlet"]["margins"][BROUGHT]
+        assert math.isnan(margin["first_order"]) and math.isnan(margin["sampled"]) and margin["reason"]
+        assert 0 < margin["best"] < MEANS[BROUGHT] and 0.5 < margin["probability"] < 0.95
+        assert margin["reason"] in str(found)
+
     def test_likely_enough_as_it_is(self):
         """No margin is needed, none is taken."""
         mean, deviation, _ = law()

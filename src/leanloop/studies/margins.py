@@ -96,7 +96,7 @@ def judged(
         seek = _Seek(ground, name, item, limit, sign, key, at, slope)
         scaled = slope * study.laws[key].deviation if key in study.laws and at and not seek.warm else 0.0
         shift = _first_order(ndtri(study.margin.confidence), gap, wide, slope, scaled, at)
-        margins[key] = {"at": float(at), "first_order": float(at + shift), **seek.found(values)}
+        margins[key] = {"at": float(at), "first_order": seek.allowed(float(at + shift)), **seek.found(values)}
     return {
         "quantity": item.address,
         "limit": limit,
@@ -140,6 +140,14 @@ class _Seek:
         self.key, self.at, self.slope = key, at, slope
         self.part = f"margin of {name} on {key}"
         self.warm = ground.sheet.sorts[key] == "temperature"
+
+    def allowed(self, value: float) -> float:
+        """Give a value that the input may have, NaN for others, such as a flow below zero."""
+        entry = self.ground.sheet.entry(self.key)
+        low = entry.least if entry.least is not None else -np.inf
+        high = entry.most if entry.most is not None else np.inf
+        beyond = (entry.above is not None and value <= entry.above) or (entry.below is not None and value >= entry.below)
+        return value if low <= value <= high and not beyond else float("nan")
 
     def found(self, now: np.ndarray) -> dict[str, Any]:
         """Give the value of the input that makes the requirement as likely as asked, and what it comes to.
