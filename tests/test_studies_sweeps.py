@@ -60,6 +60,7 @@ class TestCases:
         ({"from": 1.0, "to": 3.0, "count": 5}, [1.0, 1.5, 2.0, 2.5, 3.0]),
         ({"from": 3.0, "to": 1.0, "count": 3}, [3.0, 2.0, 1.0]),
         ({"from": 1.0, "to": 3.0, "step": 0.5}, [1.0, 1.5, 2.0, 2.5, 3.0]),
+        ({"from": 3.0, "to": 1.2, "step": 0.5}, [3.0, 2.5, 2.0, 1.5]),
         ({"from": 1.0, "to": 1.3, "step": 0.1}, [1.0, 1.1, 1.2, 1.3]),
         ({"from": 1.0, "to": 2.9, "step": 0.5}, [1.0, 1.5, 2.0, 2.5]),
         ({"from": 0.5, "to": 4.0, "count": 4, "spacing": "log"}, [0.5, 1.0, 2.0, 4.0]),
@@ -128,6 +129,17 @@ class TestCases:
             assert alone[GRADE][0] == close(found[GRADE][case], rel=1e-10)
 
 
+    def test_faults_of_lists_say_where(self):
+        sheet = pair()
+        units = {name: dict(unit) for name, unit in sheet.given["units"].items()}
+        units["wash"]["efficiency"] = [1.0] * 5
+        lists = [[0.5] * 5, [0.5, 2.0, 0.5, 0.5, 0.5], [0.5] * 4]
+        faults = wrong(sheet.rebuilt(units=units), change={"units.wash.efficiency": lists})
+        where = 'studies.proof.change."units.wash.efficiency"'
+        assert len(faults) == 2
+        assert faults[0].startswith(f"{where}[1][1]: 2.0 is out of") and faults[1].startswith(f"{where}[2]: has 4 values")
+
+
 class TestSamples:
     RANGES = {CIRCULATION: {"from": 1.0, "to": 3.0}, STEAM: {"from": 1.0, "to": 4.0, "spacing": "log"}}
 
@@ -168,6 +180,17 @@ class TestSamples:
         found = run(pair(), change=dict(reversed(self.RANGES.items())), sample={"count": 50}, record=[GRADE])
         points = self.shares(found)
         assert points.min() > 0 and points.max() < 1
+
+    def test_of_limits_with_purity(self):
+        """Limits of requirements are drawn as inputs are, and each draw is looked at for what builds up."""
+        change = {"requirements.outlet.equals": {"from": 1e-3, "to": 3e-3}, BLEED: {"from": 1e-3, "to": 0.1, "spacing": "log"}}
+        sheet = demanding(gas={"tar": 3e-5}, components=["tar"])
+        record = [GRADE, "requirements.outlet.free_value"]
+        found = run(sheet, change=change, sample={"count": 40}, record=record, purity={"limits": {"tar": {"loading": 1e-3}}})
+        good = found.converged
+        assert good.sum() > 20 and found[GRADE][good] == close(found["requirements.outlet.equals"][good], rel=1e-9)
+        oil, bleed = (found[key][good] for key in ("requirements.outlet.free_value", BLEED))
+        assert found["purity.level.tar"][good] == close(3e-5 * (1 - bleed) / bleed / oil, rel=1e-9)
 
     def laws(self):
         mean, deviation = 2.0, 0.3

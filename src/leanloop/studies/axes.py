@@ -11,7 +11,7 @@ import numpy as np
 
 from leanloop.entries import Context, Entry, read_number, shown_key, shown_name
 from leanloop.errors import nearest
-from leanloop.flowsheet.cases import read_item, read_list
+from leanloop.flowsheet.cases import read_item
 from leanloop.studies.sample import Sample
 from leanloop.studies.spread import read_law
 
@@ -178,7 +178,12 @@ def read_values(sheet: Flowsheet, key: str, raw: Any, where: str, context: Conte
             if not isinstance(row, (list, tuple)):
                 context.fault(f"{where}[{place}]", "is no list", "give a list of lists, one for each case")
                 return None
-            rows.append(read_list(sheet, key, np.array(row, dtype=object), context))
+            own = f"{where}[{place}]"
+            values = [read_item(sheet, key, item, f"{own}[{number}]", context) for number, item in enumerate(row)]
+            if len(row) != len(sheet.numbers[key]):
+                context.fault(own, f"has {len(row)} values", f"give {len(sheet.numbers[key])}, as the flowsheet does")
+                values = [None]
+            rows.append(None if None in values else values)
         return None if None in rows else (rows, False)
     values = [read_item(sheet, key, item, f"{where}[{place}]", context) for place, item in enumerate(raw)]
     return None if None in values else (np.array(values), False)
