@@ -210,7 +210,7 @@ def _effect(found: Findings) -> Section | None:
         for row in thinned(len(found), 3):
             base, value = float(clean[row]), float(own[row])
             more = 100.0 * (value - base) / abs(base) if base else np.nan
-            if np.isfinite(more) and abs(more) > 1e-6:
+            if np.isfinite(more) and abs(more) > 1e-6 and found.cases["clean.status"][row] == "converged":
                 body.append(
                     [
                         key,
@@ -238,7 +238,7 @@ def _times(found: Findings, rows: np.ndarray) -> Section:
         for name in asked.contaminants
         for row in rows
     ]
-    held = f"{number(asked.inventory / 1e3)} kmol of {', '.join(asked.held)}"
+    held = f"{number(asked.inventory / 1e3)} {'t' if asked.masses else 'kmol'} of {', '.join(asked.held)}"
     lines = [
         Sentence(f"{held} in circulation, stirred at the make-up; columns follow at once"),
         Sentence("inputs that requirements free stay where the steady state has them"),

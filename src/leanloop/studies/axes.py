@@ -11,7 +11,7 @@ import numpy as np
 
 from leanloop.entries import Context, Entry, read_number, shown_key, shown_name
 from leanloop.errors import nearest
-from leanloop.flowsheet.cases import read_item, read_list
+from leanloop.flowsheet.cases import read_item
 from leanloop.studies.sample import Sample
 from leanloop.studies.spread import read_law
 
@@ -105,10 +105,10 @@ def read_cases(sheet: Flowsheet, raw: Any, sample: Sample | None, address: str, 
             elif key not in sheet.numbers:
                 context.fault(own, "is no numeric input", nearest(str(key), sheet.numbers))
             seen[key] = own
-    if len(context.faults) > faults:
-        return None
+    tables = [({key: item for key, item in table.items() if key in sheet.numbers}, where) for table, where in tables]
     if sample is not None:
-        return _drawn(sheet, tables, sample, context)
+        found = _drawn(sheet, tables, sample, context)
+        return found if len(context.faults) == faults else None
     axes = [_axis(sheet, table, where, context) for table, where in tables]
     if len(context.faults) > faults:
         return None
@@ -178,7 +178,12 @@ def read_values(sheet: Flowsheet, key: str, raw: Any, where: str, context: Conte
             if not isinstance(row, (list, tuple)):
                 context.fault(f"{where}[{place}]", "is no list", "give a list of lists, one for each case")
                 return None
-            rows.append(read_list(sheet, key, np.array(row, dtype=object), context))
+            own = f"{where}[{place}]"
+            values = [read_item(sheet, key, item, f"{own}[{number}]", context) for number, item in enumerate(row)]
+            if len(row) != len(sheet.numbers[key]):
+                context.fault(own, f"has {len(row)} values", f"give {len(sheet.numbers[key])}, as the flowsheet does")
+                values = [None]
+            rows.append(None if None in values else values)
         return None if None in rows else (rows, False)
     values = [read_item(sheet, key, item, f"{where}[{place}]", context) for place, item in enumerate(raw)]
     return None if None in values else (np.array(values), False)
@@ -264,6 +269,9 @@ def _step(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) ->
     sort = sheet.sorts[key]
     sort = {"temperature": "temperature difference", "integer": "number"}.get(sort, sort)
     found = read_number(raw, Entry("step", sort, above=0.0), f"{where}.step", context)
+    if found is not None and sheet.entry(key).sort == "integer" and found[0] % 1:
+        context.fault(f"{where}.step", "is no whole number", "write step = 1, or more")
+        return None
     return None if found is None else found[0]
 
 

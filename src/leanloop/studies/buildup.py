@@ -133,6 +133,7 @@ def follow(opened: CutOpen, steady: Result, changes: Mapping[str, Any], freed: M
     flows = stream.flows
     held = flows[:, [names[name] for name in purity.held]]
     solvent = held.sum(axis=1)
+    through = held @ purity.masses if purity.masses else solvent  # of what the inventory counts, kg/s or mol/s
     ends = flows[:, [names[name] for name in opened.carried]]
     cases, tracked = len(flows), [opened.carried.index(name) for name in purity.contaminants]
     base = {key: value for key, value in changes.items() if key in opened.sheet.numbers} | dict(freed)
@@ -150,7 +151,7 @@ def follow(opened: CutOpen, steady: Result, changes: Mapping[str, Any], freed: M
         rows = good[begin : begin + TOGETHER]
         own = {key: _taken(value, rows) for key, value in base.items()}
         found = _follow(opened, own, start[rows], ends[rows], tracked)
-        turnover = purity.inventory / solvent[rows]  # s
+        turnover = purity.inventory / through[rows]  # s
         times[rows] = found[0] * turnover[:, None, None]
         curve_times[rows] = found[1] * turnover[:, None]
         levels[rows] = found[2] / solvent[rows][:, None, None]

@@ -79,7 +79,8 @@ def judged(
     -------
     dict
         ``quantity``, ``limit`` (SI), ``meets``, probabilities ``first_order`` and ``sampled``, and by input ``margins``: ``at``,
-        the value now; ``first_order`` and ``sampled``, the value needed (SI, NaN where none was found); ``probability`` there;
+        the value now; ``first_order`` and ``sampled``, the value needed (SI, NaN where none was found), with an input that is
+        spread itself scaled as a whole, temperatures shifted; ``probability`` there;
         ``reason`` where none was found, with ``best``, the value at which most cases meet it.
     """
     study = ground.study
@@ -92,11 +93,10 @@ def judged(
     for key in study.margin.inputs:
         slope = sign * float(slopes[item.address, key])
         at = ground.design.get(key, study.laws[key].mean if key in study.laws else float(study.sheet.numbers[key]))
-        # to first order the deviation stays and the mean moves
-        needed = ndtri(study.margin.confidence) * wide - gap
-        shift = max(0.0, needed) / -slope if slope else (0.0 if needed <= 0 else np.nan)
         seek = _Seek(ground, name, item, limit, sign, key, at, slope)
-        margins[key] = {"at": float(at), "first_order": float(at + shift), **seek.found(values)}
+        scaled = slope * study.laws[key].deviation if key in study.laws and at and not seek.warm else 0.0
+        shift = _first_order(ndtri(study.margin.confidence), gap, wide, slope, scaled, at)
+        margins[key] = {"at": float(at), "first_order": seek.allowed(float(at + shift)), **seek.found(values)}
     return {
         "quantity": item.address,
         "limit": limit,
@@ -105,6 +105,23 @@ def judged(
         "sampled": _likely(values, limit, sign),
         "margins": margins,
     }
+
+
+def _first_order(z: float, gap: float, wide: float, slope: float, scaled: float, at: float) -> float:
+    """Give the least change d of an input with which gap - slope d = z deviation, NaN where there is none.
+
+    The deviation stays, but for the part `scaled` that the input has in it itself: its spread grows with it, (1 + d/at).
+    """
+    if z * wide <= gap:
+        return 0.0
+    if not slope:
+        return float("nan")
+    grows = scaled / at if scaled else 0.0
+    rest = max(wide**2 - scaled**2, 0.0)
+    # (gap - slope d)^2 = z^2 (rest + (scaled + grows d)^2)
+    roots = np.roots([slope**2 - (z * grows) ** 2, -2 * (gap * slope + z**2 * scaled * grows), gap**2 - z**2 * (rest + scaled**2)])
+    good = [d for d in roots[np.isreal(roots)].real if slope * d <= 0 and z * (gap - slope * d) >= 0]
+    return min(good, key=abs, default=float("nan"))
 
 
 def _likely(values: np.ndarray, limit: float, sign: float) -> float:
@@ -123,6 +140,14 @@ class _Seek:
         self.key, self.at, self.slope = key, at, slope
         self.part = f"margin of {name} on {key}"
         self.warm = ground.sheet.sorts[key] == "temperature"
+
+    def allowed(self, value: float) -> float:
+        """Give a value that the input may have, NaN for others, such as a flow below zero."""
+        entry = self.ground.sheet.entry(self.key)
+        low = entry.least if entry.least is not None else -np.inf
+        high = entry.most if entry.most is not None else np.inf
+        beyond = (entry.above is not None and value <= entry.above) or (entry.below is not None and value >= entry.below)
+        return value if low <= value <= high and not beyond else float("nan")
 
     def found(self, now: np.ndarray) -> dict[str, Any]:
         """Give the value of the input that makes the requirement as likely as asked, and what it comes to.

@@ -8,12 +8,12 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.flowsheet.balance import crossing, made
 from leanloop.flowsheet.view import View
 from leanloop.stream import divide
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Part, Result
+    from leanloop.flowsheet.run import Run
     from leanloop.flowsheet.sheet import Flowsheet
 
 LEVELS = ("loading", "fraction", "mass_fraction")
@@ -34,6 +34,8 @@ class Purity:
         What is to be kept out, and what else circulates with the lean solvent.
     circuit : tuple of str
         Streams of the loop that hold liquid.
+    loop : tuple of str
+        Its units.
     limits : dict of str to (str, float)
         By contaminant, a level of `LEVELS` and the most of it.
     bleed : str
@@ -41,9 +43,12 @@ class Purity:
     between : (float, float)
         Where to look for it, SI.
     inventory : float or None
-        Held components in circulation, mol.
+        Held components in circulation, mol; kg where `masses` are given.
     start : dict of str to float
-        Loadings at the start of the build-up, mol per mol of held components; zero where not named.
+        Loadings at the start of the build-up, mol per mol of held components; zero for contaminants
+        that are not named, and as in the steady state for `others`.
+    masses : tuple of float
+        Molar masses of several held components, kg/mol, where the inventory is a mass of them as they are mixed.
     """
 
     makeup: str
@@ -52,11 +57,13 @@ class Purity:
     contaminants: tuple[str, ...]
     others: tuple[str, ...]
     circuit: tuple[str, ...]
+    loop: tuple[str, ...] = ()
     limits: dict[str, tuple[str, float]] = field(default_factory=dict)
     bleed: str = ""
     between: tuple[float, float] = BETWEEN
     inventory: float | None = None
     start: dict[str, float] = field(default_factory=dict)
+    masses: tuple[float, ...] = ()
 
     def limit_address(self, name: str) -> str:
         """Give the address of the level that is limited."""
@@ -90,8 +97,7 @@ def _of_part(part: Part, purity: Purity) -> dict[str, np.ndarray]:
     plan, view = run.plan, View(run)
     index = plan.components.index
     with np.errstate(all="ignore"):
-        entering, _ = crossing(run)
-        gained, _ = made(run)
+        entering, gained, leaving = _around(run, purity.loop)
         lean = view.stream(purity.stream).flows
         solvent = lean[:, [index[name] for name in purity.held]].sum(axis=1)
         out: dict[str, np.ndarray] = {}
@@ -105,15 +111,35 @@ def _of_part(part: Part, purity: Purity) -> dict[str, np.ndarray]:
         added = view.unit(purity.makeup)["results"]["added_mol_s"]
         for name in purity.held:
             place = index[name]
-            leaving = {"liquid": np.zeros(len(part.cases)), "gas": np.zeros(len(part.cases))}
-            for stream in plan.structure.products:
-                phase = "gas" if plan.phases[stream] == "gas" else "liquid"
-                leaving[phase] = leaving[phase] + view.stream(stream).flows[:, place]
             out[f"purity.added_mol_s.{name}"] = np.asarray(added[name], dtype=float)
-            out[f"purity.out_with_liquid_mol_s.{name}"] = leaving["liquid"]
-            out[f"purity.out_with_gas_mol_s.{name}"] = leaving["gas"]
+            out[f"purity.out_with_liquid_mol_s.{name}"] = leaving["liquid"][:, place]
+            out[f"purity.out_with_gas_mol_s.{name}"] = leaving["gas"][:, place]
             out[f"purity.degraded_mol_s.{name}"] = np.maximum(-gained[:, place], 0.0)
     return out
+
+
+def _around(run: Run, loop: tuple[str, ...]) -> tuple[np.ndarray, np.ndarray, dict[str, np.ndarray]]:
+    """Give what comes into a loop, what its units make, less what vanishes there, and what leaves it by phase, (M, C) mol/s."""
+    plan, view = run.plan, View(run)
+    shape = (run.inputs.cases, len(plan.components))
+    entering, gained = np.zeros(shape), np.zeros(shape)
+    leaving = {"liquid": np.zeros(shape), "gas": np.zeros(shape)}
+    taken = {stream for name in loop for stream in plan.units[name].inlets.values()}
+    given = {stream for name in loop for stream in plan.units[name].outlets.values()}
+    for stream in sorted(taken - given):
+        entering = entering + view.stream(stream).flows
+    for stream in sorted(given - taken):
+        phase = "gas" if plan.phases[stream] == "gas" else "liquid"
+        leaving[phase] = leaving[phase] + view.stream(stream).flows
+    for name in loop:
+        unit = plan.units[name]
+        if type(unit).added is not plan.adds_nothing:
+            own = unit.added(*view.sides(name), view.numbers(name))
+            entering = entering + (0.0 if own is None else own)
+        if type(unit).made is not plan.makes_nothing:
+            own = unit.made(*view.sides(name), view.numbers(name))
+            gained = gained + (0.0 if own is None else own)
+    return entering, gained, leaving
 
 
 def limited(sheet: Flowsheet, purity: Purity, name: str) -> Flowsheet:

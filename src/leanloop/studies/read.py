@@ -122,11 +122,9 @@ def read_study(sheet: Flowsheet, name: str, raw: Any, context: Context) -> Study
             context.fault(f"{address}.{key}", "has no meaning here", remedy)
     words = read_values(WORDS, {key: raw[key] for key in ("title", "confidence") if key in raw}, address, context)
     held = _held(sheet, raw.get("hold"), f"{address}.hold", context)
-    if held is None:
-        return None
     record = read_record(held, raw.get("record"), f"{address}.record", context)
     if spread:
-        cases, laws = _spread(sheet, raw, address, context)
+        cases, laws = _spread(held, raw, address, context)
         margin = _margin(held, raw, laws or {}, words.numbers.get("confidence", 0.95), address, context)
         asked = None
     else:
@@ -147,17 +145,18 @@ def read_study(sheet: Flowsheet, name: str, raw: Any, context: Context) -> Study
     return Study(held, name, kind, cases, record, title, asked, laws, margin, dict(raw))
 
 
-def _held(sheet: Flowsheet, raw: Any, address: str, context: Context) -> Flowsheet | None:
-    """Give the flowsheet with the requirements that are to hold."""
+def _held(sheet: Flowsheet, raw: Any, address: str, context: Context) -> Flowsheet:
+    """Give the flowsheet with the requirements that are to hold; as it is after a fault, so that the rest is read too."""
     if raw is None:
         return sheet
     if not isinstance(raw, (list, tuple)) or not all(isinstance(item, str) for item in raw):
         context.fault(address, "is no list of requirements", 'write hold = ["NAME"], or [] for none')
-        return None
-    for place, name in enumerate(raw):
-        if name not in sheet.requirements:
-            context.fault(f"{address}[{place}]", f"there is no requirement {shown_name(name)}", nearest(name, sheet.requirements))
-            return None
+        return sheet
+    unknown = [(place, name) for place, name in enumerate(raw) if name not in sheet.requirements]
+    for place, name in unknown:
+        context.fault(f"{address}[{place}]", f"there is no requirement {shown_name(name)}", nearest(name, sheet.requirements))
+    if unknown:
+        return sheet
     if set(raw) == set(sheet.requirements):
         return sheet
     kept = {name: item for name, item in (sheet.given["requirements"] or {}).items() if name in raw}

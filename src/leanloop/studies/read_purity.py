@@ -77,7 +77,7 @@ def read_purity(sheet: Flowsheet, raw: Any, address: str, context: Context) -> P
     limits = _limits(sheet, purity, table.get("limits"), f"{address}.limits", own)
     bleed = found.words.get("bleed", purity.bleed)
     between = _between(sheet, bleed, table.get("between"), limits, address, context)
-    inventory = _amount(sheet, purity, found, address, context)
+    inventory, masses = _inventory(sheet, purity, found, address, context)
     start = _start(purity, table.get("start"), inventory, f"{address}.start", own)
     if len(context.faults) > faults or (raw is None and not purity.contaminants):
         return None
@@ -88,11 +88,13 @@ def read_purity(sheet: Flowsheet, raw: Any, address: str, context: Context) -> P
         purity.contaminants,
         purity.others,
         purity.circuit,
+        purity.loop,
         limits,
         bleed,
         between,
         inventory,
         start,
+        masses,
     )
 
 
@@ -120,6 +122,7 @@ def _look(sheet: Flowsheet, makeup: str, loop: list[str], named: tuple[str, ...]
         tuple(name for name in carried if name in stays),
         tuple(name for name in carried if name not in stays),
         circuit,
+        tuple(loop),
         bleed=shares[0] if len(shares) == 1 else "",
     )
 
@@ -178,15 +181,18 @@ def _between(
     return ends[0][0], ends[1][0]
 
 
-def _amount(sheet: Flowsheet, purity: Purity, found: Any, address: str, context: Context) -> float | None:
+def _inventory(
+    sheet: Flowsheet, purity: Purity, found: Any, address: str, context: Context
+) -> tuple[float | None, tuple[float, ...]]:
+    """Give an amount, mol, or the mass of several held components, kg, and their molar masses."""
     value = found.numbers.get("inventory")
     if value is None or found.sorts["inventory"] == "amount":
-        return value
+        return value, ()
     masses = [sheet.components[name].molar_mass for name in purity.held]
-    if len(masses) > 1 or masses[0] is None:
+    if not masses or None in masses:
         context.fault(f"{address}.inventory", "is a mass of which the moles are not known", 'give an amount such as "40 kmol"')
-        return None
-    return value / masses[0]
+        return None, ()
+    return (value / masses[0], ()) if len(masses) == 1 else (value, tuple(masses))
 
 
 def _start(purity: Purity, raw: Any, inventory: float | None, address: str, context: Context) -> dict[str, float]:

@@ -78,7 +78,7 @@ def work(payload: bytes, changes: Mapping[str, Any], first: int, count: int) -> 
     -------
     dict of str to columns
         ``cases``: ``case``, the inputs, ``status``, ``status_text`` (empty where converged), what is recorded, and of a purity
-        study its columns and ``clean.ADDRESS``. ``curves`` where an inventory is given.
+        study its columns, ``clean.status`` and ``clean.ADDRESS``. ``curves`` where an inventory is given.
     """
     return calculate(_unpacked(payload), changes, first, count)
 
@@ -110,13 +110,20 @@ def calculate(order: Order, changes: Mapping[str, Any], first: int, count: int) 
         kept = [clean[f"streams.{asked.stream}.mol_s.{name}"] for name in asked.contaminants]
         # a contaminant that is the rest of a feed cannot be left out: then nothing is told of a clean solvent
         dirty = np.any([np.asarray(item, dtype=float) > 0 for item in kept], axis=0)
+        cases["clean.status"] = statuses(clean)[0]
         for address, values in record.columns(clean, order.record).items():
             cases[f"clean.{address}"] = np.where(dirty, np.nan, values)
     for name, sheet in order.limited.items():
-        _add_limit(cases, solved(sheet, changes, count), asked, name)
+        _add_limit(cases, solved(sheet, {**changes, asked.bleed: np.full(count, _start(asked))}, count), asked, name)
     if order.opened is not None:
         tables["curves"] = _followed(cases, order, result, changes, first)
     return tables
+
+
+def _start(asked: Purity) -> float:
+    """Give where the search for a bleed starts: inside its bounds, for at a bleed of 0 there is no steady state to start from."""
+    low, high = asked.between
+    return float(np.sqrt(low * high)) if low > 0 else (low + high) / 2
 
 
 def solved(sheet: Flowsheet, changes: Mapping[str, Any], count: int) -> Result:
@@ -142,8 +149,16 @@ def _add_limit(cases: dict[str, Any], result: Result, asked: Purity, name: str) 
     """Add what keeping to a limit takes."""
     own = purity.requirement_of(name)
     codes = result.codes()
-    met = np.asarray(result[f"requirements.{own}.reached"]).astype(bool) & (codes <= CODE[Status.off_table])
-    cases[f"purity.bleed_needed.{name}"] = np.where(met, np.asarray(result[f"requirements.{own}.free_value"], dtype=float), np.nan)
+    reached = {key: np.asarray(result[f"requirements.{key}.reached"]).astype(bool) for key in result.sheet.requirements}
+    needed = np.asarray(result[f"requirements.{own}.free_value"], dtype=float)
+    level = np.asarray(result[f"requirements.{own}.value"], dtype=float)
+    # cleaner than asked with the least bleed that is looked for: that one will do
+    enough = (codes == CODE[Status.out_of_reach]) & (level < asked.limits[name][1]) & (needed <= asked.between[0] * (1 + 1e-9))
+    for key, good in reached.items():
+        enough &= good | (key == own)
+    codes = np.where(enough, OK, codes)
+    met = (reached[own] | enough) & (codes <= CODE[Status.off_table])
+    cases[f"purity.bleed_needed.{name}"] = np.where(met, needed, np.nan)
     cases[f"purity.bleed_status.{name}"] = [LIST[item].name for item in codes]
     for held in asked.held:
         added = np.asarray(result[f"units.{asked.makeup}.results.added_mol_s.{held}"], dtype=float)
