@@ -308,7 +308,7 @@ class TestRanges:
     def test_a_sentence_for_each_breach(self):
         found = ranges.outside(trays.FAIR, flow_parameter=[0.1, 3.0, np.nan], spacing=1.2, hole_area_ratio=0.05, other=7.0)
         assert found == [
-            "flow parameter 3 is outside the range 0.01 to 2 in 1 of 3 cases.",
+            "flow parameter 3 is outside the range 0.01 to 2 in 1 of 3 places.",
             "spacing 1.2 m is outside the range 0.15 to 0.9 m.",
             "hole area ratio 0.05 is outside the range 0.06 and more.",
         ]

@@ -101,7 +101,7 @@ def _requirement(
 
 
 def _target(sheet: Flowsheet, address: str, limit: str, quantity: str, raw: Any, context: Context) -> float | None:
-    entry = _quantity_entry(quantity)
+    entry = quantity_entry(quantity)
     found = read_number(raw, entry, f"{address}.{limit}", context)
     if found is None:
         return None
@@ -112,7 +112,7 @@ def _target(sheet: Flowsheet, address: str, limit: str, quantity: str, raw: Any,
     return value
 
 
-def _quantity_entry(address: str) -> Entry:
+def quantity_entry(address: str) -> Entry:
     """Give how a target of a quantity is written, by the unit in the quantity's name."""
     for part in reversed(address.split(".")):
         for ending, sort in (("_K", "temperature"), ("_Pa", "pressure"), ("mol_s", "molar flow"), ("_W", "power")):

@@ -63,6 +63,6 @@ def outside(ranges: Iterable[Range], **values: Any) -> list[str]:
         words, unit = item.name.replace("_", " "), f" {item.unit}" if item.unit else ""
         least, most = breached.min(), breached.max()
         shown = f"{least:.4g}{unit}" if least == most else f"{least:.4g} to {most:.4g}{unit}"
-        cases = f" in {breached.size} of {value.size} cases" if value.size > 1 else ""
-        found.append(f"{words} {shown} is outside the range {item.text()}{cases}.")
+        places = f" in {breached.size} of {value.size} places" if value.size > 1 else ""
+        found.append(f"{words} {shown} is outside the range {item.text()}{places}.")
     return found

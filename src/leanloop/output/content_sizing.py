@@ -40,6 +40,7 @@ def sizing_sections(found: Designs) -> list[Section]:
         *_ranked(found),
         *_chosen(found),
         *_effects(found),
+        *_matched(found),
         *_failed(found),
         _cautions(found),
     ]
@@ -87,7 +88,9 @@ def _ranked(found: Designs) -> list[Section]:
     shown = np.array([*shown, *dict.fromkeys(marked)])
     names = list(found.stages)
     further = [key for key in found.inputs if key not in [f"units.{name}.stages" for name in names]]
-    head = ["design", *(f"stages {name}" for name in names), *further, "kmol/h solvent"]
+    units = {key: of_input(found.sheet, key).unit for key in further}
+    shown_further = [f"{key}, {unit}" if unit else key for key, unit in units.items()]
+    head = ["design", *(f"stages {name}" for name in names), *shown_further, "kmol/h solvent"]
     head += ["kmol/h stripping gas"] if np.any(found.stripping > 0) else []
     boiled = found.energy is not found.stripping
     head += ["kW reboilers"] if boiled else []
@@ -162,7 +165,7 @@ def _column(found: Designs, name: str, item: Any, design: int) -> Section:
     head = f"Column {name}: {wide} m wide ({'given' if rated else 'sized'}), {high} m high"
     count = found.stages[name][design]
     inside = (
-        f"{number(item.trays[design], 4)} trays for {count} stages"
+        f"{item.trays[design]:.0f} trays for {count} stages"
         if item.spec.trays
         else f"{item.spec.packing.name} for {count} stages"
     )
@@ -208,6 +211,19 @@ def _effects(found: Designs) -> list[Section]:
         parts.append(Sentence("Fewest stages for a solvent rate of at most so many times the least in the scan:"))
         parts.append(Table(["times the least", "design", *(f"stages {name}" for name in names), "kmol/h solvent"], rows))
     return [Section("What margins cost", parts, place="margins")] if parts else []
+
+
+def _matched(found: Designs) -> list[Section]:
+    """Tell what plant data make of standing columns."""
+    rows, lines = [], []
+    for name, item in found.matched.items():
+        wanted = written(of_column(found.sheet, item["quantity"]), item["equals"])
+        efficiency = "-" if not np.isfinite(item["efficiency"]) else f"{100 * item['efficiency']:.3g} %"
+        rows.append([name, item["quantity"], wanted, number(item["stages"], 4), number(item["hetp_m"], 4), efficiency])
+        if item["why"]:
+            lines.append(Sentence(f"{name}: {item['why']}"))
+    head = ["column", "measured", "value", "equilibrium stages", "HETP, m", "overall efficiency"]
+    return [Section("What plant data make of it", [Table(head, rows), *lines], place="match")] if rows else []
 
 
 def _failed(found: Designs) -> list[Section]:

@@ -310,7 +310,9 @@ def _outcome(own: dict[str, Any], scale: Scale) -> str:
     likely = f"{100 * own['probability']:.3g} %"
     if own["reason"] is None:
         return f"met by {likely}"
-    return f"{own['reason']}: {likely} at {written(scale, own['best'])}" if "best" in own else f"{own['reason']}: {likely}"
+    if "best" not in own:
+        return f"{own['reason']}: {likely}"
+    return f"{own['reason']} up to {written(scale, own['tried'])}: {likely} at {written(scale, own['best'])}"
 
 
 def _with(at: float, value: float, scale: Scale) -> str:

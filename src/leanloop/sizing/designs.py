@@ -40,6 +40,8 @@ class Designs:
     front : (D,) bool
         The Pareto set over circulation, stripping gas or duty, and column volume (stages where no column is equipped).
     cheapest, knee, chosen : int or None
+    matched : dict of str to dict
+        By column, the stages that plant data make; see `leanloop.sizing.match.stages_of`.
     ratios : dict of str to (D,) array
         By column, its solvent or stripping gas over the least that would do with stages without limit and the same ends, in the
         file's own feed case; NaN for designs that do not stand out, empty where it takes long to find.
@@ -56,6 +58,7 @@ class Designs:
         self.knee: int | None = None
         self.chosen: int | None = None
         self.ratios: dict[str, np.ndarray] = {}
+        self.matched: dict[str, dict[str, Any]] = {}
 
     def __len__(self) -> int:
         return self.count
@@ -331,6 +334,7 @@ class Designs:
                 "cheapest": self.cheapest,
                 "knee": self.knee,
                 "chosen": self.chosen,
+                "matched": self.matched,
                 "cautions": self.cautions(),
             }
         )

@@ -14,6 +14,7 @@ from leanloop.flowsheet.cases import read_item
 from leanloop.flowsheet.read import table
 from leanloop.hydraulics import films, packings
 from leanloop.sizing import spec
+from leanloop.sizing.match import read_matches
 from leanloop.sizing.spec import ColumnSpec, Sizing
 from leanloop.studies.axes import Axis, read_cases
 from leanloop.studies.record import read_record
@@ -21,7 +22,7 @@ from leanloop.studies.record import read_record
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
 
-ENTRIES = ("hold", "stages", "change", "cases", "columns", "prices", "exchangers", "choose", "record")
+ENTRIES = ("hold", "stages", "change", "cases", "columns", "match", "prices", "exchangers", "choose", "record")
 MOST_DESIGNS = 200_000
 BASE = "as_written"  # the feed case of the file itself
 
@@ -60,6 +61,7 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
         for name, own in table("sizing.columns", raw.get("columns"), context).items()
         if (item := _column(sheet, name, own, known, hold, context)) is not None
     }
+    match = read_matches(sheet, raw.get("match"), context)
     prices = read_values(spec.PRICES, raw.get("prices", {}), "sizing.prices", context).numbers
     exchangers = _exchangers(sheet, raw.get("exchangers"), context)
     choose = raw.get("choose", "")
@@ -68,11 +70,11 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
     elif choose == "cheapest" and not prices:
         context.fault("sizing.choose", "nothing has a price", "add [sizing.prices], or choose the knee")
     record = read_record(sheet, raw["record"], "sizing.record", context) if "record" in raw else ()
-    if not axes and not columns and len(context.faults) == faults:
+    if not (axes or columns or match) and len(context.faults) == faults:
         context.fault("sizing", "asks for nothing", "add stages = { COLUMN = [least, most] }, or [sizing.columns.COLUMN]")
     if len(context.faults) > faults:
         return None
-    return Sizing(hold, axes, stages, feeds, columns, known, prices, exchangers, choose, record or ())
+    return Sizing(hold, axes, stages, feeds, columns, known, prices, exchangers, choose, record or (), match)
 
 
 def read_properties(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, Mapping[str, float]]:

@@ -13,6 +13,7 @@ from leanloop.pinch.limits import limits
 from leanloop.sizing import choice, costs
 from leanloop.sizing.designs import Designs
 from leanloop.sizing.equipment import equip
+from leanloop.sizing.match import stages_of
 from leanloop.sizing.read import read_sizing
 from leanloop.sizing.spec import Sizing
 
@@ -104,6 +105,7 @@ def scan(sheet: Flowsheet, sizing: Sizing) -> Designs:
     wanted = sizing.choose or ("cheapest" if sizing.prices else "knee")
     found.chosen = found.cheapest if wanted == "cheapest" else found.knee
     found.ratios = _ratios(found)
+    found.matched = {name: stages_of(sheet, item) for name, item in sizing.match.items()}
     return found
 
 

@@ -142,6 +142,8 @@ class Sizing:
         ``"cheapest"``, ``"knee"``, or empty for the former where there are prices.
     record : tuple of str
         Addresses of what else is told of each design.
+    match : dict of str to Match
+        Measured figures by column.
     """
 
     hold: tuple[str, ...]
@@ -154,3 +156,4 @@ class Sizing:
     exchangers: dict[str, float] = field(default_factory=dict)
     choose: str = ""
     record: tuple[str, ...] = ()
+    match: dict[str, Any] = field(default_factory=dict)

@@ -77,7 +77,7 @@ class Findings:
     @cached_property
     def influences(self) -> list[Influence]:
         """Effect of every input on what is recorded, at the flowsheet as it is, the largest first."""
-        return influences(self.base, list(self.study.record))
+        return influences(self.base, list(self.study.record)) if self.base.converged else []
 
     def to_dict(self) -> dict[str, Any]:
         """Give everything in SI units, as plain lists and numbers with None for what is undefined.

@@ -81,7 +81,7 @@ def judged(
         ``quantity``, ``limit`` (SI), ``meets``, probabilities ``first_order`` and ``sampled``, and by input ``margins``: ``at``,
         the value now; ``first_order`` and ``sampled``, the value needed (SI, NaN where none was found), with an input that is
         spread itself scaled as a whole, temperatures shifted; ``probability`` there;
-        ``reason`` where none was found, with ``best``, the value at which most cases meet it.
+        ``reason`` where none was found, with ``best``, the value at which most cases meet it, and ``tried``, the last one tried.
     """
     study = ground.study
     limit = float(study.sheet.numbers[item.target])
@@ -174,8 +174,14 @@ class _Seek:
         if hit is None:
             best = int(np.argmax([_likely(row, self.limit, self.sign) for row in rows]))
             likely = _likely(rows[best], self.limit, self.sign)
-            reason = "no value tried is enough"
-            return {"sampled": float("nan"), "probability": likely, "reason": reason, "best": float(points[best])}
+            reason = "no value is enough"
+            return {
+                "sampled": float("nan"),
+                "probability": likely,
+                "reason": reason,
+                "best": float(points[best]),
+                "tried": float(far),
+            }
         ends = [(self.at, excess) if hit == 0 else (points[hit - 1], excesses[hit - 1]), (points[hit], excesses[hit])]
         best = (points[hit], rows[hit])
         for turn in range(REFINED):
