@@ -9,7 +9,8 @@ import numpy as np
 
 from leanloop.entries import Context
 from leanloop.errors import Fault, InputError
-from leanloop.pinch.limits import limits
+from leanloop.pinch.case import Case
+from leanloop.pinch.column import column_limits
 from leanloop.sizing import choice, costs
 from leanloop.sizing.designs import Designs
 from leanloop.sizing.equipment import equip
@@ -150,9 +151,9 @@ def _ratios(found: Designs) -> dict[str, np.ndarray]:
     wanted = list(dict.fromkeys([*marked, *np.flatnonzero(found.front).tolist()]))[:MOST_RATIOS]
     for design in wanted:
         result = free.solve(found.settings(design))
-        known = limits(result)
-        if any(item.method != "curve" for item in known.columns.values()):
+        known = {name: column_limits(Case(result, 0), name) for name in out}
+        if any(item.method != "curve" for item in known.values()):
             return {}
-        for name, item in known.columns.items():
+        for name, item in known.items():
             out[name][design] = np.nan if item.ratio_to_least is None else item.ratio_to_least
     return out
