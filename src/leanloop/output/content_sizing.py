@@ -48,7 +48,9 @@ def sizing_sections(found: Designs) -> list[Section]:
 
 def _status(found: Designs) -> Section:
     good, count = int(found.good.sum()), found.count
-    words = f"{count} design{'s' if count > 1 else ''}, {'all' if good == count else good or 'none'} of them met what is asked for"
+    words = f"{count} designs, {'all' if good == count else good or 'none'} of them met what is asked for"
+    if count == 1:
+        words = f"One design, which {'meets' if good else 'does not meet'} what is asked for"
     feeds = list(found.sizing.feeds)
     words += f" in each of {len(feeds)} feed cases ({', '.join(feeds)})." if len(feeds) > 1 else "."
     lines = [Sentence(words, 0, "status" if good else "failure")]
@@ -165,9 +167,7 @@ def _column(found: Designs, name: str, item: Any, design: int) -> Section:
     head = f"Column {name}: {wide} m wide ({'given' if rated else 'sized'}), {high} m high"
     count = found.stages[name][design]
     inside = (
-        f"{item.trays[design]:.0f} trays for {count} stages"
-        if item.spec.trays
-        else f"{item.spec.packing.name} for {count} stages"
+        f"{item.trays[design]:.0f} trays for {count} stages" if item.spec.trays else f"{item.spec.packing.name} for {count} stages"
     )
     lead = ["feed case", "% of flood", "nearest under stage", "pressure drop, mbar"]
     lead += ["overall efficiency", "entrained, % of liquid"] if item.spec.trays else ["m per stage", "wetting over the least"]
@@ -184,7 +184,15 @@ def _column(found: Designs, name: str, item: Any, design: int) -> Section:
         else:
             row += [number(item.hetp_m[design, place], 3), number(item.wetting[design, place], 3)]
         rows.append(row)
-    return Section(head, [Sentence(inside), Table(lead, rows)], place=f"units.{name}")
+    parts = [Sentence(inside), Table(lead, rows)]
+    apart = item.sections[design]
+    if apart and not rated:
+        first = sorted(apart)
+        tops = ["the top" if not low else f"stage {low}" for low in first]
+        spans = [f"{top} to {low}" for top, low in zip(tops, [*tops[1:], "the bottom"], strict=True)]
+        rows = [[span, number(apart[low], 4)] for span, low in zip(spans, first, strict=True)]
+        parts.append(Table(["section", "asks for, m wide"], rows))
+    return Section(head, parts, place=f"units.{name}")
 
 
 def _effects(found: Designs) -> list[Section]:

@@ -129,9 +129,13 @@ class Designs:
 
     @cached_property
     def circulation(self) -> np.ndarray:
-        """Flow of what make-ups hold, (D,) mol/s, in the feed case that has the most."""
+        """Flow of what make-ups hold, else of what absorbers are fed, (D,) mol/s, in the feed case that has the most."""
         total = np.zeros((self.count, self.feeds))
-        for unit in self.sheet.units.values():
+        units = self.sheet.units.values()
+        if not any(unit.kind == "makeup" for unit in units):
+            fed = [unit.inlets["liquid_in"] for unit in units if getattr(unit, "cleans", "") == "gas"]
+            return _largest(sum((self.quantity(f"streams.{name}.total_mol_s") for name in fed), total))
+        for unit in units:
             if unit.kind == "makeup":
                 for key in unit.values.group("hold"):
                     total = total + self.quantity(f"streams.{unit.outlets['gives']}.mol_s.{key}")

@@ -8,8 +8,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from leanloop.flowsheet.view import View
 from leanloop.sizing import packed_column, tray_column
 from leanloop.sizing.rows import Rows, rows_of
+from leanloop.sizing.sections import edges, worst
 from leanloop.sizing.spec import ColumnSpec, Sizing
 from leanloop.status import OK
 
@@ -34,6 +36,8 @@ class Equipped:
         least wetting (packing), overall efficiency (trays) and mean height of a stage (packing).
     governs : (D, F) int
         Stage under which flooding is nearest; 0 above the top stage.
+    sections : list of D dicts of int to float
+        By the first row of a section, the diameter in m that the section by itself asks for, over all feed cases.
     """
 
     spec: ColumnSpec
@@ -48,6 +52,7 @@ class Equipped:
     efficiency: np.ndarray
     hetp_m: np.ndarray
     governs: np.ndarray
+    sections: list[dict[int, float]]
 
 
 def standard(diameter: np.ndarray) -> np.ndarray:
@@ -77,8 +82,11 @@ def equip(sizing: Sizing, spec: ColumnSpec, result: Result, designs: int) -> Equ
     way: Any = tray_column if spec.trays else packed_column
     pieces = [(part.cases, part.run.status == OK, rows_of(part, spec, sizing.properties)) for part in result.parts]
     needed = np.full(designs * feeds, np.nan)
-    for cases, good, rows in pieces:
-        needed[cases] = np.where(good, _most(way.diameters(spec, rows)), np.nan)
+    apart: list[dict[int, float]] = [{} for _ in range(designs)]
+    for part, (cases, good, rows) in zip(result.parts, pieces, strict=True):
+        wide = way.diameters(spec, rows)
+        needed[cases] = np.where(good, _most(wide), np.nan)
+        _note_sections(apart, edges(View(part.run).numbers(spec.unit)), wide, cases // feeds, good)
     by_design = needed.reshape(designs, feeds)
     if "diameter" in spec.numbers:
         diameter = np.full(designs, spec.numbers["diameter"])
@@ -98,7 +106,19 @@ def equip(sizing: Sizing, spec: ColumnSpec, result: Result, designs: int) -> Equ
     trays = np.where(whole, table["trays"].max(axis=1), np.nan)
     governs = np.where(np.isfinite(table["governs"]), table["governs"], -1).astype(int)
     keep = {key: table[key] for key in ("flood", "drop_Pa", "entrainment", "wetting", "efficiency", "hetp_m")}
-    return Equipped(spec, diameter, trays, height, np.pi / 4 * diameter**2 * height, governs=governs, **keep)
+    volume = np.pi / 4 * diameter**2 * height
+    return Equipped(spec, diameter, trays, height, volume, governs=governs, sections=apart, **keep)
+
+
+def _note_sections(
+    apart: list[dict[int, float]], first: tuple[int, ...], wide: np.ndarray, designs: np.ndarray, good: np.ndarray
+) -> None:
+    """Note what each section asks for, where a column has several."""
+    if len(first) == 1:
+        return
+    for design, row in zip(designs[good], worst(wide, first)[good], strict=True):
+        for start, own in zip(first, row, strict=True):
+            apart[design][start] = max(apart[design].get(start, 0.0), float(own))
 
 
 def _most(values: np.ndarray) -> np.ndarray:
