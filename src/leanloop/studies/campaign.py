@@ -113,7 +113,7 @@ def carry_out(
                 span = waiting.pop()
                 own = {key: values[span[1] : span[1] + span[2]] for key, values in changes.items()}
                 try:
-                    running[engine.executor.submit(work, payload, own, span[1], span[2])] = span
+                    running[engine.submit(work, payload, own, span[1], span[2])] = span
                 except BrokenExecutor:
                     broken.append(span)
                     break
@@ -134,12 +134,10 @@ def carry_out(
                     raise StudyError("the workers were lost; finished batches are kept, run the same command again")
                 waiting += sorted(set(broken), reverse=True)
     except (LeanloopError, KeyboardInterrupt):
-        for future in running:
-            future.cancel()
+        engine.forget(running)
         raise
     except Exception as error:  # noqa: BLE001 - whatever a cluster throws when it goes away
-        for future in running:
-            future.cancel()
+        engine.forget(running)
         reason = " ".join(f"{type(error).__name__}: {error}".split())
         raise StudyError(f"a batch could not be calculated: {reason}; finished batches are kept") from error
 

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import multiprocessing
 import os
 import signal
-from collections.abc import Callable
+import threading
+from collections.abc import Callable, Iterable
 from concurrent.futures import Executor, Future, ProcessPoolExecutor
 from typing import Any
 
@@ -43,6 +45,16 @@ class Engine:
     def __init__(self, make: Callable[[], Executor], ahead: int, own: bool = True) -> None:
         self.make, self.ahead, self.own = make, ahead, own
         self.executor = make()
+
+    def submit(self, work: Callable[..., Any], *args: Any) -> Future:
+        """Hand on a batch."""
+        return self.executor.submit(work, *args)
+
+    def forget(self, futures: Iterable[Future]) -> None:
+        """Take back what is handed on and not begun; of an executor of our own, closing it does so."""
+        if not self.own:
+            for future in futures:
+                future.cancel()
 
     def again(self) -> bool:
         """Make a new executor in the place of a broken one; False where it is not ours to make."""
@@ -85,14 +97,43 @@ def engine(executor: Executor | None = None, workers: int = 1, cluster: str | No
         return Engine(lambda: executor, 4 * (os.cpu_count() or 1), own=False)
     if cluster is not None:
         return _cluster(cluster)
+    if workers < 1:
+        raise StudyError(f"{workers} is no number of processes; give 1 or more")
     if workers > 1:
-        return Engine(lambda: ProcessPoolExecutor(workers, initializer=_deaf), 2 * workers)
+        return _Pool(lambda: ProcessPoolExecutor(workers, initializer=_begin), 2 * workers)
     return Engine(Here, 1)
 
 
-def _deaf() -> None:
-    """Leave an interrupt from the keyboard to the process that leads."""
+class _Pool(Engine):
+    """A pool of processes of our own."""
+
+    def submit(self, work: Callable[..., Any], *args: Any) -> Future:
+        """Hand on a batch; a process that is started for it hears no interrupt from its first moment."""
+        if not hasattr(signal, "pthread_sigmask"):
+            return super().submit(work, *args)
+        mask = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+        try:
+            return super().submit(work, *args)
+        finally:
+            signal.pthread_sigmask(signal.SIG_SETMASK, mask)
+
+    def close(self, wait: bool = True) -> None:
+        """Let go of the processes; without waiting, what they are at is lost."""
+        processes = [] if wait else list((getattr(self.executor, "_processes", None) or {}).values())
+        super().close(wait)
+        for process in processes:
+            process.terminate()
+
+
+def _begin() -> None:
+    """Leave an interrupt from the keyboard to the process that leads, and end when it does, however it ends."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    threading.Thread(target=_follow, daemon=True).start()
+
+
+def _follow() -> None:
+    multiprocessing.parent_process().join()
+    os._exit(1)
 
 
 class _Cluster(Engine):

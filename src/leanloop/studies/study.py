@@ -171,7 +171,7 @@ class Study:
 
 
 def _canonical(item: Any) -> str:
-    return json.dumps(item, sort_keys=True, default=_plain)
+    return json.dumps(item, default=_plain)  # unsorted: the order of inputs is that of the cases
 
 
 def _plain(item: Any) -> Any:
