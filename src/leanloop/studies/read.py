@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.entries import Context, Entry, near, read_values, shown_key, shown_name
+from leanloop.entries import NAMES, Context, Entry, is_name, near, read_values, shown_key, shown_name
 from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet.read import table
 from leanloop.studies import purity
@@ -61,6 +61,8 @@ def study(sheet: Flowsheet, name: str | None = None, /, **entries: Any) -> Study
             raise InputError([Fault("studies", what, nearest(name or "", known))], sheet.source)
         entries = known[name]
     name = name or "study"
+    if not is_name(name):
+        raise InputError([Fault("studies", f"{shown_name(name)} is no name", NAMES)], sheet.source)
     context = Context(plain_si=sheet.given["plain_si"] or entries is not (declared or {}).get(name))
     found = read_study(sheet, name, entries, context)
     if context.faults or found is None:

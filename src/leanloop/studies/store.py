@@ -24,6 +24,8 @@ except ImportError:  # pragma: no cover
     fcntl = None  # type: ignore[assignment]
 
 FORMAT = "1"
+HEAD = b"SQLite format 3\x00"
+FOREIGN = "is no file of a study; name another directory"
 AGAIN = re.compile(r" #\d+$")  # marks a column whose name differs from another only in capitals, which SQLite does not tell apart
 _held: set[int] = set()  # locks of this process
 
@@ -72,6 +74,7 @@ class Store:
         try:
             path.parent.mkdir(parents=True, exist_ok=True)
             self._hold()
+            self._look()
             self.base = sqlite3.connect(path, isolation_level=None)
         except OSError as error:
             raise StudyError(f"{error.filename or path}: cannot be written: {error.strerror}; name a directory that can") from None
@@ -99,10 +102,18 @@ class Store:
                 if self._lock is None:
                     os.close(lock)
 
+    def _look(self) -> None:
+        """Stop at a file that is no database; the shortest ones would be taken for an empty one."""
+        if self.path.is_file() and not self.path.with_name(f"{self.path.name}-journal").exists():
+            with open(self.path, "rb") as file:
+                head = file.read(len(HEAD))
+            if head not in (b"", HEAD):
+                raise StudyError(f"{self.path}: {FOREIGN}")
+
     def _settle(self, about: Mapping[str, str]) -> None:
         tables = {row[0] for row in self.base.execute("SELECT name FROM sqlite_master WHERE type = 'table'")}
         if tables and not {"about", "batches"} <= tables:
-            raise StudyError(f"{self.path}: is no file of a study; name another directory")
+            raise StudyError(f"{self.path}: {FOREIGN}")
         with self._transaction():
             self.base.execute("CREATE TABLE IF NOT EXISTS about (key TEXT PRIMARY KEY, value TEXT)")
             self.base.execute(
