@@ -13,6 +13,7 @@ from leanloop.errors import LeanloopError, StudyError
 from leanloop.studies.executors import Engine
 from leanloop.studies.store import Store
 
+PULSE = 1.0  # s
 MOST_BREAKS = 5  # of the pool in one round: more are no accident
 
 
@@ -117,7 +118,7 @@ def carry_out(
                 except BrokenExecutor:
                     broken.append(span)
                     break
-            for future in wait(running, return_when=FIRST_COMPLETED).done if running else ():
+            for future in _back(running):
                 span = running.pop(future)
                 try:
                     tables = future.result()
@@ -140,6 +141,16 @@ def carry_out(
         engine.forget(running)
         reason = " ".join(f"{type(error).__name__}: {error}".split())
         raise StudyError(f"a batch could not be calculated: {reason}; finished batches are kept") from error
+
+
+def _back(running: Mapping[Future, Any]) -> list[Future]:
+    """Give the batches that are back, none where none comes within a while.
+
+    A future that was cancelled and whose executor does not say so wakes nobody, hence the look at each.
+    """
+    if running:
+        wait(running, PULSE, FIRST_COMPLETED)
+    return [future for future in running if future.done()]
 
 
 class _Clock:

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import asyncio
+import logging
 import multiprocessing
 import os
+import re
 import signal
 import threading
 from collections.abc import Callable, Iterable
@@ -13,6 +16,9 @@ from typing import Any
 from leanloop.errors import MissingExtra, StudyError
 
 NO_CLUSTER = 'a cluster needs dask.distributed; install the extra: pip install "leanloop[cluster]"'
+REMEDY = "write the scheduler's address, tcp://HOST:PORT"
+ADDRESS = re.compile(r"(?:(?:tcp|tls|ws|wss)://)?(?:[^\s:/\[\]]+|\[[^\s/\[\]]+\]):(\d{1,5})", re.ASCII)
+PATIENCE = 10  # s
 RETRIES = 5  # of a batch whose worker is lost, by the cluster itself
 
 
@@ -141,12 +147,26 @@ class _Cluster(Engine):
 
     def __init__(self, client: Any) -> None:
         self.client = client
+        self.levels = _silenced()
         threads = sum(client.nthreads().values())
         super().__init__(lambda: client.get_executor(retries=RETRIES, pure=False), max(4, 4 * threads), own=False)
 
     def close(self, wait: bool = True) -> None:
         """Close the connection; the cluster goes on."""
-        self.client.close()
+        try:
+            self.client.close()
+        finally:
+            for logger, level in self.levels.items():
+                logger.setLevel(level)
+
+
+def _silenced() -> dict[logging.Logger, int]:
+    """Keep the library's logs, traces among them, off the screen: what matters comes back with the batches."""
+    every = [logging.getLogger(name) for name in list(logging.root.manager.loggerDict) if name.partition(".")[0] == "distributed"]
+    levels = {logger: logger.level for logger in every}
+    for logger in every:
+        logger.setLevel(logging.CRITICAL)
+    return levels
 
 
 def _cluster(address: str) -> Engine:
@@ -154,9 +174,24 @@ def _cluster(address: str) -> Engine:
         import distributed
     except ImportError as error:
         raise MissingExtra(NO_CLUSTER) from error
+    found = ADDRESS.fullmatch(address)
+    if not found or not 0 < int(found[1]) < 65536:  # the library itself waits long, and leaves a trace behind
+        raise StudyError(f"cluster '{address}': is no address; {REMEDY}")
     try:
-        client = distributed.Client(address, timeout="10s", set_as_default=False)
-    except (OSError, ValueError, TypeError) as error:
-        reason = " ".join(str(error).split()) or type(error).__name__
-        raise StudyError(f"cluster {address}: does not answer: {reason}; write the scheduler's address, tcp://HOST:PORT") from None
+        asyncio.run(_greet(address))
+        client = distributed.Client(address, timeout=f"{PATIENCE}s", set_as_default=False)
+    except Exception as error:  # noqa: BLE001 - whatever it is, nobody there calculates
+        reason = " ".join(str(error).split()) or f"nothing for {PATIENCE} s"
+        raise StudyError(f"cluster {address}: does not answer: {reason}; {REMEDY}") from None
     return _Cluster(client)
+
+
+async def _greet(address: str) -> None:
+    """Ask the scheduler who it is, since a client that gets no proper answer waits for ever."""
+    from distributed import Security
+    from distributed.core import rpc
+
+    words = Security().get_connection_args("client")
+    async with asyncio.timeout(PATIENCE), rpc(address, connection_args=words, timeout=PATIENCE) as scheduler:
+        if (await scheduler.identity()).get("type") != "Scheduler":
+            raise ValueError("what answers there is no scheduler")

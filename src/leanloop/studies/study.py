@@ -128,19 +128,19 @@ class Study:
         MissingExtra
             Where a cluster is asked for without its library.
         """
-        store = Memory() if out is None else Store(Path(out) / f"{self.name}.sqlite", self.about())
+        where = engine(executor, workers, cluster)
+        finished = False
         try:
-            where = engine(executor, workers, cluster)
-            finished = False
+            store = Memory() if out is None else Store(Path(out) / f"{self.name}.sqlite", self.about())
             try:
                 found = self._find(store, where, progress)
                 finished = True
+                store.note("state", "finished")
+                return found
             finally:
-                where.close(wait=finished)
-            store.note("state", "finished")
-            return found
+                store.close()
         finally:
-            store.close()
+            where.close(wait=finished)
 
     def _find(self, store: Store | Memory, where: Engine, progress: Progress | None) -> Findings:
         base = self.sheet.solve_cases()
