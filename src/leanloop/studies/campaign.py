@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Mapping
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, CancelledError, Future, wait
+from contextlib import suppress
 from typing import Any, Protocol
 
 import numpy as np
@@ -129,16 +130,17 @@ def carry_out(
                 clock.step(span[2], tables)
             if broken:
                 breaks += 1
+                if breaks > MOST_BREAKS or not engine.own:
+                    raise StudyError("the workers were lost; finished batches are kept, run the same command again")
                 broken += running.values()
                 running = {}
-                if breaks > MOST_BREAKS or not engine.again():
-                    raise StudyError("the workers were lost; finished batches are kept, run the same command again")
+                engine.again()
                 waiting += sorted(set(broken), reverse=True)
     except (LeanloopError, KeyboardInterrupt):
-        engine.forget(running)
+        _leave(part, running, store, engine)
         raise
     except Exception as error:  # noqa: BLE001 - whatever a cluster throws when it goes away
-        engine.forget(running)
+        _leave(part, running, store, engine)
         reason = " ".join(f"{type(error).__name__}: {error}".split())
         raise StudyError(f"a batch could not be calculated: {reason}; finished batches are kept") from error
 
@@ -151,6 +153,15 @@ def _back(running: Mapping[Future, Any]) -> list[Future]:
     if running:
         wait(running, PULSE, FIRST_COMPLETED)
     return [future for future in running if future.done()]
+
+
+def _leave(part: str, running: Mapping[Future, tuple[int, int, int]], store: Store | Memory, engine: Engine) -> None:
+    """Keep what is back and not kept yet, as far as it can be, and let go of the rest."""
+    for future, span in running.items():
+        with suppress(Exception):  # what ends the round is told already
+            if future.done():
+                store.put(part, span[0], future.result(), span[1])
+    engine.forget(running)
 
 
 class _Clock:

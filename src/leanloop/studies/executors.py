@@ -11,6 +11,7 @@ import signal
 import threading
 from collections.abc import Callable, Iterable
 from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from contextlib import suppress
 from typing import Any
 
 from leanloop.errors import MissingExtra, StudyError
@@ -60,15 +61,13 @@ class Engine:
         """Take back what is handed on and not begun; of an executor of our own, closing it does so."""
         if not self.own:
             for future in futures:
-                future.cancel()
+                with suppress(Exception):  # one that is no future, or of a cluster that is gone
+                    future.cancel()
 
-    def again(self) -> bool:
-        """Make a new executor in the place of a broken one; False where it is not ours to make."""
-        if not self.own:
-            return False
+    def again(self) -> None:
+        """Make a new executor in the place of a broken one of our own."""
         self.executor.shutdown(wait=False, cancel_futures=True)
         self.executor = self.make()
-        return True
 
     def close(self, wait: bool = True) -> None:
         """Let go of the executor."""
