@@ -14,6 +14,7 @@ from leanloop.errors import LeanloopError, StudyError
 from leanloop.studies.executors import Engine
 from leanloop.studies.store import Store
 
+LOST = "the workers were lost; finished batches are kept, run the same command again"
 PULSE = 1.0  # s
 MOST_BREAKS = 5  # of the pool in one round: more are no accident
 
@@ -128,10 +129,12 @@ def carry_out(
                     continue
                 store.put(part, span[0], tables, span[1])
                 clock.step(span[2], tables)
+            if running and not engine.alive():
+                raise StudyError(LOST)
             if broken:
                 breaks += 1
                 if breaks > MOST_BREAKS or not engine.own:
-                    raise StudyError("the workers were lost; finished batches are kept, run the same command again")
+                    raise StudyError(LOST)
                 broken += running.values()
                 running = {}
                 engine.again()

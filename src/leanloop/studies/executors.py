@@ -57,6 +57,10 @@ class Engine:
         """Hand on a batch."""
         return self.executor.submit(work, *args)
 
+    def alive(self) -> bool:
+        """Tell whether what is handed on may still come back."""
+        return True
+
     def forget(self, futures: Iterable[Future]) -> None:
         """Take back what is handed on and not begun; of an executor of our own, closing it does so."""
         if not self.own:
@@ -150,6 +154,10 @@ class _Cluster(Engine):
         threads = sum(client.nthreads().values())
         super().__init__(lambda: client.get_executor(retries=RETRIES, pure=False), max(4, 4 * threads), own=False)
 
+    def alive(self) -> bool:
+        """Tell whether the scheduler is there, or is being looked for."""
+        return self.client.status not in ("closing", "closed")
+
     def close(self, wait: bool = True) -> None:
         """Close the connection; the cluster goes on."""
         try:
@@ -161,7 +169,8 @@ class _Cluster(Engine):
 
 def _silenced() -> dict[logging.Logger, int]:
     """Keep the library's logs, traces among them, off the screen: what matters comes back with the batches."""
-    every = [logging.getLogger(name) for name in list(logging.root.manager.loggerDict) if name.partition(".")[0] == "distributed"]
+    names = {*logging.root.manager.loggerDict, "tornado.application", "asyncio"}
+    every = [logging.getLogger(name) for name in names if name.partition(".")[0] in ("distributed", "tornado", "asyncio")]
     levels = {logger: logger.level for logger in every}
     for logger in every:
         logger.setLevel(logging.CRITICAL)
