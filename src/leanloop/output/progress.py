@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import time
 from typing import TextIO
 
@@ -47,10 +48,20 @@ class Progress:
             words.append(f"{failed} failed")
         if left is not None and done < count:
             words.append(f"{span(left)} left")
-        line = ", ".join(words)[:110]
+        line = ", ".join(words)
+        room = self._room()
+        if len(line) > room:  # the numbers matter more than a long name
+            line = line[len(line) - room :]
         self.stream.write("\r" + line.ljust(self.width))
         self.stream.flush()
         self.width = len(line)
+
+    def _room(self) -> int:
+        try:
+            columns = os.get_terminal_size(self.stream.fileno()).columns
+        except (OSError, ValueError):
+            columns = 0
+        return max(20, (columns or 80) - 1)
 
     def end(self) -> None:
         """Leave the line."""

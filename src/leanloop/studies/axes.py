@@ -90,8 +90,9 @@ def read_cases(sheet: Flowsheet, raw: Any, sample: Sample | None, address: str, 
     else:
         context.fault(address, "is no table", 'write { "units.NAME.ENTRY" = [values] }')
         return None
-    if not any(table for table, _ in tables):
-        context.fault(address, "changes nothing", 'write { "units.NAME.ENTRY" = [values] }')
+    for table, where in tables or [({}, address)]:
+        if not table:
+            context.fault(where, "changes nothing", 'write { "units.NAME.ENTRY" = [values] }')
     seen: dict[str, str] = {}
     for table, where in tables:
         for key in table:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Mapping
 from concurrent.futures import FIRST_COMPLETED, BrokenExecutor, CancelledError, Future, wait
+from contextlib import suppress
 from typing import Any, Protocol
 
 import numpy as np
@@ -13,6 +14,8 @@ from leanloop.errors import LeanloopError, StudyError
 from leanloop.studies.executors import Engine
 from leanloop.studies.store import Store
 
+LOST = "the workers were lost; finished batches are kept, run the same command again"
+PULSE = 1.0  # s
 MOST_BREAKS = 5  # of the pool in one round: more are no accident
 
 
@@ -113,11 +116,11 @@ def carry_out(
                 span = waiting.pop()
                 own = {key: values[span[1] : span[1] + span[2]] for key, values in changes.items()}
                 try:
-                    running[engine.executor.submit(work, payload, own, span[1], span[2])] = span
+                    running[engine.submit(work, payload, own, span[1], span[2])] = span
                 except BrokenExecutor:
                     broken.append(span)
                     break
-            for future in wait(running, return_when=FIRST_COMPLETED).done if running else ():
+            for future in _back(running):
                 span = running.pop(future)
                 try:
                     tables = future.result()
@@ -126,22 +129,42 @@ def carry_out(
                     continue
                 store.put(part, span[0], tables, span[1])
                 clock.step(span[2], tables)
+            if running and not engine.alive():
+                raise StudyError(LOST)
             if broken:
                 breaks += 1
+                if breaks > MOST_BREAKS or not engine.own:
+                    raise StudyError(LOST)
                 broken += running.values()
                 running = {}
-                if breaks > MOST_BREAKS or not engine.again():
-                    raise StudyError("the workers were lost; finished batches are kept, run the same command again")
+                engine.again()
                 waiting += sorted(set(broken), reverse=True)
     except (LeanloopError, KeyboardInterrupt):
-        for future in running:
-            future.cancel()
+        _leave(part, running, store, engine)
         raise
     except Exception as error:  # noqa: BLE001 - whatever a cluster throws when it goes away
-        for future in running:
-            future.cancel()
+        _leave(part, running, store, engine)
         reason = " ".join(f"{type(error).__name__}: {error}".split())
         raise StudyError(f"a batch could not be calculated: {reason}; finished batches are kept") from error
+
+
+def _back(running: Mapping[Future, Any]) -> list[Future]:
+    """Give the batches that are back, none where none comes within a while.
+
+    A future that was cancelled and whose executor does not say so wakes nobody, hence the look at each.
+    """
+    if running:
+        wait(running, PULSE, FIRST_COMPLETED)
+    return [future for future in running if future.done()]
+
+
+def _leave(part: str, running: Mapping[Future, tuple[int, int, int]], store: Store | Memory, engine: Engine) -> None:
+    """Keep what is back and not kept yet, as far as it can be, and let go of the rest."""
+    for future, span in running.items():
+        with suppress(Exception):  # what ends the round is told already
+            if future.done():
+                store.put(part, span[0], future.result(), span[1])
+    engine.forget(running)
 
 
 class _Clock:

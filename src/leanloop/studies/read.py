@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.entries import Context, Entry, near, read_values, shown_key, shown_name
+from leanloop.entries import NAMES, Context, Entry, is_name, near, read_values, shown_key, shown_name
 from leanloop.errors import Fault, InputError, nearest
 from leanloop.flowsheet.read import table
 from leanloop.studies import purity
@@ -26,6 +26,7 @@ ENTRIES = (
     "title", "change", "sample", "record", "hold", "purity", "spread", "meets", "confidence", "margin",
 )  # fmt: skip
 ONLY_SPREAD = ("meets", "confidence", "margin")
+MOST_COLUMNS = 1500  # a database takes 2000, and purity adds its own
 DRAWN = 1024  # cases of an uncertainty study where none are asked for
 WORDS = (Entry("title", "text"), Entry("confidence", "number", above=0.5, below=1.0))
 
@@ -60,6 +61,8 @@ def study(sheet: Flowsheet, name: str | None = None, /, **entries: Any) -> Study
             raise InputError([Fault("studies", what, nearest(name or "", known))], sheet.source)
         entries = known[name]
     name = name or "study"
+    if not is_name(name):
+        raise InputError([Fault("studies", f"{shown_name(name)} is no name", NAMES)], sheet.source)
     context = Context(plain_si=sheet.given["plain_si"] or entries is not (declared or {}).get(name))
     found = read_study(sheet, name, entries, context)
     if context.faults or found is None:
@@ -140,6 +143,10 @@ def read_study(sheet: Flowsheet, name: str, raw: Any, context: Context) -> Study
             _try_limits(held, asked, f"{address}.purity.limits", context)
     if len(context.faults) > faults or cases is None or record is None:
         return None
+    wide = len(cases.changes) + len(record) * (2 if asked and asked.contaminants else 1)
+    if wide > MOST_COLUMNS:
+        context.fault(f"{address}.record", f"makes more than {MOST_COLUMNS} columns", "record fewer, or leave purity out")
+        return None
     kind = "uncertainty" if spread else "sweep"
     title = words.words.get("title", "")
     return Study(held, name, kind, cases, record, title, asked, laws, margin, dict(raw))
@@ -211,15 +218,20 @@ def _margin(
     elif not isinstance(inputs, (list, tuple)):
         context.fault(f"{address}.margin", "is no list of inputs", 'write margin = ["feeds.steam.flow"]')
         inputs = []
+    named: list[str] = []
     for place, key in enumerate(inputs):
         where = f"{address}.margin[{place}]"
-        if key not in sheet.numbers or str(key).startswith("requirements."):
-            context.fault(where, f"{shown_name(key)} is no numeric input", nearest(str(key), sheet.numbers))
+        if not isinstance(key, str):
+            context.fault(where, "is no address", "write one in quotes")
+        elif key not in sheet.numbers or key.startswith("requirements."):
+            context.fault(where, f"{shown_name(key)} is no numeric input", nearest(key, sheet.numbers))
         elif not sheet.varies(key):
             context.fault(where, "cannot have a margin", "name an input that can change by small amounts")
+        else:
+            named.append(key)
     if "margin" in raw and not sheet.requirements:
         context.fault(f"{address}.margin", "there is no requirement that it is for", "add a requirement, or leave it out")
-    return Margin(meets, float(confidence), tuple(dict.fromkeys(inputs)))
+    return Margin(meets, float(confidence), tuple(dict.fromkeys(named)))
 
 
 def _usual_sense(kind: str, quantity: str) -> str:

@@ -65,7 +65,8 @@ def read_purity(sheet: Flowsheet, raw: Any, address: str, context: Context) -> P
     found = read_values(ENTRIES, {key: item for key, item in plain.items() if key in [e.name for e in ENTRIES]}, address, own)
     name = found.words.get("makeup", next(iter(known)) if len(known) == 1 else None)
     if name not in known:
-        problem = "no make-up stands on a loop" if not known else "is not settled" if name is None else f"'{name}' is none"
+        named = "is not settled" if name is None else f"{shown_name(name)} is none"
+        problem = named if known else "no make-up stands on a loop"
         remedy = "a purity study needs a loop that a make-up holds" if not known else nearest(name or "", known)
         context.fault(f"{address}.makeup", problem, remedy)
         return None

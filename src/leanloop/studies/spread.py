@@ -16,6 +16,7 @@ from leanloop.flowsheet.cases import read_item
 if TYPE_CHECKING:
     from leanloop.flowsheet.sheet import Flowsheet
 
+MOST = 1e150  # SI, of what is squared
 SHAPES = ("normal", "lognormal", "uniform", "triangular")
 ENTRIES = ("shape", "mean", "deviation", "from", "to")
 FORMS = 'write "10 %", { deviation = ... }, or { from = ..., to = ... }'
@@ -148,6 +149,9 @@ def _about(sheet: Flowsheet, key: str, raw: Any, mean: float, shape: str, where:
     if deviation == 0.0:
         context.fault(where, "is a share of nothing", "give the deviation itself, with its unit")
         return None
+    if not (deviation < MOST and abs(mean) < MOST):
+        context.fault(where, "is too large for its square to be a number", "give a smaller spread")
+        return None
     if shape == "lognormal" and mean <= 0:
         context.fault(where, "a lognormal spread needs a mean above zero", "take another shape")
         return None
@@ -164,9 +168,15 @@ def _between(
     if not low < high:
         context.fault(f"{where}.to", "is not above from", "write the lower end first")
         return None
+    if not max(abs(low), abs(high), abs(mean)) < MOST:
+        context.fault(where, "is too large for its square to be a number", "give smaller ends")
+        return None
     log = raw.get("spacing") == "log"
     if log and low <= 0:
         context.fault(f"{where}.from", "is not above zero", "a log spacing needs both ends above zero")
+        return None
+    if log and not high / low < MOST:
+        context.fault(f"{where}.to", "is too many times from", "give ends that are nearer to each other")
         return None
     if shape == "uniform":
         if log:

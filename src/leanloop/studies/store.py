@@ -6,9 +6,11 @@ A batch and the note that it is done are one transaction.
 
 from __future__ import annotations
 
+import os
+import re
 import sqlite3
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import Any
 
@@ -22,6 +24,22 @@ except ImportError:  # pragma: no cover
     fcntl = None  # type: ignore[assignment]
 
 FORMAT = "1"
+HEAD = b"SQLite format 3\x00"
+FOREIGN = "is no file of a study; name another directory"
+AGAIN = re.compile(r" #\d+$")  # marks a column whose name differs from another only in capitals, which SQLite does not tell apart
+_held: set[int] = set()  # locks of this process
+
+
+def _let_go() -> None:
+    """Leave the locks to the process that took them: a worker that outlives it must not keep the next run out."""
+    for lock in _held:
+        os.close(lock)
+    _held.clear()
+
+
+if hasattr(os, "register_at_fork"):
+    os.register_at_fork(after_in_child=_let_go)
+
 Columns = Mapping[str, Any]  # (m,) arrays of numbers, or lists of m texts
 
 
@@ -43,10 +61,20 @@ class Store:
 
     def __init__(self, path: Path, about: Mapping[str, str]) -> None:
         self.path = path
-        self._lock = None
+        self._lock: int | None = None
+        self.base: sqlite3.Connection | None = None
+        try:
+            self._open(about)
+        except BaseException:
+            self.close()
+            raise
+
+    def _open(self, about: Mapping[str, str]) -> None:
+        path = self.path
         try:
             path.parent.mkdir(parents=True, exist_ok=True)
             self._hold()
+            self._look()
             self.base = sqlite3.connect(path, isolation_level=None)
         except OSError as error:
             raise StudyError(f"{error.filename or path}: cannot be written: {error.strerror}; name a directory that can") from None
@@ -60,15 +88,32 @@ class Store:
         """Keep a second run out; the system lets go when the process ends, however it ends."""
         if fcntl is None:
             return
-        self._lock = open(self.path.with_suffix(".lock"), "w", encoding="utf-8")  # noqa: SIM115 - held as long as the store
-        try:
-            fcntl.flock(self._lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError:
-            self._lock.close()
-            self._lock = None
-            raise StudyError(f"{self.path}: another run is writing it; wait for it, or name another directory") from None
+        name = self.path.with_suffix(".lock")
+        while self._lock is None:
+            lock = os.open(name, os.O_RDWR | os.O_CREAT, 0o666)
+            try:
+                fcntl.flock(lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
+                if name.exists() and os.path.samestat(os.fstat(lock), name.stat()):  # else the run before has removed it since
+                    self._lock = lock
+                    _held.add(lock)
+            except BlockingIOError:
+                raise StudyError(f"{self.path}: another run is writing it; wait for it, or name another directory") from None
+            finally:
+                if self._lock is None:
+                    os.close(lock)
+
+    def _look(self) -> None:
+        """Stop at a file that is no database; the shortest ones would be taken for an empty one."""
+        if self.path.is_file() and not self.path.with_name(f"{self.path.name}-journal").exists():
+            with open(self.path, "rb") as file:
+                head = file.read(len(HEAD))
+            if head not in (b"", HEAD):
+                raise StudyError(f"{self.path}: {FOREIGN}")
 
     def _settle(self, about: Mapping[str, str]) -> None:
+        tables = {row[0] for row in self.base.execute("SELECT name FROM sqlite_master WHERE type = 'table'")}
+        if tables and not {"about", "batches"} <= tables:
+            raise StudyError(f"{self.path}: {FOREIGN}")
         with self._transaction():
             self.base.execute("CREATE TABLE IF NOT EXISTS about (key TEXT PRIMARY KEY, value TEXT)")
             self.base.execute(
@@ -85,6 +130,11 @@ class Store:
                 what = {"format": "another version of this program", "version": f"version {there.get(key)}"}
                 told = what.get(key, f"another {key}")
                 raise StudyError(f"{self.path}: holds results of {told}; name another directory, or remove the file")
+        with self._transaction():
+            self.base.executemany(
+                "UPDATE about SET value = ? WHERE key = ? AND value != ?",
+                [(value, key, value) for key, value in wanted.items() if key.startswith("_") and key != "_state"],
+            )
 
     # --- writing
 
@@ -98,6 +148,8 @@ class Store:
             remedy = "name a directory that can be written"
             if "full" in said or "disk I/O" in said:
                 remedy = "make room and run the same command again: finished batches are kept"
+            elif "locked" in said:
+                remedy = "another program holds it; close that and run the same command again: finished batches are kept"
             elif "not a database" in said or "malformed" in said:
                 remedy = "it is no file of a study; name another directory"
             raise StudyError(f"{self.path}: cannot be written: {said}; {remedy}") from None
@@ -134,10 +186,10 @@ class Store:
         with self._said(), self._transaction():
             rows = 0
             for name, columns in tables.items():
-                names = list(columns)
-                values = [_plain(columns[key]) for key in names]
+                values = [_plain(column) for column in columns.values()]
                 rows = rows or len(values[0])
-                kinds = ", ".join(f"{_quoted(key)} {_affinity(columns[key])}" for key in names)
+                names = _told_apart(columns)
+                kinds = ", ".join(f"{_quoted(key)} {_affinity(own)}" for key, own in zip(names, columns.values(), strict=True))
                 self.base.execute(f"CREATE TABLE IF NOT EXISTS {_quoted(name)} ({kinds})")
                 marks = ", ".join("?" * len(names))
                 self.base.executemany(
@@ -180,18 +232,31 @@ class Store:
             found = self.base.execute(
                 f"SELECT * FROM {_quoted(name)}{clause} ORDER BY {_quoted(order)}, rowid", (where[1],) if where else ()
             )
-            names = [item[0] for item in found.description]
+            names = [AGAIN.sub("", item[0]) for item in found.description]
             rows = found.fetchall()
         columns = list(zip(*rows, strict=True)) if rows else [() for _ in names]
         return {key: _array(column) for key, column in zip(names, columns, strict=True)}
 
     def close(self) -> None:
         """Close the file."""
-        self.base.close()
+        if self.base is not None:
+            self.base.close()
         if self._lock is not None:
-            self._lock.close()
+            with suppress(OSError):  # while it is ours: a run that comes later makes its own
+                self.path.with_suffix(".lock").unlink(missing_ok=True)
+            os.close(self._lock)
+            _held.discard(self._lock)
             self._lock = None
-            self.path.with_suffix(".lock").unlink(missing_ok=True)
+
+
+def _told_apart(names: Iterable[str]) -> list[str]:
+    """Give names of columns that differ in more than capitals."""
+    seen: dict[str, int] = {}
+    out = []
+    for name in names:
+        number = seen[name.lower()] = seen.get(name.lower(), 0) + 1
+        out.append(name if number == 1 else f"{name} #{number}")
+    return out
 
 
 def _quoted(name: str) -> str:
@@ -211,11 +276,10 @@ def _affinity(column: Any) -> str:
 
 def _array(column: tuple[Any, ...]) -> Any:
     """Give a column as an array where it holds numbers, NULL as NaN."""
+    if column and type(column[0]) is str:  # a component may be named 1, inf or nan
+        return list(column)
     if column and type(column[0]) is int:
         whole = np.array(column)
         if whole.dtype.kind == "i":
             return whole
-    try:
-        return np.array(column, dtype=float)
-    except ValueError:
-        return list(column)
+    return np.array(column, dtype=float)

@@ -128,19 +128,19 @@ class Study:
         MissingExtra
             Where a cluster is asked for without its library.
         """
-        store = Memory() if out is None else Store(Path(out) / f"{self.name}.sqlite", self.about())
+        where = engine(executor, workers, cluster)
+        finished = False
         try:
-            where = engine(executor, workers, cluster)
-            finished = False
+            store = Memory() if out is None else Store(Path(out) / f"{self.name}.sqlite", self.about())
             try:
                 found = self._find(store, where, progress)
                 finished = True
+                store.note("state", "finished")
+                return found
             finally:
-                where.close(wait=finished)
-            store.note("state", "finished")
-            return found
+                store.close()
         finally:
-            store.close()
+            where.close(wait=finished)
 
     def _find(self, store: Store | Memory, where: Engine, progress: Progress | None) -> Findings:
         base = self.sheet.solve_cases()
@@ -171,7 +171,7 @@ class Study:
 
 
 def _canonical(item: Any) -> str:
-    return json.dumps(item, sort_keys=True, default=_plain)
+    return json.dumps(item, default=_plain)  # unsorted: the order of inputs is that of the cases
 
 
 def _plain(item: Any) -> Any:

@@ -10,8 +10,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from leanloop.errors import StudyError
 from leanloop.status import CODE, LIST, OK, Status
 from leanloop.studies import buildup, purity, record
+from leanloop.version import VERSION
 
 if TYPE_CHECKING:
     from leanloop.flowsheet.result import Result
@@ -38,8 +40,8 @@ class Order:
     part: str = ""
 
     def packed(self) -> bytes:
-        """Give the order as bytes, the same for the same order."""
-        return pickle.dumps(self, protocol=4)
+        """Give the order as bytes, the same for the same order, with the version that gives it."""
+        return pickle.dumps((VERSION, pickle.dumps(self, protocol=4)), protocol=4)
 
     @functools.cached_property
     def limited(self) -> dict[str, Flowsheet]:
@@ -57,7 +59,10 @@ class Order:
 
 @functools.lru_cache(maxsize=4)
 def _unpacked(payload: bytes) -> Order:
-    return pickle.loads(payload)  # noqa: S301 - made by this program, a moment ago
+    version, order = pickle.loads(payload)  # noqa: S301 - made by this program, a moment ago
+    if version != VERSION:
+        raise StudyError(f"a worker has version {VERSION} of this program, the study {version}; give both the same")
+    return pickle.loads(order)  # noqa: S301
 
 
 def work(payload: bytes, changes: Mapping[str, Any], first: int, count: int) -> dict[str, dict[str, Any]]:

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
 RANGE = ("from", "to", "count", "step", "spacing")
 FORMS = "write a list of values, { from = ..., to = ..., count = ... } or { times = [...] }"
 MOST_CASES = 5_000_000
+MOST_TIMES = 1e100  # a factor beyond is a slip, and may be no float
 
 
 def read_values(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) -> tuple[Any, bool] | None:
@@ -78,13 +79,13 @@ def _times(sheet: Flowsheet, key: str, raw: Any, where: str, context: Context) -
     good = (
         isinstance(raw, (list, tuple))
         and raw
-        and all(isinstance(item, Real) and not isinstance(item, bool) and np.isfinite(item) for item in raw)
+        and all(isinstance(item, Real) and not isinstance(item, bool) and abs(item) <= MOST_TIMES for item in raw)
     )
     if not good:
         context.fault(f"{where}.times", "is no list of factors", "write { times = [0.5, 1.0, 2.0] }")
         return None
     si = Context(context.faults, plain_si=True, names=context.names)
-    values = [read_item(sheet, key, float(base * item), f"{where}.times[{place}]", si) for place, item in enumerate(raw)]
+    values = [read_item(sheet, key, base * float(item), f"{where}.times[{place}]", si) for place, item in enumerate(raw)]
     return None if None in values else (np.array(values), False)
 
 
@@ -108,6 +109,8 @@ def read_ends(sheet: Flowsheet, key: str, raw: Mapping[str, Any], where: str, co
     low, high = ends
     if low == high:
         context.fault(f"{where}.to", "is the same as from", "give two different ends, or a list of one value")
+    elif not np.isfinite(float(high) - float(low)):
+        context.fault(f"{where}.to", "is too far from from", "give ends of which the difference is a number")
     elif spacing == "log" and not (low > 0 and high > 0):
         context.fault(f"{where}.from", "is not above zero", "a log spacing needs both ends above zero")
     return (low, high, spacing == "log") if len(context.faults) == faults else None
@@ -135,10 +138,12 @@ def _range(
         length = _step(sheet, key, step, where, context)
         if length is None:
             return None
-        count = int(np.floor(abs(high - low) / length + 1e-9)) + 1
-        if count > MOST_CASES:
+        with np.errstate(over="ignore"):
+            steps = np.float64(abs(high - low)) / length
+        if not steps < MOST_CASES:
             context.fault(f"{where}.step", f"makes more than {MOST_CASES} values", "take a larger step")
             return None
+        count = int(np.floor(steps + 1e-9)) + 1
         return low + np.sign(high - low) * length * np.arange(count), False
     if whole and count is None:
         return np.arange(low, high + 1) if high > low else np.arange(low, high - 1, -1), False
