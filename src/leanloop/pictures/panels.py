@@ -164,7 +164,7 @@ def _extent(text: Text) -> float:
         return float(text.get_window_extent().width)
 
 
-def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
+def rug(axes: Axes, places: np.ndarray, gid: str, label: str = "case not converged") -> list[Any]:
     """Mark cases without an answer by crosses on the abscissa.
 
     Parameters
@@ -172,7 +172,7 @@ def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
     axes : matplotlib.axes.Axes
     places : (n,) array
         Finite.
-    gid : str
+    gid, label : str
 
     Returns
     -------
@@ -181,7 +181,7 @@ def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
     """
     if not len(places):
         return []
-    options = {"transform": axes.get_xaxis_transform(), "clip_on": False, "zorder": 5, "label": "case not converged"}
+    options = {"transform": axes.get_xaxis_transform(), "clip_on": False, "zorder": 5, "label": label}
     return axes.plot(places, np.zeros(len(places)), gid=gid, **options, **FAILED)
 
 

@@ -1,0 +1,235 @@
+"""What pictures of a scan of designs share: quantities of designs, the designs that stand out, and words for both."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from leanloop.pictures.base import GREEN, GREY, INK, MM, PER_HOUR, RUST, library, literal, short
+from leanloop.pictures.contour_lines import Box, settled
+from leanloop.pictures.panel_scales import known, tame
+from leanloop.pictures.panels import listed
+from leanloop.pictures.study_columns import TITLE_LETTERS, Column, constant, written
+from leanloop.pictures.words import shortened
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+    from leanloop.sizing.designs import Designs
+
+FAILED_LABEL = "design that could not be"
+MOST_COLUMNS = 4  # whose stages name a design
+# Of sizes that leave each to be seen where one design is all of them.
+MARKS: dict[str, dict[str, Any]] = {
+    "chosen": {"color": INK, "marker": "o", "markersize": 12.0, "markerfacecolor": "none", "markeredgewidth": 1.4},
+    "knee": {"color": RUST, "marker": "D", "markersize": 7.0, "markerfacecolor": "white", "markeredgewidth": 1.3},
+    "cheapest": {"color": GREEN, "marker": "^", "markersize": 4.5, "markeredgewidth": 0.6},
+}
+DESIGN = {"color": GREY, "linestyle": "none", "marker": "o", "markersize": 2.6, "markerfacecolor": "white", "markeredgewidth": 0.5}
+NEAR = 3.4  # mm, of the middle of a small text from its point, beside half its width
+SIDES = ((-1, -1), (1, 1), (-1, 0), (0, -1), (1, 0), (0, 1), (1, -1), (-1, 1))
+
+
+def quantities(found: Designs) -> tuple[list[Column], str]:
+    """Give what a design takes: circulation, stripping gas or duty, column volume, cost.
+
+    Parameters
+    ----------
+    found : Designs
+
+    Returns
+    -------
+    (columns, note)
+        NaN for designs that could not be; what is the same for all of them is left out, and the note names it.
+    """
+    raw = {"circulation": ("circulation", "kmol/h", PER_HOUR * found.circulation)}
+    if np.any(found.stripping > 0):
+        raw["stripping"] = ("stripping gas", "kmol/h", PER_HOUR * found.stripping)
+    if found.energy is not found.stripping:
+        raw["reboilers"] = ("reboiler duty", "kW", found.energy / 1e3)
+    if found.columns:
+        raw["volume"] = ("column volume", "m3", found.volume)
+    if found.costs:
+        raw["cost"] = ("cost a year", "in the money of the prices", found.costs["total"])
+    out, same = [], []
+    for key, (name, unit, values) in raw.items():
+        own = np.where(found.good, tame(values), np.nan)
+        if constant(known(own)):
+            same += [f"{name} = {short(float(known(own)[0]), 4)} {unit}"] if len(known(own)) else []
+        else:
+            out.append(Column(key, f"{name}, {unit}", own))
+    return out, f"not drawn, as it does not vary: {listed(same, 5)}" if same and out else ""
+
+
+def size_of(found: Designs) -> Column:
+    """Give the volume of all columns, or their stages where none is equipped.
+
+    Parameters
+    ----------
+    found : Designs
+    """
+    text = "column volume, m3" if found.columns else "stages of all columns"
+    return Column("volume" if found.columns else "stages", text, np.where(found.good, tame(found.size_measure), np.nan))
+
+
+def home(found: Designs) -> int | None:
+    """Give the chosen design, or the first that could be; None where none could.
+
+    Parameters
+    ----------
+    found : Designs
+    """
+    good = np.flatnonzero(found.good)
+    return found.chosen if found.chosen is not None else int(good[0]) if len(good) else None
+
+
+def marked(found: Designs) -> dict[str, int]:
+    """Give the designs that stand out, by what they are.
+
+    Parameters
+    ----------
+    found : Designs
+    """
+    pairs = {"chosen": found.chosen, "knee": found.knee, "cheapest": found.cheapest}
+    return {key: design for key, design in pairs.items() if design is not None and found.good[design]}
+
+
+def stages_of(found: Designs, design: int) -> str:
+    """Name a design by its stages, such as 8 + 6; by its number where it has none.
+
+    Parameters
+    ----------
+    found : Designs
+    design : int
+    """
+    counts = [str(values[design]) for values in found.stages.values()]
+    if not counts:
+        return f"design {design}"
+    return " + ".join(counts[:MOST_COLUMNS]) + (" ..." if len(counts) > MOST_COLUMNS else "")
+
+
+def named(found: Designs, word: str, design: int) -> str:
+    """Say which design stands out, for a legend.
+
+    Parameters
+    ----------
+    found : Designs
+    word : str
+    design : int
+    """
+    own = {f"units.{name}.stages" for name in found.stages}
+    further = [
+        f"{key} = {written(found.sheet, key, values[design])}"
+        for key, values in found.inputs.items()
+        if key not in own and not isinstance(values, list)
+    ]
+    words = f"{word}: {stages_of(found, design)}"
+    return words + (f", {shortened(further[0], 44)}" + (" ..." if len(further) > 1 else "") if further else "")
+
+
+def naming(found: Designs) -> str:
+    """Say which columns' stages name a design.
+
+    Parameters
+    ----------
+    found : Designs
+    """
+    names = [shortened(name, 30) for name in found.stages]
+    more = " + ..." if len(names) > MOST_COLUMNS else ""
+    return f"designs are named by the stages of {' + '.join(names[:MOST_COLUMNS])}{more}" if names else ""
+
+
+def heading(found: Designs, what: str, place: int = 0, of: int = 1) -> str:
+    """Give the title of a picture.
+
+    Parameters
+    ----------
+    found : Designs
+    what : str
+        It shows.
+    place, of : int
+        Number of the picture, from 0, and how many there are.
+    """
+    name = shortened(" ".join((found.sheet.title or "Designs").split()), TITLE_LETTERS)
+    return f"{name}: {what}" + (f" ({place + 1} of {of})" if of > 1 else "")
+
+
+def tally(found: Designs) -> str:
+    """Write how many designs could be.
+
+    Parameters
+    ----------
+    found : Designs
+    """
+    count, good = found.count, int(found.good.sum())
+    text = f"{count} design{'s' if count > 1 else ''}"
+    return f"{text}, {count - good} of them could not be" if good < count else text
+
+
+def mark(axes: Axes, found: Designs, x: np.ndarray, y: np.ndarray, name: str, clip: bool = True) -> dict[str, Any]:
+    """Mark the designs that stand out, where they have a place.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    found : Designs
+    x, y : (D,) array
+    name : str
+        A marker has the gid ``WORD-NAME``.
+    clip : bool
+        Whether markers end at the frame.
+
+    Returns
+    -------
+    dict of str to matplotlib.lines.Line2D
+        By what they are.
+    """
+    out = {}
+    for place, (word, design) in enumerate(marked(found).items()):
+        if np.isfinite(x[design]) and np.isfinite(y[design]):
+            look = {"linestyle": "none", "zorder": 7 + place, "clip_on": clip, **MARKS[word]}
+            (out[word],) = axes.plot([x[design]], [y[design]], gid=f"{word}-{name}", label=named(found, word, design), **look)
+    return out
+
+
+def name_points(axes: Axes, texts: dict[str, str], x: list[float], y: list[float], kept: list[Box], size: float = 7.0) -> None:
+    """Write small texts beside points, off each other, off other points and off the frame; what has no such place is left out.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+        Laid out for good.
+    texts : dict of str to str
+        By gid, one for each point; the first ones choose first.
+    x, y : list of float
+    kept : list of Box
+        What is to be kept clear beside; the boxes of the texts are added.
+    size : float
+        Points.
+    """
+    near = NEAR * MM * axes.figure.dpi
+    halo = [library().patheffects.withStroke(linewidth=2.0, foreground="white")]
+    for (gid, words), across, up in zip(texts.items(), x, y, strict=True):
+        spot = axes.transData.transform((across, up))
+        options = {"size": size, "color": INK, "ha": "center", "va": "center", "zorder": 9, "path_effects": halo}
+        text = axes.text(0.0, 0.0, literal(words), gid=gid, transform=None, **options)
+        half = text.get_window_extent().width / 2
+        settled(text, [(spot[0] + a * (half + 0.6 * near), spot[1] + b * near) for a, b in SIDES], kept)
+
+
+def boxes_of(axes: Axes, x: np.ndarray, y: np.ndarray, size: float) -> list[Box]:
+    """Give the boxes of markers, in dots.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+        Laid out for good.
+    x, y : (n,) array
+        Finite.
+    size : float
+        Of the markers, points.
+    """
+    half = 0.5 * size / 72.0 * axes.figure.dpi
+    spots = axes.transData.transform(np.stack([x, y], axis=1)) if len(x) else []
+    return [(spot[0] - half, spot[1] - half, spot[0] + half, spot[1] + half) for spot in spots]
