@@ -143,6 +143,8 @@ def numbers(axes: Axes, lines: Any, name: str, kept: list[Box] | None = None) ->
     steps = np.diff(lines.levels)
     finest = steps.min() / np.abs(lines.levels).max() if len(steps) else 1.0
     digits = max(3, int(np.ceil(-np.log10(max(finest, 1e-12)))) + 1)
+    most = np.abs(lines.levels).max()
+    digits = max(digits, len(f"{most:.0f}")) if most < 1e6 else digits  # no power of ten where an axis has none
     halo = [library().patheffects.withStroke(linewidth=2.2, foreground="white")]
     for place, (level, path) in enumerate(zip(lines.levels, lines.get_paths(), strict=True)):
         options = {"size": LABEL, "color": INK, "ha": "center", "va": "center", "zorder": 6, "path_effects": halo}

@@ -76,7 +76,7 @@ def figures(found: Designs) -> list[Figure]:
     elsewhere = [named(found, word, design) for word, design in marked(found).items() if design not in table]
     note = joined(
         f"{tally(found)}{': crosses' if bad else ''}",
-        naming(found) if len(chosen) == 2 else "",
+        naming(found),
         *(end.note for end in ends),
         f"at the values of the {'chosen' if found.chosen == start else 'first good'} design, "
         + ", ".join(held(found.sheet, scanned[place], int(at[place])) for place in fixed)

@@ -6,9 +6,9 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.pictures.base import INK, NAVY, legend_below, library, look, style
+from leanloop.pictures.base import legend_below, library, look, style
 from leanloop.pictures.designs_columns import design_flood
-from leanloop.pictures.designs_parts import boxes_of, heading, name_points, naming, stages_of
+from leanloop.pictures.designs_parts import MARKS, STAIRS, heading, name_designs, named, naming
 from leanloop.pictures.panel_scales import fit_axis, known, wants_log
 from leanloop.pictures.panels import finish, label_abscissa, listed, page, title_panel
 from leanloop.pictures.study_columns import joined
@@ -23,10 +23,6 @@ if TYPE_CHECKING:
     from leanloop.sizing.designs import Designs
 
 LETTERS = 40  # of a column's name in the legend
-AS_CHOSEN = {
-    "color": INK, "linestyle": "none", "marker": "o", "markersize": 10.0, "markerfacecolor": "none", "markeredgewidth": 1.3,
-}  # fmt: skip
-STAIRS = {"color": NAVY, "linestyle": "-", "marker": "o", "markersize": 4.0, "drawstyle": "steps-post", "zorder": 4}
 
 
 def figures(found: Designs) -> list[Figure]:
@@ -75,10 +71,7 @@ def figures(found: Designs) -> list[Figure]:
         legend_below(paper, list(handles.values()))
         finish(paper, width)
         if stairs is not None:
-            designs, times, stages = steps
-            kept = boxes_of(stairs, times, stages, STAIRS["markersize"])
-            texts = {f"name-{design}-solvent": stages_of(found, int(design)) for design in designs}
-            name_points(stairs, texts, times.tolist(), stages.tolist(), kept)
+            name_designs(stairs, found, *steps[1:], steps[0], "solvent")
     return [paper]
 
 
@@ -89,7 +82,7 @@ def _widths(axes: Axes, found: Designs, widths: dict[str, list[tuple[float, floa
     for place, (label, (name, points)) in enumerate(zip(labels, widths.items(), strict=True)):
         x, y = zip(*points, strict=True)
         (handles[name],) = axes.plot(x, y, gid=f"diameter-{name}", label=label, zorder=3, **look(place))
-    handles["chosen"] = axes.plot(*zip(*own, strict=True), gid="chosen-flood", label="as designed", zorder=5, **AS_CHOSEN)[0]
+    handles |= _chosen(axes, found, *np.transpose(own), "chosen-flood")
     every = np.array([*(point for item in widths.values() for point in item), *own])
     across, up = known(every[:, 0]), known(every[:, 1])
     fit_axis(axes.xaxis, across, zero=False)
@@ -99,25 +92,34 @@ def _widths(axes: Axes, found: Designs, widths: dict[str, list[tuple[float, floa
     return handles
 
 
+def _chosen(axes: Axes, found: Designs, x: np.ndarray, y: np.ndarray, gid: str) -> dict[str, Any]:
+    """Mark the chosen design."""
+    look = {"linestyle": "none", "zorder": 7, **MARKS["chosen"]}
+    return {"chosen": axes.plot(x, y, gid=gid, label=named(found, "chosen", found.chosen), **look)[0]}
+
+
 def _steps(found: Designs) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """Give the designs that none betters in circulation and stages, their circulation in times the least, and their stages."""
-    nothing = np.zeros(0, dtype=int), np.zeros(0), np.zeros(0)
-    if not solvent_effects(found):
-        return nothing
+    """Give the designs that none betters in circulation and stages, and of all designs circulation in times the least and stages.
+
+    Those of `solvent_effects` are among them; drawn are all of them, since between two the stairs have to be right as well.
+    """
     total = sum(found.stages.values(), np.zeros(found.count))
-    times = found.circulation / found.circulation[found.good].min()
-    rows = np.flatnonzero(pareto(np.stack([times, total], axis=1), found.good & (times <= TIMES[-1])))
-    rows = rows[np.argsort(times[rows], kind="stable")]
-    return rows, times[rows], total[rows]
+    if not solvent_effects(found):
+        return np.zeros(0, dtype=int), total, total
+    good = found.good & np.isfinite(found.circulation)
+    times = np.where(good, found.circulation / found.circulation[good].min(), np.nan)
+    rows = np.flatnonzero(pareto(np.stack([times, total], axis=1), good & (times <= TIMES[-1])))
+    return rows[np.argsort(times[rows], kind="stable")], times, total
 
 
 def _stairs(axes: Axes, found: Designs, steps: tuple[np.ndarray, np.ndarray, np.ndarray], width_mm: float) -> dict[str, Any]:
     axes.set_gid("panel-solvent")
-    _, times, stages = steps
-    (line,) = axes.plot(times, stages, gid="stages", label="fewest stages", **STAIRS)
-    fit_axis(axes.xaxis, times, zero=False)
-    fit_axis(axes.yaxis, stages, zero=False)
+    rows, times, stages = steps
+    (line,) = axes.plot(times[rows], stages[rows], gid="stages", label="fewest stages", **STAIRS)
+    own = found.chosen if times[found.chosen] <= TIMES[-1] else rows[0]
+    fit_axis(axes.xaxis, times[[*rows, own]], zero=False)
+    fit_axis(axes.yaxis, stages[[*rows, own]], zero=False)
     axes.yaxis.set_major_locator(library().ticker.MaxNLocator(nbins=7, integer=True))
     title_panel(axes, "stages of all columns", width_mm)
     label_abscissa(axes, "circulation, times the least of the scan", width_mm)
-    return {"stairs": line}
+    return {"stairs": line, **_chosen(axes, found, times[[own]], stages[[own]], "chosen-solvent")}

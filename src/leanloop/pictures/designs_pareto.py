@@ -6,20 +6,17 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.pictures.base import GREY, NAVY, RUST, legend_below, style
+from leanloop.pictures.base import GREY, RUST, legend_below, style
 from leanloop.pictures.contour_lines import levels, numbers
 from leanloop.pictures.designs_parts import (
     DESIGN,
-    MARKS,
-    boxes_of,
+    STAIRS,
     heading,
     mark,
-    marked,
-    name_points,
+    name_designs,
     naming,
     quantities,
     size_of,
-    stages_of,
     tally,
 )
 from leanloop.pictures.panel_scales import fit_axis, tame
@@ -34,8 +31,7 @@ if TYPE_CHECKING:
 
     from leanloop.sizing.designs import Designs
 
-STAIRS = {"color": NAVY, "marker": "o", "markersize": 4.0, "linewidth": 1.2, "drawstyle": "steps-post", "zorder": 4}
-SET = {"color": RUST, "linestyle": "none", "marker": "s", "markersize": 4.0, "markerfacecolor": "white", "zorder": 4}
+SET = {"color": RUST, "linestyle": "none", "marker": "s", "markersize": 3.2, "markerfacecolor": "white", "zorder": 3.5}
 EQUAL = {"colors": GREY, "linewidths": 0.6, "linestyles": "-", "zorder": 1}
 
 
@@ -103,14 +99,16 @@ def _page(found: Designs, group: list[tuple[Column, Column]], yearly: float | No
             axes.set_gid(f"panel-{key}")
             there = np.isfinite(x) & np.isfinite(y)
             (handles["design"],) = axes.plot(x[there], y[there], gid=f"designs-{key}", label="design", **{**DESIGN, "zorder": 3})
-            front = np.flatnonzero(pareto(np.stack([x, y], axis=1), there))
+            # of designs that are the same on both axes, the one that is better in what is not drawn
+            among = there if yearly is not None else there & found.front
+            front = np.flatnonzero(pareto(np.stack([x, y], axis=1), among))
             front = front[np.argsort(x[front], kind="stable")]
             others = np.flatnonzero(found.front & there & ~np.isin(np.arange(found.count), front))
             if yearly is not None:
                 others = others[:0]
-            (handles["stairs"],) = axes.plot(x[front], y[front], gid=f"stairs-{key}", label=_told(found, group, yearly), **STAIRS)
+            (handles["stairs"],) = axes.plot(x[front], y[front], gid=f"stairs-{key}", label=_told(group, yearly), **STAIRS)
             if len(others):
-                look = {"label": "others of the Pareto set", **SET}
+                look = {"label": "Pareto set, the others", **SET}
                 (handles["set"],) = axes.plot(x[others], y[others], gid=f"set-{key}", **look)
             fit_axis(axes.xaxis, x[there], zero=False)
             fit_axis(axes.yaxis, y[there], zero=False)
@@ -118,26 +116,19 @@ def _page(found: Designs, group: list[tuple[Column, Column]], yearly: float | No
             handles |= mark(axes, found, x, y, key)
             title_panel(axes, up.label, width)
             label_abscissa(axes, across.label, width)
-            drawn.append((axes, key, x, y, there, front, lines))
+            drawn.append((axes, key, x, y, front, lines))
         legend_below(paper, list(handles.values()))
         finish(paper, width)
-        for axes, key, x, y, there, front, lines in drawn:
-            stand = [design for design in dict.fromkeys(marked(found).values()) if there[design]]
-            named = [*stand, *(int(design) for design in front if design not in stand)]
-            kept = boxes_of(axes, x[stand], y[stand], MARKS["chosen"]["markersize"])
-            kept += boxes_of(axes, x[front], y[front], STAIRS["markersize"])
-            texts = {f"name-{design}-{key}": stages_of(found, design) for design in named}
-            name_points(axes, texts, x[named].tolist(), y[named].tolist(), kept)
+        for axes, key, x, y, front, lines in drawn:
+            kept = name_designs(axes, found, x, y, front, key)
             if lines is not None:
                 numbers(axes, lines, "equal", kept)
     return paper
 
 
-def _told(found: Designs, group: list[tuple[Column, Column]], yearly: float | None) -> str:
+def _told(group: list[tuple[Column, Column]], yearly: float | None) -> str:
     """Name the stairs."""
-    if yearly is None and len(group) == 1:
-        return "Pareto set"
-    return "Pareto set of the two" if yearly is not None else "of it, Pareto set of the two axes"
+    return "Pareto set, those that none betters in the two shown" if yearly is None and len(group) > 1 else "Pareto set"
 
 
 def _equal(axes: Axes, yearly: float) -> Any:

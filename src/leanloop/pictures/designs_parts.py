@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.pictures.base import GREEN, GREY, INK, MM, PER_HOUR, RUST, library, literal, short
+from leanloop.pictures.base import GREEN, GREY, INK, MM, NAVY, PER_HOUR, RUST, library, literal, short
 from leanloop.pictures.contour_lines import Box, settled
 from leanloop.pictures.panel_scales import known, tame
 from leanloop.pictures.panels import listed
@@ -26,7 +27,9 @@ MARKS: dict[str, dict[str, Any]] = {
     "knee": {"color": RUST, "marker": "D", "markersize": 7.0, "markerfacecolor": "white", "markeredgewidth": 1.3},
     "cheapest": {"color": GREEN, "marker": "^", "markersize": 4.5, "markeredgewidth": 0.6},
 }
+STAIRS = {"color": NAVY, "marker": "o", "markersize": 4.0, "linewidth": 1.2, "drawstyle": "steps-post", "zorder": 4}
 DESIGN = {"color": GREY, "linestyle": "none", "marker": "o", "markersize": 2.6, "markerfacecolor": "white", "markeredgewidth": 0.5}
+MOST_NAMES = 14  # of designs along stairs
 NEAR = 3.4  # mm, of the middle of a small text from its point, beside half its width
 SIDES = ((-1, -1), (1, 1), (-1, 0), (0, -1), (1, 0), (0, 1), (1, -1), (-1, 1))
 
@@ -136,8 +139,13 @@ def naming(found: Designs) -> str:
     found : Designs
     """
     names = [shortened(name, 30) for name in found.stages]
+    if not names:
+        return ""
     more = " + ..." if len(names) > MOST_COLUMNS else ""
-    return f"designs are named by the stages of {' + '.join(names[:MOST_COLUMNS])}{more}" if names else ""
+    own = {f"units.{name}.stages" for name in found.stages}
+    further = [key for key in found.inputs if key not in own]
+    apart = f", those of one name differ in {listed(further, 2)}" if further else ""
+    return f"designs are named by the stages of {' + '.join(names[:MOST_COLUMNS])}{more}{apart}"
 
 
 def heading(found: Designs, what: str, place: int = 0, of: int = 1) -> str:
@@ -193,29 +201,44 @@ def mark(axes: Axes, found: Designs, x: np.ndarray, y: np.ndarray, name: str, cl
     return out
 
 
-def name_points(axes: Axes, texts: dict[str, str], x: list[float], y: list[float], kept: list[Box], size: float = 7.0) -> None:
-    """Write small texts beside points, off each other, off other points and off the frame; what has no such place is left out.
+def name_designs(axes: Axes, found: Designs, x: np.ndarray, y: np.ndarray, front: np.ndarray, name: str) -> list[Box]:
+    """Write stages beside the designs that stand out and along stairs, off each other, off the stairs and off the frame.
+
+    What has no such place is left out; of long stairs, the ends alone are named.
 
     Parameters
     ----------
     axes : matplotlib.axes.Axes
         Laid out for good.
-    texts : dict of str to str
-        By gid, one for each point; the first ones choose first.
-    x, y : list of float
-    kept : list of Box
-        What is to be kept clear beside; the boxes of the texts are added.
-    size : float
-        Points.
+    found : Designs
+    x, y : (D,) array
+    front : (n,) int array
+        Designs of the stairs, from the left to the right.
+    name : str
+        A text has the gid ``name-DESIGN-NAME``.
+
+    Returns
+    -------
+    list of Box
+        What is to be kept clear.
     """
     near = NEAR * MM * axes.figure.dpi
+    stand = [item for item in dict.fromkeys(marked(found).values()) if np.isfinite(x[item]) and np.isfinite(y[item])]
+    stairs = front.tolist() if len(front) <= MOST_NAMES else front[[0, -1]].tolist()
+    kept = boxes_of(axes, x[stand], y[stand], MARKS["chosen"]["markersize"])
+    kept += boxes_of(axes, x[front], y[front], STAIRS["markersize"])
+    spots = axes.transData.transform(np.stack([x[front], y[front]], axis=1)) if len(front) else []
+    for (left, high), (right, low) in pairwise(spots):
+        kept += [(left, high, right, high), (right, min(low, high), right, max(low, high))]
     halo = [library().patheffects.withStroke(linewidth=2.0, foreground="white")]
-    for (gid, words), across, up in zip(texts.items(), x, y, strict=True):
-        spot = axes.transData.transform((across, up))
-        options = {"size": size, "color": INK, "ha": "center", "va": "center", "zorder": 9, "path_effects": halo}
+    for design in dict.fromkeys([*stand, *stairs]):
+        spot, gid, words = axes.transData.transform((x[design], y[design])), f"name-{design}-{name}", stages_of(found, design)
+        options = {"size": 7.0, "color": INK, "ha": "center", "va": "center", "zorder": 9, "path_effects": halo}
         text = axes.text(0.0, 0.0, literal(words), gid=gid, transform=None, **options)
         half = text.get_window_extent().width / 2
-        settled(text, [(spot[0] + a * (half + 0.6 * near), spot[1] + b * near) for a, b in SIDES], kept)
+        far = near * (1.35 if design in stand else 1.0)
+        settled(text, [(spot[0] + a * (half + 0.65 * far), spot[1] + b * far) for a, b in SIDES], kept)
+    return kept
 
 
 def boxes_of(axes: Axes, x: np.ndarray, y: np.ndarray, size: float) -> list[Box]:
