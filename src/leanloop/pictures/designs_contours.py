@@ -8,20 +8,8 @@ import numpy as np
 
 from leanloop.pictures.base import NAVY, legend_below, library, style
 from leanloop.pictures.contour_lines import contours, crosses, distinct, numbers
-from leanloop.pictures.designs_parts import (
-    DESIGN,
-    FAILED_LABEL,
-    MARKS,
-    boxes_of,
-    heading,
-    home,
-    mark,
-    marked,
-    named,
-    naming,
-    quantities,
-    tally,
-)
+from leanloop.pictures.designs_marks import DESIGN, MARKS, boxes_of, mark
+from leanloop.pictures.designs_parts import FAILED_LABEL, heading, home, marked, named, naming, quantities, tally
 from leanloop.pictures.panel_scales import fit_axis, known, wants_log
 from leanloop.pictures.panels import FAILED, finish, label_abscissa, page, pages, rug, title_panel
 from leanloop.pictures.study_axes import Scaled, held, scaled

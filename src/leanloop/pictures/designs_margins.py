@@ -8,7 +8,8 @@ import numpy as np
 
 from leanloop.pictures.base import legend_below, library, look, style
 from leanloop.pictures.designs_columns import design_flood
-from leanloop.pictures.designs_parts import MARKS, STAIRS, heading, name_designs, named, naming
+from leanloop.pictures.designs_marks import MARKS, STAIRS, name_designs
+from leanloop.pictures.designs_parts import heading, named, naming
 from leanloop.pictures.panel_scales import fit_axis, known, wants_log
 from leanloop.pictures.panels import finish, label_abscissa, listed, page, title_panel
 from leanloop.pictures.study_columns import joined
@@ -71,7 +72,7 @@ def figures(found: Designs) -> list[Figure]:
         legend_below(paper, list(handles.values()))
         finish(paper, width)
         if stairs is not None:
-            name_designs(stairs, found, *steps[1:], steps[0], "solvent")
+            name_designs(stairs, found, *steps[1:], steps[0], "solvent", ["chosen"])
     return [paper]
 
 

@@ -8,17 +8,8 @@ import numpy as np
 
 from leanloop.pictures.base import GREY, RUST, legend_below, style
 from leanloop.pictures.contour_lines import levels, numbers
-from leanloop.pictures.designs_parts import (
-    DESIGN,
-    STAIRS,
-    heading,
-    mark,
-    name_designs,
-    naming,
-    quantities,
-    size_of,
-    tally,
-)
+from leanloop.pictures.designs_marks import DESIGN, STAIRS, mark, name_designs
+from leanloop.pictures.designs_parts import heading, naming, quantities, size_of, tally
 from leanloop.pictures.panel_scales import fit_axis, tame
 from leanloop.pictures.panels import finish, label_abscissa, page, pages, title_panel
 from leanloop.pictures.study_columns import Column, constant, joined
