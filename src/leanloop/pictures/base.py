@@ -137,6 +137,11 @@ def legend_below(figure: Figure, handles: list[Any], columns: int = 3) -> None:
 
     fit = next((count for count in range(min(columns, len(letters)), 1, -1) if width(count) <= room), 1)
     legend = figure.legend(handles=handles, loc="outside lower center", ncols=fit)
+    with quiet():
+        while fit > 1 and legend.get_window_extent().width > room * MM * figure.dpi:  # letters wider than most
+            legend.remove()
+            fit -= 1
+            legend = figure.legend(handles=handles, loc="outside lower center", ncols=fit)
     legend.set_gid("legend")
     _lengthen(figure, 4.4 * max(0, -(-len(letters) // fit) - 2))
 

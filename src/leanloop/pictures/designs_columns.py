@@ -9,7 +9,7 @@ import numpy as np
 from leanloop.pictures.base import INK, NAVY, PAGE_WIDTH, RUST, legend_below, literal, settle, short, style
 from leanloop.pictures.designs_parts import heading, stages_of
 from leanloop.pictures.panel_scales import LARGEST, fit_axis
-from leanloop.pictures.panels import pages, sheet_of, squeeze, upright
+from leanloop.pictures.panels import fit_head, pages, sheet_of, squeeze, upright
 from leanloop.pictures.study_columns import joined
 from leanloop.pictures.words import shortened, told_apart
 from leanloop.sizing import packed_column, tray_column
@@ -98,6 +98,7 @@ def _page(found: Designs, design: int, names: list[str], title: str, note: str) 
                 squeeze(text, NAME_MM)
             pair[1].set_yticks(range(len(feeds)), [""] * len(feeds))
         legend_below(paper, list(handles.values()))
+        fit_head(paper)
         settle(paper)
     return paper
 

@@ -123,7 +123,7 @@ def naming(found: Designs) -> str:
     ----------
     found : Designs
     """
-    names = [shortened(name, 30) for name in found.stages]
+    names = [shortened(name, 24) for name in found.stages]
     if not names:
         return ""
     more = " + ..." if len(names) > MOST_COLUMNS else ""

@@ -128,7 +128,7 @@ def label_abscissa(axes: Axes, label: str, width_mm: float) -> None:
 
 
 def finish(figure: Figure, width_mm: float) -> None:
-    """Lay a page out, and make titles and labels smaller whose letters are wider than most.
+    """Lay a page out, and make title, note and labels smaller whose letters are wider than most.
 
     Parameters
     ----------
@@ -139,7 +139,19 @@ def finish(figure: Figure, width_mm: float) -> None:
     for axes in figure.axes:
         for text in (axes._left_title, axes.xaxis.label):  # the library gives no other way to a title on the left
             squeeze(text, width_mm)
+    fit_head(figure)
     settle(figure)
+
+
+def fit_head(figure: Figure) -> None:
+    """Make title and note smaller where they are wider than the paper.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    """
+    for text in figure.texts:
+        squeeze(text, figure.get_figwidth() / MM - 4.0)
 
 
 def squeeze(text: Text, width_mm: float) -> None:
