@@ -64,6 +64,7 @@ def found():
         "mixed": run(stages={"wash": [7, 10]}, change=STEAM, columns=COLUMNS),
         "rated": run(stages={"wash": [9, 11]}, columns={"wash": {**PACKED, "diameter": "0.9 m"}}),
         "single": run(columns=COLUMNS),
+        "many cases": run(columns=COLUMNS, cases={f"case_{n}": {"feeds.vent.flow": f"{850 + 7 * n} Nm3/h"} for n in range(14)}),
         "none": run(stages={"wash": [3, 4], "strip": [2, 3]}, columns=COLUMNS),
     }
     plain, priced = out["plain"], out["priced"]
@@ -82,8 +83,6 @@ def found():
         "boiled": altered(plain, energy=1e5 + 1e3 * np.arange(plain.count), stripping=np.zeros(plain.count)),
         "long names": renamed(priced, ["W" * 60 + "a", "W" * 60 + "b"], ["feed_case_" * 8 + "a", "feed_case_" * 8 + "b"]),
         "odd names": renamed(priced, ["a$b", "苯"], ["$x", "y_$"]),
-        "many cases": renamed(altered(priced, sizing=dataclasses.replace(priced.sizing, feeds=dict.fromkeys(range(2)))),
-                              ["wash", "strip"], ["one", "two"]),
     }  # fmt: skip
     return out
 
@@ -308,6 +307,10 @@ class TestPareto:
         x, y = items["designs-circulation"].get_data()
         np.testing.assert_allclose(x, 3.6 * own.circulation[own.good])
         np.testing.assert_allclose(y, 3.6 * own.stripping[own.good])
+        assert "designs are named by feeds.steam.flow" in note(drawn["rates"]["pareto"])
+        written = {text.get_text() for gid, text in items.items() if gid.startswith("name-")}
+        assert written and written <= {f"{rate} kg/h" for rate in (70, 75, 80, 90)}
+        assert any(text.startswith("chosen: ") and text.endswith("kg/h") for text in legend(drawn["rates"]["pareto"]))
 
 
 class TestColumns:
@@ -326,6 +329,15 @@ class TestColumns:
         own, items = found["equipped"], parts(drawn["equipped"]["columns"])
         assert items["most-wash"].get_xdata()[0] == pytest.approx(1.5 * own.columns["wash"].height_m[own.chosen])
         assert "most-strip" not in items
+
+    def test_of_many_feed_cases_those_nearest_to_flooding_are_drawn(self, found, drawn):
+        own, figure = found["many cases"], drawn["many cases"]["columns"]
+        assert "the 12 of 15 feed cases that are nearest" in note(figure)
+        for name, item in own.columns.items():
+            nearest = np.array(list(own.sizing.feeds))[np.argsort(item.flood[own.chosen])[-12:]]
+            assert {gid for gid in parts(figure) if gid.startswith("flood-") and gid.endswith(name)} == {
+                f"flood-{feed}-{name}" for feed in nearest
+            }
 
     def test_what_is_not_known_has_no_bar(self, drawn):
         items = parts(drawn["unknown loads"]["columns"])

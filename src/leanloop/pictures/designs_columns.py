@@ -56,7 +56,7 @@ def figures(found: Designs) -> list[Figure]:
     for place, names in enumerate(shared):
         note = joined(
             f"design {design}: {stages_of(found, design)} stages",
-            "the row between stages that is nearest to flooding",
+            "% of flood between the stages that are nearest to it",
             f"the {MOST_BARS} of {found.feeds} feed cases that are nearest" if found.feeds > MOST_BARS else "",
         )
         title = heading(found, "columns of the chosen design", place, len(shared))

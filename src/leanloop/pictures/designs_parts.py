@@ -84,17 +84,30 @@ def marked(found: Designs) -> dict[str, int]:
 
 
 def stages_of(found: Designs, design: int) -> str:
-    """Name a design by its stages, such as 8 + 6; by its number where it has none.
+    """Name a design by its stages, such as 8 + 6; where these are the same in all, by the first input that is scanned.
 
     Parameters
     ----------
     found : Designs
     design : int
     """
+    further = _further(found)
+    if further and _same_stages(found):
+        return written(found.sheet, further[0], found.inputs[further[0]][design])
     counts = [str(values[design]) for values in found.stages.values()]
     if not counts:
         return f"design {design}"
     return " + ".join(counts[:MOST_COLUMNS]) + (" ..." if len(counts) > MOST_COLUMNS else "")
+
+
+def _further(found: Designs) -> list[str]:
+    """Give the scanned inputs that are numbers and no stages."""
+    own = {f"units.{name}.stages" for name in found.sizing.stages}
+    return [key for key, values in found.inputs.items() if key not in own and not isinstance(values, list)]
+
+
+def _same_stages(found: Designs) -> bool:
+    return all(np.ptp(values) == 0 for values in found.stages.values())
 
 
 def named(found: Designs, word: str, design: int) -> str:
@@ -106,29 +119,26 @@ def named(found: Designs, word: str, design: int) -> str:
     word : str
     design : int
     """
-    own = {f"units.{name}.stages" for name in found.stages}
-    further = [
-        f"{key} = {written(found.sheet, key, values[design])}"
-        for key, values in found.inputs.items()
-        if key not in own and not isinstance(values, list)
-    ]
+    further = [f"{key} = {written(found.sheet, key, found.inputs[key][design])}" for key in _further(found)]
     words = f"{word}: {stages_of(found, design)}"
+    if _same_stages(found):
+        further = further[1:]
     return words + (f", {shortened(further[0], 44)}" + (" ..." if len(further) > 1 else "") if further else "")
 
 
 def naming(found: Designs) -> str:
-    """Say which columns' stages name a design.
+    """Say what names a design.
 
     Parameters
     ----------
     found : Designs
     """
-    names = [shortened(name, 24) for name in found.stages]
+    names, further = [shortened(name, 24) for name in found.stages], _further(found)
+    if further and _same_stages(found):
+        return f"designs are named by {shortened(further[0], 44)}"
     if not names:
         return ""
     more = " + ..." if len(names) > MOST_COLUMNS else ""
-    own = {f"units.{name}.stages" for name in found.stages}
-    further = [key for key in found.inputs if key not in own]
     apart = f", those of one name differ in {listed(further, 2)}" if further else ""
     return f"designs are named by the stages of {' + '.join(names[:MOST_COLUMNS])}{more}{apart}"
 
