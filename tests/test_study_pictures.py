@@ -16,7 +16,7 @@ from scipy.stats import norm, spearmanr
 import leanloop
 from leanloop.errors import MissingExtra
 from leanloop.flowsheet.scales import of_column
-from leanloop.pictures import base, gather, panel_scales, study_contours, study_histograms, study_samples, words
+from leanloop.pictures import base, contour_lines, gather, panel_scales, study_histograms, study_samples, words
 from leanloop.studies.axes import Axis
 from leanloop.studies.findings import Findings
 from leanloop.studies.influence import Influence
@@ -388,7 +388,7 @@ class TestContours:
     def test_levels_are_round_and_inside(self):
         spans = np.linspace(2.13, 2.31, 9), np.linspace(-5.0, 7.0, 4), np.geomspace(1e-9, 3e4, 40), np.geomspace(2.0, 500.0, 7)
         for values in spans:
-            found, log = study_contours.levels(values)
+            found, log = contour_lines.levels(values)
             assert 1 <= len(found) <= 10 and (np.diff(found) > 0).all()
             assert values.min() < found[0] and found[-1] < values.max()
             assert log == (values.min() > 0 and values.max() > 50 * values.min())
@@ -396,7 +396,7 @@ class TestContours:
     def test_crosses_of_many_cases_stand_for_blocks(self):
         bad = np.zeros((90, 50), dtype=bool)
         bad[:40], bad[77, 33] = True, True
-        x, y = study_contours._points(np.arange(50.0), np.arange(90.0), bad)
+        x, y = contour_lines.crosses(np.arange(50.0), np.arange(90.0), bad)
         assert len(x) == 10 * 17 + 1 and bad[y.astype(int), x.astype(int)].all()
         assert (33.0, 77.0) in set(zip(x, y, strict=True))
 

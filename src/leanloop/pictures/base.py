@@ -7,6 +7,7 @@ import re
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
+from itertools import pairwise
 from typing import TYPE_CHECKING, Any
 from xml.sax.saxutils import escape
 
@@ -128,12 +129,19 @@ def legend_below(figure: Figure, handles: list[Any], columns: int = 3) -> None:
     room = figure.get_figwidth() / MM - 6
 
     def width(count: int) -> float:
-        # filled column by column; a handle and its spaces, then the text
-        rows = -(-len(letters) // count)
-        return sum(18 + 1.5 * max(letters[place : place + rows]) for place in range(0, len(letters), rows))
+        # filled column by column, the first ones longer by one where they do not come out even
+        rows, longer = divmod(len(letters), count)
+        starts = [place * rows + min(place, longer) for place in range(count + 1)]
+        # a handle and its spaces, then the text
+        return sum(18 + 1.5 * max(letters[start:end]) for start, end in pairwise(starts))
 
     fit = next((count for count in range(min(columns, len(letters)), 1, -1) if width(count) <= room), 1)
     legend = figure.legend(handles=handles, loc="outside lower center", ncols=fit)
+    with quiet():
+        while fit > 1 and legend.get_window_extent().width > room * MM * figure.dpi:  # letters wider than most
+            legend.remove()
+            fit -= 1
+            legend = figure.legend(handles=handles, loc="outside lower center", ncols=fit)
     legend.set_gid("legend")
     _lengthen(figure, 4.4 * max(0, -(-len(letters) // fit) - 2))
 

@@ -9,6 +9,10 @@ from typing import TYPE_CHECKING
 from leanloop.pictures import (
     base,
     convergence,
+    designs_columns,
+    designs_contours,
+    designs_margins,
+    designs_pareto,
     drawing,
     profiles,
     stage_diagram,
@@ -38,6 +42,13 @@ OF_STUDY = (
     ("variance", "Where the spread comes from", tornado.variance),
     ("tornado", "What matters most", tornado.figures),
     ("buildup", "Build-up in the lean solvent", study_buildup.figures),
+)
+
+OF_DESIGNS = (  # file, place in the report, caption
+    ("contours", "designs", "What designs take", designs_contours.figures),
+    ("pareto", "designs", "Designs that none betters", designs_pareto.figures),
+    ("columns", "chosen", "Columns of the chosen design", designs_columns.figures),
+    ("margins", "margins", "What margins cost", designs_margins.figures),
 )
 
 
@@ -120,12 +131,42 @@ def of_study(findings: Findings) -> list[Picture]:
     base.library()
     name, out = findings.study.name, []
     for sort, caption, figures in OF_STUDY:
-        found = figures(findings)
-        for number, figure in enumerate(found, 1):
-            of = f", {number} of {len(found)}" if len(found) > 1 else ""
-            own = f"{name}_{sort}" + (f"_{number}" if number > 1 else "")
-            out.append(Picture(own, f"studies.{name}", f"{caption}{of}", figure))
+        out += _numbered(f"{name}_{sort}", f"studies.{name}", caption, figures(findings))
     return out
+
+
+def of_designs(found: Designs) -> list[Picture]:
+    """Draw everything there is to draw of a scan of designs.
+
+    Parameters
+    ----------
+    found : Designs
+
+    Returns
+    -------
+    list of Picture
+        ``designs_contours``, ``designs_pareto``, ``designs_columns`` and ``designs_margins``, those of them that there is
+        something to show in; from the second page of a sort on with its number.
+
+    Raises
+    ------
+    MissingExtra
+        Where matplotlib is not installed.
+    """
+    base.library()
+    out = []
+    for sort, place, caption, figures in OF_DESIGNS:
+        out += _numbered(f"designs_{sort}", place, caption, figures(found))
+    return out
+
+
+def _numbered(name: str, place: str, caption: str, found: list[Figure]) -> list[Picture]:
+    """Give pages of one sort, from the second on with their number."""
+    of = f" of {len(found)}"
+    return [
+        Picture(name + (f"_{page}" if page > 1 else ""), place, caption + (f", {page}{of}" if len(found) > 1 else ""), figure)
+        for page, figure in enumerate(found, 1)
+    ]
 
 
 def files(shown: list[Picture], directory: str) -> dict[Path, str | bytes]:
@@ -155,9 +196,3 @@ def inline(shown: list[Picture]) -> dict[tuple[str, str], str]:
     shown : list of Picture
     """
     return {(item.place, item.caption): base.svg(item.figure, item.name) for item in shown}
-
-
-def of_designs(found: Designs) -> list[Picture]:
-    """Draw what there is to draw of a scan of designs."""
-    base.library()
-    return []

@@ -128,7 +128,7 @@ def label_abscissa(axes: Axes, label: str, width_mm: float) -> None:
 
 
 def finish(figure: Figure, width_mm: float) -> None:
-    """Lay a page out, and make titles and labels smaller whose letters are wider than most.
+    """Lay a page out, and make title, note and labels smaller whose letters are wider than most.
 
     Parameters
     ----------
@@ -139,7 +139,19 @@ def finish(figure: Figure, width_mm: float) -> None:
     for axes in figure.axes:
         for text in (axes._left_title, axes.xaxis.label):  # the library gives no other way to a title on the left
             squeeze(text, width_mm)
+    fit_head(figure)
     settle(figure)
+
+
+def fit_head(figure: Figure) -> None:
+    """Make title and note smaller where they are wider than the paper.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    """
+    for text in figure.texts:
+        squeeze(text, figure.get_figwidth() / MM - 4.0)
 
 
 def squeeze(text: Text, width_mm: float) -> None:
@@ -164,7 +176,7 @@ def _extent(text: Text) -> float:
         return float(text.get_window_extent().width)
 
 
-def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
+def rug(axes: Axes, places: np.ndarray, gid: str, label: str = "case not converged") -> list[Any]:
     """Mark cases without an answer by crosses on the abscissa.
 
     Parameters
@@ -172,7 +184,7 @@ def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
     axes : matplotlib.axes.Axes
     places : (n,) array
         Finite.
-    gid : str
+    gid, label : str
 
     Returns
     -------
@@ -181,7 +193,7 @@ def rug(axes: Axes, places: np.ndarray, gid: str) -> list[Any]:
     """
     if not len(places):
         return []
-    options = {"transform": axes.get_xaxis_transform(), "clip_on": False, "zorder": 5, "label": "case not converged"}
+    options = {"transform": axes.get_xaxis_transform(), "clip_on": False, "zorder": 5, "label": label}
     return axes.plot(places, np.zeros(len(places)), gid=gid, **options, **FAILED)
 
 

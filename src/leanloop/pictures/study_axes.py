@@ -11,8 +11,8 @@ from leanloop.pictures.panels import listed
 from leanloop.pictures.study_columns import constant, label, shown, written
 
 if TYPE_CHECKING:
+    from leanloop.flowsheet.sheet import Flowsheet
     from leanloop.studies.axes import Axis
-    from leanloop.studies.findings import Findings
 
 
 @dataclass(frozen=True)
@@ -37,24 +37,24 @@ class Scaled:
     note: str
 
 
-def scaled(findings: Findings, axis: Axis) -> Scaled:
+def scaled(sheet: Flowsheet, axis: Axis) -> Scaled:
     """Give an axis as it is drawn: by its first input that is a number and moves.
 
     Parameters
     ----------
-    findings : Findings
+    sheet : Flowsheet
     axis : Axis
     """
-    numbers = {key: shown(findings, key, item) for key, item in axis.values.items() if not isinstance(item, list)}
+    numbers = {key: shown(sheet, key, item) for key, item in axis.values.items() if not isinstance(item, list)}
     chosen = next((key for key, item in numbers.items() if not constant(item[np.isfinite(item)])), None)
     if chosen is None:
         chosen = next(iter(axis.values))
         values, text, log = np.arange(1.0, len(axis) + 1), f"place in the list of {chosen}", False
     else:
-        values, text = numbers[chosen], label(findings, chosen)
+        values, text = numbers[chosen], label(sheet, chosen)
         log = axis.log and bool(np.nanmin(values) > 0)
     others = [
-        f"{key} from {written(findings, key, item[0])} to {written(findings, key, item[-1])}" if key in numbers else key
+        f"{key} from {written(sheet, key, item[0])} to {written(sheet, key, item[-1])}" if key in numbers else key
         for key, item in axis.values.items()
         if key != chosen
     ]
@@ -62,12 +62,12 @@ def scaled(findings: Findings, axis: Axis) -> Scaled:
     return Scaled(chosen, text, values, log, note)
 
 
-def held(findings: Findings, axis: Axis, place: int) -> str:
+def held(sheet: Flowsheet, axis: Axis, place: int) -> str:
     """Write at what value an axis stays.
 
     Parameters
     ----------
-    findings : Findings
+    sheet : Flowsheet
     axis : Axis
     place : int
         Of the value on the axis.
@@ -77,7 +77,7 @@ def held(findings: Findings, axis: Axis, place: int) -> str:
     str
     """
     texts = [
-        f"{key} = {written(findings, key, item[place])}" if not isinstance(item, list) else f"{key}: list {place + 1}"
+        f"{key} = {written(sheet, key, item[place])}" if not isinstance(item, list) else f"{key}: list {place + 1}"
         for key, item in axis.values.items()
     ]
     return listed(texts, 2, 100)

@@ -103,7 +103,7 @@ def _name(findings: Findings, case: int, inputs: list[str]) -> str:
     row = _row(findings, case)
     if row is None or not inputs:
         return f"case {case}"
-    values = [short(float(shown(findings, key, [findings.cases[key][row]])[0]), 4) for key in inputs[:MOST_INPUTS]]
+    values = [short(float(shown(findings.study.sheet, key, [findings.cases[key][row]])[0]), 4) for key in inputs[:MOST_INPUTS]]
     return shortened(f"case {case}: " + ", ".join(values), 60)
 
 
@@ -116,9 +116,10 @@ def _page(
     single = len(cases) == 1
     apart = max(ends) / LOG_FROM > min(ends) > 0
     count = len({case for case in findings.curves["case"]})
+    labels = [label(findings.study.sheet, key) for key in inputs]
     note = joined(
         f"{len(cases)} of {count} cases are drawn" if len(cases) < count else "",
-        "" if single or not inputs else "lines named by " + listed([label(findings, key) for key in inputs], MOST_INPUTS, 80),
+        "" if single or not inputs else "lines named by " + listed(labels, MOST_INPUTS, 80),
         "the solvent as one stirred tank" + ("; the steady level is dashed" if single else ""),
     )
     with style():

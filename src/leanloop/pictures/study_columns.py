@@ -14,6 +14,7 @@ from leanloop.pictures.panels import listed
 from leanloop.pictures.words import shortened
 
 if TYPE_CHECKING:
+    from leanloop.flowsheet.sheet import Flowsheet
     from leanloop.studies.findings import Findings
 
 CONSTANT = 1e-9  # of the largest value: what varies less does not
@@ -41,12 +42,12 @@ class Column:
     clean: np.ndarray | None = None
 
 
-def label(findings: Findings, address: str) -> str:
+def label(sheet: Flowsheet, address: str) -> str:
     """Give an address and the unit in which it is read.
 
     Parameters
     ----------
-    findings : Findings
+    sheet : Flowsheet
     address : str
         Of an input or of a column.
 
@@ -54,16 +55,16 @@ def label(findings: Findings, address: str) -> str:
     -------
     str
     """
-    unit = of_column(findings.study.sheet, address).unit
+    unit = of_column(sheet, address).unit
     return f"{address}, {unit}" if unit else address
 
 
-def written(findings: Findings, address: str, value: float) -> str:
+def written(sheet: Flowsheet, address: str, value: float) -> str:
     """Write a value in the unit in which it is read.
 
     Parameters
     ----------
-    findings : Findings
+    sheet : Flowsheet
     address : str
     value : float
         SI.
@@ -72,16 +73,16 @@ def written(findings: Findings, address: str, value: float) -> str:
     -------
     str
     """
-    scale = of_column(findings.study.sheet, address)
+    scale = of_column(sheet, address)
     return f"{short(float(scale.shown(value)), 4)} {scale.unit}".strip()
 
 
-def shown(findings: Findings, address: str, values: Any) -> np.ndarray:
+def shown(sheet: Flowsheet, address: str, values: Any) -> np.ndarray:
     """Give values in the unit in which they are read, NaN for what is no number to draw.
 
     Parameters
     ----------
-    findings : Findings
+    sheet : Flowsheet
     address : str
     values : (M,) array_like
         SI.
@@ -91,7 +92,7 @@ def shown(findings: Findings, address: str, values: Any) -> np.ndarray:
     (M,) array
     """
     with np.errstate(all="ignore"):
-        return tame(of_column(findings.study.sheet, address).shown(tame(values)))
+        return tame(of_column(sheet, address).shown(tame(values)))
 
 
 def constant(values: np.ndarray) -> bool:
@@ -130,15 +131,15 @@ def recorded(findings: Findings) -> tuple[list[Column], str]:
     for name in dict.fromkeys(names):
         raw = np.asarray(findings.cases[name], dtype=float)
         # a bleed that a limit needs has its own solve, and its own status
-        values = shown(findings, name, raw if ".bleed_needed." in name else np.where(good, raw, np.nan))
+        values = shown(study.sheet, name, raw if ".bleed_needed." in name else np.where(good, raw, np.nan))
         clean = findings.cases.get(f"clean.{name}")
-        clean = None if clean is None else shown(findings, name, np.where(good, np.asarray(clean, dtype=float), np.nan))
+        clean = None if clean is None else shown(study.sheet, name, np.where(good, np.asarray(clean, dtype=float), np.nan))
         if clean is not None and not np.isfinite(clean).any():
             clean = None
         if constant(known(values)) and (clean is None or constant(known(clean))):
             (same if len(known(values)) else empty).append((name, values))
         else:
-            out.append(Column(name, label(findings, name), values, clean))
+            out.append(Column(name, label(study.sheet, name), values, clean))
     said = []
     if same and len(findings) > 1:
         units = [of_column(study.sheet, name).unit for name, _ in same]

@@ -46,8 +46,8 @@ def figures(findings: Findings) -> list[Figure]:
     if len(moving) != 1 or len(findings) != findings.study.cases.count:
         return []
     columns, left_out = recorded(findings)
-    axis = scaled(findings, moving[0])
-    fixed = [held(findings, item, 0) for item in findings.study.cases.axes if len(item) == 1]
+    axis = scaled(findings.study.sheet, moving[0])
+    fixed = [held(findings.study.sheet, item, 0) for item in findings.study.cases.axes if len(item) == 1]
     failed = tally(findings)
     if not findings.converged.all():
         failed += ": crosses on the abscissa"
@@ -86,14 +86,23 @@ def _lines(axes: Axes, across: np.ndarray, column: Column, order: np.ndarray) ->
     ):
         if values is not None:
             own = values[order]
-            lines += axes.plot(across, own, gid=gid, label=label, markevery=_markers(own), zorder=3, **look)
+            lines += axes.plot(across, own, gid=gid, label=label, markevery=markers(own), zorder=3, **look)
     values = known(column.values, *([] if column.clean is None else [column.clean]))
     fit_axis(axes.yaxis, values, wants_log(values))
     return lines
 
 
-def _markers(values: np.ndarray) -> list[int]:
-    """Give where markers stand: not too many of them, and at each point that has no neighbour to be joined to."""
+def markers(values: np.ndarray) -> list[int]:
+    """Give where markers stand: not too many of them, and at each point that has no neighbour to be joined to.
+
+    Parameters
+    ----------
+    values : (n,) array
+
+    Returns
+    -------
+    list of int
+    """
     there = np.isfinite(values)
     beside = np.zeros(len(values), dtype=bool)
     beside[1:] |= there[:-1]

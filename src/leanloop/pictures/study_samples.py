@@ -44,7 +44,7 @@ def figures(findings: Findings) -> list[Figure]:
     drawn = [key for key in findings.study.cases.sampled if key in findings.cases]
     if not drawn or not len(findings):
         return []
-    inputs = {key: shown(findings, key, findings.cases[key]) for key in drawn}
+    inputs = {key: shown(findings.study.sheet, key, findings.cases[key]) for key in drawn}
     columns, left_out = recorded(findings)
     rows = _some(np.arange(len(findings)), MOST_POINTS)
     failed = tally(findings)
@@ -107,7 +107,7 @@ def _page(
             strength = found[follows]
             words = f"rank correlation {strength:.2f}" if np.isfinite(strength) else "no correlation known"
             title_panel(axes, column.label, width, words)
-            label_abscissa(axes, label(findings, follows), width)
+            label_abscissa(axes, label(findings.study.sheet, follows), width)
         if handles:
             legend_below(paper, handles)
         finish(paper, width)

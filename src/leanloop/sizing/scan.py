@@ -92,7 +92,7 @@ def scan(sheet: Flowsheet, sizing: Sizing) -> Designs:
     moves = [
         place
         for place in range(3)
-        if np.isfinite(objectives[found.good, place]).all() and np.ptp(objectives[found.good, place]) > 0
+        if found.good.any() and np.isfinite(objectives[found.good, place]).all() and np.ptp(objectives[found.good, place]) > 0
     ]
     objectives = objectives[:, moves] if moves and found.good.any() else objectives[:, 2:]
     found.costs = costs.costs(found) if sizing.prices else {}
