@@ -225,3 +225,8 @@ def written(directory):
     """Everything that the finish writes, by name."""
     names = sorted(item for item in Path(directory).iterdir() if item.suffix not in (".sqlite", ".lock") and item.is_file())
     return {item.name: item.read_bytes() for item in names}
+
+
+def listed(directory):
+    """Names of what a study writes, its pictures left out."""
+    return sorted(item.name for item in Path(directory).iterdir() if item.suffix not in (".png", ".svg"))

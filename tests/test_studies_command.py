@@ -43,7 +43,7 @@ def test_a_study_end_to_end(tmp_path):
     code, out, err = runs.run(["study", file, "flows", "--out", tmp_path / "deep" / "out"])
     assert code == 0 and err == ""
     place = tmp_path / "deep" / "out"
-    assert sorted(item.name for item in place.iterdir()) == ["flows.csv", "flows.sqlite", "flows.txt"]
+    assert runs.listed(place) == ["flows.csv", "flows.sqlite", "flows.txt"]
     assert out == (place / "flows.txt").read_text(encoding="utf-8")
     assert "200 cases, all converged" in out and "Cautions" in out and "licensed engineer" in out
     rows = list(csv.DictReader(io.StringIO((place / "flows.csv").read_text())))
@@ -61,10 +61,10 @@ def test_all_studies_where_none_is_named(tmp_path):
     code, out, err = runs.here(["study", file, "--out", tmp_path / "out"])
     assert code == 0 and err == ""
     names = [f"{name}.{kind}" for name in ("flows", "steep") for kind in ("csv", "sqlite", "txt")]
-    assert sorted(item.name for item in (tmp_path / "out").iterdir()) == names
+    assert runs.listed(tmp_path / "out") == names
     assert out == "\n".join((tmp_path / "out" / f"{name}.txt").read_text() for name in ("flows", "steep"))
     code, _, _ = runs.here(["study", file, "steep", "--out", tmp_path / "one"])
-    assert sorted(item.name for item in (tmp_path / "one").iterdir()) == names[3:]
+    assert runs.listed(tmp_path / "one") == names[3:]
 
 
 def test_cases_that_are_not_reached_give_status_one_and_are_kept(tmp_path):

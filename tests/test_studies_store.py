@@ -332,7 +332,7 @@ def refused(made, arguments, word):
     assert (code, out) == (2, "")
     one_line(err, "flows.sqlite", f"holds results of {word}", "name another directory")
     assert (directory / "out" / "flows.sqlite").read_bytes() == content and runs.written(directory / "out") == before
-    assert sorted(item.name for item in (directory / "out").iterdir()) == ["flows.csv", "flows.sqlite", "flows.txt"]
+    assert runs.listed(directory / "out") == ["flows.csv", "flows.sqlite", "flows.txt"]
 
 
 @pytest.mark.parametrize("what", CHANGES)
