@@ -56,6 +56,7 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
     hold = _hold(sheet, raw.get("hold"), context)
     axes, stages = _axes(sheet, raw, context)
     feeds = _feeds(sheet, raw.get("cases"), context)
+    _note_settled(sheet, hold, axes, feeds, context)
     columns = {
         name: item
         for name, own in table("sizing.columns", raw.get("columns"), context).items()
@@ -145,6 +146,23 @@ def _axes(sheet: Flowsheet, raw: Mapping[str, Any], context: Context) -> tuple[t
     if np.prod([float(len(axis)) for axis in axes]) > MOST_DESIGNS:
         context.fault("sizing", f"makes more than {MOST_DESIGNS} designs", "give fewer values")
     return tuple(axes), tuple(scanned)
+
+
+def _note_settled(
+    sheet: Flowsheet, hold: tuple[str, ...], axes: tuple[Axis, ...], feeds: Mapping[str, Mapping[str, Any]], context: Context
+) -> None:
+    """Note inputs that are changed though requirements settle them, or belong to requirements that do not hold."""
+    freed = {item.free: name for name, item in sheet.requirements.items() if name in hold}
+    loose = {item.target: name for name, item in sheet.requirements.items() if name not in hold}
+    changed = [(key, "sizing.change") for axis in axes for key in axis.values]
+    changed += [(key, f"sizing.cases.{shown_key(name)}") for name, own in feeds.items() for key in own]
+    for key, where in changed:
+        if key in freed:
+            remedy = "change other inputs, or leave it out of hold"
+            context.fault(f"{where}.{shown_key(key)}", f"is freed by requirement {freed[key]}", remedy)
+        elif key in loose:
+            remedy = f'add "{loose[key]}" to hold, or leave it as it is'
+            context.fault(f"{where}.{shown_key(key)}", f"is of requirement {loose[key]}, which is not held", remedy)
 
 
 def _feeds(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, dict[str, Any]]:
