@@ -240,7 +240,7 @@ def _column(
 
 
 def _key(sheet: Flowsheet, name: str, hold: tuple[str, ...]) -> str | None:
-    """Give the component of a requirement that the column distributes, else the only one, else the last."""
+    """Give the component of a requirement that the column distributes, else the first of its table."""
     names = sheet.units[name].model_names
     for requirement in hold:
         parts = sheet.requirements[requirement].address.split(".") if requirement in sheet.requirements else []
@@ -281,17 +281,42 @@ def _packing(words: Mapping[str, Any], numbers: dict[str, float], where: str, co
     if lacks[way]:
         can = [key for key, lack in lacks.items() if not lack]
         context.fault(f"{where}.flood_by", f"{way} has no constants of {found.name}", f"take one of {', '.join(can) or 'none'}")
-    materials = {"metal": "steel", "plastic": "polyethylene"}
+    _drop(found, words, numbers, where, context)
+    _films(found, words, numbers, where, context)
+    return found
+
+
+def _drop(found: packings.Packing, words: Mapping[str, Any], numbers: Mapping[str, float], where: str, context: Context) -> None:
+    """Note that a pressure drop is asked for that no constants give."""
+    billet = found.billet_schultes
+    lacks = {
+        "billet_schultes": billet is None or not np.isfinite([billet.pressure, billet.holdup, billet.void_fraction]).all(),
+        "stichlmair": found.stichlmair is None, "robbins": not np.isfinite(found.kister_factor),
+    }  # fmt: skip
+    can = ", ".join(key for key, lack in lacks.items() if not lack)
+    way = words.get("drop_by", "")
+    if way and lacks[way]:
+        remedy = f"take {can}" if can else "leave it out"
+        context.fault(f"{where}.drop_by", f"{way} has no constants of {found.name}", remedy)
+    elif "most_drop" in numbers and not way and lacks["billet_schultes"] and lacks["stichlmair"]:
+        remedy = f'add drop_by = "{can}", or leave it out' if can else "leave it out, or take another packing"
+        context.fault(f"{where}.most_drop", f"no pressure drop of {found.name} is known", remedy)
+
+
+def _films(found: packings.Packing, words: Mapping[str, Any], numbers: Mapping[str, float], where: str, context: Context) -> None:
+    """Note what film coefficients lack."""
+    materials, billet = {"metal": "steel", "plastic": "polyethylene"}, found.billet_schultes
     if words.get("transfer") == "onda":
         if "critical_tension" not in numbers and materials.get(found.material, found.material) not in films.CRITICAL_TENSIONS:
             context.fault(f"{where}.critical_tension", "entry is missing", 'add critical_tension = "60 mN/m", of the material')
         if not np.isfinite(found.size):
             context.fault(f"{where}.nominal_size", "entry is missing", 'add nominal_size = "25 mm"')
+        if not np.isfinite(found.specific_area):
+            context.fault(f"{where}.specific_area", "entry is missing", f'add specific_area = "100 m2/m3", of {found.name}')
     if words.get("transfer") == "billet_schultes" and (
-        found.billet_schultes is None or not np.isfinite([found.billet_schultes.liquid, found.billet_schultes.gas]).all()
+        billet is None or not np.isfinite([billet.liquid, billet.gas, billet.holdup, billet.void_fraction]).all()
     ):
         context.fault(f"{where}.transfer", f"billet_schultes has no constants of {found.name}", "take onda, or give hetp")
-    return found
 
 
 def _height(sheet: Flowsheet, name: str, words: Mapping[str, Any], numbers: dict[str, float], where: str, context: Context) -> None:
