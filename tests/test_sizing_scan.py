@@ -482,9 +482,11 @@ class TestChoice:
     PRICES = {"steam": 0.03, "solvent": 2.0, "column": 15000.0, "hours": 7000.0, "yearly": 0.15}
 
     def priced(self, tmp_path, **more):
-        columns = {"wash": {"internals": "packing", "packing": "pall_metal_50", "hetp": 0.7, "gas_viscosity": 1.8e-5,
-                            "liquid_viscosity": 5e-3, "liquid_density": 860.0},
-                   "strip": {"internals": "trays", "efficiency": 0.4, "surface_tension": 0.02, "liquid_density": 780.0}}  # fmt: skip
+        columns = {
+            "wash": {"internals": "packing", "packing": "pall_metal_50", "hetp": 0.7, "gas_viscosity": 1.8e-5,
+                     "liquid_viscosity": 5e-3, "liquid_density": 860.0},
+            "strip": {"internals": "trays", "efficiency": 0.4, "surface_tension": 0.02, "liquid_density": 780.0},
+        }  # fmt: skip
         sheet = vent(tmp_path)
         cases = {"low": {"feeds.vent.flow": 0.7 * sheet.numbers["feeds.vent.flow"]}}
         change = {"feeds.steam.flow": [0.02, 0.025]}
