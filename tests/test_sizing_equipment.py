@@ -320,6 +320,16 @@ class TestPacking:
         assert item.diameter_m[0] == close(self.sized()[1].diameter_m[0], rel=1e-9)
         assert np.isnan(item.drop_Pa[0, 0])
 
+    def test_height_of_the_flowsheet(self):
+        """A column of given height and HETP is packed with that HETP."""
+        sheet = column(properties=PROPERTIES)
+        unit = {key: item for key, item in sheet.given["units"]["column"].items() if key != "stages"}
+        sheet = sheet.rebuilt(units={"column": {**unit, "height": 4.2, "hetp": 0.7}})
+        entries = {key: value for key, value in PACKED.items() if key != "hetp"}
+        _, item = sized(entries, sheet)
+        assert item.hetp_m[0, 0] == close(0.7) and item.height_m[0] == close(4.2)
+        assert item.diameter_m[0] == close(self.sized()[1].diameter_m[0], rel=1e-9)
+
     def test_benitez_illustration_4_4(self):
         """Ethanol from carbon dioxide into water, 50 mm metal rings: 58.3 % of flood at 0.7368 m (recomputed), 0.738 m printed."""
         kmol_h = 1000 / 3600

@@ -16,6 +16,7 @@ from scipy.optimize import brentq
 import leanloop
 from leanloop.cli import main
 from leanloop.sizing import choice
+from leanloop.sizing.effects import flood_effects, solvent_effects
 from leanloop.textfile.writer import text as written
 
 FLOWSHEETS = Path(__file__).parents[1] / "flowsheets"
@@ -519,6 +520,14 @@ class TestChoice:
         other = self.priced(tmp_path, choose="knee")
         assert other.chosen == other.knee
 
+    def test_what_cannot_be_priced_is_told(self, tmp_path):
+        """A price of what is not calculated would leave no design with a cost."""
+        sheet = vent(tmp_path, edits=[('oil = { molar_mass = "250 g/mol", stays', 'oil = { stays')])
+        with pytest.raises(leanloop.InputError) as caught:
+            leanloop.size(sheet, stages={"wash": [8, 9]}, prices={"heat": 1e-8, "cooling": 1e-9, "solvent": 2.0, "steam": 0.03})
+        told = [fault.address for fault in caught.value.faults]
+        assert told == ["sizing.prices.heat", "sizing.prices.cooling", "components.oil.molar_mass"]
+
     def test_heat_cooling_and_power_have_their_price(self):
         """Sums of duties from outside, each with its sign; what an exchanger passes on costs nothing."""
         sheet = leanloop.read(FLOWSHEETS / "sulfur_dioxide_loop.toml")
@@ -537,6 +546,38 @@ class TestChoice:
         area = first("swap", "UA_W_K") / 800.0
         assert found.areas["swap"][0] == close(area, rel=1e-12)
         assert found.costs["total"][0] == close(found.costs["operation"][0] + 0.5 * 400 * area, rel=1e-12)
+
+
+class TestEffects:
+    """What margins cost, in the report."""
+
+    def test_flood(self, tmp_path):
+        strip = {"internals": "trays", "efficiency": 0.4, "surface_tension": 0.02, "liquid_density": 780.0, "downcomer": 0.1}
+        columns = {"strip": strip}
+        found = leanloop.size(vent(tmp_path), stages={"wash": [9, 10], "strip": [7]}, columns=columns)
+        told = flood_effects(found)
+        wide, volume = found.columns["strip"].diameter_m[found.chosen], found.columns["strip"].volume_m3[found.chosen]
+        assert [item[:2] for item in told] == [("strip", part) for part in (0.6, 0.7, 0.8, 0.9)]
+        for _, part, width, whole in told:
+            assert width == close(wide * math.sqrt(0.8 / part), rel=1e-12) and whole == close(volume * 0.8 / part, rel=1e-12)
+
+    def test_solvent(self, tmp_path):
+        """Of the designs that keep to so many times the least solvent, the one of fewest stages."""
+        found = leanloop.size(vent(tmp_path), stages={"wash": [6, 14], "strip": [5, 9]})
+        rate, total = found.freed[OIL][:, 0], found.inputs[WASH] + found.inputs[STRIP]
+        told = solvent_effects(found)
+        assert len(told) > 2 and all(str(design) in str(found) for _, design in told)
+        for times, design in told:
+            within = found.good & (rate <= times * rate[found.good].min())
+            assert within[design] and total[design] == total[within].min()
+            assert rate[design] == rate[within & (total == total[design])].min()
+
+    def test_column_without_answer_keeps_its_reason(self, tmp_path):
+        """A gas that is heavier than the liquid floods at no velocity; the design is none, and says why."""
+        columns = {"strip": {"internals": "trays", "efficiency": 0.4, "surface_tension": 0.02, "liquid_density": 0.5}}
+        found = leanloop.size(vent(tmp_path), stages={"wash": [9], "strip": [7]}, columns=columns)
+        assert not found.good.any() and found.statuses == ["converged"] and "strip could not be sized" in found.reasons[0]
+        assert "strip could not be sized" in str(found) and found.chosen is None
 
 
 # --- as files
@@ -633,3 +674,20 @@ class TestMatch:
         measured = sheet.rebuilt(requirements=None).solve({STRIP: 5})[quantity]
         found = leanloop.size(sheet, match={"strip": {"quantity": quantity, "equals": measured}})
         assert found.matched["strip"]["stages"] == close(5, rel=1e-6)
+
+    def test_efficiency_is_freed(self, tmp_path):
+        """A Murphree efficiency and a multiplier of K that made a measured figure come back."""
+        feeds = {"inert": 8.0, "a": 0.4}, {"oil": 5.0, "a": 0.002}
+        ways = (
+            ("efficiency = 0.62\n", "units.column.efficiency", 0.62, 1.0),
+            ("", "equilibrium.stage.a.multiplier", 1.23, 1.5),
+        )
+        for entry, address, value, most in ways:
+            model = scenes.constant(0.45).replace("}", f", multiplier = {value if not entry else 1.0} }}")
+            text = scenes.column("absorber", 6, ["a"], *feeds, {"a": model}).replace("stages = 6\n", "stages = 6\n" + entry)
+            measured = scenes.read(tmp_path, text).solve()["units.column.results.removal.a"]
+            text = text.replace(str(value), "0.9")
+            text += f'[requirements.plant]\nquantity = "units.column.results.removal.a"\nequals = {measured!r}\n'
+            text += f'free = "{address}"\nbetween = [0.3, {most}]\n[sizing]\nstages = {{ column = [6, 7] }}\n'
+            found = leanloop.size(scenes.read(tmp_path, text))
+            assert found.freed[address][0, 0] == close(value, rel=1e-7)

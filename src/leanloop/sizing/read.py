@@ -64,6 +64,7 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
     }
     match = read_matches(sheet, raw.get("match"), context)
     prices = read_values(spec.PRICES, raw.get("prices", {}), "sizing.prices", context).numbers
+    _note_unpriceable(sheet, prices, context)
     exchangers = _exchangers(sheet, raw.get("exchangers"), context)
     choose = raw.get("choose")
     if choose is not None and (not isinstance(choose, str) or choose not in spec.CHOICES):
@@ -192,6 +193,29 @@ def _feeds(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, dict[str, 
                 if value is not None:
                     out[name][key] = float(value)
     return out
+
+
+def _note_unpriceable(sheet: Flowsheet, prices: Mapping[str, float], context: Context) -> None:
+    """Note prices of what is not calculated: no design would have a cost."""
+    for key in ("heat", "cooling"):
+        if key in prices and sheet.heat is None:
+            remedy = "leave it out, or add [heat_data.NAME] and adiabatic columns"
+            context.fault(f"sizing.prices.{key}", "no heat is balanced", remedy)
+    priced: list[str] = []
+    if "solvent" in prices:
+        priced += [key for unit in sheet.units.values() if unit.kind == "makeup" for key in unit.values.group("hold")]
+    if "steam" in prices:
+        gases = [unit.inlets["gas_in"] for unit in sheet.units.values() if _fed_with_gas(unit)]
+        for gas in gases:
+            priced += [name for name, there in zip(sheet.components.names, sheet.plan.present[gas], strict=True) if there]
+    for name in dict.fromkeys(priced):
+        if sheet.components[name].molar_mass is None:
+            context.fault(f"components.{name}.molar_mass", "entry is missing", "steam and solvent are priced by mass")
+
+
+def _fed_with_gas(unit: Any) -> bool:
+    """Tell whether a unit is a stripper that is fed with gas."""
+    return getattr(unit, "cleans", "") == "liquid" and "gas_in" in unit.inlets
 
 
 def _exchangers(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, float]:
