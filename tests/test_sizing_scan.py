@@ -251,6 +251,23 @@ class TestDesigns:
         assert not found.front[failed].any() and found.chosen not in failed
         assert all(str(word) in str(found) for word in set(table["status"]) - {"converged"})
 
+    @pytest.mark.parametrize("given, expected", [
+        ([6, 8], [6, 7, 8]), ([8, 6], [8, 7, 6]), ([7, 7], [7]), ([7], [7]), ([6, 9, 12], [6, 9, 12]),
+        ({"from": 6, "to": 12, "step": 3}, [6, 9, 12]), ({"from": 6, "to": 12, "count": 3}, [6, 9, 12]),
+    ])  # fmt: skip
+    def test_ways_to_give_stages(self, tmp_path, given, expected):
+        """Two numbers are the ends of a range, more are values; columns make a grid, the first slowest."""
+        found = leanloop.size(vent(tmp_path), stages={"wash": given, "strip": [7, 8]})
+        assert found.inputs[WASH].tolist() == [item for item in expected for _ in (7, 8)]
+        assert found.inputs[STRIP].tolist() == [7, 8] * len(expected)
+        assert found.stages["wash"].tolist() == found.inputs[WASH].tolist()
+
+    def test_more_designs_than_are_taken(self, tmp_path):
+        with pytest.raises(leanloop.InputError) as caught:
+            leanloop.size(vent(tmp_path), stages={"wash": [1, 60], "strip": [1, 60]}, change={"feeds.steam.flow": {
+                "from": 0.01, "to": 0.02, "count": 100}})  # fmt: skip
+        assert [fault.address for fault in caught.value.faults] == ["sizing"]
+
     def test_one_design_of_the_file(self, tmp_path):
         """Nothing scanned: the columns of the file are equipped as they stand."""
         columns = {"strip": {"internals": "trays", "efficiency": 0.5, "surface_tension": 0.02, "liquid_density": 780.0}}
@@ -407,6 +424,22 @@ class TestWritten:
         status, own = self.again(tmp_path, capsys)
         assert status == 0
         assert own["streams"]["topped_lean"]["mol_s"]["oil"] == close(found["designs"][OIL][found["chosen"]], rel=1e-12)
+
+    def test_everything_else_stays(self, tmp_path, capsys):
+        """Groups, lists, nested tables, quotes and letters of any script are those of the file; questions answered are left out."""
+        text = OF_VENT.replace(OF_VENT.splitlines()[0], 'title = \'Größe "x" \\ 水\'')
+        text = text.replace("[components]", '[groups]\nburned = ["toluene", "steam"]\n[loop]\ntears = ["rich"]\n[components]')
+        assert self.size(tmp_path, capsys, text + self.SIZING + '[properties.oil]\nliquid_density = "860 kg/m3"\n')[0] == 0
+        before, after = (
+            tomllib.loads((tmp_path / name).read_text(encoding="utf-8")) for name in ("own.toml", "design.toml")
+        )
+        assert after["title"].startswith(before["title"]) and "sizing" not in after
+        for key in ("groups", "loop", "components", "equilibrium", "requirements", "properties"):
+            assert after[key] == before[key]
+        for name, unit in before["units"].items():
+            changed = {key for key in unit if unit[key] != after["units"][name][key]}
+            assert changed <= {"stages", "hold"} and set(unit) == set(after["units"][name])
+        assert self.again(tmp_path, capsys)[0] == 0
 
 
 KEYS = st.text(st.characters(exclude_categories=["Cs"]), max_size=8)
