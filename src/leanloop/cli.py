@@ -138,7 +138,8 @@ def _size(arguments: argparse.Namespace) -> int:
         sys.stderr.write(f"{arguments.file}: no design could be chosen: {arguments.write} is not written\n")
     elif arguments.write:
         inputs = {key: (value, sheet.sorts[key]) for key, value in found.settings(found.chosen).items()}
-        files[Path(arguments.write)] = with_inputs(arguments.file, arguments.settings, inputs, f"design {found.chosen}")
+        title = f"design {found.chosen}"
+        files[Path(arguments.write)] = with_inputs(arguments.file, arguments.settings, inputs, title, found.sheet.requirements)
     tables.put(files, arguments.tables, arguments.pictures)
     sys.stdout.write(json.text(found.to_dict()) if arguments.json == "-" else written)
     return REACHED if found.good.any() and found.chosen is not None else NOT_REACHED

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from leanloop.flowsheet.scales import of_column, of_input
+from leanloop.flowsheet.scales import Scale, of_column, of_input
 from leanloop.output.content import Listing, Section, Sentence, Table, number, printable
 from leanloop.output.content_heat import NO_HEAT, heat_cautions
 from leanloop.output.content_report import CAUTIONS, written
@@ -90,8 +90,8 @@ def _ranked(found: Designs) -> list[Section]:
     shown = np.array([*shown, *dict.fromkeys(marked)])
     names = list(found.stages)
     further = [key for key in found.inputs if key not in [f"units.{name}.stages" for name in names]]
-    units = {key: of_input(found.sheet, key).unit for key in further}
-    shown_further = [f"{key}, {unit}" if unit else key for key, unit in units.items()]
+    scales = {key: of_input(found.sheet, found.renamed.get(key, key)) for key in further}
+    shown_further = [f"{key}, {scale.unit}" if scale.unit else key for key, scale in scales.items()]
     head = ["design", *(f"stages {name}" for name in names), *shown_further, "kmol/h solvent"]
     head += ["kmol/h stripping gas"] if np.any(found.stripping > 0) else []
     boiled = found.energy is not found.stripping
@@ -103,7 +103,7 @@ def _ranked(found: Designs) -> list[Section]:
     rows = []
     for design in shown:
         row = [str(design), *(str(found.stages[name][design]) for name in names)]
-        row += [number(of_input(found.sheet, key).shown(float(found.inputs[key][design]))) for key in further]
+        row += [_cell(found.inputs[key][design], scale) for key, scale in scales.items()]
         row.append(number(3.6 * found.circulation[design]))
         row += [number(3.6 * found.stripping[design])] if np.any(found.stripping > 0) else []
         row += [number(found.energy[design] / 1e3)] if boiled else []
@@ -122,6 +122,10 @@ def _ranked(found: Designs) -> list[Section]:
     return [Section(title, [Table(head, rows)], place="designs")]
 
 
+def _cell(value: Any, scale: Scale) -> str:
+    return str(value) if isinstance(value, list) else number(scale.shown(float(value)))
+
+
 def _chosen(found: Designs) -> list[Section]:
     design = found.chosen
     if design is None:
@@ -129,8 +133,8 @@ def _chosen(found: Designs) -> list[Section]:
     sheet, feeds = found.sheet, list(found.sizing.feeds)
     lines: list[Any] = []
     for key, values in found.inputs.items():
-        value = values[design]
-        shown = str(value) if isinstance(value, (list, np.integer, int)) else written(of_input(sheet, key), float(value))
+        value, scale = values[design], of_input(sheet, found.renamed.get(key, key))
+        shown = str(value) if isinstance(value, (list, np.integer, int)) else written(scale, float(value))
         lines.append(Sentence(f"{key} = {shown}"))
     for address, values in found.freed.items():
         per_feed = ", ".join(

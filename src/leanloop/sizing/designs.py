@@ -32,6 +32,8 @@ class Designs:
     result : Result
         Cases are designs times feed cases, the feed cases fastest.
     columns : dict of str to Equipped
+    renamed : dict of str to str
+        Addresses of limits that are held as equalities, by those that the file has for them.
 
     Attributes
     ----------
@@ -48,10 +50,11 @@ class Designs:
     """
 
     def __init__(
-        self, sheet: Flowsheet, sizing: Sizing, inputs: dict[str, Any], count: int, result: Result, columns: dict[str, Equipped]
-    ) -> None:
+        self, sheet: Flowsheet, sizing: Sizing, inputs: dict[str, Any], count: int, result: Result, columns: dict[str, Equipped],
+        renamed: dict[str, str],
+    ) -> None:  # fmt: skip
         self.sheet, self.sizing, self.inputs, self.count = sheet, sizing, inputs, count
-        self.result, self.columns = result, columns
+        self.result, self.columns, self.renamed = result, columns, renamed
         self.costs: dict[str, np.ndarray] = {}
         self.front = np.zeros(count, dtype=bool)
         self.cheapest: int | None = None
@@ -262,7 +265,8 @@ class Designs:
         """
         names = list(self.sizing.feeds)
         out: dict[str, Any] = {"design": np.arange(self.count)}
-        out.update({key: values for key, values in self.inputs.items() if not isinstance(values, list)})
+        for key, values in self.inputs.items():
+            out[key] = [str(item) for item in values] if isinstance(values, list) else values
         out["status"], out["reason"] = self.statuses, self.reasons
         for address, values in self.freed.items():
             for place, name in enumerate(names):
@@ -281,7 +285,7 @@ class Designs:
         for name, item in self.columns.items():
             own = {
                 "diameter_m": item.diameter_m, "trays": item.trays, "height_m": item.height_m, "volume_m3": item.volume_m3,
-                "flood": _largest(item.flood), "least_flood": item.flood.min(axis=1), "governing_stage": item.governs.max(axis=1),
+                "flood": _largest(item.flood), "least_flood": item.flood.min(axis=1), "governing_stage": item.governing_stage,
                 "drop_Pa": _largest(item.drop_Pa), "entrainment": _largest(item.entrainment), "wetting": item.wetting.min(axis=1),
                 "efficiency": item.efficiency.min(axis=1), "hetp_m": _largest(item.hetp_m),
             }  # fmt: skip

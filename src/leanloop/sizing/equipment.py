@@ -35,7 +35,7 @@ class Equipped:
         By feed case: the largest part of the flood velocity, the whole pressure drop, the largest entrainment (trays), the
         least wetting (packing), overall efficiency (trays) and mean height of a stage (packing).
     governs : (D, F) int
-        Stage under which flooding is nearest; 0 above the top stage.
+        Stage under which flooding is nearest; 0 above the top stage, -1 where it is not known.
     sections : list of D dicts of int to float
         By the first row of a section, the diameter in m that the section by itself asks for, over all feed cases.
     """
@@ -53,6 +53,13 @@ class Equipped:
     hetp_m: np.ndarray
     governs: np.ndarray
     sections: list[dict[int, float]]
+
+    @property
+    def governing_stage(self) -> np.ndarray:
+        """Stage under which flooding is nearest in the feed case that is nearest to it, (D,); NaN where one is not known."""
+        known = np.isfinite(self.flood).all(axis=1)
+        worst = np.where(known[:, None], self.flood, 0.0).argmax(axis=1)
+        return np.where(known, self.governs[np.arange(len(worst)), worst], np.nan)
 
 
 def standard(diameter: np.ndarray) -> np.ndarray:

@@ -11,9 +11,9 @@ import numpy as np
 from leanloop.entries import Context, Entry, read_number, read_values, shown_key, shown_name
 from leanloop.errors import nearest
 from leanloop.flowsheet.quantity import AddressError
-from leanloop.flowsheet.read import table
 from leanloop.flowsheet.read_requirements import check_address, check_quantity, formula_of, quantity_entry
 from leanloop.quantities import NORMAL_MOLES
+from leanloop.sizing.named import named
 from leanloop.status import OK
 
 if TYPE_CHECKING:
@@ -65,7 +65,7 @@ def read_matches(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, Matc
     """
     out = {}
     known = [name for name in sheet.units if f"units.{name}.stages" in sheet.numbers]
-    for name, own in table("sizing.match", raw, context).items():
+    for name, own in named("sizing.match", raw, context).items():
         where = f"sizing.match.{shown_key(name)}"
         if name not in known:
             context.fault(where, f"there is no column {shown_name(name)} with stages", nearest(str(name), known))

@@ -72,8 +72,10 @@ def diameters(spec: ColumnSpec, rows: Rows) -> np.ndarray:
                 return np.where(np.isfinite(there), there, np.inf * np.ones_like(share)) - most
 
             high = np.full(flood.shape, MOST)
-            slow = bracketed(lambda share: np.minimum(gap(share), 1e6), np.full(flood.shape, LEAST), high)
+            low = np.full(flood.shape, LEAST)
+            slow = bracketed(lambda share: np.minimum(gap(share), 1e6), low, high)
             part = np.where(np.isfinite(slow), np.minimum(part, slow), part)
+            part = np.where(gap(low) > 0, np.nan, part)  # no velocity is slow enough
         gas = spec.get("rate_margin", 1.0) * rows.gas_mass / rows.gas_density
         return np.sqrt(4.0 * gas / (np.pi * part * flood))
 
@@ -170,6 +172,8 @@ def cautions(spec: ColumnSpec, rows: Rows, found: dict[str, np.ndarray], diamete
             "liquid_reynolds": rows.liquid_mass / area / (spec.packing.specific_area * rows.liquid_viscosity),
         }  # fmt: skip
     said = [f"flood ({way}): {item}" for item in outside(ranges[way], **values)]
+    if by == "robbins":
+        said.append("pressure drop (robbins): the packing factor of flooding stands for that of the dry bed.")
     if by:
         said += [f"pressure drop ({by}): {item}" for item in outside(ranges[by], **values)]
     else:

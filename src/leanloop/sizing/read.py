@@ -11,11 +11,11 @@ import numpy as np
 from leanloop.entries import Context, Entry, read_values, shown_key, shown_name
 from leanloop.errors import nearest
 from leanloop.flowsheet.cases import read_item
-from leanloop.flowsheet.read import table
-from leanloop.hydraulics import films, packings
 from leanloop.sizing import spec
 from leanloop.sizing.match import read_matches
-from leanloop.sizing.spec import ColumnSpec, Sizing
+from leanloop.sizing.named import named
+from leanloop.sizing.read_column import read_column
+from leanloop.sizing.spec import Sizing
 from leanloop.studies.axes import Axis, read_cases
 from leanloop.studies.record import read_record
 
@@ -56,16 +56,18 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
     hold = _hold(sheet, raw.get("hold"), context)
     axes, stages = _axes(sheet, raw, context)
     feeds = _feeds(sheet, raw.get("cases"), context)
+    _note_settled(sheet, hold, axes, feeds, context)
     columns = {
         name: item
-        for name, own in table("sizing.columns", raw.get("columns"), context).items()
-        if (item := _column(sheet, name, own, known, hold, context)) is not None
+        for name, own in named("sizing.columns", raw.get("columns"), context).items()
+        if (item := read_column(sheet, name, own, known, hold, context)) is not None
     }
     match = read_matches(sheet, raw.get("match"), context)
     prices = read_values(spec.PRICES, raw.get("prices", {}), "sizing.prices", context).numbers
+    _note_unpriceable(sheet, prices, context)
     exchangers = _exchangers(sheet, raw.get("exchangers"), context)
-    choose = raw.get("choose", "")
-    if choose and choose not in spec.CHOICES:
+    choose = raw.get("choose")
+    if choose is not None and (not isinstance(choose, str) or choose not in spec.CHOICES):
         context.fault("sizing.choose", f"unknown choice {shown_name(choose)}", f"write one of {', '.join(spec.CHOICES)}")
     elif choose == "cheapest" and not prices:
         context.fault("sizing.choose", "nothing has a price", "add [sizing.prices], or choose the knee")
@@ -74,7 +76,7 @@ def read_sizing(sheet: Flowsheet, raw: Any, properties: Any, context: Context) -
         context.fault("sizing", "asks for nothing", "add stages = { COLUMN = [least, most] }, or [sizing.columns.COLUMN]")
     if len(context.faults) > faults:
         return None
-    return Sizing(hold, axes, stages, feeds, columns, known, prices, exchangers, choose, record or (), match)
+    return Sizing(hold, axes, stages, feeds, columns, known, prices, exchangers, choose or "", record or (), match)
 
 
 def read_properties(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, Mapping[str, float]]:
@@ -91,7 +93,7 @@ def read_properties(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, M
     dict of str to mapping
     """
     out = {}
-    for name, own in table("properties", raw, context).items():
+    for name, own in named("properties", raw, context).items():
         if name not in sheet.components.names:
             context.fault(
                 f"properties.{shown_key(name)}", f"unknown component {shown_name(name)}", nearest(name, sheet.components.names)
@@ -131,7 +133,12 @@ def _axes(sheet: Flowsheet, raw: Mapping[str, Any], context: Context) -> tuple[t
         values = own
         if isinstance(own, (list, tuple)) and len(own) == 2:  # the two ends of a range
             values = {"from": own[0], "to": own[1]} if own[0] != own[1] else [own[0]]
+        before = len(context.faults)
         found = read_cases(sheet, {address: values}, None, "sizing.stages", context)
+        own_address = f"sizing.stages.{shown_key(address)}"
+        context.faults[before:] = [
+            replace(fault, address=fault.address.replace(own_address, where, 1)) for fault in context.faults[before:]
+        ]
         if found is not None:
             axes += list(found.axes)
             scanned.append(name)
@@ -147,10 +154,27 @@ def _axes(sheet: Flowsheet, raw: Mapping[str, Any], context: Context) -> tuple[t
     return tuple(axes), tuple(scanned)
 
 
+def _note_settled(
+    sheet: Flowsheet, hold: tuple[str, ...], axes: tuple[Axis, ...], feeds: Mapping[str, Mapping[str, Any]], context: Context
+) -> None:
+    """Note inputs that are changed though requirements settle them, or belong to requirements that do not hold."""
+    freed = {item.free: name for name, item in sheet.requirements.items() if name in hold}
+    loose = {item.target: name for name, item in sheet.requirements.items() if name not in hold}
+    changed = [(key, "sizing.change") for axis in axes for key in axis.values]
+    changed += [(key, f"sizing.cases.{shown_key(name)}") for name, own in feeds.items() for key in own]
+    for key, where in changed:
+        if key in freed:
+            remedy = "change other inputs, or leave it out of hold"
+            context.fault(f"{where}.{shown_key(key)}", f"is freed by requirement {freed[key]}", remedy)
+        elif key in loose:
+            remedy = f'add "{loose[key]}" to hold, or leave it as it is'
+            context.fault(f"{where}.{shown_key(key)}", f"is of requirement {loose[key]}, which is not held", remedy)
+
+
 def _feeds(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, dict[str, Any]]:
     """Read feed cases; the file's own is always the first."""
     out: dict[str, dict[str, Any]] = {BASE: {}}
-    for name, own in table("sizing.cases", raw, context).items():
+    for name, own in named("sizing.cases", raw, context).items():
         where = f"sizing.cases.{shown_key(name)}"
         if not isinstance(own, Mapping) or not own:
             context.fault(where, "changes nothing", f'write [{where}] with "feeds.NAME.flow" = ...')
@@ -171,11 +195,34 @@ def _feeds(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, dict[str, 
     return out
 
 
+def _note_unpriceable(sheet: Flowsheet, prices: Mapping[str, float], context: Context) -> None:
+    """Note prices of what is not calculated: no design would have a cost."""
+    for key in ("heat", "cooling"):
+        if key in prices and sheet.heat is None:
+            remedy = "leave it out, or add [heat_data.NAME] and adiabatic columns"
+            context.fault(f"sizing.prices.{key}", "no heat is balanced", remedy)
+    priced: list[str] = []
+    if "solvent" in prices:
+        priced += [key for unit in sheet.units.values() if unit.kind == "makeup" for key in unit.values.group("hold")]
+    if "steam" in prices:
+        gases = [unit.inlets["gas_in"] for unit in sheet.units.values() if _fed_with_gas(unit)]
+        for gas in gases:
+            priced += [name for name, there in zip(sheet.components.names, sheet.plan.present[gas], strict=True) if there]
+    for name in dict.fromkeys(priced):
+        if sheet.components[name].molar_mass is None:
+            context.fault(f"components.{name}.molar_mass", "entry is missing", "steam and solvent are priced by mass")
+
+
+def _fed_with_gas(unit: Any) -> bool:
+    """Tell whether a unit is a stripper that is fed with gas."""
+    return getattr(unit, "cleans", "") == "liquid" and "gas_in" in unit.inlets
+
+
 def _exchangers(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, float]:
     out = {}
     known = [name for name, unit in sheet.units.items() if unit.kind == "exchanger"]
     entry = (Entry("coefficient", "heat transfer coefficient", required=True, above=0.0, doc="overall"),)
-    for name, own in table("sizing.exchangers", raw, context).items():
+    for name, own in named("sizing.exchangers", raw, context).items():
         where = f"sizing.exchangers.{shown_key(name)}"
         if name not in known:
             context.fault(where, f"there is no exchanger {shown_name(name)}", nearest(str(name), known))
@@ -184,162 +231,3 @@ def _exchangers(sheet: Flowsheet, raw: Any, context: Context) -> dict[str, float
         if "coefficient" in numbers:
             out[name] = numbers["coefficient"]
     return out
-
-
-# --- columns
-
-
-def _column(
-    sheet: Flowsheet, name: str, raw: Any, known: Mapping[str, Mapping[str, float]], hold: tuple[str, ...], context: Context
-) -> ColumnSpec | None:
-    where = f"sizing.columns.{shown_key(name)}"
-    columns = [own for own, unit in sheet.units.items() if hasattr(unit, "cleans")]
-    if name not in columns:
-        context.fault(where, f"there is no column {shown_name(name)}", nearest(name, columns))
-        return None
-    faults = len(context.faults)
-    unit = sheet.units[name]
-    values = read_values(spec.COLUMN, raw, where, context.knowing(component=sheet.components.names))
-    if len(context.faults) > faults:
-        return None
-    words, numbers = values.words, values.numbers
-    packed = words["internals"] == "packing"
-    for key in (spec.OF_TRAYS if packed else spec.OF_PACKING) & set(raw):
-        context.fault(f"{where}.{key}", f"has no meaning with {words['internals']}", "leave it out")
-    key = words.get("key") or _key(sheet, name, hold)
-    if key not in unit.model_names:
-        context.fault(f"{where}.key", f"'{key}' does not distribute in column '{name}'", nearest(key or "", unit.model_names))
-    packing = None
-    if packed:
-        packing = _packing(words, numbers, where, context)
-        _height(sheet, name, words, numbers, where, context)
-    else:
-        _efficiency(sheet, name, words, numbers, where, context)
-    item = ColumnSpec(name, dict(words), dict(numbers), key or "", packing)
-    if len(context.faults) == faults:
-        _enough(sheet, item, known, where, context)
-    return item if len(context.faults) == faults else None
-
-
-def _key(sheet: Flowsheet, name: str, hold: tuple[str, ...]) -> str | None:
-    """Give the component of a requirement that the column distributes, else the only one, else the last."""
-    names = sheet.units[name].model_names
-    for requirement in hold:
-        parts = sheet.requirements[requirement].address.split(".") if requirement in sheet.requirements else []
-        found = [part for part in parts if part in names]
-        if found:
-            return found[-1]
-    return names[0] if names else None
-
-
-def _packing(words: Mapping[str, Any], numbers: dict[str, float], where: str, context: Context) -> Any:
-    own = ("specific_area", "void_fraction", "packing_factor")
-    if "packing" in words:
-        try:
-            found = packings.find(words["packing"])
-        except packings.UnknownPacking as error:
-            problem, _, remedy = str(error).partition("; ")
-            context.fault(f"{where}.packing", problem, remedy)
-            return None
-    else:
-        missing = [key for key in own if key not in numbers]
-        if missing:
-            context.fault(f"{where}.packing", "entry is missing", f'name one such as "pall_metal_50", or give {", ".join(missing)}')
-            return None
-        found = packings.Packing("given", "given", "given", numbers.get("nominal_size", np.nan))
-    changed = {
-        "specific_area": "specific_area",
-        "void_fraction": "void_fraction",
-        "kister_factor": "packing_factor",
-        "size": "nominal_size",
-    }
-    found = replace(found, **{field: numbers[key] for field, key in changed.items() if key in numbers})
-    way = words.get("flood_by", "kister_gill")
-    lacks = {
-        "kister_gill": not np.isfinite(found.kister_factor), "leva": not np.isfinite(found.kister_factor),
-        "eckert": not np.isfinite(found.older_factor), "stichlmair": found.stichlmair is None,
-        "billet_schultes": found.billet_schultes is None or not np.isfinite(found.billet_schultes.flood),
-    }  # fmt: skip
-    if lacks[way]:
-        can = [key for key, lack in lacks.items() if not lack]
-        context.fault(f"{where}.flood_by", f"{way} has no constants of {found.name}", f"take one of {', '.join(can) or 'none'}")
-    materials = {"metal": "steel", "plastic": "polyethylene"}
-    if words.get("transfer") == "onda":
-        if "critical_tension" not in numbers and materials.get(found.material, found.material) not in films.CRITICAL_TENSIONS:
-            context.fault(f"{where}.critical_tension", "entry is missing", 'add critical_tension = "60 mN/m", of the material')
-        if not np.isfinite(found.size):
-            context.fault(f"{where}.nominal_size", "entry is missing", 'add nominal_size = "25 mm"')
-    if words.get("transfer") == "billet_schultes" and (
-        found.billet_schultes is None or not np.isfinite([found.billet_schultes.liquid, found.billet_schultes.gas]).all()
-    ):
-        context.fault(f"{where}.transfer", f"billet_schultes has no constants of {found.name}", "take onda, or give hetp")
-    return found
-
-
-def _height(sheet: Flowsheet, name: str, words: Mapping[str, Any], numbers: dict[str, float], where: str, context: Context) -> None:
-    own = sheet.numbers.get(f"units.{name}.hetp")
-    if "hetp" in numbers and "transfer" in words:
-        context.fault(f"{where}.hetp", "stands beside transfer", "keep one of the two")
-    elif "hetp" not in numbers and "transfer" not in words:
-        if own is None:
-            context.fault(f"{where}.hetp", "entry is missing", 'add hetp = "0.6 m", or transfer = "onda"')
-        else:
-            numbers["hetp"] = own
-
-
-def _efficiency(
-    sheet: Flowsheet, name: str, words: Mapping[str, Any], numbers: dict[str, float], where: str, context: Context
-) -> None:
-    """Settle one way from stages to trays; stages with an efficiency of their own are trays already."""
-    given = [key for key in ("efficiency", "murphree") if key in numbers] + (["oconnell"] if words.get("oconnell") else [])
-    real = any(key == "efficiency" or key.startswith("efficiency.") for key in sheet.units[name].values.numbers)
-    if real and given:
-        context.fault(f"{where}.{given[0]}", "stands beside the efficiency of the column's own stages", "leave one of them out")
-    elif len(given) > 1:
-        context.fault(f"{where}.{given[1]}", f"stands beside {given[0]}", "keep one of them")
-    elif not given and not real:
-        context.fault(f"{where}.efficiency", "entry is missing", "add efficiency = 0.5, murphree = 0.6, or oconnell = true")
-    elif real:
-        numbers["efficiency"] = 1.0
-
-
-def _enough(sheet: Flowsheet, item: ColumnSpec, known: Mapping[str, Mapping[str, float]], where: str, context: Context) -> None:
-    """Note properties that the methods asked for would lack."""
-    unit = sheet.units[item.unit]
-    names = [name for name, there in zip(sheet.components.names, unit.present, strict=True) if there]
-    in_liquid = [name for name in names if not unit.stays_gas[sheet.components.index[name]]]
-    in_gas = [name for name in names if not unit.stays_liquid[sheet.components.index[name]]]
-    for name in names:
-        if sheet.components[name].molar_mass is None:
-            context.fault(f"components.{name}.molar_mass", "entry is missing", f"column '{item.unit}' is sized by mass flows")
-    for key, of in needs(item).items():
-        if key in item.numbers:
-            continue
-        for name in in_liquid if of == "liquid" else in_gas if of == "gas" else [item.key]:
-            own = known.get(name, {})
-            instead = {"gas_diffusivity": "diffusion_volume", "liquid_diffusivity": "molar_volume"}.get(key)
-            if key in own or (instead in own and (key == "liquid_diffusivity" or all(instead in known.get(n, {}) for n in in_gas))):
-                continue
-            shown = Entry(key, next(entry.sort for entry in spec.MIXTURE if entry.name == key))
-            remedy = f"column '{item.unit}' needs it; or give {key} of the whole stream at {where}"
-            context.fault(f"properties.{name}.{shown.name}", "entry is missing", remedy)
-
-
-def needs(item: ColumnSpec) -> dict[str, str]:
-    """Give the properties that a column's methods need, and whose: of the ``"liquid"``, the ``"gas"`` or the ``"key"``.
-
-    Parameters
-    ----------
-    item : ColumnSpec
-    """
-    found = {"liquid_density": "liquid"}
-    if item.trays:
-        found["surface_tension"] = "liquid"
-        if item.words.get("oconnell"):
-            found["liquid_viscosity"] = "liquid"
-        return found
-    found["liquid_viscosity"] = "liquid"
-    found["gas_viscosity"] = "gas"
-    if "transfer" in item.words:
-        found |= {"surface_tension": "liquid", "gas_diffusivity": "key", "liquid_diffusivity": "key"}
-    return found

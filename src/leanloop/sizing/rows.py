@@ -41,7 +41,7 @@ class Rows:
     gas_diffusivity, liquid_diffusivity : (M, S) m2/s
     liquid_molar_mass : (M, S) kg/mol
     k : (M, S)
-        y/x of the key component.
+        y/x of the key component on the stage above; of the top row on that below.
     """
 
     count: np.ndarray
@@ -99,14 +99,9 @@ def rows_of(part: Part, spec: ColumnSpec, known: Mapping[str, Mapping[str, float
     with np.errstate(all="ignore"):
         profile = view.unit(spec.unit)["profile"]
         inlets, _ = view.sides(spec.unit)
-        gas, liquid, counts = _flows(profile, inlets, numbers, names)
-        cases, height = gas.shape[:2]
-        stage = np.minimum(np.arange(height), height - 2)  # the stage into which the gas of a row rises, the last one below it
-        first = int(np.argmax(np.asarray(profile["stage"])[0] == 1))
-        warm, pressed, k = (
-            np.broadcast_to(np.asarray(item, dtype=float), (cases, np.shape(profile["gas_mol_s"])[1]))[:, first + stage]
-            for item in (profile["temperature_K"], profile["pressure_Pa"], profile["K"][spec.key])
-        )
+        boiled = "boil_up" in numbers or any(key.startswith("reboiler.") for key in numbers)
+        gas, liquid, counts = _flows(profile, inlets, numbers, names, boiled)
+        warm, pressed, k = _states(profile, inlets, spec.key, counts, boiled)
         lost = ~np.isfinite(gas.sum(axis=2)) | ~np.isfinite(liquid.sum(axis=2))
         masses = np.nan_to_num(run.plan.components.molar_masses)
         y, x = divide(gas, gas.sum(axis=2)[..., None]), divide(liquid, liquid.sum(axis=2)[..., None])
@@ -125,7 +120,7 @@ def rows_of(part: Part, spec: ColumnSpec, known: Mapping[str, Mapping[str, float
 
 
 def _flows(
-    profile: Mapping[str, Any], inlets: Mapping[str, Any], numbers: Mapping[str, Any], names: list[str]
+    profile: Mapping[str, Any], inlets: Mapping[str, Any], numbers: Mapping[str, Any], names: list[str], boiled: bool
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Give gas and liquid of every row by component, (M, S, C) mol/s, and the stages of each column."""
     up = np.asarray(profile["gas_mol_s"])[..., None] * np.stack([profile["y"][name] for name in names], axis=-1)
@@ -136,7 +131,6 @@ def _flows(
     cases, places, width = up.shape
     stage = np.asarray(profile["stage"])[0]
     first = int(np.argmax(stage == 1))
-    boiled = "boil_up" in numbers or any(key.startswith("reboiler.") for key in numbers)
     trays_ = places - first - int(boiled)
     own = np.asarray(numbers["stages"]).astype(int) if "deepest" in numbers else np.full(cases, trays_)
     gas, liquid = np.full((cases, trays_ + 1, width), np.nan), np.full((cases, trays_ + 1, width), np.nan)
@@ -144,8 +138,30 @@ def _flows(
     liquid[:, 1:] = down[:, first : first + trays_]
     every = np.arange(cases)
     gas[every, own] = up[:, first + trays_] if boiled else inlets["gas_in"].flows
-    liquid[:, 0] = down[:, first - 1] if first else inlets["liquid_in"].flows
+    liquid[:, 0] = inlets["liquid_in"].flows + (down[:, first - 1] if first else 0.0)  # reflux runs down beside the feed
     return gas, liquid, own
+
+
+def _states(
+    profile: Mapping[str, Any], inlets: Mapping[str, Any], key: str, counts: np.ndarray, boiled: bool
+) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Give temperature and pressure of the gas of every row, and K of the stage above it (of the top row, below it), (M, S)."""
+    cases, places = len(counts), np.shape(profile["gas_mol_s"])[1]
+    first = int(np.argmax(np.asarray(profile["stage"])[0] == 1))
+    row = np.arange(places - first - int(boiled) + 1)
+    bottom = row == counts[:, None]
+    below = first + np.minimum(row, counts[:, None] - 1)  # the stage that the gas comes from
+    if boiled:
+        below = np.where(bottom, places - 1, below)
+    above = first + np.clip(row - 1, 0, counts[:, None] - 1)
+    every = np.arange(cases)[:, None]
+    warm, pressed, k = (
+        np.broadcast_to(np.asarray(item, dtype=float), (cases, places))[every, at]
+        for item, at in ((profile["temperature_K"], below), (profile["pressure_Pa"], below), (profile["K"][key], above))
+    )
+    if not boiled and inlets["gas_in"].phase == "gas":  # it comes as warm as it is fed
+        warm = np.where(bottom, np.reshape(inlets["gas_in"].temperature, (-1, 1)), warm)
+    return warm, pressed, k
 
 
 class _Mixture:

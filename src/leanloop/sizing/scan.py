@@ -82,19 +82,17 @@ def scan(sheet: Flowsheet, sizing: Sizing) -> Designs:
     Designs
     """
     own = held(sheet, sizing.hold)
+    renamed = {sheet.requirements[name].target: item.target for name, item in own.requirements.items()}
     inputs, designs = _grid(sizing)
-    changes = _with_feeds(own, sizing, inputs, designs)
-    result = own.solve_cases(changes, mixed=True)
+    changes = _with_feeds(sheet, sizing, inputs, designs)
+    result = own.solve_cases({renamed.get(key, key): values for key, values in changes.items()}, mixed=True)
     columns = {name: equip(sizing, spec, result, designs) for name, spec in sizing.columns.items()}
-    found = Designs(own, sizing, inputs, designs, result, columns)
+    found = Designs(own, sizing, inputs, designs, result, columns, renamed)
     volume = found.size_measure
     objectives = np.stack([found.circulation, found.energy, volume], axis=1)
-    moves = [
-        place
-        for place in range(3)
-        if found.good.any() and np.isfinite(objectives[found.good, place]).all() and np.ptp(objectives[found.good, place]) > 0
-    ]
-    objectives = objectives[:, moves] if moves and found.good.any() else objectives[:, 2:]
+    known = objectives[found.good]
+    moves = [place for place in range(3) if len(known) and np.isfinite(known[:, place]).all() and np.ptp(known[:, place]) > 0]
+    objectives = objectives[:, moves] if moves else objectives[:, 2:]
     found.costs = costs.costs(found) if sizing.prices else {}
     found.front = choice.pareto(objectives, found.good)
     if sizing.prices:
@@ -150,7 +148,7 @@ def _ratios(found: Designs) -> dict[str, np.ndarray]:
     marked = [item for item in (found.chosen, found.cheapest, found.knee) if item is not None]
     wanted = list(dict.fromkeys([*marked, *np.flatnonzero(found.front).tolist()]))[:MOST_RATIOS]
     for design in wanted:
-        result = free.solve(found.settings(design))
+        result = free.solve({found.renamed.get(key, key): value for key, value in found.settings(design).items()})
         known = {name: column_limits(Case(result, 0), name) for name in out}
         if any(item.method != "curve" for item in known.values()):
             return {}

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import math
 import re
-from collections.abc import Iterable, Mapping
+from collections.abc import Container, Iterable, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -67,7 +67,13 @@ def _value(item: Any) -> str:
     return item.isoformat() if hasattr(item, "isoformat") else str(item)
 
 
-def with_inputs(path: str | Path, settings: Iterable[str], inputs: Mapping[str, tuple[Any, str]], title: str = "") -> str:
+def with_inputs(
+    path: str | Path,
+    settings: Iterable[str],
+    inputs: Mapping[str, tuple[Any, str]],
+    title: str = "",
+    requirements: Container[str] | None = None,
+) -> str:
     """Write a flowsheet file anew with other inputs.
 
     Parameters
@@ -80,6 +86,8 @@ def with_inputs(path: str | Path, settings: Iterable[str], inputs: Mapping[str, 
         SI numbers, or lists of them, by address, and their sort.
     title : str
         Added to the file's own.
+    requirements : container of str, optional
+        Those to keep; all by default.
 
     Returns
     -------
@@ -97,4 +105,6 @@ def with_inputs(path: str | Path, settings: Iterable[str], inputs: Mapping[str, 
     if title:
         own = data.get("title", "")
         data = {"title": f"{own}: {title}" if own else title, **{key: item for key, item in data.items() if key != "title"}}
+    if requirements is not None and "requirements" in data:
+        data["requirements"] = {name: item for name, item in data["requirements"].items() if name in requirements}
     return text({key: item for key, item in data.items() if key not in LEFT_OUT})
