@@ -50,7 +50,7 @@ LAYERS = {
     "pictures": ("errors", "units", "flowsheet", "pinch", "studies", "sizing"),
     "output": (
         *TEXT, "status", "version", "registry", "components", "stream", "equilibrium", "units", "recycle", "flowsheet", "pinch",
-        "studies", "sizing",
+        "hydraulics", "studies", "sizing",
     ),
     "textfile": (*TEXT, "components", "feed", "flowsheet", "studies", "sizing"),
     "checks": (

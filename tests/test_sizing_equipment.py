@@ -12,6 +12,8 @@ import scenes
 
 import leanloop
 from leanloop.hydraulics import packings
+from leanloop.sizing import tray_column
+from leanloop.sizing.rows import rows_of
 
 FLOWSHEETS = Path(__file__).parents[1] / "flowsheets"
 R, G = 8.314462618, 9.80665
@@ -627,3 +629,25 @@ def test_exchanger_area(tmp_path):
     one, two = ends[0] - ends[1], ends[2] - ends[3]
     assert UA == close(duty / ((one - two) / np.log(one / two)), rel=0.05)  # heat capacities change along the exchanger
     assert "exchanger swap" in str(found)
+
+
+# --- sections between side streams
+
+
+def test_each_section_between_side_streams_is_told_by_itself():
+    text = (Path(__file__).resolve().parents[1] / "flowsheets" / "ammonia_wash.toml").read_text(encoding="utf-8")
+    sheet = leanloop.read(Path(__file__).resolve().parents[1] / "flowsheets" / "ammonia_wash.toml")
+    assert 'stage = 4 }' in text and 'stage = 7, phase = "liquid"' in text
+    columns = {"wash": {"internals": "trays", "liquid_density": 990.0, "surface_tension": 0.068}}
+    found = leanloop.size(sheet, hold=["emission"], stages={"wash": [9, 9]}, columns=columns)
+    item = found.columns["wash"]
+    assert sorted(item.sections[0]) == [0, 4, 7]
+    # the worst section sets the width of the whole, and the bottom one carries the most gas
+    assert max(item.sections[0].values()) == pytest.approx(item.diameter_m[0], rel=1e-12)
+    assert item.sections[0][0] < item.sections[0][4] < item.sections[0][7]
+    # a row belongs to one section alone: each is at most as wide as the widest row says, and one row reaches it
+    rows = rows_of(found.result.parts[0], item.spec, {})
+    wide = tray_column.diameters(item.spec, rows)[0]
+    for start, end in ((0, 4), (4, 7), (7, 10)):
+        assert item.sections[0][start] == pytest.approx(wide[start:end].max(), rel=1e-12)
+    assert "stage 4 to stage 7" in str(found)

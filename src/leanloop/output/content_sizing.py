@@ -7,9 +7,11 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from leanloop.flowsheet.scales import Scale, of_column, of_input
+from leanloop.hydraulics.flooding import kister_gill_pressure_drop
 from leanloop.output.content import Listing, Section, Sentence, Table, number, printable
 from leanloop.output.content_heat import NO_HEAT, heat_cautions
 from leanloop.output.content_report import CAUTIONS, written
+from leanloop.output.content_studies import thinned
 from leanloop.sizing.effects import flood_effects, solvent_effects
 
 if TYPE_CHECKING:
@@ -85,7 +87,7 @@ def _ranked(found: Designs) -> list[Section]:
     order = _order(found)
     if not len(order):
         return []
-    shown = order[:MOST_ROWS]
+    shown = order[:MOST_ROWS] if found.sizing.prices else order[thinned(len(order), MOST_ROWS)]
     marked = [item for item in (found.cheapest, found.knee, found.chosen) if item is not None and item not in shown]
     shown = np.array([*shown, *dict.fromkeys(marked)])
     names = list(found.stages)
@@ -170,9 +172,8 @@ def _column(found: Designs, name: str, item: Any, design: int) -> Section:
     wide, high = number(item.diameter_m[design], 4), number(item.height_m[design], 4)
     head = f"Column {name}: {wide} m wide ({'given' if rated else 'sized'}), {high} m high"
     count = found.stages[name][design]
-    inside = (
-        f"{item.trays[design]:.0f} trays for {count} stages" if item.spec.trays else f"{item.spec.packing.name} for {count} stages"
-    )
+    inside = f"{item.trays[design]:.0f} trays" if item.spec.trays else item.spec.packing.name
+    inside += f" for {count} stages" + ("" if item.spec.trays else _at_flood(item.spec.packing))
     lead = ["feed case", "% of flood", "nearest under stage", "pressure drop, mbar"]
     lead += ["overall efficiency", "entrained, % of liquid"] if item.spec.trays else ["m per stage", "wetting over the least"]
     rows = []
@@ -197,6 +198,13 @@ def _column(found: Designs, name: str, item: Any, design: int) -> Section:
         rows = [[span, number(apart[low], 4)] for span, low in zip(spans, first, strict=True)]
         parts.append(Table(["section", "asks for, m wide"], rows))
     return Section(head, parts, place=f"units.{name}")
+
+
+def _at_flood(packing: Any) -> str:
+    """Tell the pressure drop at flood, where the packing factor is known."""
+    if not np.isfinite(packing.kister_factor):
+        return ""
+    return f"; at flood it takes some {number(kister_gill_pressure_drop(packing.kister_factor) / 100, 3)} mbar/m (Kister and Gill)"
 
 
 def _effects(found: Designs) -> list[Section]:

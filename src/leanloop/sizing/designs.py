@@ -310,6 +310,9 @@ class Designs:
         if self.chosen is None:
             return []
         said: dict[str, None] = {}
+        for key, values in self.inputs.items():
+            if not isinstance(values, list) and np.ptp(values) > 0 and values[self.chosen] in (np.min(values), np.max(values)):
+                said[f"The design chosen lies at the end of what was scanned of {key}: a wider scan may hold a better one."] = None
         for name, item in self.columns.items():
             case = self.case_of(self.chosen, self.governing_feed(name, self.chosen))
             for sentence in equipment.cautions(self.sizing, item.spec, self.result, case, float(item.diameter_m[self.chosen])):
