@@ -86,9 +86,8 @@ class Several:
             on = np.flatnonzero((merit > 1e-12) & np.isfinite(merit) & (damping > 1e-3))
             if not len(on):
                 break
-            step = np.zeros((len(on), p.shape[1]))
-            for place, n in enumerate(on):  # few and small; rank-deficient ones are common at bounds
-                step[place] = -np.linalg.lstsq(slopes[n], f[n], rcond=1e-12)[0]
+            # least squares: matrices that lack rank are common at bounds
+            step = -np.einsum("kij,kj->ki", np.linalg.pinv(slopes[on], rcond=1e-12), f[on])
             limit = 0.5 * (self.high - self.low)
             step *= np.minimum(1.0, (limit / np.maximum(np.abs(step), 1e-300)).min(axis=1))[:, None]
             new = np.clip(p[on] + damping[on, None] * step, self.low, self.high)
