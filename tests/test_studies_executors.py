@@ -239,7 +239,8 @@ def test_an_executor_of_the_caller_stays_open_and_what_waits_in_it_is_taken_back
         with pytest.raises(KeyboardInterrupt):
             study.run(tmp_path, executor=executor, progress=interrupt)
         release.set()
-        assert sum(future.cancelled() for future in executor.futures) == len(executor.futures) - 2
+        # the first was done, and the second may have begun
+        assert sum(future.cancelled() for future in executor.futures) >= len(executor.futures) - 2
         assert ThreadPoolExecutor.submit(executor, max, 1, 2).result(10) == 2
     assert runs.kept(tmp_path / "flows.sqlite") == [("cases", 0)]
 
