@@ -388,3 +388,12 @@ def test_every_fault_at_once(tmp_path, capsys):
         for path in wrong:
             assert sum(item.startswith(plain(dotted(path))) for item in told) == 1, (path, err)
         assert len(told) == len(wrong)
+
+
+def test_progress_counts_up_to_all_cases():
+    told = []
+    sheet = leanloop.read(Path(__file__).resolve().parents[1] / "flowsheets" / "coating_vent.toml")
+    stages = {"wash": [8, 9], "strip": [7, 8]}
+    leanloop.size(sheet, hold=["emission"], stages=stages, progress=lambda done, count: told.append((done, count)))
+    assert told and told == sorted(told)
+    assert told[-1] == (4, 4)

@@ -126,8 +126,11 @@ def _draw(arguments: argparse.Namespace) -> int:
 
 def _size(arguments: argparse.Namespace) -> int:
     sheet = read(arguments.file, arguments.settings)
-    _tell("solving all designs")
-    found = size(sheet)
+    progress = Progress("designs", sys.stderr)
+    try:
+        found = size(sheet, progress=progress.counted)
+    finally:
+        progress.end()
     written = text.designs(found)
     files: dict[Path, str | bytes] = dict(tables.of_designs(found, arguments.tables)) if arguments.tables else {}
     if arguments.json and arguments.json != "-":

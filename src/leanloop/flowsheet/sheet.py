@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import copy
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import numpy as np
@@ -304,7 +304,9 @@ class Flowsheet:
             raise InputError([fault for part in result.parts for fault in part.run.trapped], self.source)
         return result
 
-    def solve_cases(self, changes: Mapping[str, Any] | None = None, mixed: bool = False) -> Result:
+    def solve_cases(
+        self, changes: Mapping[str, Any] | None = None, mixed: bool = False, told: Callable[[int, int], None] | None = None
+    ) -> Result:
         """Solve like `solve`, where that no case has a steady state is no wrong input but each case's status.
 
         Parameters
@@ -313,6 +315,8 @@ class Flowsheet:
         mixed : bool
             Whether columns of different height may share a batch. Then a profile is as long as that of the highest, NaN
             below a case's own stages.
+        told : callable, optional
+            Told, after each group of cases that are solved together, how many are done and how many there are.
 
         Returns
         -------
@@ -328,7 +332,7 @@ class Flowsheet:
         deep = self.deepening() if mixed else frozenset()
         cases, axis, base, arrays, groups = read_changes(self, changes or {}, deep)
         touched = frozenset(changes or {})
-        parts = []
+        parts, done = [], 0
         for rows, own in shares(groups, arrays, deep):
             size = self.chunk({**base, **own})
             for begin in range(0, len(rows), size):
@@ -337,6 +341,9 @@ class Flowsheet:
                     {**self.numbers, **base, **own}, {key: value[chunk] for key, value in arrays.items()}, len(chunk), touched
                 )
                 parts.append(self._solve_part(chunk, inputs))
+                done += len(chunk)
+                if told is not None:
+                    told(done, cases)
         return Result(self, parts, cases, axis)
 
     def deepening(self) -> frozenset[str]:

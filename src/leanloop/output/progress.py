@@ -24,6 +24,7 @@ class Progress:
         self.name, self.stream = name, stream
         self.shown = stream.isatty()
         self.last, self.width = -EVERY, 0
+        self.first: tuple[float, int] | None = None
 
     def __call__(self, part: str, done: int, count: int, failed: int, left: float | None) -> None:
         """Take in how far a round is.
@@ -55,6 +56,20 @@ class Progress:
         self.stream.write("\r" + line.ljust(self.width))
         self.stream.flush()
         self.width = len(line)
+
+    def counted(self, done: int, count: int) -> None:
+        """Take in how many cases are done, and tell the time left from the pace since the first word.
+
+        Parameters
+        ----------
+        done, count : int
+        """
+        now = time.monotonic()
+        if self.first is None:
+            self.first = (now, done)
+        begin, before = self.first
+        left = (now - begin) / (done - before) * (count - done) if done > before else None
+        self("cases", done, count, 0, left)
 
     def _room(self) -> int:
         try:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -24,12 +24,14 @@ if TYPE_CHECKING:
 MOST_RATIOS = 40  # designs whose rates are set against the least ones
 
 
-def size(sheet: Flowsheet, **entries: Any) -> Designs:
+def size(sheet: Flowsheet, /, progress: Callable[[int, int], None] | None = None, **entries: Any) -> Designs:
     """Size a flowsheet's columns together.
 
     Parameters
     ----------
     sheet : Flowsheet
+    progress : callable, optional
+        Told how many cases are solved, and of how many.
     **entries
         As in ``[sizing]``: ``hold``, ``stages``, ``change``, ``cases``, ``columns``, ``prices``, ...; those that the flowsheet
         declares where none are given.
@@ -51,7 +53,7 @@ def size(sheet: Flowsheet, **entries: Any) -> Designs:
     sizing = read_sizing(sheet, raw, sheet.given["properties"], context)
     if context.faults or sizing is None:
         raise InputError(context.faults, sheet.source)
-    return scan(sheet, sizing)
+    return scan(sheet, sizing, progress)
 
 
 def held(sheet: Flowsheet, names: tuple[str, ...]) -> Flowsheet:
@@ -69,13 +71,15 @@ def held(sheet: Flowsheet, names: tuple[str, ...]) -> Flowsheet:
     return sheet.rebuilt(requirements=raw)
 
 
-def scan(sheet: Flowsheet, sizing: Sizing) -> Designs:
+def scan(sheet: Flowsheet, sizing: Sizing, progress: Callable[[int, int], None] | None = None) -> Designs:
     """Solve, equip, price and rank all designs.
 
     Parameters
     ----------
     sheet : Flowsheet
     sizing : Sizing
+    progress : callable, optional
+        As for `size`.
 
     Returns
     -------
@@ -85,7 +89,7 @@ def scan(sheet: Flowsheet, sizing: Sizing) -> Designs:
     renamed = {sheet.requirements[name].target: item.target for name, item in own.requirements.items()}
     inputs, designs = _grid(sizing)
     changes = _with_feeds(sheet, sizing, inputs, designs)
-    result = own.solve_cases({renamed.get(key, key): values for key, values in changes.items()}, mixed=True)
+    result = own.solve_cases({renamed.get(key, key): values for key, values in changes.items()}, True, progress)
     columns = {name: equip(sizing, spec, result, designs) for name, spec in sizing.columns.items()}
     found = Designs(own, sizing, inputs, designs, result, columns, renamed)
     volume = found.size_measure
