@@ -20,6 +20,7 @@ NO_CLUSTER = 'a cluster needs dask.distributed; install the extra: pip install "
 REMEDY = "write the scheduler's address, tcp://HOST:PORT"
 ADDRESS = re.compile(r"(?:(?:tcp|tls|ws|wss)://)?(?:[^\s:/\[\]]+|\[[^\s/\[\]]+\]):(\d{1,5})", re.ASCII)
 PATIENCE = 10  # s
+SETTLED = 10.0  # s that a pool gets to notice that its processes are ended
 RETRIES = 5  # of a batch whose worker is lost, by the cluster itself
 
 
@@ -129,9 +130,12 @@ class _Pool(Engine):
     def close(self, wait: bool = True) -> None:
         """Let go of the processes; without waiting, what they are at is lost."""
         processes = [] if wait else list((getattr(self.executor, "_processes", None) or {}).values())
+        manager = getattr(self.executor, "_executor_manager_thread", None)
         super().close(wait)
         for process in processes:
             process.terminate()
+        if not wait and manager is not None:  # else the interpreter, as it ends, may wake a thread that is just closing its pipe
+            manager.join(SETTLED)
 
 
 def _begin() -> None:
