@@ -278,7 +278,6 @@ class Cluster:
     """A scheduler and two workers, each a process of its own on this machine."""
 
     def __init__(self, directory):
-        pytest.importorskip("distributed")
         self.directory, self.file, self.processes = directory, directory / "scheduler.json", []
         self.start("scheduler", "--host", "127.0.0.1", "--port", "0", "--scheduler-file", self.file)
         wait_for(lambda: self.file.exists() and self.file.read_text())

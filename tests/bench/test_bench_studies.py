@@ -10,6 +10,7 @@ import sys
 import time
 from pathlib import Path
 
+import distributed
 import numpy as np
 import pytest
 
@@ -105,7 +106,6 @@ def cluster(tmp_path):
 
 
 def test_cases_a_second(tmp_path, capsys):
-    distributed = pytest.importorskip("distributed")
     sheet = wash_oil(tmp_path, requirement=True)
     key = "feeds.vent.flows.inert"
     study = leanloop.study(sheet, "s", change={key: {"from": 10.0, "to": 11.0, "count": CASES}}, record=RECORD)
